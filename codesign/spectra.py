@@ -150,6 +150,12 @@ class Table:
         values = self.spectrum.values[self.names.index(name)]
         return Spectrum(self.spectrum.wavelength_nm, values, self.label)
 
+    def keep(self, names: Sequence[str]) -> Table:
+        """Return the table with only the named columns, in that order."""
+        picked = np.array([self.column(name).values for name in names])
+        spectrum = Spectrum(self.spectrum.wavelength_nm, picked, self.label)
+        return Table(self.label, tuple(names), self.lines, spectrum)
+
     def require(self, allowed: NDArray[np.bool_], advice: str) -> None:
         """Raise an error naming row, column and value of the first entry that is not ``allowed``."""
         bad = np.argwhere(~allowed)
@@ -216,7 +222,7 @@ def read_table(path: str | Path, columns: Sequence[str] | None = None, *, label:
     _check_wavelengths(label, lines, data[:, 0])
     names = tuple(header[1:])
     table = Table(label, names, lines, Spectrum(data[:, 0], data[:, 1:].T, label))
-    return table if columns is None else _keep(table, columns)
+    return table if columns is None else table.keep(columns)
 
 
 def _read_only(values: ArrayLike) -> FloatArray:
@@ -317,9 +323,3 @@ def _check_wavelengths(label: str, lines: tuple[int, ...], wavelength: FloatArra
             f"{label}:{lines[i + 1]}: wavelength_nm {wavelength[i + 1]:g} {what}, "
             "must be strictly increasing; sort the rows and remove repeats"
         )
-
-
-def _keep(table: Table, columns: Sequence[str]) -> Table:
-    picked = [table.column(name).values for name in columns]
-    spectrum = Spectrum(table.spectrum.wavelength_nm, np.array(picked), table.label)
-    return Table(table.label, tuple(columns), table.lines, spectrum)
