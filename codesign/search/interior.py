@@ -1,0 +1,277 @@
+"""A primal-dual interior point over many small programs at once, for good multipliers rather than last digits.
+
+Solves, for each program of a block,  min (s − θ d)·y + |R y|²  (or  min −d·y)  over its limits. LED heat caps
+enter as the boxes they leave at the longest exposure; the exact multipliers for them are put back in closed form
+afterwards (`junction_prices`). Whatever comes out is judged by
+`codesign.certificate`, so this file needs no trust.
+
+Method: Mehrotra's predictor-corrector (SIAM J. Optim. 2, 575, 1992). The LED boxes make the normal matrix an
+arrow plus a few rows, so one step costs O(n·(m+r)) per program and is all array operations.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from codesign.certificate import Line
+from codesign.program import Array, Program, segment_room
+
+
+@dataclass(slots=True)
+class _Scaled:
+    """One block in unit scale: x = q/(width·t_high), τ = t/t_high, rows divided by their bounds."""
+
+    cost: Array
+    rows: Array
+    noise_rows: Array
+    low: Array
+    box: Array | None
+    unit: Array
+
+    @property
+    def size(self) -> int:
+        return self.cost.shape[0]
+
+
+def _scale(program: Program, cost: Array, noise_rows: Array) -> tuple[_Scaled, Array]:
+    """Return the scaled block and the factor each program's objective was divided by."""
+    column = np.hstack([program.width * program.time_high[:, None], program.time_high[:, None]])
+    scaled_cost = cost * column
+    unit = np.maximum(np.max(np.abs(scaled_cost), axis=1), 1e-300)
+    bounds = np.maximum(program.bounds, 1e-300)
+    box = None
+    if np.isfinite(program.heat_cap).any():
+        box = np.maximum(segment_room(program, program.time_high)[0] / column[:, :-1], 1e-4)
+    return _Scaled(
+        cost=scaled_cost / unit[:, None],
+        rows=program.rows * column[:, None, :] / bounds[:, :, None],
+        noise_rows=noise_rows * column[:, None, :] / np.sqrt(unit)[:, None, None],
+        low=np.minimum(program.time_low / program.time_high, 1 - 1e-6),
+        box=box,
+        unit=unit,
+    ), column
+
+
+class _State:
+    """Slacks and duals of every program of a scaled block; slack lists are kept, not recomputed, to save digits.
+
+    Order of both lists: x ≥ 0, τ − x ≥ 0, 1 − A y ≥ 0, τ − low ≥ 0, 1 − τ ≥ 0, and box − x ≥ 0 where there are boxes.
+    """
+
+    def __init__(self, block: _Scaled) -> None:
+        tau = 0.5 * (1 + block.low)
+        load = block.rows[:, :, :-1].sum(axis=2)
+        room = 1.0 - block.rows[:, :, -1] * tau[:, None]
+        share = np.min(np.where(load > 0, room / np.maximum(load, 1e-300), np.inf), axis=1, initial=np.inf)
+        level = 0.5 * np.minimum(tau, share)
+        if block.box is not None:
+            level = np.minimum(level, 0.5 * block.box.min(axis=1))
+        level = np.maximum(level, 1e-9)
+        x = np.repeat(level[:, None], block.cost.shape[1] - 1, axis=1)
+        self.block = block
+        self.slack = [x, tau[:, None] - x, room - load * level[:, None], (tau - block.low)[:, None], (1.0 - tau)[:, None]]
+        if block.box is not None:
+            self.slack.append(block.box - x)
+        self.dual = self._feasible_duals()
+
+    def _feasible_duals(self) -> list[Array]:
+        """Duals that already satisfy stationarity: each box pair absorbs whatever the gradient leaves over."""
+        block = self.block
+        limit = np.full(self.slack[2].shape, 0.1)
+        gradient = self.gradient() + np.einsum("pm,pmn->pn", limit, block.rows)
+        inner, spare = gradient[:, :-1], 0.02
+        at_zero, at_cap = np.maximum(inner, 0.0) + spare, np.maximum(-inner, 0.0) + spare
+        at_box = []
+        if block.box is not None:
+            at_box, at_cap = [0.5 * at_cap], 0.5 * at_cap
+        left = gradient[:, -1:] - at_cap.sum(axis=1, keepdims=True)
+        return [at_zero, at_cap, limit, np.maximum(left, 0.0) + 0.1, np.maximum(-left, 0.0) + 0.1, *at_box]
+
+    def gradient(self) -> Array:
+        """Gradient of the objective at the present point, (P, n+1)."""
+        rows = self.block.noise_rows
+        noise = np.einsum("prn,pn->pr", rows[:, :, :-1], self.x) + rows[:, :, -1] * self.tau[:, None]
+        return self.block.cost + 2 * np.einsum("pr,prn->pn", noise, rows)
+
+    @property
+    def x(self) -> Array:
+        return self.slack[0]
+
+    @property
+    def tau(self) -> Array:
+        return self.block.low + self.slack[3][:, 0]
+
+
+def _step_length(values: list[Array], steps: list[Array]) -> Array:
+    """Longest step (≤ 1) that keeps all values positive, per program."""
+    worst = np.zeros(values[0].shape[0])
+    for value, step in zip(values, steps, strict=True):
+        worst = np.maximum(worst, np.max(-step / value, axis=1, initial=0.0))
+    return 1.0 / np.maximum(worst, 1.0)
+
+
+def _iterate(state: _State, tolerance: float) -> Array:
+    """One predictor-corrector step of every program; returns the mean complementarity."""
+    block = state.block
+    n = state.x.shape[1]
+    slack, dual = state.slack, state.dual
+    count = sum(s.shape[1] for s in slack)
+    mu = sum(np.einsum("pk,pk->p", s, z) for s, z in zip(slack, dual, strict=True)) / count
+    weight = [z / s for s, z in zip(slack, dual, strict=True)]
+    gradient = state.gradient()
+
+    # Normal matrix = arrow (boxes, exposure) + coupling rows and noise rows, inverted by the Woodbury identity.
+    cap = weight[1]
+    rest = weight[0] + weight[5] if block.box is not None else weight[0]
+    inverse = 1.0 / (rest + cap)
+    pull = cap * inverse
+    ends = weight[3][:, 0] + weight[4][:, 0]
+    corner = ends + np.sum(pull * rest, axis=1)
+
+    def solve_arrow(rx: Array, rt: Array) -> tuple[Array, Array]:
+        """Rows on axis 1: (P, k, n), (P, k)."""
+        t = (rt + np.einsum("pn,pkn->pk", pull, rx)) / corner[:, None]
+        return rx * inverse[:, None, :] + pull[:, None, :] * t[:, :, None], t
+
+    rows = np.concatenate([block.rows, block.noise_rows * np.sqrt(2.0)], axis=1)
+    zx, zt = solve_arrow(rows[:, :, :-1], rows[:, :, -1])
+    small = rows[:, :, :-1] @ zx.transpose(0, 2, 1) + rows[:, :, -1][:, :, None] * zt[:, None, :]
+    m, k = block.rows.shape[1], rows.shape[1]
+    index = np.arange(k)
+    small[:, index[:m], index[:m]] += slack[2] / dual[2]
+    small[:, index[m:], index[m:]] += 1.0
+    strength = np.concatenate([dual[2] / slack[2], np.ones((block.size, k - m))], axis=1)
+
+    def solve(rx: Array, rt: Array) -> tuple[Array, Array]:
+        yx, yt = solve_arrow(rx[:, None, :], rt[:, None])
+        yx, yt = yx[:, 0], yt[:, 0]
+        inner = np.einsum("pkn,pn->pk", rows[:, :, :-1], yx) + rows[:, :, -1] * yt[:, None]
+        inner = np.linalg.solve(small, inner[:, :, None])[:, :, 0]
+        return yx - np.einsum("pk,pkn->pn", inner, zx), yt - np.einsum("pk,pk->p", inner, zt)
+
+    def refine(yx: Array, yt: Array, rx: Array, rt: Array) -> tuple[Array, Array]:
+        """One step of iterative refinement: the Woodbury identity loses digits as boxes open up."""
+        inner = strength * (np.einsum("pkn,pn->pk", rows[:, :, :-1], yx) + rows[:, :, -1] * yt[:, None])
+        left = rx - (rest + cap) * yx + cap * yt[:, None] - np.einsum("pk,pkn->pn", inner, rows[:, :, :-1])
+        late = rt - (ends + cap.sum(axis=1)) * yt + np.sum(cap * yx, axis=1) - np.einsum("pk,pk->p", inner, rows[:, :, -1])
+        ex, et = solve(left, late)
+        return yx + ex, yt + et
+
+    def direction(push: list[Array]) -> tuple[Array, Array]:
+        """Newton step for complementarity targets ``push`` (s·z → push)."""
+        pull_back = [p / s for p, s in zip(push, slack, strict=True)]
+        rx = -gradient[:, :n] + pull_back[0] - pull_back[1]
+        rx = rx - np.einsum("pm,pmn->pn", pull_back[2], block.rows[:, :, :-1])
+        rt = -gradient[:, n] + pull_back[1].sum(axis=1) + pull_back[3][:, 0] - pull_back[4][:, 0]
+        rt = rt - np.einsum("pm,pm->p", pull_back[2], block.rows[:, :, -1])
+        if block.box is not None:
+            rx = rx - pull_back[5]
+        return refine(*solve(rx, rt), rx, rt)
+
+    def changes(dx: Array, dt: Array, push: list[Array]) -> tuple[list[Array], list[Array]]:
+        used = np.einsum("pmn,pn->pm", block.rows[:, :, :-1], dx) + block.rows[:, :, -1] * dt[:, None]
+        ds = [dx, dt[:, None] - dx, -used, dt[:, None], -dt[:, None]]
+        if block.box is not None:
+            ds.append(-dx)
+        dz = [(p - s * z - z * d) / s for p, s, z, d in zip(push, slack, dual, ds, strict=True)]
+        return ds, dz
+
+    zero = [np.zeros_like(s) for s in slack]
+    ds, dz = changes(*direction(zero), zero)
+    ahead_s, ahead_z = _step_length(slack, ds), _step_length(dual, dz)
+    mu_ahead = sum(
+        np.einsum("pk,pk->p", s + ahead_s[:, None] * a, z + ahead_z[:, None] * b)
+        for s, z, a, b in zip(slack, dual, ds, dz, strict=True)
+    ) / count
+    centre = (np.clip(mu_ahead / mu, 0.0, 1.0) ** 3 * mu)[:, None]
+    push = [centre - a * b for a, b in zip(ds, dz, strict=True)]
+    ds, dz = changes(*direction(push), push)
+    going = mu > tolerance
+    primal, back = _step_length(slack, ds), _step_length(dual, dz)
+    if block.noise_rows.shape[1]:  # the Hessian ties both steps together
+        primal = back = np.minimum(primal, back)
+    primal = np.where(going, 0.99 * primal, 0.0)[:, None]
+    back = np.where(going, 0.99 * back, 0.0)[:, None]
+    state.slack = [s + primal * a for s, a in zip(slack, ds, strict=True)]
+    state.dual = [z + back * b for z, b in zip(dual, dz, strict=True)]
+    return mu
+
+
+def junction_prices(program: Program, line: Line, t: Array) -> Array:
+    """Best heat multipliers ω of each LED once the other multipliers and an exposure guess are given. (P, n_leds)
+
+    At exposure ``t`` an LED fills its segments in order until its heat cap; the segment that is cut short sets
+    the price of heat, ``−cost/heat`` of that segment.
+    """
+    out = np.zeros((program.size, program.heat_cap.size))
+    capped = np.isfinite(program.heat_cap)
+    if not capped.any():
+        return out
+    cost = program.shot - line.theta[:, None] * program.signal
+    if np.isinf(line.theta).any():
+        raise ValueError("use theta = 0 and a negative signal as cost for the ceiling")
+    cost = cost + 2 * np.einsum("pr,prn->pn", line.noise, program.noise_rows)
+    cost = (cost + np.einsum("pm,pmn->pn", line.limit, program.rows))[:, :-1]
+    return _cut_prices(program, cost, t)
+
+
+def _cut_prices(program: Program, cost: Array, t: Array) -> Array:
+    """ω from the reduced cost of the segment at which each LED's heat runs out."""
+    out = np.zeros((cost.shape[0], program.heat_cap.size))
+    room, _ = segment_room(program, t)
+    cut = (room < program.width * t[:, None] * (1 - 1e-12)) & np.isfinite(program.heat_cap[program.led])
+    price = np.where(cut, np.maximum(-cost, 0.0) / np.maximum(program.heat, 1e-300), 0.0)
+    for led in np.flatnonzero(np.isfinite(program.heat_cap)):
+        out[:, led] = price[:, program.led == led].max(axis=1, initial=0.0)
+    return out
+
+
+@dataclass(frozen=True, slots=True)
+class Relaxed:
+    """Multipliers of a line (or ceiling) for each program and a feasible point each, (P, n+1)."""
+
+    line: Line
+    point: Array
+
+
+def relax(program: Program, theta: Array | None, iterations: int = 25, tolerance: float = 1e-7) -> Relaxed:
+    """Solve ``min (s − θ d)·y + |R y|²`` for each program, or ``min −d·y`` when ``theta`` is None.
+
+    ``theta``: (P,). Stops after ``iterations`` or when every program's mean complementarity, in unit scale, is below
+    ``tolerance``.
+    """
+    if theta is None:
+        cost, noise_rows = -program.signal, program.noise_rows[:, :0]
+    else:
+        cost, noise_rows = program.shot - theta[:, None] * program.signal, program.noise_rows
+    block, column = _scale(program, cost, noise_rows)
+    state = _State(block)
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+        for _ in range(iterations):
+            if np.max(_iterate(state, tolerance)) <= tolerance:
+                break
+    return _unscale(program, state, theta, column)
+
+
+def _unscale(program: Program, state: _State, theta: Array | None, column: Array) -> Relaxed:
+    """Return to SI units; broken numbers become the harmless multiplier 0 and the dark point."""
+    block = state.block
+    bounds = np.maximum(program.bounds, 1e-300)
+    limit = np.nan_to_num(state.dual[2] * block.unit[:, None] / bounds, nan=0.0, posinf=0.0)
+    t = np.nan_to_num(state.tau * program.time_high, nan=0.0)
+    t = np.clip(t, program.time_low, program.time_high)
+    q = np.nan_to_num(state.x, nan=0.0) * column[:, :-1]
+    room, _ = segment_room(program, t)
+    point = np.hstack([np.clip(q, 0.0, room), t[:, None]])
+    rank = program.noise_rows.shape[1]
+    noise = np.zeros((program.size, rank)) if theta is None else np.einsum("prn,pn->pr", program.noise_rows, point)
+    blank = np.zeros((program.size, program.heat_cap.size))
+    line = Line(theta=np.zeros(program.size) if theta is None else theta, limit=np.maximum(limit, 0.0), heat=blank, noise=noise)
+    if theta is None:
+        cost = (np.einsum("pm,pmn->pn", line.limit, program.rows) - program.signal)[:, :-1]
+        heat = _cut_prices(program, cost, t)
+    else:
+        heat = junction_prices(program, line, t)
+    return Relaxed(line=Line(theta=line.theta, limit=line.limit, heat=heat, noise=noise), point=point)
