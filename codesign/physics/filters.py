@@ -185,7 +185,7 @@ def bandpass(
     half = 0.5 * fwhm_nm / scale
     offset = np.abs(np.asarray(wavelength_nm, dtype=float) - center_nm) / scale
     # Numerator and denominator are multiplied by exp(-half) so that steep edges do not overflow.
-    small = np.exp(-min(half, _EXP_LIMIT))
+    small = np.exp(-min(half, 0.4 * _EXP_LIMIT))  # squared below
     top = 0.5 * (1.0 + small**2) - small
     rise = np.exp(np.clip(offset - half, -_EXP_LIMIT, _EXP_LIMIT))
     fall = np.exp(-np.minimum(offset + half, _EXP_LIMIT))

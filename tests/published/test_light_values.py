@@ -64,7 +64,7 @@ def test_responsivity_and_back(wavelength_nm, efficiency, expected, printed):
 
 
 def test_ohno_width_is_not_its_parameter(printed):
-    # Ohno 2005, Opt. Eng. 44(11) 111302, derived: half height of (g + 2 g^5)/3 at g = .808609, FWHM = .92182 w
+    # Ohno 2005, Opt. Eng. 44(11) 111302, derived: (g + 2 g^5)/3 = 1/2 at g = .808609, FWHM = .92182 w
     assert np.exp(-((light.OHNO_FWHM_FACTOR / 2) ** 2)) == pytest.approx(0.808609, abs=1e-6)
     assert printed(".92182") == light.OHNO_FWHM_FACTOR
 
