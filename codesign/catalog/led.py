@@ -134,13 +134,14 @@ class Led(Part):
         if self.radiant_flux_mw is not None:
             return self.radiant_flux_mw * 1e-3
         shape = self._shape
-        flux = float(radiant_flux_from_luminous(self.luminous_flux_lm, shape.wavelength_nm, shape.values))
+        with np.errstate(divide="ignore"):  # no visible light at all gives infinity, refused below
+            flux = float(radiant_flux_from_luminous(self.luminous_flux_lm, shape.wavelength_nm, shape.values))
         electrical = self.forward_voltage_v * self.rated_current_ma * 1e-3
         if not flux < electrical:
             raise self.error(
-                f"luminous_flux_lm is {self.luminous_flux_lm:g}, that is {flux:.3g} W of light, must be below "
-                f"the {electrical:.3g} W that rated_current_ma times forward_voltage_v puts in; "
-                "state radiant_flux_mw for an LED the eye hardly sees"
+                f"luminous_flux_lm is {self.luminous_flux_lm:g}, that is {flux:.3g} W of light, must be "
+                f"below the {electrical:.3g} W that rated_current_ma times forward_voltage_v puts in; "
+                "state radiant_flux_mw where the eye hardly sees"
             )
         return flux
 

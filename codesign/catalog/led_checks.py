@@ -78,7 +78,7 @@ def check_flux_curve(led: Led) -> None:
 
 
 def _check_slopes(current: FloatArray, flux: FloatArray, power: FloatArray) -> None:
-    """Flux must rise and bend down, power bend up: else the straight-segment drive would not fill in order."""
+    """Flux must rise and bend down, power bend up: else the segments would not fill in order."""
     slope = np.diff(flux) / np.diff(current)
     if not (slope > 0).all():
         i = int(np.argmin(slope > 0))
