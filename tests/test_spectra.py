@@ -91,7 +91,9 @@ def test_unusable_curves_are_refused(wavelength, values, words):
         Spectrum(wavelength, values, "x")
 
 
-@pytest.mark.parametrize(("lo", "hi", "step", "count"), [(400, 700, 5, 61), (400, 700, 7, 44), (400, 401, 5, 2)])
+@pytest.mark.parametrize(
+    ("lo", "hi", "step", "count"), [(400, 700, 5, 61), (400, 700, 7, 44), (400, 401, 5, 2)]
+)
 def test_grid_holds_both_ends_and_never_steps_wider(lo, hi, step, count):
     grid = wavelength_grid(lo, hi, step)
     assert grid[0] == lo and grid[-1] == hi and grid.size == count
@@ -114,7 +116,9 @@ def test_trapezoid_weights_give_the_trapezoid_integral_on_uneven_grids():
 
 def test_table_reads_comments_bom_blank_lines_and_crlf(tmp_path):
     path = tmp_path / "t.csv"
-    path.write_bytes("\ufeff# measured today\r\nwavelength_nm, a ,b\r\n\r\n400,1,2\r\n# gap\r\n500,3,4\r\n".encode())
+    path.write_bytes(
+        "\ufeff# measured today\r\nwavelength_nm, a ,b\r\n\r\n400,1,2\r\n# gap\r\n500,3,4\r\n".encode()
+    )
     table = read_table(path)
     assert table.names == ("a", "b")
     assert table.lines == (4, 6)
