@@ -148,6 +148,14 @@ def test_curve_file_with_several_columns_needs_a_choice(folder):
     assert "curves/led.csv has columns a, b" in message and "column = '...'" in message
 
 
+def test_led_curve_cut_off_inside_its_emission_is_refused(folder):
+    (folder / "curves" / "led.csv").write_text("wavelength_nm,a\n400,0\n500,1\n550,0.4\n", encoding="utf-8")
+    write_part(folder, "led", {**LED, **NO_MODEL, "curve": "curves/led.csv"})
+    message = message_of(folder)
+    assert "curves/led.csv: curve is at 0.4 of its peak where it ends at 550 nm" in message
+    assert "must be <= 0.1" in message and "whole emission" in message
+
+
 def test_dark_led_curve_is_refused(folder):
     (folder / "curves" / "led.csv").write_text("wavelength_nm,a\n400,0\n500,0\n", encoding="utf-8")
     write_part(folder, "led", {**LED, **NO_MODEL, "curve": "curves/led.csv"})
@@ -175,6 +183,11 @@ FOLDER_CASES = {
         "filters.csv",
         "id,kind,source\nx,none\n",
         ["filters.csv: filter 'x': row and header differ"],
+    ),
+    "column twice": (
+        "filters.csv",
+        "id,kind,kind\nx,none,none\n",
+        ["filters.csv: column 'kind' appears twice"],
     ),
     "text in a table": (
         "filters.csv",

@@ -238,6 +238,11 @@ PART_CASES = {
         },
         ["channels[0].silicon", "gate_layer_um is 0.1, must be 0 unless pixel is 'mos'"],
     ),
+    "empty curve path": (
+        "surface",
+        {"curve": ""},
+        ["curve is '', must not be empty", "CSV with wavelength_nm"],
+    ),
     "unknown unit": ("surface", {"unit": "pct"}, ["unit is 'pct', must be 'percent' or 'fraction'"]),
     "no unit": ("surface", {"unit": None}, ["unit is missing"]),
     "gloss in percent": ("surface", {"specular_reflectance": 4}, ["specular_reflectance is 4, must be <= 1"]),

@@ -46,7 +46,9 @@ class Channel(Record):
     """One colour channel: a measured curve or the silicon model."""
 
     name: str = Field(min_length=1, description="'mono', 'red', ...")
-    curve: str | None = Field(default=None, description="CSV with wavelength_nm and the response")
+    curve: str | None = Field(
+        default=None, min_length=1, description="CSV with wavelength_nm and the response"
+    )
     column: str | None = Field(default=None, description="column of the curve file, when it has several")
     quantity: Literal["quantum_efficiency", "responsivity_a_per_w"] | None = Field(
         default=None, description="what the curve holds"

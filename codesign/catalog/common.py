@@ -147,24 +147,17 @@ def check_share(table: Table, unit: str, *, top: float = 1.0) -> None:
     """
     values = table.spectrum.values
     table.require(values >= 0, "must be >= 0; subtract the dark reading or clip measured noise")
+    calibrate = "measure against a calibrated reference"
     if unit == "fraction":
-        if values.max() > top and values.max() > 1.5:
-            table.require(
-                values <= top, f'must be <= {top:g} as a fraction: looks like percent; unit = "percent"'
-            )
-        table.require(
-            values <= top, f"must be <= {top:g} as a fraction; measure against a calibrated reference"
+        advice = 'looks like percent, then state unit = "percent"' if values.max() > 1.5 else calibrate
+        table.require(values <= top, f"must be <= {top:g} as a fraction; {advice}")
+        return
+    table.require(values <= 100 * top, f"must be <= {100 * top:g} percent; {calibrate}")
+    if 0 < values.max() <= 1:
+        raise CatalogError(
+            f"{table.label}: largest value is {values.max():g} percent; "
+            'looks like a fraction, then state unit = "fraction"'
         )
-    else:
-        limit = 100 * top
-        table.require(
-            values <= limit, f"must be <= {limit:g} percent; measure against a calibrated reference"
-        )
-        if 0 < values.max() <= 1:
-            raise CatalogError(
-                f"{table.label}: largest value is {values.max():g} percent: looks like a fraction; "
-                'state unit = "fraction"'
-            )
 
 
 def percent_factor(unit: str) -> float:
@@ -202,7 +195,8 @@ def _resolve(loc: tuple[int | str, ...], model: type[BaseModel]) -> tuple[str, t
         if isinstance(step, int):
             key += f"[{step}]"
             continue
-        holder = _nested_model(holder, name) or holder if name else holder
+        if name:
+            holder = _nested_model(holder, name) or holder
         key, name = (f"{key}.{step}" if key else step), step
     return key, holder, name
 

@@ -52,6 +52,7 @@ class Filter(Part):
 
     kind: FilterKind = Field(description="how the filter is described")
     curve: str | None = Field(
+        min_length=1,
         default=None,
         description="CSV with wavelength_nm and transmittance (for glass: internal transmittance)",
     )

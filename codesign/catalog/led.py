@@ -26,6 +26,8 @@ SUPPORT_WIDTHS = 6.0
 POINTS_PER_WIDTH = 60
 # Share of the flux left out on either side of the support.
 SUPPORT_TAIL = 0.0005
+# A measured curve must fall to this share of its peak at both ends.
+LARGEST_END = 0.1
 
 
 class PulseBracket(Record):
@@ -47,7 +49,9 @@ class Led(Part):
 
     peak_nm: float | None = Field(default=None, ge=150, le=20000, description="peak wavelength [nm]")
     fwhm_nm: float | None = Field(default=None, gt=0, le=500, description="full width at half maximum [nm]")
-    curve: str | None = Field(default=None, description="CSV with wavelength_nm and the relative spectrum")
+    curve: str | None = Field(
+        default=None, min_length=1, description="CSV with wavelength_nm and the relative spectrum"
+    )
     column: str | None = Field(default=None, description="column of the curve file, when it has several")
     radiant_flux_mw: float | None = Field(default=None, gt=0, description="at rated current [mW]")
     radiant_flux_w: float | None = Field(default=None, gt=0, description="at rated current [W]")
@@ -119,7 +123,19 @@ class Led(Part):
         table.require(table.spectrum.values >= 0, "must be >= 0; subtract the dark reading or clip noise")
         if not table.spectrum.values.max() > 0:
             raise self.error(f"{self.curve}: all values are 0, must hold some light")
-        return table.column(table.names[0])
+        shape = table.column(table.names[0])
+        self._check_whole(shape)
+        return shape
+
+    def _check_whole(self, shape: Spectrum) -> None:
+        """Flux is stated for the whole emission, so a curve cut off inside it would be scaled up wrongly."""
+        for end in (0, -1):
+            share = shape.values[end] / shape.values.max()
+            if share > LARGEST_END:
+                raise self.error(
+                    f"{self.curve}: curve is at {share:.2g} of its peak where it ends at "
+                    f"{shape.wavelength_nm[end]:g} nm, must be <= {LARGEST_END:g}; measure the whole emission"
+                )
 
     def _model_shape(self) -> Spectrum:
         reach = SUPPORT_WIDTHS * self.fwhm_nm

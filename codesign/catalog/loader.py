@@ -181,8 +181,13 @@ def _read_csv_parts(path: Path, kind: str, root: Path) -> Parts:
     """Read a table with one part per row; empty cells are left out, lists are written as JSON."""
     text = path.read_text(encoding="utf-8-sig")
     lines = [line for line in text.splitlines() if line.strip() and not line.lstrip().startswith("#")]
+    reader = csv.DictReader(lines, skipinitialspace=True)
+    columns = list(reader.fieldnames or ())
+    repeated = next((column for column in columns if columns.count(column) > 1), None)
+    if repeated is not None:
+        raise CatalogError(f"{path.name}: column {repeated!r} appears twice; remove one")
     rows = []
-    for row in csv.DictReader(lines, skipinitialspace=True):
+    for row in reader:
         name = row.get("id") or "?"
         if None in row or None in row.values():
             raise CatalogError(

@@ -24,7 +24,7 @@ class Surface(Part):
 
     table_name: ClassVar[str] = "surface"
 
-    curve: str = Field(description="CSV with wavelength_nm and one column per measured sample")
+    curve: str = Field(min_length=1, description="CSV with wavelength_nm and one column per measured sample")
     unit: Literal["percent", "fraction"] = Field(description="unit of the curve")
     columns: tuple[str, ...] | None = Field(
         default=None, min_length=1, description="columns that are samples of this surface; all by default"
