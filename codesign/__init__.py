@@ -1,0 +1,40 @@
+"""Certified choice of LEDs, drive currents, filter, camera and exposure for hard-to-see defects."""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import Any
+
+__version__ = "0.1.0"
+
+#: Public names and the module each comes from; imported on first use, so that `cnr --help` stays quick.
+_PUBLIC = {
+    "Design": "codesign.design",
+    "Performance": "codesign.design",
+    "Problem": "codesign.problem",
+    "Solution": "codesign.solve",
+    "build_problem": "codesign.problem",
+    "errors": "codesign",
+    "evaluate": "codesign.design",
+    "load_catalog": "codesign.catalog",
+    "load_problem": "codesign.problem",
+    "load_recipe": "codesign.report.recipe_file",
+    "solution_dict": "codesign.report.machine",
+    "solution_text": "codesign.report.text",
+    "solve": "codesign.solve",
+    "verify": "codesign.verify",
+}
+
+__all__ = sorted(_PUBLIC)
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _PUBLIC:
+        raise AttributeError(f"module 'codesign' has no attribute {name!r}")
+    if name == "errors":
+        return import_module("codesign.errors")
+    return getattr(import_module(_PUBLIC[name]), name)
+
+
+def __dir__() -> list[str]:
+    return __all__

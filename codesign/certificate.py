@@ -1,14 +1,20 @@
 """Rigorous upper bounds on the CNR, from arrays and multipliers alone: the proof and its checker.
 
 For one program let ``H(v)`` be the least signal-dependent variance ``s·y + |R y|²`` of any feasible ``y``
-with signal ``d·y = v``. ``H`` is convex, and the best CNR² is the maximum of ``v²/(c + H(v))``. Any
-multipliers (θ, λ ≥ 0, ω ≥ 0, g) give, by weak duality and ``|x|² ≥ 2 g·x − |g|²``, a straight line below ``H``:
+with signal ``d·y = v``. The best CNR² is the maximum of ``v²/(c + H(v))``. By weak duality and
+``|x|² ≥ 2 g·x − |g|²``, any multipliers (θ, λ ≥ 0, ω ≥ 0, g) give a straight line below the convex ``H``:
 
-    H(v) ≥ θ v + α,   α = −|g|² − λ·b − ω·heat_cap + min over the remaining boxes of (s + 2Rᵀg − θ d + Aᵀλ + ω heat)·y
+    H(v) ≥ θ v + α,   α = m − λ·b − ω·heat_cap − |g|²,   m = min over the boxes of (s + 2Rᵀg − θ d + Aᵀλ + ω heat)·y.
 
-and any (λ, ω) a ceiling ``v ≤ U``. Between two crossings of the lines ``v²/(c + line)`` is convex, so the
-bound is the largest value at the crossings and at ``U``. No solver is imported here; a wrong or sloppy
-multiplier can only make the bound worse, never wrong.
+The same multipliers, scaled down together with the signal, give a parabola below ``H``. With ``σ₀ = min_j s_j/d_j``
+(so that ``s − σ₀ d ≥ 0``) and any anchor ``v₀ > 0``, using ``σ·(θ, λ, ω, g)`` for ``σ = v/v₀`` and adding
+``(1−σ)·σ₀`` to the slope:
+
+    H(v) ≥ k v² + e v  for 0 ≤ v ≤ v₀,   k = (θ − σ₀ − |g|²/v₀)/v₀,   e = σ₀ + (α + |g|²)/v₀.
+
+It touches the line at ``v₀`` and follows noise that grows with the signal (PRNU, clutter) where a line cannot.
+Finally any (λ, ω) give a ceiling ``v ≤ U``. The bound on CNR is the largest ``v²/(c + best curve)`` up to ``U``.
+No solver is imported here; a wrong or sloppy multiplier can only make the bound worse, never wrong.
 """
 
 from __future__ import annotations
@@ -26,17 +32,21 @@ FEASIBILITY_TOLERANCE = 1e-9
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Line:
-    """Multipliers of one line below ``H`` for each of P programs: θ (P,), λ (P, m), ω (P, n_leds), g (P, r)."""
+    """Multipliers of one line below ``H`` for each of P programs, and the anchor of its parabola.
+
+    ``theta`` (P,), ``limit`` λ (P, m), ``heat`` ω (P, n_leds), ``noise`` g (P, r), ``anchor`` v₀ > 0 (P,).
+    """
 
     theta: Array
     limit: Array
     heat: Array
     noise: Array
+    anchor: Array
 
     def take(self, index) -> Line:
         """Return the multipliers of the programs at ``index``."""
         index = np.atleast_1d(index)
-        return Line(theta=self.theta[index], limit=self.limit[index], heat=self.heat[index], noise=self.noise[index])
+        return Line(**{name: getattr(self, name)[index] for name in self.__slots__})
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -95,33 +105,94 @@ def signal_ceiling(program: Program, line: Line) -> Array:
     return _price(program, line) - box_minimum(program, _charge_cost(program, line, -program.signal))
 
 
-def envelope(floor: Array, ceiling: Array, theta: Array, alpha: Array) -> tuple[Array, Array]:
-    """Largest ``v²/(c + max_k(α_k + θ_k v))`` over 0 ≤ v ≤ U, and where.
+def least_shot_ratio(program: Program) -> Array:
+    """σ₀: least shot-noise variance per signal of any column, so that ``s − σ₀ d ≥ 0``. (P,)"""
+    positive = program.signal > 0
+    ratio = np.divide(program.shot, program.signal, out=np.full_like(program.shot, np.inf), where=positive)
+    least = np.min(ratio, axis=1)
+    return np.where(np.isfinite(least), least, 0.0)
 
-    ``floor`` and ``ceiling`` are (P,), ``theta`` and ``alpha`` (P, K). The line 0 (variance is never negative)
-    is always among them. Returns the bound on CNR (not squared) and its ``v``, both (P,).
-    """
-    zero = np.zeros((floor.size, 1))
-    theta, alpha = np.hstack([zero, theta]), np.hstack([zero, alpha])
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Curves:
+    """Lower curves of ``H``: lines ``θ v + α`` and parabolas ``k v² + e v`` up to their anchors, each (P, K)."""
+
+    theta: Array
+    alpha: Array
+    k: Array
+    e: Array
+    anchor: Array
+
+
+def curves(program: Program, lines: tuple[Line, ...]) -> Curves:
+    """Work out lines and parabolas of a proof from its multipliers. [e⁻²]"""
+    theta = np.stack([line.theta for line in lines], axis=1)
+    alpha = np.stack([intercept(program, line) for line in lines], axis=1)
+    anchor = np.stack([line.anchor for line in lines], axis=1)
+    square = np.stack([np.einsum("pr,pr->p", line.noise, line.noise) for line in lines], axis=1)
+    if not (anchor > 0).all():
+        raise CertificateError("certificate: an anchor is not positive; the bound is rejected")
+    shot = least_shot_ratio(program)[:, None]
+    return Curves(
+        theta=theta,
+        alpha=alpha,
+        anchor=anchor,
+        k=(theta - shot - square / anchor) / anchor,
+        e=shot + (alpha + square) / anchor,
+    )
+
+
+def _break_points(found: Curves, top: Array) -> Array:
+    """Ascending signals 0 .. U between which no two lines cross and no parabola ends. (P, M)"""
+    theta = np.hstack([np.zeros_like(top), found.theta])
+    alpha = np.hstack([np.zeros_like(top), found.alpha])
     first, second = np.triu_indices(theta.shape[1], 1)
     slope = theta[:, second] - theta[:, first]
-    cross = np.divide(
-        alpha[:, first] - alpha[:, second], slope, out=np.zeros_like(slope), where=np.abs(slope) > 0
+    offset = alpha[:, first] - alpha[:, second]
+    cross = np.divide(offset, slope, out=np.zeros_like(slope), where=np.abs(slope) > 0)
+    inner = np.clip(np.hstack([cross, found.anchor]), 0.0, top)
+    return np.sort(np.hstack([np.zeros_like(top), inner, top]), axis=1)
+
+
+def envelope(floor: Array, ceiling: Array, found: Curves) -> tuple[Array, Array]:
+    """Largest ``v²/(c + best curve)`` over 0 ≤ v ≤ U, and a signal near which it is reached.
+
+    On each stretch between break points the best single curve counts: a line takes its largest ratio at an end
+    (the ratio is convex), a parabola where ``c z² + e z + k`` with z = 1/v is least. ``H ≥ 0`` is always known.
+    Returns the bound on CNR (not squared) and the signal, both (P,).
+    """
+    points = _break_points(found, np.maximum(ceiling, 0.0)[:, None])
+    low, high = points[:, :-1, None], points[:, 1:, None]
+    c = floor[:, None, None]
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        best, where = high**2 / c, high
+        for end in (low, high):
+            height = c + found.alpha[:, None, :] + found.theta[:, None, :] * end
+            ratio = np.where(height > 0, end**2 / height, np.inf)
+            if end is low:
+                at_low = ratio
+        lines = np.maximum(at_low, ratio)
+        z_low, z_high = 1.0 / high, 1.0 / low
+        z = np.clip(-found.e[:, None, :] / (2 * c), z_low, z_high)
+        quadratic = c * z**2 + found.e[:, None, :] * z + found.k[:, None, :]
+        usable = (high <= found.anchor[:, None, :] * (1 + 1e-12)) & (quadratic > 0)
+        parabolas = np.where(usable, 1.0 / quadratic, np.inf)
+    stretch = np.minimum(
+        best[:, :, 0], np.minimum(lines.min(axis=2), np.nan_to_num(parabolas, nan=np.inf).min(axis=2))
     )
-    top = np.maximum(ceiling, 0.0)[:, None]
-    points = np.hstack([top, np.clip(cross, 0.0, top)])
-    lines = np.max(alpha[:, None, :] + theta[:, None, :] * points[:, :, None], axis=2)
-    value = points**2 / (floor[:, None] + lines)
-    best = np.argmax(value, axis=1)
-    pick = np.arange(floor.size)
-    return np.sqrt(value[pick, best]), points[pick, best]
+    stretch = np.where(points[:, 1:] > points[:, :-1], stretch, 0.0)
+    pick, row = np.argmax(stretch, axis=1), np.arange(floor.size)
+    left = (low[row, pick, 0] > 0) & (at_low.min(axis=2)[row, pick] > ratio.min(axis=2)[row, pick])
+    signal = np.where(left, low[row, pick, 0], where[row, pick, 0])
+    return np.sqrt(stretch[row, pick]), signal
 
 
 def bound(program: Program, proof: Proof) -> Array:
     """Upper bound on the CNR of each program that follows from its proof. (P,)"""
-    theta = np.stack([line.theta for line in proof.lines], axis=1)
-    alpha = np.stack([intercept(program, line) for line in proof.lines], axis=1)
-    return envelope(program.floor, signal_ceiling(program, proof.ceiling), theta, alpha)[0]
+    top = signal_ceiling(program, proof.ceiling)
+    if not proof.lines:
+        return np.where(top > 0, np.maximum(top, 0.0) / np.sqrt(program.floor), 0.0)
+    return envelope(program.floor, top, curves(program, proof.lines))[0]
 
 
 def check_point(program: Program, y: Array, claimed: float) -> float:
@@ -134,7 +205,9 @@ def check_point(program: Program, y: Array, claimed: float) -> float:
         raise CertificateError(f"certificate: the recipe exceeds a limit by {excess:.2e} of it")
     actual = float(contrast_to_noise(program, y[None])[0])
     if not abs(actual - claimed) <= 1e-9 * max(abs(actual), 1e-12):
-        raise CertificateError(f"certificate: the recipe's CNR is {actual:.12g}, not the claimed {claimed:.12g}")
+        raise CertificateError(
+            f"certificate: the recipe's CNR is {actual:.12g}, not the claimed {claimed:.12g}"
+        )
     return actual
 
 
@@ -143,5 +216,7 @@ def check_bound(program: Program, proof: Proof, claimed: float) -> Array:
     proven = bound(program, proof)
     worst = float(np.max(proven, initial=-np.inf))
     if not worst <= claimed * (1 + 1e-12):
-        raise CertificateError(f"certificate: the proof reaches only {worst:.12g}, not the claimed bound {claimed:.12g}")
+        raise CertificateError(
+            f"certificate: the proof reaches only {worst:.12g}, not the claimed bound {claimed:.12g}"
+        )
     return proven

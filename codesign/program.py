@@ -36,7 +36,8 @@ class Program:
     floor : (P,) array
         ``c`` > 0: variance without light. [e⁻²]
     rows, bounds : (P, m, n+1), (P, m) arrays
-        ``A ≥ 0`` and ``b``: limits that couple the LEDs (well, rig heat, supply).
+        ``A`` and ``b ≥ 0``: limits that couple the LEDs (well, rig heat, supply). Charge entries are ≥ 0; the time
+        entry of a bound on power while on is negative.
     row_names : tuple of str
         m names.
     width : (n,) array
@@ -96,7 +97,9 @@ def stack(blocks: list[Program]) -> Program:
 def variance(program: Program, y: Array) -> Array:
     """Mean noise variance ``c + s·y + |R y|²`` of each program. ``y``: (P, n+1). [e⁻²]"""
     quadratic = np.einsum("prn,pn->pr", program.noise_rows, y)
-    return program.floor + np.einsum("pn,pn->p", program.shot, y) + np.einsum("pr,pr->p", quadratic, quadratic)
+    return (
+        program.floor + np.einsum("pn,pn->p", program.shot, y) + np.einsum("pr,pr->p", quadratic, quadratic)
+    )
 
 
 def contrast_to_noise(program: Program, y: Array) -> Array:
@@ -110,10 +113,14 @@ def violation(program: Program, y: Array) -> Array:
     ``y`` has shape (P, n+1). Each constraint is divided by its own bound, so that 1e-9 means one part in 10⁹.
     """
     q, t = y[:, :-1], y[:, -1:]
-    scale = np.where(program.bounds > 0, program.bounds, 1.0)
+    scale = row_scale(program)
     worst = [
         np.max((np.einsum("pmn,pn->pm", program.rows, y) - program.bounds) / scale, axis=1, initial=-np.inf),
-        np.max(q / (program.width * program.time_high[:, None]) - t / program.time_high[:, None], axis=1, initial=-np.inf),
+        np.max(
+            q / (program.width * program.time_high[:, None]) - t / program.time_high[:, None],
+            axis=1,
+            initial=-np.inf,
+        ),
         np.max(-q / (program.width * program.time_high[:, None]), axis=1, initial=-np.inf),
         (t[:, 0] - program.time_high) / program.time_high,
         (program.time_low - t[:, 0]) / program.time_high,
@@ -123,6 +130,12 @@ def violation(program: Program, y: Array) -> Array:
         heat = led_heat(program, q)[:, finite] / program.heat_cap[finite]
         worst.append(np.max(heat - 1.0, axis=1))
     return np.max(worst, axis=0)
+
+
+def row_scale(program: Program) -> Array:
+    """Size of each coupling row's right-hand side, (P, m): its bound, or what a bound per second comes to."""
+    per_second = np.maximum(-program.rows[:, :, -1], 0.0)
+    return np.maximum(program.bounds + per_second * program.time_high[:, None], 1e-300)
 
 
 def led_heat(program: Program, q: Array) -> Array:

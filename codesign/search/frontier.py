@@ -12,12 +12,18 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from codesign.certificate import Line, Proof, bound, envelope, intercept, signal_ceiling
+from codesign.certificate import Line, Proof, bound, curves, envelope, signal_ceiling
 from codesign.program import Array, Program, contrast_to_noise, variance
 from codesign.search.relaxation import ConvexSlice
 
 #: A frontier walk needs 3 to 8 lines; this stops a stalled one, whose honest gap is then reported.
 LARGEST_NUMBER_OF_LINES = 60
+#: Rounds of bringing in columns for one convex program.
+LARGEST_NUMBER_OF_PRICINGS = 20
+#: Share by which a signal ceiling may be too high.
+LOOSE_CEILING = 0.1
+#: LEDs to start with by each of three scores.
+COLUMNS_BY_EACH_SCORE = 3
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -35,22 +41,33 @@ class Certified:
         return self.bound / self.value - 1.0 if self.value > 0 else (0.0 if self.bound <= 0 else np.inf)
 
 
-class _Walk:
-    """Lines and touching points collected so far."""
+@dataclass(frozen=True, slots=True)
+class Hint:
+    """Where to start: multipliers of a signal ceiling, LEDs worth having and a likely CNR; all only suggestions."""
 
-    def __init__(self, program: Program) -> None:
+    ceiling: Line
+    leds: np.ndarray
+    promise: float
+
+
+class _Walk:
+    """Lines and touching points collected so far, over a growing set of columns."""
+
+    def __init__(self, program: Program, tolerance: float, hint: Hint | None) -> None:
         self.program = program
-        self.slice = ConvexSlice(program)
+        self.tolerance = tolerance
+        self.columns = (
+            promising_columns(program) if hint is None else np.flatnonzero(np.isin(program.led, hint.leds))
+        )
+        self.slice = ConvexSlice(program, self.columns)
         self.lines: list[Line] = []
-        self.alphas: list[float] = []
         self.touch: list[tuple[float, float]] = []  # (signal, signal-dependent variance)
         self.best = -np.inf
         self.point = np.append(np.zeros(program.segments), program.time_low)
         self.offer(self.point)
-        ceiling, top = self.slice.solve(None)
-        self.ceiling = ceiling
-        self.limit = float(signal_ceiling(program, ceiling)[0])
-        self.offer(top)
+        self.ceiling = self.priced(None) if hint is None else hint.ceiling
+        self.touch.clear()  # neither of the two points is on the frontier
+        self.limit = float(signal_ceiling(program, self.ceiling)[0])
 
     def offer(self, y: Array) -> None:
         """Take a feasible point: keep it if it is the best, and remember where it touches the frontier."""
@@ -60,41 +77,94 @@ class _Walk:
         if value > self.best:
             self.best, self.point = value, y
 
+    def priced(self, theta: float | None) -> Line:
+        """Solve at slope ``theta``, bringing in columns until none left out could matter."""
+        for _ in range(LARGEST_NUMBER_OF_PRICINGS):
+            line, y = self.slice.solve(theta)
+            gain = self._gain_outside(line, theta)
+            spread = (
+                abs(float(self.program.signal[0] @ y))
+                if theta is None
+                else float(variance(self.program, y[None])[0])
+            )
+            # A loose ceiling costs little: lines and parabolas bend the bound down well before it.
+            if gain.sum() <= (LOOSE_CEILING if theta is None else self.tolerance) * spread:
+                break
+            led = self.program.led
+            by_led = np.bincount(led, gain, minlength=self.program.heat_cap.size)
+            chosen = by_led >= max(0.2 * by_led.max(), 1e-300)
+            self.columns = np.union1d(self.columns, np.flatnonzero(chosen[led]))
+            self.slice = ConvexSlice(self.program, self.columns)
+        self.offer(y)
+        return line
+
+    def _gain_outside(self, line: Line, theta: float | None) -> Array:
+        """What each column left out could lower the line by, at most. (n,)"""
+        program = self.program
+        cost = -program.signal[0] if theta is None else program.shot[0] - theta * program.signal[0]
+        if theta is not None:
+            cost = cost + 2 * line.noise[0] @ program.noise_rows[0]
+        cost = (cost + line.limit[0] @ program.rows[0])[:-1]
+        gain = np.maximum(-cost, 0.0) * program.width * program.time_high[0]
+        gain[self.columns] = 0.0
+        return gain
+
     def add(self, theta: float) -> None:
         """Touch the frontier at slope ``theta``."""
-        line, y = self.slice.solve(theta)
-        self.lines.append(line)
-        self.alphas.append(float(intercept(self.program, line)[0]))
-        self.offer(y)
+        self.lines.append(self.priced(theta))
 
     def peak(self) -> tuple[float, float]:
         """Present bound and the signal at which it is reached."""
-        theta = np.array([[line.theta[0] for line in self.lines]])
-        value, v = envelope(self.program.floor, np.array([self.limit]), theta, np.array([self.alphas]))
+        found = curves(self.program, tuple(self.lines))
+        value, v = envelope(self.program.floor, np.array([self.limit]), found)
         return float(value[0]), float(v[0])
 
-    def next_slope(self, v: float) -> float:
-        """Slope that tests the stretch around ``v`` between the nearest points already touched."""
-        floor = float(self.program.floor[0])
-        below = max((p for p in self.touch if p[0] <= v), default=(0.0, 0.0))
-        above = min((p for p in self.touch if p[0] > v), default=None)
-        thetas = sorted(float(line.theta[0]) for line in self.lines)
-        lines = np.array([a + t * v for a, t in zip(self.alphas, [float(x.theta[0]) for x in self.lines], strict=True)])
-        active = float(self.lines[int(np.argmax(lines))].theta[0]) if lines.size and lines.max() > 0 else 0.0
-        low = max((t for t in thetas if t <= active * (1 - 1e-12)), default=0.0)
-        high = min((t for t in thetas if t >= active * (1 + 1e-12)), default=np.inf)
-        target = max(self.best, 1e-300) ** 2
-        end = above if above is not None else (max(self.limit, v), None)
-        slope = (below[0] + end[0]) / target
-        if not low < slope < high or any(abs(slope - t) <= 1e-9 * t for t in thetas):
-            if above is not None and above[0] > below[0]:
-                slope = (above[1] - below[1]) / (above[0] - below[0])
-            else:
-                slope = 2.0 * max(thetas[-1], (floor + below[1]) / max(v, 1e-300))
-        return slope
+    def next_slope(self, v: float) -> float | None:
+        """Slope that tests the stretch around ``v`` between the nearest points already touched, None when there is none.
+
+        Best is the slope of the chord of the level curve ``v²/CNR²`` over the stretch, as long as it lies between the
+        slopes that touched its ends; the chord of the frontier itself always does.
+        """
+        touch = sorted(zip(self.touch, (float(line.theta[0]) for line in self.lines), strict=True))
+        below, flattest = max((p for p in touch if p[0][0] <= v * (1 - 1e-9)), default=((0.0, 0.0), 0.0))
+        above, steepest = min((p for p in touch if p[0][0] > v * (1 + 1e-9)), default=(None, np.inf))
+        if above is None:
+            level = (below[0] + max(self.limit, v)) / max(self.best, 1e-300) ** 2
+            return max(level, 2.0 * max(flattest, 1e-300))
+        slope = (below[0] + above[0]) / max(self.best, 1e-300) ** 2
+        margin = 1e-6 * (steepest - flattest)
+        if not flattest + margin < slope < steepest - margin:
+            slope = (above[1] - below[1]) / (above[0] - below[0])
+        return slope if flattest + margin < slope < steepest - margin else None
 
 
-def certify(program: Program, gap: float = 1e-3, target: float = 0.0) -> Certified:
+def promising_columns(program: Program) -> np.ndarray:
+    """Segments of the LEDs worth starting with: most signal, and least noise per signal."""
+    signal = np.maximum(program.signal[0, :-1], 0.0)
+    reach = signal * program.width
+    leds = program.heat_cap.size
+    light = np.bincount(program.led, reach, minlength=leds)
+    square = np.einsum("rn,rn->n", program.noise_rows[0][:, :-1], program.noise_rows[0][:, :-1])
+    with np.errstate(divide="ignore", invalid="ignore"):
+        clean = np.where(
+            reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal**2 / (square + 1e-300), 0.0
+        )
+        shot = np.where(
+            reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal / program.shot[0, :-1], 0.0
+        )
+    chosen = np.zeros(leds, dtype=bool)
+    for score in (light, _best_of(program.led, clean, leds), _best_of(program.led, shot, leds)):
+        chosen[np.argsort(-score)[:COLUMNS_BY_EACH_SCORE]] = True
+    return np.flatnonzero(chosen[program.led])
+
+
+def _best_of(led: np.ndarray, score: Array, leds: int) -> Array:
+    best = np.zeros(leds)
+    np.maximum.at(best, led, np.nan_to_num(score))
+    return best
+
+
+def certify(program: Program, gap: float = 1e-3, target: float = 0.0, hint: Hint | None = None) -> Certified:
     """Best recipe of one program with a bound at most ``gap`` above it, or above ``target`` if that is larger.
 
     Parameters
@@ -105,20 +175,21 @@ def certify(program: Program, gap: float = 1e-3, target: float = 0.0) -> Certifi
         Relative gap to prove. [1]
     target : float
         CNR already reached elsewhere: the walk stops early once this program cannot beat it.
+    hint : Hint, optional
+        Where to start, from a cheaper bound.
     """
-    walk = _Walk(program)
+    walk = _Walk(program, 0.05 * gap, hint)
     if walk.limit <= 0:
         proof = Proof(ceiling=walk.ceiling, lines=())
         return Certified(point=walk.point, value=walk.best, bound=0.0, proof=proof)
-    first = max(walk.best, target * 1e-3, 1e-300) ** 2
-    for theta in (2 * walk.limit / first, walk.limit / first):
-        walk.add(theta)
+    likely = max(walk.best, hint.promise if hint is not None else 0.0, 1e-3 * target, 1e-12)
+    walk.add(2 * walk.limit / likely**2)
     for _ in range(LARGEST_NUMBER_OF_LINES):
         value, v = walk.peak()
         if value <= max(walk.best, target) * (1 + gap):
             break
         slope = walk.next_slope(v)
-        if any(abs(slope - float(x.theta[0])) <= 1e-10 * slope for x in walk.lines):
+        if slope is None:
             break
         walk.add(slope)
     proof = Proof(ceiling=walk.ceiling, lines=tuple(walk.lines))

@@ -11,12 +11,13 @@ arrow plus a few rows, so one step costs O(n·(m+r)) per program and is all arra
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from codesign.certificate import Line
-from codesign.program import Array, Program, segment_room
+from codesign.program import Array, Program, row_scale, segment_room
+from codesign.search.bounds import cut_prices, junction_prices
 
 
 @dataclass(slots=True)
@@ -25,6 +26,7 @@ class _Scaled:
 
     cost: Array
     rows: Array
+    right: Array
     noise_rows: Array
     low: Array
     box: Array | None
@@ -40,13 +42,14 @@ def _scale(program: Program, cost: Array, noise_rows: Array) -> tuple[_Scaled, A
     column = np.hstack([program.width * program.time_high[:, None], program.time_high[:, None]])
     scaled_cost = cost * column
     unit = np.maximum(np.max(np.abs(scaled_cost), axis=1), 1e-300)
-    bounds = np.maximum(program.bounds, 1e-300)
+    size = row_scale(program)
     box = None
     if np.isfinite(program.heat_cap).any():
         box = np.maximum(segment_room(program, program.time_high)[0] / column[:, :-1], 1e-4)
     return _Scaled(
         cost=scaled_cost / unit[:, None],
-        rows=program.rows * column[:, None, :] / bounds[:, :, None],
+        rows=program.rows * column[:, None, :] / size[:, :, None],
+        right=program.bounds / size,
         noise_rows=noise_rows * column[:, None, :] / np.sqrt(unit)[:, None, None],
         low=np.minimum(program.time_low / program.time_high, 1 - 1e-6),
         box=box,
@@ -57,13 +60,13 @@ def _scale(program: Program, cost: Array, noise_rows: Array) -> tuple[_Scaled, A
 class _State:
     """Slacks and duals of every program of a scaled block; slack lists are kept, not recomputed, to save digits.
 
-    Order of both lists: x ≥ 0, τ − x ≥ 0, 1 − A y ≥ 0, τ − low ≥ 0, 1 − τ ≥ 0, and box − x ≥ 0 where there are boxes.
+    Order of both lists: x ≥ 0, τ − x ≥ 0, b − A y ≥ 0, τ − low ≥ 0, 1 − τ ≥ 0, and box − x ≥ 0 where there are boxes.
     """
 
     def __init__(self, block: _Scaled) -> None:
         tau = 0.5 * (1 + block.low)
         load = block.rows[:, :, :-1].sum(axis=2)
-        room = 1.0 - block.rows[:, :, -1] * tau[:, None]
+        room = block.right - block.rows[:, :, -1] * tau[:, None]
         share = np.min(np.where(load > 0, room / np.maximum(load, 1e-300), np.inf), axis=1, initial=np.inf)
         level = 0.5 * np.minimum(tau, share)
         if block.box is not None:
@@ -71,7 +74,13 @@ class _State:
         level = np.maximum(level, 1e-9)
         x = np.repeat(level[:, None], block.cost.shape[1] - 1, axis=1)
         self.block = block
-        self.slack = [x, tau[:, None] - x, room - load * level[:, None], (tau - block.low)[:, None], (1.0 - tau)[:, None]]
+        self.slack = [
+            x,
+            tau[:, None] - x,
+            room - load * level[:, None],
+            (tau - block.low)[:, None],
+            (1.0 - tau)[:, None],
+        ]
         if block.box is not None:
             self.slack.append(block.box - x)
         self.dual = self._feasible_duals()
@@ -155,7 +164,12 @@ def _iterate(state: _State, tolerance: float) -> Array:
         """One step of iterative refinement: the Woodbury identity loses digits as boxes open up."""
         inner = strength * (np.einsum("pkn,pn->pk", rows[:, :, :-1], yx) + rows[:, :, -1] * yt[:, None])
         left = rx - (rest + cap) * yx + cap * yt[:, None] - np.einsum("pk,pkn->pn", inner, rows[:, :, :-1])
-        late = rt - (ends + cap.sum(axis=1)) * yt + np.sum(cap * yx, axis=1) - np.einsum("pk,pk->p", inner, rows[:, :, -1])
+        late = (
+            rt
+            - (ends + cap.sum(axis=1)) * yt
+            + np.sum(cap * yx, axis=1)
+            - np.einsum("pk,pk->p", inner, rows[:, :, -1])
+        )
         ex, et = solve(left, late)
         return yx + ex, yt + et
 
@@ -181,10 +195,13 @@ def _iterate(state: _State, tolerance: float) -> Array:
     zero = [np.zeros_like(s) for s in slack]
     ds, dz = changes(*direction(zero), zero)
     ahead_s, ahead_z = _step_length(slack, ds), _step_length(dual, dz)
-    mu_ahead = sum(
-        np.einsum("pk,pk->p", s + ahead_s[:, None] * a, z + ahead_z[:, None] * b)
-        for s, z, a, b in zip(slack, dual, ds, dz, strict=True)
-    ) / count
+    mu_ahead = (
+        sum(
+            np.einsum("pk,pk->p", s + ahead_s[:, None] * a, z + ahead_z[:, None] * b)
+            for s, z, a, b in zip(slack, dual, ds, dz, strict=True)
+        )
+        / count
+    )
     centre = (np.clip(mu_ahead / mu, 0.0, 1.0) ** 3 * mu)[:, None]
     push = [centre - a * b for a, b in zip(ds, dz, strict=True)]
     ds, dz = changes(*direction(push), push)
@@ -197,35 +214,6 @@ def _iterate(state: _State, tolerance: float) -> Array:
     state.slack = [s + primal * a for s, a in zip(slack, ds, strict=True)]
     state.dual = [z + back * b for z, b in zip(dual, dz, strict=True)]
     return mu
-
-
-def junction_prices(program: Program, line: Line, t: Array) -> Array:
-    """Best heat multipliers ω of each LED once the other multipliers and an exposure guess are given. (P, n_leds)
-
-    At exposure ``t`` an LED fills its segments in order until its heat cap; the segment that is cut short sets
-    the price of heat, ``−cost/heat`` of that segment.
-    """
-    out = np.zeros((program.size, program.heat_cap.size))
-    capped = np.isfinite(program.heat_cap)
-    if not capped.any():
-        return out
-    cost = program.shot - line.theta[:, None] * program.signal
-    if np.isinf(line.theta).any():
-        raise ValueError("use theta = 0 and a negative signal as cost for the ceiling")
-    cost = cost + 2 * np.einsum("pr,prn->pn", line.noise, program.noise_rows)
-    cost = (cost + np.einsum("pm,pmn->pn", line.limit, program.rows))[:, :-1]
-    return _cut_prices(program, cost, t)
-
-
-def _cut_prices(program: Program, cost: Array, t: Array) -> Array:
-    """ω from the reduced cost of the segment at which each LED's heat runs out."""
-    out = np.zeros((cost.shape[0], program.heat_cap.size))
-    room, _ = segment_room(program, t)
-    cut = (room < program.width * t[:, None] * (1 - 1e-12)) & np.isfinite(program.heat_cap[program.led])
-    price = np.where(cut, np.maximum(-cost, 0.0) / np.maximum(program.heat, 1e-300), 0.0)
-    for led in np.flatnonzero(np.isfinite(program.heat_cap)):
-        out[:, led] = price[:, program.led == led].max(axis=1, initial=0.0)
-    return out
 
 
 @dataclass(frozen=True, slots=True)
@@ -258,20 +246,30 @@ def relax(program: Program, theta: Array | None, iterations: int = 25, tolerance
 def _unscale(program: Program, state: _State, theta: Array | None, column: Array) -> Relaxed:
     """Return to SI units; broken numbers become the harmless multiplier 0 and the dark point."""
     block = state.block
-    bounds = np.maximum(program.bounds, 1e-300)
-    limit = np.nan_to_num(state.dual[2] * block.unit[:, None] / bounds, nan=0.0, posinf=0.0)
+    limit = np.nan_to_num(state.dual[2] * block.unit[:, None] / row_scale(program), nan=0.0, posinf=0.0)
     t = np.nan_to_num(state.tau * program.time_high, nan=0.0)
     t = np.clip(t, program.time_low, program.time_high)
     q = np.nan_to_num(state.x, nan=0.0) * column[:, :-1]
     room, _ = segment_room(program, t)
     point = np.hstack([np.clip(q, 0.0, room), t[:, None]])
     rank = program.noise_rows.shape[1]
-    noise = np.zeros((program.size, rank)) if theta is None else np.einsum("prn,pn->pr", program.noise_rows, point)
+    noise = (
+        np.zeros((program.size, rank))
+        if theta is None
+        else np.einsum("prn,pn->pr", program.noise_rows, point)
+    )
     blank = np.zeros((program.size, program.heat_cap.size))
-    line = Line(theta=np.zeros(program.size) if theta is None else theta, limit=np.maximum(limit, 0.0), heat=blank, noise=noise)
+    anchor = np.maximum(np.einsum("pn,pn->p", program.signal, point), 1e-300)
+    line = Line(
+        theta=np.zeros(program.size) if theta is None else theta,
+        limit=np.maximum(limit, 0.0),
+        heat=blank,
+        noise=noise,
+        anchor=anchor,
+    )
     if theta is None:
         cost = (np.einsum("pm,pmn->pn", line.limit, program.rows) - program.signal)[:, :-1]
-        heat = _cut_prices(program, cost, t)
+        heat = cut_prices(program, cost, t)
     else:
         heat = junction_prices(program, line, t)
-    return Relaxed(line=Line(theta=line.theta, limit=line.limit, heat=heat, noise=noise), point=point)
+    return Relaxed(line=replace(line, heat=heat), point=point)

@@ -13,7 +13,7 @@ import numpy as np
 from scipy.sparse import csc_matrix
 
 from codesign.certificate import Line
-from codesign.program import Array, Program, segment_room
+from codesign.program import Array, Program, row_scale
 
 
 def _settings() -> clarabel.DefaultSettings:
@@ -27,98 +27,95 @@ def _settings() -> clarabel.DefaultSettings:
 
 
 class ConvexSlice:
-    """The convex programs of one configuration, one for each slope θ of the noise frontier."""
+    """The convex programs of one configuration over some of its columns, one for each slope θ of the noise frontier.
 
-    def __init__(self, program: Program) -> None:
+    Columns left out only make the answer less good, never the bound wrong: the caller prices them (`reduced_cost`)
+    and brings in those that pay.
+    """
+
+    def __init__(self, program: Program, columns: np.ndarray) -> None:
         if program.size != 1:
             raise ValueError("ConvexSlice takes exactly one program")
         self.program = program
+        self.columns = columns
         self.column = np.append(program.width, 1.0) * program.time_high[0]
-        self.bounds = np.where(program.bounds[0] > 0, program.bounds[0], 1.0)
-        self.heat_leds = np.flatnonzero(np.isfinite(program.heat_cap))
-
-    @cached_property
-    def _keep(self) -> np.ndarray:
-        """Columns that can help: without clutter of mixed sign an LED that lowers the signal never does."""
-        program = self.program
-        useful = program.signal[0, :-1] > 0
-        mixed = (program.noise_rows[0] < 0).any()
-        return np.append(np.ones_like(useful) if mixed else useful, True)
+        self.size = row_scale(program)[0]
+        self.keep = np.append(columns, program.segments)
+        noise = program.noise_rows[0][:, self.keep] * self.column[self.keep]
+        self.noise_unit = float(max(np.max(np.abs(noise).sum(axis=1), initial=0.0) ** 2, 1e-300))
+        self.led = program.led[columns]
+        self.heat_leds = np.unique(self.led[np.isfinite(program.heat_cap[self.led])])
 
     @cached_property
     def _matrices(self) -> tuple[csc_matrix, csc_matrix, Array]:
         """Quadratic cost, constraint matrix and right-hand side over (kept y, g = R y) in unit scale."""
-        program, keep = self.program, self._keep
+        program, keep = self.program, self.keep
         column = self.column[keep]
         noise = program.noise_rows[0][:, keep] * column
-        rank, n = noise.shape
-        n -= 1
-        unit = np.sqrt(self._noise_unit)
-        led, heat = program.led[keep[:-1]], program.heat[keep[:-1]]
-        parts = [
-            np.hstack([noise / unit, -np.eye(rank)]),
-            np.hstack([program.rows[0][:, keep] * column / self.bounds[:, None], np.zeros((len(self.bounds), rank))]),
-            np.hstack([np.eye(n), -np.ones((n, 1)), np.zeros((n, rank))]),
-            np.hstack([-np.eye(n), np.zeros((n, 1 + rank))]),
-        ]
-        right = [np.zeros(rank), program.bounds[0] / self.bounds, np.zeros(2 * n)]
-        if self.heat_leds.size:
-            share = np.where(led == self.heat_leds[:, None], heat * column[:-1], 0.0)
-            share /= program.heat_cap[self.heat_leds][:, None]
-            parts.append(np.hstack([share, np.zeros((share.shape[0], 1 + rank))]))
-            right.append(np.ones(share.shape[0]))
-        ends = np.zeros((2, n + 1 + rank))
-        ends[:, n] = 1.0, -1.0
-        parts.append(ends)
-        right.append(np.array([1.0, -program.time_low[0] / program.time_high[0]]))
-        quadratic = csc_matrix(np.diag(np.append(np.zeros(n + 1), np.full(rank, 2.0))))
-        return quadratic, csc_matrix(np.vstack(parts)), np.concatenate(right)
-
-    @cached_property
-    def _noise_unit(self) -> float:
-        """Variance scale that makes g of order one. [e⁻²]"""
-        noise = np.abs(self.program.noise_rows[0] * self.column).sum(axis=1)
-        return float(max(np.max(noise, initial=0.0) ** 2, 1e-300))
+        rank, n, m = noise.shape[0], self.columns.size, self.size.size
+        heated = self.heat_leds.size
+        matrix = np.zeros((rank + m + 2 * n + heated + 2, n + 1 + rank))
+        right = np.zeros(matrix.shape[0])
+        matrix[:rank, : n + 1] = noise / np.sqrt(self.noise_unit)
+        matrix[np.arange(rank), n + 1 + np.arange(rank)] = -1.0
+        matrix[rank : rank + m, : n + 1] = program.rows[0][:, keep] * column / self.size[:, None]
+        right[rank : rank + m] = program.bounds[0] / self.size
+        at, index = rank + m, np.arange(n)
+        matrix[at + index, index], matrix[at : at + n, n] = 1.0, -1.0
+        matrix[at + n + index, index] = -1.0
+        at += 2 * n
+        share = np.where(self.led == self.heat_leds[:, None], program.heat[self.columns] * column[:-1], 0.0)
+        matrix[at : at + heated, :n] = share / program.heat_cap[self.heat_leds][:, None]
+        right[at : at + heated] = 1.0
+        matrix[at + heated :, n] = 1.0, -1.0
+        right[at + heated :] = 1.0, -program.time_low[0] / program.time_high[0]
+        quadratic = csc_matrix(
+            (np.full(rank, 2.0), (n + 1 + np.arange(rank),) * 2), shape=(n + 1 + rank,) * 2
+        )
+        return quadratic, csc_matrix(matrix), right
 
     def solve(self, theta: float | None) -> tuple[Line, Array]:
         """Return the multipliers of the line of slope ``theta`` (None: of the signal ceiling) and the best point.
 
-        The point is (n+1,), feasible to round-off. Accuracy is not trusted: the caller re-derives the bound.
+        The point is (n+1,) over all columns, feasible to round-off. Accuracy is not trusted: the caller re-derives
+        the bound.
         """
-        program, keep = self.program, self._keep
+        program = self.program
         cost = -program.signal[0] if theta is None else program.shot[0] - theta * program.signal[0]
-        cost = (cost * self.column)[keep]
+        cost = (cost * self.column)[self.keep]
         quadratic, matrix, right = self._matrices
         rank = program.noise_rows.shape[1]
         unit = max(float(np.max(np.abs(cost))), 1e-300)
-        weight = 0.0 if theta is None else self._noise_unit / unit
-        n_inequalities = right.size - rank
-        cones = [clarabel.ZeroConeT(rank), clarabel.NonnegativeConeT(n_inequalities)]
+        weight = 0.0 if theta is None else self.noise_unit / unit
+        cones = [clarabel.ZeroConeT(rank), clarabel.NonnegativeConeT(right.size - rank)]
         linear = np.append(cost / unit, np.zeros(rank))
-        solution = clarabel.DefaultSolver(quadratic * weight, linear, matrix, right, cones, _settings()).solve()
-        return self._line(theta, np.asarray(solution.z), unit), self._point(np.asarray(solution.x))
+        solution = clarabel.DefaultSolver(
+            quadratic * weight, linear, matrix, right, cones, _settings()
+        ).solve()
+        point = self._point(np.asarray(solution.x))
+        return self._line(theta, np.nan_to_num(np.asarray(solution.z)), unit, point), point
 
-    def _line(self, theta: float | None, duals: Array, unit: float) -> Line:
+    def _line(self, theta: float | None, duals: Array, unit: float, point: Array) -> Line:
         program = self.program
-        rank, m, n = program.noise_rows.shape[1], len(self.bounds), int(self._keep.sum()) - 1
-        duals = np.maximum(np.nan_to_num(duals), 0.0) if rank == 0 else np.nan_to_num(duals)
-        limit = np.maximum(duals[rank : rank + m], 0.0) * unit / self.bounds
+        rank, m, n = program.noise_rows.shape[1], self.size.size, self.columns.size
         heat = np.zeros(program.heat_cap.size)
         at = rank + m + 2 * n
-        heat[self.heat_leds] = (
-            np.maximum(duals[at : at + self.heat_leds.size], 0.0) * unit / program.heat_cap[self.heat_leds]
-        )
+        prices = np.maximum(duals[at : at + self.heat_leds.size], 0.0)
+        heat[self.heat_leds] = prices * unit / program.heat_cap[self.heat_leds]
         # The multiplier of g = R y is 2 g itself.
-        noise = np.zeros(rank) if theta is None else duals[:rank] * unit / (2 * np.sqrt(self._noise_unit))
+        noise = np.zeros(rank) if theta is None else duals[:rank] * unit / (2 * np.sqrt(self.noise_unit))
         return Line(
-            theta=np.array([0.0 if theta is None else theta]), limit=limit[None], heat=heat[None], noise=noise[None]
+            theta=np.array([0.0 if theta is None else theta]),
+            limit=(np.maximum(duals[rank : rank + m], 0.0) * unit / self.size)[None],
+            heat=heat[None],
+            noise=noise[None],
+            anchor=np.array([max(float(program.signal[0] @ point), 1e-300)]),
         )
 
     def _point(self, scaled: Array) -> Array:
         y = np.zeros(self.column.size)
-        y[self._keep] = np.nan_to_num(scaled[: int(self._keep.sum())])
-        y *= self.column
-        return feasible(self.program, y[None])[0]
+        y[self.keep] = np.nan_to_num(scaled[: self.keep.size])
+        return feasible(self.program, (y * self.column)[None])[0]
 
 
 def feasible(program: Program, y: Array) -> Array:
@@ -136,8 +133,3 @@ def feasible(program: Program, y: Array) -> Array:
     shrink = np.min(np.where(used > 0, room / np.maximum(used, 1e-300), 1.0), axis=1, initial=1.0)
     q = q * np.clip(shrink, 0.0, 1.0)[:, None]
     return np.hstack([q, t[:, None]])
-
-
-def exact_room(program: Program, t: float) -> Array:
-    """Room of each segment of a single program at exposure ``t``. (n,) [A s]"""
-    return segment_room(program, np.array([t]))[0][0]

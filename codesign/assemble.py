@@ -1,0 +1,318 @@
+"""From a problem to programs: every discrete choice as rows of arrays, limits and noise included."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
+from functools import cached_property
+
+import numpy as np
+
+from codesign.errors import InfeasibleError
+from codesign.limits import (
+    Setting,
+    TimeLimit,
+    dark_rate,
+    depth_shortfall,
+    junction_limit,
+    pulse_levels,
+    sum_limits,
+    thermal_resistance,
+    time_limits,
+    well_bound,
+)
+from codesign.noise import Sensor, noise_model
+from codesign.physics.light import flux_at_temperature
+from codesign.problem import Problem
+from codesign.program import Array, Program
+from codesign.radiometry import Rates, RateTable
+
+
+@dataclass(frozen=True, slots=True)
+class Segments:
+    """Drive segments of all LEDs at one pulse level (n = segments of all LEDs).
+
+    ``width`` (n,) [A]; ``led`` (n,) index; ``flux`` (n,) flux per ampere relative to rated [1/A]; ``power`` and
+    ``heat`` (n,) of one emitter [W/A]; ``heat_cap`` (L,) heat of one emitter per exposure [J].
+    """
+
+    width: Array
+    led: np.ndarray
+    flux: Array
+    power: Array
+    heat: Array
+    heat_cap: Array
+
+
+def light_segments(problem: Problem, setting: Setting, junction_c: Array) -> Segments:
+    """Cut each LED's droop curve at the level's current and, under steady light, at its junction limit."""
+    parts, caps = [], []
+    for index, channel in enumerate(problem.channels):
+        led = channel.led
+        width, flux, power = led.segments(setting.level.current_ma[index])
+        emitted = led.flux_w() * float(
+            flux_at_temperature(
+                junction_c[index], led.flux_temperature_coefficient_per_k, led.reference_junction_c
+            )
+        )
+        heat = power - emitted * flux
+        cap = _heat_cap(problem, channel)
+        if not problem.strobe:
+            width = _cut(width, heat, cap)
+            cap = np.inf
+        parts.append((width, np.full(width.size, index), flux, power, heat))
+        caps.append(cap)
+    width, led, flux, power, heat = (np.concatenate(column) for column in zip(*parts, strict=True))
+    keep = width > 0
+    return Segments(width[keep], led[keep], flux[keep], power[keep], heat[keep], np.array(caps))
+
+
+def optimistic(segments: Segments) -> Segments:
+    """One segment per LED that is never worse: all light at the efficiency of the first segment.
+
+    Flux per ampere falls and heat and power per flux rise along a droop curve, so this relaxes every limit: bounds
+    proven with it hold for the LED itself, at a fraction of the columns.
+    """
+    first = np.flatnonzero(np.diff(segments.led, prepend=-1))
+    flux = np.add.reduceat(segments.width * segments.flux, first)
+    return Segments(
+        flux / segments.flux[first],
+        segments.led[first],
+        segments.flux[first],
+        segments.power[first],
+        segments.heat[first],
+        segments.heat_cap,
+    )
+
+
+def _heat_cap(problem: Problem, channel) -> float:
+    """Mean heat at which the junction limit is reached, per exposure when strobed. [W] or [J]"""
+    resistance = thermal_resistance(problem, channel)
+    if resistance == 0:
+        return np.inf
+    watts = max(junction_limit(problem, channel) - problem.spec.temperature.air_c, 0.0) / resistance
+    return watts / problem.spec.timing.frame_rate_hz if problem.strobe else watts
+
+
+def _cut(width: Array, heat: Array, cap: float) -> Array:
+    """Shorten the segments, last first, until their heat stays below ``cap``."""
+    load = width * heat
+    before = np.cumsum(load) - load
+    return np.clip((cap - before) / heat, 0.0, width)
+
+
+@dataclass(frozen=True, slots=True)
+class Window:
+    """Exposure range of one setting and the limits at its two ends."""
+
+    low: TimeLimit
+    high: TimeLimit
+
+    @property
+    def open(self) -> bool:
+        """Whether any exposure is possible."""
+        return self.low.time <= self.high.time * (1 + 1e-12)
+
+
+def exposure_window(problem: Problem, setting: Setting) -> Window:
+    """Tightest of the limits on the exposure alone."""
+    limits = time_limits(problem, setting)
+    return Window(
+        low=max((x for x in limits if x.floor), key=lambda x: x.time),
+        high=min((x for x in limits if not x.floor), key=lambda x: x.time),
+    )
+
+
+class Assembly:
+    """All programs of a problem at given junction temperatures.
+
+    Parameters
+    ----------
+    problem : Problem
+    junction_c : (L,) array
+        Junction temperatures assumed. [deg C]
+    """
+
+    def __init__(self, problem: Problem, junction_c: Array) -> None:
+        self.problem = problem
+        self.junction_c = np.asarray(junction_c, dtype=float)
+        self._table = RateTable(problem, self.junction_c)
+        self._rates: dict[tuple[str, str, float], Rates] = {}
+        self._segments: dict[tuple[str, bool], Segments] = {}
+
+    @cached_property
+    def settings(self) -> tuple[Setting, ...]:
+        """All discrete choices but the filter that leave an exposure range.
+
+        Raises InfeasibleError naming the limits in conflict when there is none.
+        """
+        found, conflicts = [], []
+        for setting in self._all_settings():
+            short = depth_shortfall(self.problem, setting.camera, setting.f_number)
+            window = exposure_window(self.problem, setting)
+            if short is None and window.open:
+                found.append(setting)
+            else:
+                conflicts.append((setting, window, short))
+        if not found:
+            raise self._conflict(conflicts)
+        return tuple(self._without_dominated(found))
+
+    def _all_settings(self) -> Iterator[Setting]:
+        spec = self.problem.spec
+        wanted = spec.candidates
+        for camera in self.problem.cameras:
+            for channel in camera.channel_names:
+                if wanted.channels != "all" and channel not in _listed(wanted.channels):
+                    continue
+                for gain in camera.gain_settings():
+                    if wanted.gains_db is not None and all(
+                        abs(gain.gain_db - g) > 1e-9 for g in wanted.gains_db
+                    ):
+                        continue
+                    for f_number in spec.optics.f_numbers:
+                        for level in pulse_levels(self.problem):
+                            yield Setting(
+                                camera=camera, channel=channel, gain=gain, f_number=f_number, level=level
+                            )
+
+    def _without_dominated(self, settings: list[Setting]) -> Iterator[Setting]:
+        """Drop pulse levels longer than any exposure allowed while a shorter one already covers it."""
+        covered: set[tuple] = set()
+        for setting in settings:
+            key = (setting.camera.id, setting.channel, setting.gain.gain_db, setting.f_number)
+            if key in covered:
+                continue
+            if (
+                exposure_window(self.problem, replace(setting, level=_UNBOUNDED)).high.time
+                <= setting.level.longest_s
+            ):
+                covered.add(key)
+            yield setting
+
+    def _conflict(self, conflicts: list) -> InfeasibleError:
+        where = self.problem.where
+        if not conflicts:
+            wanted = self.problem.spec.candidates
+            return InfeasibleError(
+                f"{where}: no camera offers channels {wanted.channels!r} at gains {wanted.gains_db}; loosen candidates",
+                ["candidates"],
+            )
+        shallow = [c for c in conflicts if c[2] is not None]
+        if len(shallow) == len(conflicts):
+            setting, _, depth = max(shallow, key=lambda c: c[2])
+            return InfeasibleError(
+                f"{where}: depth of field reaches {depth:.3g} mm at f/{setting.f_number:g} at most, "
+                f"optics.required_depth_mm is {self.problem.spec.optics.required_depth_mm:g}; allow larger f-numbers",
+                ["depth of field"],
+            )
+        setting, window, _ = max(
+            (c for c in conflicts if c[2] is None), key=lambda c: c[1].high.time / max(c[1].low.time, 1e-300)
+        )
+        low, high = window.low, window.high
+        return InfeasibleError(
+            f"{where}: limits in conflict: {low.name} asks for {low.time * 1e6:.5g} us or more, {high.name} "
+            f"({high.bound:.5g} {high.unit}) allows {high.time * 1e6:.5g} us at most (camera {setting.camera.id!r}); loosen one",
+            [low.name, high.name],
+        )
+
+    def rates(self, setting: Setting) -> Rates:
+        """Electron rates of a setting's camera channel and f-number, kept for the other settings that share them.
+
+        A filter in front of the lens does not see the f-number: one product serves all, scaled by 1/N².
+        """
+        optics = self.problem.spec.optics
+        base = optics.f_numbers[0] if optics.filter_position == "front" else setting.f_number
+        key = (setting.camera.id, setting.channel, base)
+        if key not in self._rates:
+            self._rates[key] = self._table.rates(setting.camera, setting.channel, base)
+        return self._rates[key].scaled((base / setting.f_number) ** 2)
+
+    def segments(self, setting: Setting, coarse: bool = False) -> Segments:
+        """Drive segments of a setting's pulse level, kept for the settings that share it."""
+        key = (setting.level.name, coarse)
+        if key not in self._segments:
+            found = light_segments(self.problem, setting, self.junction_c)
+            self._segments[key] = optimistic(found) if coarse else found
+        return self._segments[key]
+
+    def program(
+        self, setting: Setting, filters: slice | np.ndarray = slice(None), *, coarse: bool = False
+    ) -> Program:
+        """Programs of one setting for some filters, target brighter than background (see `flipped`).
+
+        ``coarse`` gives the relaxation of `optimistic`: one column per LED, bounds only.
+        """
+        problem, rates = self.problem, self.rates(setting)
+        surfaces = len(problem.surfaces)
+        segments = self.segments(setting, coarse)
+        by_segment = rates.led[filters][:, :, segments.led] * segments.flux
+        photo = np.concatenate([by_segment, rates.ambient[filters][:, :, None]], axis=2)
+        dark = np.append(np.zeros(segments.width.size), dark_rate(problem, setting))
+        noise = noise_model(Sensor.of(setting.camera, setting.gain), problem.spec.averaging)
+        window = exposure_window(problem, setting)
+        kept, spread = photo[:, :surfaces], photo[:, surfaces:]
+        if coarse:  # dropping noise keeps the relaxation a relaxation
+            spread = spread[:, : self._table.clutter_rank]
+        weight = np.append(np.full(segments.width.size, noise.linear[0]), noise.linear[1])
+        target, background = photo[:, 0], photo[:, 1]
+        rows, bounds, names = _rows(problem, setting, segments, kept + dark)
+        return Program(
+            signal=target - background,
+            shot=(target + background) / 2 * weight + noise.linear[2] * dark,
+            noise_rows=np.concatenate(
+                [photo[:, :2] * (noise.relative / np.sqrt(2)), spread * np.sqrt(noise.clutter_share / 2)],
+                axis=1,
+            ),
+            floor=np.full(len(photo), noise.constant),
+            rows=rows,
+            bounds=bounds,
+            row_names=names,
+            width=segments.width,
+            led=segments.led,
+            heat=segments.heat,
+            heat_cap=segments.heat_cap,
+            time_low=np.full(len(photo), window.low.time),
+            time_high=_time_high(rows, bounds, window),
+        )
+
+
+def flipped(program: Program) -> Program:
+    """The same programs for the other contrast sign."""
+    return replace(program, signal=-program.signal)
+
+
+def _listed(choice) -> tuple[str, ...]:
+    return (choice,) if isinstance(choice, str) else tuple(choice)
+
+
+def _rows(problem: Problem, setting: Setting, segments: Segments, electrons: Array):
+    """Coupling rows: the wells of all surfaces, then heat and supply. Shapes (P, m, n+1), (P, m)."""
+    count = len(electrons)
+    names = [f"well, {surface.id}" for surface in problem.surfaces]
+    rows, bounds = [electrons], [np.full((count, len(names)), well_bound(problem, setting))]
+    emitters = np.array([channel.emitters for channel in problem.channels])[segments.led]
+    for limit in sum_limits(problem):
+        per_charge = emitters * (segments.heat if limit.quantity == "heat" else segments.power)
+        if problem.strobe and limit.mean:
+            row, bound = np.append(per_charge * problem.spec.timing.frame_rate_hz, 0.0), limit.bound
+        else:
+            row, bound = np.append(per_charge, -limit.bound), 0.0
+        rows.append(np.broadcast_to(row, (count, 1, row.size)))
+        bounds.append(np.full((count, 1), bound))
+        names.append(limit.name)
+    return np.concatenate(rows, axis=1), np.concatenate(bounds, axis=1), tuple(names)
+
+
+def _time_high(rows: Array, bounds: Array, window: Window) -> Array:
+    """Longest exposure, also cut where ambient light and dark current alone would fill a well. (P,)"""
+    rate = rows[:, :, -1]
+    alone = np.min(np.where(rate > 0, bounds / np.maximum(rate, 1e-300), np.inf), axis=1)
+    return np.minimum(window.high.time, alone)
+
+
+class _Unbounded:
+    longest_s = np.inf
+
+
+_UNBOUNDED = _Unbounded()

@@ -1,0 +1,131 @@
+"""A problem with everything looked up: parts, wavelength grid, delivery of each LED, ambient light."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from functools import cached_property
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from codesign.catalog import Camera, Catalog, Filter, Led, Surface
+from codesign.errors import ProblemError, nearest
+from codesign.problem.schema import ProblemSpec
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LedChannel:
+    """All emitters of one LED type in the rig, in series at one current.
+
+    Attributes
+    ----------
+    led : Led
+    emitters : int
+    delivery : float
+        Irradiance at the object per watt of one emitter, all emitters together. [1/m²]
+    specular_weight : float
+        Weight of mirror-like reflection. [1]
+    driver_max_ma : float
+        Driver limit, ``inf`` where none. [mA]
+    """
+
+    led: Led
+    emitters: int
+    delivery: float
+    specular_weight: float
+    driver_max_ma: float
+
+    @property
+    def id(self) -> str:
+        """Id of the LED."""
+        return self.led.id
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Problem:
+    """What `load_problem` returns; frozen, so a what-if is a new problem.
+
+    Attributes
+    ----------
+    spec : ProblemSpec
+        The file's content.
+    where : str
+        File named in messages.
+    folder : Path
+        Folder to which paths in the file are relative.
+    catalog : Catalog
+        All parts, inline ones included.
+    target, background : Surface
+    guards : tuple of Surface
+        Further surfaces that must not saturate.
+    channels : tuple of LedChannel
+    filters : tuple of Filter
+    cameras : tuple of Camera
+    grid : (n,) array
+        [nm]
+    ambient : (n,) array
+        Spectral irradiance of ambient light at the object. [W m⁻² nm⁻¹]
+    lens : (n,) array
+        Lens transmittance. [1]
+    left_out : tuple of str
+        Candidate parts that could not be used, and why.
+    """
+
+    spec: ProblemSpec
+    where: str
+    folder: Path
+    catalog: Catalog
+    target: Surface
+    background: Surface
+    guards: tuple[Surface, ...]
+    channels: tuple[LedChannel, ...]
+    filters: tuple[Filter, ...]
+    cameras: tuple[Camera, ...]
+    grid: Array
+    ambient: Array
+    lens: Array
+    left_out: tuple[str, ...] = field(default=())
+
+    @cached_property
+    def surfaces(self) -> tuple[Surface, ...]:
+        """Target, background, then the guards that are neither."""
+        own = (self.target.id, self.background.id)
+        return (self.target, self.background, *(g for g in self.guards if g.id not in own))
+
+    @property
+    def strobe(self) -> bool:
+        """Whether the LEDs are on during the exposure only."""
+        return self.spec.lighting.mode == "strobe"
+
+    def channel(self, led: str) -> LedChannel:
+        """Return the channel of an LED by id."""
+        for channel in self.channels:
+            if channel.id == led:
+                return channel
+        raise ProblemError(
+            f"{self.where}: no LED {led!r} among the candidates; {nearest(led, [c.id for c in self.channels])}"
+        )
+
+    def camera(self, name: str) -> Camera:
+        """Return a candidate camera by id."""
+        return _named(self.cameras, name, "camera", self.where)
+
+    def filter(self, name: str) -> Filter:
+        """Return a candidate filter by id; ``none`` is no filter."""
+        return _named(self.filters, name, "filter", self.where)
+
+    def duty(self, exposure_s: float) -> float:
+        """Share of time the LEDs are on. [1]"""
+        return exposure_s * self.spec.timing.frame_rate_hz if self.strobe else 1.0
+
+
+def _named(parts, name: str, kind: str, where: str):
+    for part in parts:
+        if part.id == name:
+            return part
+    raise ProblemError(
+        f"{where}: no {kind} {name!r} among the candidates; {nearest(name, [p.id for p in parts])}"
+    )

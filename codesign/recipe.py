@@ -1,0 +1,102 @@
+"""From an optimum to settings a person can dial in: whole steps of current and exposure, never over a limit."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import replace
+
+import numpy as np
+
+from codesign.assemble import Assembly
+from codesign.design import Design, Performance, evaluate
+from codesign.limits import Setting
+from codesign.problem import Problem
+from codesign.program import Array
+
+#: Currents below this share of a setting step count as off. [1]
+OFF = 1e-6
+#: Rounds of looking for a better neighbour.
+LARGEST_NUMBER_OF_ROUNDS = 60
+
+
+def design_at(assembly: Assembly, setting: Setting, filter_index: int, point: Array) -> Design:
+    """Translate an optimiser's point ``(q_1 .. q_n, t)`` into currents: the light of each LED, segments in order."""
+    problem = assembly.problem
+    segments = assembly.segments(setting)
+    t = float(point[-1])
+    drive = {}
+    for index, channel in enumerate(problem.channels):
+        own = segments.led == index
+        flux = float(segments.flux[own] @ point[:-1][own]) / t
+        reached = np.concatenate([[0.0], np.cumsum(segments.flux[own] * segments.width[own])])
+        current = np.concatenate([[0.0], np.cumsum(segments.width[own])])
+        amps = float(np.interp(flux, reached, current))
+        if amps * 1e3 > OFF * problem.spec.lighting.drive_step_ma:
+            drive[channel.id] = amps * 1e3
+    return Design(
+        camera=setting.camera.id,
+        channel=setting.channel,
+        gain_db=setting.gain.gain_db,
+        filter=problem.filters[filter_index].id,
+        f_number=setting.f_number,
+        exposure_us=t * 1e6,
+        drive_ma=drive,
+    )
+
+
+def settable(problem: Problem, design: Design) -> tuple[Design, Performance] | None:
+    """Round a design to steps inside all limits and climb to the best neighbour. None when no step fits."""
+    step_ma = problem.spec.lighting.drive_step_ma
+    start = None
+    for exposure in _exposures(problem, design):
+        lower = {led: _steps(np.floor(ma / step_ma + 1e-6), step_ma) for led, ma in design.drive_ma.items()}
+        trial = replace(design, exposure_us=exposure, drive_ma={k: v for k, v in lower.items() if v > 0})
+        result = evaluate(problem, trial)
+        if result.feasible and (start is None or result.cnr > start.cnr):
+            start = result
+    return None if start is None else _climb(problem, design, start)
+
+
+def _steps(count: float, step: float) -> float:
+    """A whole number of steps without the dust of binary fractions."""
+    return float(round(count * step, 9))
+
+
+def _exposures(problem: Problem, design: Design) -> list[float]:
+    step = problem.camera(design.camera).exposure_step_us
+    low, high = np.floor(design.exposure_us / step + 1e-6), np.ceil(design.exposure_us / step - 1e-6)
+    return [_steps(count, step) for count in dict.fromkeys((low, high)) if count > 0]
+
+
+def _climb(problem: Problem, optimum: Design, start: Performance) -> tuple[Design, Performance]:
+    """Take the best feasible neighbour until none is better."""
+    best = start
+    for _ in range(LARGEST_NUMBER_OF_ROUNDS):
+        trials = (evaluate(problem, trial) for trial in _neighbours(problem, optimum, best.design))
+        better = max((r for r in trials if r.feasible), key=lambda r: r.cnr, default=None)
+        if better is None or better.cnr <= best.cnr * (1 + 1e-12):
+            break
+        best = better
+    return best.design, best
+
+
+def _neighbours(problem: Problem, optimum: Design, design: Design) -> Iterator[Design]:
+    """One step of one current, of the exposure, or of the exposure against one current."""
+    step_ma = problem.spec.lighting.drive_step_ma
+    step_us = problem.camera(design.camera).exposure_step_us
+    exposures = [_steps(round(design.exposure_us / step_us) + k, step_us) for k in (0, -1, 1)]
+    for exposure in exposures:
+        if exposure <= 0:
+            continue
+        if exposure != design.exposure_us:
+            yield replace(design, exposure_us=exposure)
+        for led in optimum.drive_ma:
+            top = problem.channel(led).led.largest_current_ma
+            count = round(design.drive_ma.get(led, 0.0) / step_ma)
+            for change in (-1, 1):
+                ma = _steps(count + change, step_ma)
+                if 0 <= ma <= top:
+                    drive = {**design.drive_ma, led: ma}
+                    yield replace(
+                        design, exposure_us=exposure, drive_ma={k: v for k, v in drive.items() if v > 0}
+                    )

@@ -1,0 +1,216 @@
+"""Best-first walk over every configuration of a problem, on a ladder of ever dearer and tighter bounds.
+
+Rung 0, all configurations at once: the closed form of `codesign.search.bounds` on the optimistic one-column-per-LED
+programs. Rung 1, some hundred at a time: the batched interior point on the same programs. Rung 2, one at a time:
+the certified frontier of the full program. Whatever the bound of a configuration, it is looked at again only while
+it could still beat the best found.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from codesign.assemble import Assembly, flipped
+from codesign.certificate import Proof, bound
+from codesign.limits import Setting
+from codesign.program import Array, Program, contrast_to_noise, stack
+from codesign.search.bounds import simple_proof
+from codesign.search.frontier import Certified, Hint, certify
+from codesign.search.interior import relax
+
+SIGNS = (1, -1)
+#: Configurations refined together on rung 1: first few, to get a good target early, then many.
+FIRST_CHUNK, LARGEST_CHUNK = 48, 384
+#: Rung 1 needs multipliers good to some 1e-4, not more.
+ROUGH = {"iterations": 16, "tolerance": 1e-6}
+
+
+@dataclass(frozen=True, slots=True)
+class Configuration:
+    """One discrete choice: setting, filter index and contrast sign (+1: target brighter)."""
+
+    setting: Setting
+    filter: int
+    sign: int
+
+
+@dataclass(slots=True)
+class Tally:
+    """How many configurations each rung handled."""
+
+    configurations: int = 0
+    refined: int = 0
+    certified: int = 0
+
+
+@dataclass(slots=True)
+class Evidence:
+    """Multipliers that bound some configurations, kept for the checker: indices and their proof."""
+
+    index: np.ndarray
+    proof: Proof
+    coarse: bool
+
+
+@dataclass(slots=True)
+class Walk:
+    """State of the search: the best bound known for each configuration, and what proves it.
+
+    Configurations are numbered ``(setting · F + filter) · 2 + sign index``.
+    """
+
+    assembly: Assembly
+    gap: float = 1e-3
+    progress: Callable[[float, float], None] | None = None
+    upper: Array = field(init=False)
+    refined: np.ndarray = field(init=False)
+    found: dict[int, Certified] = field(init=False, default_factory=dict)
+    evidence: list[Evidence] = field(init=False, default_factory=list)
+    tally: Tally = field(init=False, default_factory=Tally)
+    hints: dict[int, Hint] = field(init=False, default_factory=dict)
+
+    closed_form: bool = True
+
+    def __post_init__(self) -> None:
+        count = 2 * self.filters * len(self.assembly.settings)
+        self.upper = np.full(count, np.inf)
+        if self.closed_form:
+            self.upper = np.concatenate([self._closed_form(setting) for setting in self.assembly.settings])
+        self.refined = np.zeros(count, dtype=bool)
+        self.tally.configurations = count
+
+    @classmethod
+    def blank(cls, assembly: Assembly) -> Walk:
+        """A walk that knows no bound yet, for its numbering of configurations."""
+        return cls(assembly, closed_form=False)
+
+    @property
+    def filters(self) -> int:
+        """Number of filters F."""
+        return len(self.assembly.problem.filters)
+
+    def configuration(self, index: int) -> Configuration:
+        """Decode a configuration's number."""
+        pair, sign = divmod(int(index), 2)
+        setting, filter_index = divmod(pair, self.filters)
+        return Configuration(self.assembly.settings[setting], filter_index, SIGNS[sign])
+
+    def programs(self, index: np.ndarray, *, coarse: bool) -> Program:
+        """Build the programs of some configurations, in the order of ``index``."""
+        index = np.asarray(index)
+        setting = index // (2 * self.filters)
+        order = np.argsort(setting, kind="stable")
+        blocks = []
+        for number in np.unique(setting):
+            chosen = index[order][setting[order] == number]
+            block = self.assembly.program(
+                self.assembly.settings[number], (chosen // 2) % self.filters, coarse=coarse
+            )
+            turn = np.where(chosen % 2 == 1, -1.0, 1.0)
+            blocks.append(replace(block, signal=block.signal * turn[:, None]))
+        return stack(blocks).take(np.argsort(order, kind="stable"))
+
+    def same_parts(self, index: int) -> np.ndarray:
+        """Mark the configurations with the same camera and filter as ``index``. (N,) bool"""
+        chosen = self.configuration(index)
+        camera = np.array(
+            [setting.camera.id == chosen.setting.camera.id for setting in self.assembly.settings]
+        )
+        filters = np.arange(self.filters) == chosen.filter
+        return np.repeat((camera[:, None] & filters).ravel(), 2)
+
+    def seed(self, known: Configuration) -> None:
+        """Certify a configuration likely to be best first, so that others are dropped sooner."""
+        number = self.assembly.settings.index(known.setting)
+        self._certify((number * self.filters + known.filter) * 2 + SIGNS.index(known.sign), 0.0)
+
+    def best(self, allowed: np.ndarray | None = None) -> int | None:
+        """Return the certified best of the allowed configurations, or None where none has any contrast.
+
+        On return no allowed configuration's bound exceeds the best value by more than the gap.
+        """
+        allowed = np.ones(self.upper.size, dtype=bool) if allowed is None else allowed
+        chunk = FIRST_CHUNK
+        while True:
+            leader, value = self._leader(allowed)
+            open_ = np.flatnonzero(allowed & (self.upper > max(value * (1 + self.gap), 0.0)))
+            if leader is not None:
+                open_ = open_[open_ != leader]
+            if self.progress is not None:
+                self.progress(value, float(self.upper[open_].max(initial=value)))
+            if open_.size == 0:
+                return leader
+            rough = open_[~self.refined[open_]]
+            top = open_[np.argmax(self.upper[open_])]
+            if self.refined[top]:
+                self._certify(top, value)
+            else:
+                self._refine(rough[np.argsort(-self.upper[rough])[:chunk]], value)
+                chunk = min(2 * chunk, LARGEST_CHUNK)
+
+    def _leader(self, allowed: np.ndarray) -> tuple[int | None, float]:
+        inside = [i for i in self.found if allowed[i] and self.found[i].value > 0]
+        if not inside:
+            return None, 0.0
+        leader = max(inside, key=lambda i: self.found[i].value)
+        return leader, self.found[leader].value
+
+    def _closed_form(self, setting: Setting) -> Array:
+        """Rung 0 for all filters and both signs of a setting, (2 F,)."""
+        program = self.assembly.program(setting, coarse=True)
+        both = [simple_proof(side)[1] for side in (program, flipped(program))]
+        return np.stack(both, axis=1).ravel()
+
+    def _refine(self, index: np.ndarray, target: float) -> None:
+        """Rung 1."""
+        self.refined[index] = True
+        self.tally.refined += index.size
+        blocks = self._same_columns(index)
+        for part in blocks:
+            program = self.programs(part, coarse=True)
+            proof, value, promise, lit = rough_proof(program, target)
+            self.upper[part] = np.minimum(self.upper[part], value)
+            self.hints.update(
+                (int(i), Hint(proof.ceiling.take(k), np.flatnonzero(lit[k]), float(promise[k])))
+                for k, i in enumerate(part)
+            )
+            self.evidence.append(Evidence(part, proof, coarse=True))
+            if not self.found:
+                self._certify(int(part[np.argmax(promise)]), target)
+
+    def _same_columns(self, index: np.ndarray) -> list[np.ndarray]:
+        """Split by pulse level: programs in one block share their columns."""
+        levels = np.array([self.assembly.settings[i // (2 * self.filters)].level.name for i in index])
+        return [index[levels == name] for name in dict.fromkeys(levels)]
+
+    def _certify(self, index: int, target: float) -> None:
+        """Rung 2."""
+        self.tally.certified += 1
+        program = self.programs(np.array([index]), coarse=False)
+        result = certify(program, self.gap, target, self.hints.get(int(index)))
+        self.found[int(index)] = result
+        self.upper[index] = min(self.upper[index], result.bound)
+        self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False))
+
+
+def rough_proof(program: Program, target: float) -> tuple[Proof, Array, Array, np.ndarray]:
+    """Three batched convex programs: a proof of each program, its bound, the CNR its points reach, and the LEDs lit.
+
+    The LEDs lit, (P, L) bool, are those with a noticeable share of the signal in the two quiet points.
+    """
+    top = relax(program, None, **ROUGH)
+    own = np.maximum(contrast_to_noise(program, top.point), max(1e-3 * target, 1e-12))
+    ceiling = np.maximum(np.einsum("pn,pn->p", program.signal, top.point), 1e-300)
+    steep = relax(program, 2 * ceiling / own**2, **ROUGH)
+    own = np.maximum(own, contrast_to_noise(program, steep.point))
+    flat = relax(program, ceiling / np.maximum(own, target) ** 2, **ROUGH)
+    own = np.maximum(own, contrast_to_noise(program, flat.point))
+    proof = Proof(ceiling=top.line, lines=(steep.line, flat.line, replace(steep.line, anchor=ceiling)))
+    lit = np.zeros((program.size, program.heat_cap.size), dtype=bool)
+    for relaxed in (steep, flat):
+        share = np.abs(program.signal * relaxed.point)[:, :-1]
+        lit[:, program.led] |= share > 1e-2 * share.max(axis=1, keepdims=True)
+    return proof, bound(program, proof), own, lit

@@ -1,0 +1,109 @@
+"""Check a whole solution again, from the problem up, with code that knows no solver.
+
+What is re-derived: the arrays of every configuration, the winner's feasibility and CNR (arrays and forward model),
+the bound of every configuration from its multipliers, and that the configurations bounded are all there are.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from codesign.assemble import Assembly, flipped
+from codesign.certificate import check_bound, check_point
+from codesign.design import evaluate
+from codesign.errors import CertificateError
+from codesign.program import Array
+from codesign.search.bounds import simple_proof
+from codesign.search.walk import Evidence, Walk
+from codesign.solve import Solution
+
+#: Forward model and optimiser's arrays must agree to this at equal junction temperatures.
+FORWARD_TOLERANCE = 1e-9
+#: Programs bounded at a time.
+_BATCH = 256
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Verdict:
+    """What was checked: configurations, how many by multipliers kept, the largest bound, the winner's CNR."""
+
+    configurations: int
+    by_kept_multipliers: int
+    largest_bound: float
+    value: float
+
+
+def verify(solution: Solution) -> Verdict:
+    """Re-derive the proof of a solution.
+
+    Raises
+    ------
+    CertificateError
+        Naming the first thing that does not hold.
+    """
+    certificate, problem = solution.certificate, solution.problem
+    junction = np.array([certificate.junction_c[channel.id] for channel in problem.channels])
+    walk = Walk.blank(Assembly(problem, junction))
+    if walk.upper.size != certificate.configurations:
+        raise CertificateError(
+            f"certificate: {certificate.configurations} configurations were searched, the problem has {walk.upper.size}"
+        )
+    kept = _by_evidence(walk, solution.evidence)
+    open_ = kept > certificate.bound * (1 + 1e-12)
+    closed = _by_closed_form(walk, open_)
+    bounds = np.minimum(kept, closed)
+    if not np.max(bounds) <= certificate.bound * (1 + 1e-12):
+        worst = int(np.argmax(bounds))
+        raise CertificateError(
+            f"certificate: configuration {worst} is bounded by {bounds[worst]:.10g} only, above the claimed {certificate.bound:.10g}"
+        )
+    value = _check_winner(walk, solution)
+    return Verdict(
+        configurations=bounds.size,
+        by_kept_multipliers=int((~open_).sum()),
+        largest_bound=float(np.max(bounds)),
+        value=value,
+    )
+
+
+def _by_evidence(walk: Walk, evidence: tuple[Evidence, ...]) -> Array:
+    """Bounds from the multipliers kept, ``inf`` where there are none."""
+    bounds = np.full(walk.upper.size, np.inf)
+    for item in evidence:
+        program = walk.programs(item.index, coarse=item.coarse)
+        bounds[item.index] = np.minimum(bounds[item.index], check_bound(program, item.proof, np.inf))
+    return bounds
+
+
+def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
+    """Bounds of the configurations that were dropped by the closed form, derived anew."""
+    bounds = np.full(walk.upper.size, np.inf)
+    per_setting = 2 * walk.filters
+    for number, setting in enumerate(walk.assembly.settings):
+        part = slice(number * per_setting, (number + 1) * per_setting)
+        if wanted[part].any():
+            program = walk.assembly.program(setting, coarse=True)
+            both = [check_bound(side, simple_proof(side)[0], np.inf) for side in (program, flipped(program))]
+            bounds[part] = np.stack(both, axis=1).ravel()
+    return bounds
+
+
+def _check_winner(walk: Walk, solution: Solution) -> float:
+    """Winner's point against the arrays, and its recipe against the forward model."""
+    certificate = solution.certificate
+    value = check_point(
+        walk.programs(np.array([solution.winner]), coarse=False), solution.point, certificate.value
+    )
+    same = evaluate(solution.problem, solution.optimum.design, junction_c=certificate.junction_c)
+    if not abs(same.cnr / value - 1) <= FORWARD_TOLERANCE:
+        raise CertificateError(
+            f"certificate: the forward model gives {same.cnr:.12g}, the optimiser's arrays {value:.12g}"
+        )
+    again = evaluate(solution.problem, solution.recipe.design)
+    if not again.feasible or abs(again.cnr - solution.recipe.cnr) > 1e-9 * again.cnr:
+        raise CertificateError(
+            "certificate: the settable recipe is not feasible, or its CNR is not what is claimed"
+        )
+    return value
