@@ -51,9 +51,7 @@ def light_segments(problem: Problem, setting: Setting, junction_c: Array) -> Seg
         led = channel.led
         width, flux, power = led.segments(setting.level.current_ma[index])
         emitted = led.flux_w() * float(
-            flux_at_temperature(
-                junction_c[index], led.flux_temperature_coefficient_per_k, led.reference_junction_c
-            )
+            flux_at_temperature(junction_c[index], led.flux_temperature_coefficient_per_k, led.reference_junction_c)
         )
         heat = power - emitted * flux
         cap = _heat_cap(problem, channel)
@@ -166,15 +164,11 @@ class Assembly:
                 if wanted.channels != "all" and channel not in _listed(wanted.channels):
                     continue
                 for gain in camera.gain_settings():
-                    if wanted.gains_db is not None and all(
-                        abs(gain.gain_db - g) > 1e-9 for g in wanted.gains_db
-                    ):
+                    if wanted.gains_db is not None and all(abs(gain.gain_db - g) > 1e-9 for g in wanted.gains_db):
                         continue
                     for f_number in spec.optics.f_numbers:
                         for level in pulse_levels(self.problem):
-                            yield Setting(
-                                camera=camera, channel=channel, gain=gain, f_number=f_number, level=level
-                            )
+                            yield Setting(camera=camera, channel=channel, gain=gain, f_number=f_number, level=level)
 
     def _without_dominated(self, settings: list[Setting]) -> Iterator[Setting]:
         """Drop pulse levels longer than any exposure allowed while a shorter one already covers it."""
@@ -183,10 +177,7 @@ class Assembly:
             key = (setting.camera.id, setting.channel, setting.gain.gain_db, setting.f_number)
             if key in covered:
                 continue
-            if (
-                exposure_window(self.problem, replace(setting, level=_UNBOUNDED)).high.time
-                <= setting.level.longest_s
-            ):
+            if exposure_window(self.problem, replace(setting, level=_UNBOUNDED)).high.time <= setting.level.longest_s:
                 covered.add(key)
             yield setting
 
@@ -236,9 +227,7 @@ class Assembly:
             self._segments[key] = optimistic(found) if coarse else found
         return self._segments[key]
 
-    def program(
-        self, setting: Setting, filters: slice | np.ndarray = slice(None), *, coarse: bool = False
-    ) -> Program:
+    def program(self, setting: Setting, filters: slice | np.ndarray = slice(None), *, coarse: bool = False) -> Program:
         """Programs of one setting for some filters, target brighter than background (see `flipped`).
 
         ``coarse`` gives the relaxation of `optimistic`: one column per LED, bounds only.

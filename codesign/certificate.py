@@ -177,9 +177,7 @@ def envelope(floor: Array, ceiling: Array, found: Curves) -> tuple[Array, Array]
         quadratic = c * z**2 + found.e[:, None, :] * z + found.k[:, None, :]
         usable = (high <= found.anchor[:, None, :] * (1 + 1e-12)) & (quadratic > 0)
         parabolas = np.where(usable, 1.0 / quadratic, np.inf)
-    stretch = np.minimum(
-        best[:, :, 0], np.minimum(lines.min(axis=2), np.nan_to_num(parabolas, nan=np.inf).min(axis=2))
-    )
+    stretch = np.minimum(best[:, :, 0], np.minimum(lines.min(axis=2), np.nan_to_num(parabolas, nan=np.inf).min(axis=2)))
     stretch = np.where(points[:, 1:] > points[:, :-1], stretch, 0.0)
     pick, row = np.argmax(stretch, axis=1), np.arange(floor.size)
     left = (low[row, pick, 0] > 0) & (at_low.min(axis=2)[row, pick] > ratio.min(axis=2)[row, pick])
@@ -205,9 +203,7 @@ def check_point(program: Program, y: Array, claimed: float) -> float:
         raise CertificateError(f"certificate: the recipe exceeds a limit by {excess:.2e} of it")
     actual = float(contrast_to_noise(program, y[None])[0])
     if not abs(actual - claimed) <= 1e-9 * max(abs(actual), 1e-12):
-        raise CertificateError(
-            f"certificate: the recipe's CNR is {actual:.12g}, not the claimed {claimed:.12g}"
-        )
+        raise CertificateError(f"certificate: the recipe's CNR is {actual:.12g}, not the claimed {claimed:.12g}")
     return actual
 
 

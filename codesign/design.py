@@ -139,9 +139,7 @@ def setting_of(problem: Problem, design: Design) -> Setting:
     """Look up the parts of a design. Raises ProblemError naming what is unknown."""
     camera = problem.camera(design.camera)
     if design.channel not in camera.channel_names:
-        raise ProblemError(
-            f"recipe: channel is {design.channel!r}; {nearest(design.channel, camera.channel_names)}"
-        )
+        raise ProblemError(f"recipe: channel is {design.channel!r}; {nearest(design.channel, camera.channel_names)}")
     exposure = design.exposure_us * 1e-6
     return Setting(
         camera=camera,
@@ -157,9 +155,7 @@ def _gain(camera: Camera, gain_db: float) -> GainSetting:
         if abs(gain.gain_db - gain_db) < 1e-9:
             return gain
     offered = ", ".join(f"{gain.gain_db:g}" for gain in camera.gain_settings())
-    raise ProblemError(
-        f"recipe: gain_db is {gain_db:g}, must be one of {offered} that camera {camera.id!r} offers"
-    )
+    raise ProblemError(f"recipe: gain_db is {gain_db:g}, must be one of {offered} that camera {camera.id!r} offers")
 
 
 def level_at(problem: Problem, exposure_s: float) -> PulseLevel:
@@ -178,9 +174,9 @@ def led_state(problem: Problem, channel: LedChannel, drive_ma: float, duty: floa
     resistance = thermal_resistance(problem, channel) * duty
     coefficient, air = led.flux_temperature_coefficient_per_k, problem.spec.temperature.air_c
     # T = air + R (P - F (1 + c (T - T_ref))) solved for T; flux never below 0.
-    junction = (
-        air + resistance * (electrical - reference * (1 - coefficient * led.reference_junction_c))
-    ) / (1 + resistance * reference * coefficient)
+    junction = (air + resistance * (electrical - reference * (1 - coefficient * led.reference_junction_c))) / (
+        1 + resistance * reference * coefficient
+    )
     factor = float(flux_at_temperature(junction, coefficient, led.reference_junction_c))
     if factor <= 0:
         junction, factor = air + resistance * electrical, 0.0
@@ -194,9 +190,7 @@ def led_state(problem: Problem, channel: LedChannel, drive_ma: float, duty: floa
     )
 
 
-def evaluate(
-    problem: Problem, design: Design, *, junction_c: Mapping[str, float] | None = None
-) -> Performance:
+def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float] | None = None) -> Performance:
     """Predict what a recipe does: electrons, grey values, noise, CNR and the use of every limit.
 
     Parameters
@@ -224,17 +218,13 @@ def evaluate(
     setting = setting_of(problem, design)
     t = design.exposure_us * 1e-6
     duty = problem.duty(t)
-    states = tuple(
-        led_state(problem, problem.channel(led), ma, duty) for led, ma in design.drive_ma.items() if ma > 0
-    )
+    states = tuple(led_state(problem, problem.channel(led), ma, duty) for led, ma in design.drive_ma.items() if ma > 0)
     if junction_c is not None:
         states = tuple(replace(state, junction_c=junction_c[state.id]) for state in states)
     light = _electrons(problem, setting, design, states, t)
     sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
     noise = {
-        term.name: tuple(
-            term.variance(sensor, light.electrons[i], light.clutter[i], averaging) for i in (0, 1)
-        )
+        term.name: tuple(term.variance(sensor, light.electrons[i], light.clutter[i], averaging) for i in (0, 1))
         for term in NOISE_TERMS
     }
     difference = float(light.electrons[0].sum() - light.electrons[1].sum())
@@ -263,9 +253,7 @@ def _check_values(problem: Problem, design: Design) -> None:
     for led, drive in design.drive_ma.items():
         top = problem.channel(led).led.largest_current_ma
         if not 0 <= drive <= top * (1 + 1e-9):
-            raise ProblemError(
-                f"recipe: drive_ma.{led} is {drive:g}, must be 0 to {top:g} mA, its largest rating"
-            )
+            raise ProblemError(f"recipe: drive_ma.{led} is {drive:g}, must be 0 to {top:g} mA, its largest rating")
 
 
 @dataclass(frozen=True, slots=True)
@@ -276,9 +264,7 @@ class _Light:
     clutter: tuple[Array, Array]
 
 
-def _electrons(
-    problem: Problem, setting: Setting, design: Design, states: tuple[LedState, ...], t: float
-) -> _Light:
+def _electrons(problem: Problem, setting: Setting, design: Design, states: tuple[LedState, ...], t: float) -> _Light:
     """Integrate the light of the recipe over wavelength for each surface."""
     scene = reflectances(problem)
     weight = electrons_per_irradiance(problem, setting.camera, setting.channel, design.f_number)
@@ -344,9 +330,7 @@ def _limit_uses(problem, setting: Setting, design: Design, states, readings) -> 
         air, top = problem.spec.temperature.air_c, junction_limit(problem, channel)
         share = (state.junction_c - air) / (top - air) if top > air else np.inf
         found.append(
-            LimitUse(
-                name=f"junction, {state.id}", unit="deg C", value=state.junction_c, bound=top, share=share
-            )
+            LimitUse(name=f"junction, {state.id}", unit="deg C", value=state.junction_c, bound=top, share=share)
         )
     short = depth_shortfall(problem, setting.camera, design.f_number)
     if problem.spec.optics.required_depth_mm is not None:
@@ -359,10 +343,7 @@ def _depth_use(problem: Problem, setting: Setting, design: Design, short: float 
 
     wanted = problem.spec.optics.required_depth_mm
     depth = (
-        depth_of_field(
-            design.f_number, setting.camera.pixel_pitch_um * 1e-6, problem.spec.optics.magnification
-        )
-        * 1e3
+        depth_of_field(design.f_number, setting.camera.pixel_pitch_um * 1e-6, problem.spec.optics.magnification) * 1e3
     )
     return LimitUse(
         name="depth of field",

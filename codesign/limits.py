@@ -86,23 +86,17 @@ def _camera_range(problem: Problem, setting: Setting) -> list[TimeLimit]:
     camera = setting.camera
     return [
         TimeLimit(name="camera longest exposure", unit="us", rate=1e6, bound=camera.exposure_max_us),
-        TimeLimit(
-            name="camera shortest exposure", unit="us", rate=1e6, bound=camera.exposure_min_us, floor=True
-        ),
+        TimeLimit(name="camera shortest exposure", unit="us", rate=1e6, bound=camera.exposure_min_us, floor=True),
     ]
 
 
 def _wanted_range(problem: Problem, setting: Setting) -> list[TimeLimit]:
     timing, found = problem.spec.timing, []
     if timing.exposure_max_us is not None:
-        found.append(
-            TimeLimit(name="wanted longest exposure", unit="us", rate=1e6, bound=timing.exposure_max_us)
-        )
+        found.append(TimeLimit(name="wanted longest exposure", unit="us", rate=1e6, bound=timing.exposure_max_us))
     if timing.exposure_min_us is not None:
         found.append(
-            TimeLimit(
-                name="wanted shortest exposure", unit="us", rate=1e6, bound=timing.exposure_min_us, floor=True
-            )
+            TimeLimit(name="wanted shortest exposure", unit="us", rate=1e6, bound=timing.exposure_min_us, floor=True)
         )
     return found
 
@@ -111,9 +105,7 @@ def _motion_blur(problem: Problem, setting: Setting) -> list[TimeLimit]:
     motion = problem.spec.motion
     if motion is None:
         return []
-    pixels_per_second = (
-        motion.speed_mm_per_s * 1e3 * problem.spec.optics.magnification / setting.camera.pixel_pitch_um
-    )
+    pixels_per_second = motion.speed_mm_per_s * 1e3 * problem.spec.optics.magnification / setting.camera.pixel_pitch_um
     return [TimeLimit(name="motion blur", unit="pixel", rate=pixels_per_second, bound=motion.max_blur_px)]
 
 
@@ -121,11 +113,7 @@ def _frame_period(problem: Problem, setting: Setting) -> list[TimeLimit]:
     rate = problem.spec.timing.frame_rate_hz
     if rate is None:
         return []
-    return [
-        TimeLimit(
-            name="frame period", unit="ms", rate=1e3, bound=1e3 / rate, offset=setting.camera.readout_ms
-        )
-    ]
+    return [TimeLimit(name="frame period", unit="ms", rate=1e3, bound=1e3 / rate, offset=setting.camera.readout_ms)]
 
 
 def _pulse(problem: Problem, setting: Setting) -> list[TimeLimit]:
@@ -223,10 +211,7 @@ def pulse_levels(problem: Problem) -> list[PulseLevel]:
     if not problem.strobe:
         return [last]
     options = [
-        [
-            (*_step(problem, c, b.max_width_us, b.max_duty), min(b.max_current_ma, c.driver_max_ma))
-            for b in c.led.pulse
-        ]
+        [(*_step(problem, c, b.max_width_us, b.max_duty), min(b.max_current_ma, c.driver_max_ma)) for b in c.led.pulse]
         for c in problem.channels
     ]
     ends = sorted({(end, cause) for led in options for end, cause, _ in led})
@@ -236,15 +221,9 @@ def pulse_levels(problem: Problem) -> list[PulseLevel]:
             max([s, *(ma for last_s, _, ma in led if last_s >= end * (1 - 1e-12))])
             for s, led in zip(steady, options, strict=True)
         )
-        levels.append(
-            PulseLevel(name=f"pulses to {end * 1e6:.6g} us", longest_s=end, cause=cause, current_ma=current)
-        )
+        levels.append(PulseLevel(name=f"pulses to {end * 1e6:.6g} us", longest_s=end, cause=cause, current_ma=current))
     levels.append(last)
-    return [
-        a
-        for a, b in zip(levels, [*levels[1:], None], strict=True)
-        if b is None or a.current_ma != b.current_ma
-    ]
+    return [a for a, b in zip(levels, [*levels[1:], None], strict=True) if b is None or a.current_ma != b.current_ma]
 
 
 def depth_shortfall(problem: Problem, camera: Camera, f_number: float) -> float | None:

@@ -76,18 +76,12 @@ class NoiseTerm:
 
     def divisor(self, averaging: Averaging) -> float:
         """What averaging divides the variance by."""
-        return {"samples": averaging.pixels * averaging.frames, "pixels": averaging.pixels, "never": 1}[
-            self.averages
-        ]
+        return {"samples": averaging.pixels * averaging.frames, "pixels": averaging.pixels, "never": 1}[self.averages]
 
     def variance(self, sensor: Sensor, electrons: Array, clutter: Array, averaging: Averaging) -> float:
         """Variance at a pixel holding ``electrons`` (3,) of `SIGNALS` and clutter amplitudes (r,). [e⁻²]"""
         photo = electrons[0] + electrons[1]
-        total = (
-            self.constant(sensor)
-            + float(np.dot(self.linear, electrons))
-            + (self.relative(sensor) * photo) ** 2
-        )
+        total = self.constant(sensor) + float(np.dot(self.linear, electrons)) + (self.relative(sensor) * photo) ** 2
         if self.clutter:
             total += float(clutter @ clutter)
         return total / self.divisor(averaging)
@@ -122,16 +116,12 @@ class NoiseModel:
     clutter_share: float
 
 
-def noise_model(
-    sensor: Sensor, averaging: Averaging, terms: tuple[NoiseTerm, ...] = NOISE_TERMS
-) -> NoiseModel:
+def noise_model(sensor: Sensor, averaging: Averaging, terms: tuple[NoiseTerm, ...] = NOISE_TERMS) -> NoiseModel:
     """Sum the terms of a sensor, averaging applied."""
     share = [1.0 / term.divisor(averaging) for term in terms]
     return NoiseModel(
         constant=sum(s * term.constant(sensor) for s, term in zip(share, terms, strict=True)),
         linear=sum((s * np.array(term.linear) for s, term in zip(share, terms, strict=True)), np.zeros(3)),
-        relative=float(
-            np.sqrt(sum(s * term.relative(sensor) ** 2 for s, term in zip(share, terms, strict=True)))
-        ),
+        relative=float(np.sqrt(sum(s * term.relative(sensor) ** 2 for s, term in zip(share, terms, strict=True)))),
         clutter_share=sum(s for s, term in zip(share, terms, strict=True) if term.clutter),
     )

@@ -87,9 +87,7 @@ def stack(blocks: list[Program]) -> Program:
     """Join blocks that share columns and row names."""
     shared = ("row_names", "width", "led", "heat", "heat_cap")
     merged = {
-        f.name: np.concatenate([getattr(b, f.name) for b in blocks])
-        for f in fields(Program)
-        if f.name not in shared
+        f.name: np.concatenate([getattr(b, f.name) for b in blocks]) for f in fields(Program) if f.name not in shared
     }
     return replace(blocks[0], **merged)
 
@@ -97,9 +95,7 @@ def stack(blocks: list[Program]) -> Program:
 def variance(program: Program, y: Array) -> Array:
     """Mean noise variance ``c + s·y + |R y|²`` of each program. ``y``: (P, n+1). [e⁻²]"""
     quadratic = np.einsum("prn,pn->pr", program.noise_rows, y)
-    return (
-        program.floor + np.einsum("pn,pn->p", program.shot, y) + np.einsum("pr,pr->p", quadratic, quadratic)
-    )
+    return program.floor + np.einsum("pn,pn->p", program.shot, y) + np.einsum("pr,pr->p", quadratic, quadratic)
 
 
 def contrast_to_noise(program: Program, y: Array) -> Array:

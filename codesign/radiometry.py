@@ -147,9 +147,7 @@ class RateTable:
     def __init__(self, problem: Problem, junction_c: Array) -> None:
         self.problem = problem
         scene = reflectances(problem)
-        light = np.stack(
-            [channel_irradiance(problem, c, t) for c, t in zip(problem.channels, junction_c, strict=True)]
-        )
+        light = np.stack([channel_irradiance(problem, c, t) for c, t in zip(problem.channels, junction_c, strict=True)])
         gloss = np.array([channel.specular_weight for channel in problem.channels])
         self.clutter_rank, clutter = _main_directions(scene.clutter)
         curves = np.concatenate([scene.mean, clutter])

@@ -97,6 +97,4 @@ def _neighbours(problem: Problem, optimum: Design, design: Design) -> Iterator[D
                 ma = _steps(count + change, step_ma)
                 if 0 <= ma <= top:
                     drive = {**design.drive_ma, led: ma}
-                    yield replace(
-                        design, exposure_us=exposure, drive_ma={k: v for k, v in drive.items() if v > 0}
-                    )
+                    yield replace(design, exposure_us=exposure, drive_ma={k: v for k, v in drive.items() if v > 0})

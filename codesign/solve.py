@@ -164,9 +164,7 @@ def solve(
     )
 
 
-def settle(
-    problem: Problem, configuration: Configuration, junction: Array, gap: float
-) -> tuple[float, Array]:
+def settle(problem: Problem, configuration: Configuration, junction: Array, gap: float) -> tuple[float, Array]:
     """Iterate one configuration's junction temperatures to self-consistency.
 
     Returns how far ``junction`` is from what its own optimum leads to [K], and the settled temperatures (L,). LEDs
@@ -193,9 +191,7 @@ def _reached(problem: Problem, performance: Performance, junction: Array) -> Arr
     return np.array([states.get(c.id, t) for c, t in zip(problem.channels, junction, strict=True)])
 
 
-def _certificate(
-    walk: Walk, best: int, known, result: Certified, design: Design, optimum: Performance
-) -> Certificate:
+def _certificate(walk: Walk, best: int, known, result: Certified, design: Design, optimum: Performance) -> Certificate:
     """Check the winner with code that knows no solver, and put the numbers of the proof together."""
     problem = walk.assembly.problem
     check_point(walk.programs(np.array([best]), coarse=False), result.point, result.value)

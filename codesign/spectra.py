@@ -62,9 +62,7 @@ class Spectrum:
             )
         if not np.isfinite(values).all():
             at = int(np.argwhere(~np.isfinite(values))[0][-1])
-            raise CatalogError(
-                f"{self.label}: value at {wavelength[at]:g} nm is not finite; remove the point"
-            )
+            raise CatalogError(f"{self.label}: value at {wavelength[at]:g} nm is not finite; remove the point")
 
     def _check_axis(self) -> None:
         wavelength = self.wavelength_nm
@@ -83,9 +81,7 @@ class Spectrum:
     def __eq__(self, other: object) -> bool:
         if not isinstance(other, Spectrum):
             return NotImplemented
-        return np.array_equal(self.wavelength_nm, other.wavelength_nm) and np.array_equal(
-            self.values, other.values
-        )
+        return np.array_equal(self.wavelength_nm, other.wavelength_nm) and np.array_equal(self.values, other.values)
 
     def __hash__(self) -> int:
         return hash((self.wavelength_nm.tobytes(), self.values.tobytes()))
@@ -169,8 +165,7 @@ def wavelength_grid(lo: float, hi: float, step: float) -> FloatArray:
     """Return equally spaced wavelengths that include both ends, no further apart than ``step``. [nm]"""
     if not (0 < lo < hi and step > 0 and math.isfinite(hi)):
         raise ProblemError(
-            f"wavelength grid from {lo:g} to {hi:g} nm in steps of {step:g} nm: "
-            "must be 0 < from < to and step > 0"
+            f"wavelength grid from {lo:g} to {hi:g} nm in steps of {step:g} nm: must be 0 < from < to and step > 0"
         )
     intervals = max(1, math.ceil((hi - lo) / step - 1e-9))
     return np.linspace(lo, hi, intervals + 1)
@@ -270,13 +265,9 @@ def _check_header(label: str, line: int, header: list[str]) -> None:
                 "save with commas between columns and points as decimal marks"
             )
     if header[0] != WAVELENGTH_COLUMN:
-        raise CatalogError(
-            f"{where}: first column is {header[0]!r}, must be '{WAVELENGTH_COLUMN}', in nanometres"
-        )
+        raise CatalogError(f"{where}: first column is {header[0]!r}, must be '{WAVELENGTH_COLUMN}', in nanometres")
     if len(header) < 2 or not all(header):
-        raise CatalogError(
-            f"{where}: header {','.join(header)!r} must name at least one value column, none empty"
-        )
+        raise CatalogError(f"{where}: header {','.join(header)!r} must name at least one value column, none empty")
     repeated = next((name for name in header if header.count(name) > 1), None)
     if repeated:
         raise CatalogError(f"{where}: column {repeated!r} appears twice; give each column its own name")
@@ -286,9 +277,7 @@ def _numbers(label: str, line: int, header: list[str], cells: list[str]) -> list
     where = f"{label}:{line}"
     if len(cells) != len(header):
         advice = "decimal commas? write decimal points" if len(cells) > len(header) else "fill the row"
-        raise CatalogError(
-            f"{where}: {len(cells)} cells {','.join(cells)!r}, must be {len(header)}; {advice}"
-        )
+        raise CatalogError(f"{where}: {len(cells)} cells {','.join(cells)!r}, must be {len(header)}; {advice}")
     return [_number(where, name, cell) for name, cell in zip(header, cells, strict=True)]
 
 
@@ -312,9 +301,7 @@ def _check_wavelengths(label: str, lines: tuple[int, ...], wavelength: FloatArra
         )
     if not wavelength.min() > 0:
         row = int(np.argmin(wavelength))
-        raise CatalogError(
-            f"{label}:{lines[row]}: wavelength_nm is {wavelength[row]:g}, must be > 0; correct the row"
-        )
+        raise CatalogError(f"{label}:{lines[row]}: wavelength_nm is {wavelength[row]:g}, must be > 0; correct the row")
     for i, step in enumerate(np.diff(wavelength)):
         if step > 0:
             continue

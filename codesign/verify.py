@@ -93,9 +93,7 @@ def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
 def _check_winner(walk: Walk, solution: Solution) -> float:
     """Winner's point against the arrays, and its recipe against the forward model."""
     certificate = solution.certificate
-    value = check_point(
-        walk.programs(np.array([solution.winner]), coarse=False), solution.point, certificate.value
-    )
+    value = check_point(walk.programs(np.array([solution.winner]), coarse=False), solution.point, certificate.value)
     same = evaluate(solution.problem, solution.optimum.design, junction_c=certificate.junction_c)
     if not abs(same.cnr / value - 1) <= FORWARD_TOLERANCE:
         raise CertificateError(
@@ -103,7 +101,5 @@ def _check_winner(walk: Walk, solution: Solution) -> float:
         )
     again = evaluate(solution.problem, solution.recipe.design)
     if not again.feasible or abs(again.cnr - solution.recipe.cnr) > 1e-9 * again.cnr:
-        raise CertificateError(
-            "certificate: the settable recipe is not feasible, or its CNR is not what is claimed"
-        )
+        raise CertificateError("certificate: the settable recipe is not feasible, or its CNR is not what is claimed")
     return value

@@ -27,9 +27,7 @@ class Silicon(Record):
     collection_depth_um: float = Field(gt=0, description="depth from which electrons are collected [um]")
     gate_layer_um: float = Field(default=0.0, ge=0, description="poly-silicon gate of a MOS pixel [um]")
     coating_index: float | None = Field(default=None, ge=1, le=4, description="index of the coating")
-    coating_thickness_nm: float | None = Field(
-        default=None, gt=0, description="thickness of the coating [nm]"
-    )
+    coating_thickness_nm: float | None = Field(default=None, gt=0, description="thickness of the coating [nm]")
     band_gap_ev: float = Field(default=1.12, gt=0.1, lt=10, description="band gap, sets the cut-off [eV]")
     fill_factor: float = Field(default=1.0, gt=0, le=1, description="light-sensitive share of the pixel")
 
@@ -46,16 +44,12 @@ class Channel(Record):
     """One colour channel: a measured curve or the silicon model."""
 
     name: str = Field(min_length=1, description="'mono', 'red', ...")
-    curve: str | None = Field(
-        default=None, min_length=1, description="CSV with wavelength_nm and the response"
-    )
+    curve: str | None = Field(default=None, min_length=1, description="CSV with wavelength_nm and the response")
     column: str | None = Field(default=None, description="column of the curve file, when it has several")
     quantity: Literal["quantum_efficiency", "responsivity_a_per_w"] | None = Field(
         default=None, description="what the curve holds"
     )
-    unit: Literal["percent", "fraction", "a_per_w"] | None = Field(
-        default=None, description="unit of the curve"
-    )
+    unit: Literal["percent", "fraction", "a_per_w"] | None = Field(default=None, description="unit of the curve")
     outside: Literal["error", "zero"] = Field(
         default="error", description="'zero' states that the channel is blind beyond the ends of its curve"
     )
@@ -66,15 +60,11 @@ class Channel(Record):
         if (self.curve is None) == (self.silicon is None):
             raise ValueError(f"channel {self.name!r} must have either curve or silicon, one of the two")
         if self.silicon is not None and (self.quantity or self.unit or self.column):
-            raise ValueError(
-                f"channel {self.name!r}: quantity, unit and column belong to a curve, not to silicon"
-            )
+            raise ValueError(f"channel {self.name!r}: quantity, unit and column belong to a curve, not to silicon")
         if self.curve is not None:
             allowed = {"quantum_efficiency": ("percent", "fraction"), "responsivity_a_per_w": ("a_per_w",)}
             if self.quantity is None:
-                raise ValueError(
-                    f"channel {self.name!r}: quantity is missing, must be {' or '.join(allowed)}"
-                )
+                raise ValueError(f"channel {self.name!r}: quantity is missing, must be {' or '.join(allowed)}")
             if self.unit not in allowed[self.quantity]:
                 raise ValueError(
                     f"channel {self.name!r}: unit is {self.unit!r}, must be "
@@ -122,9 +112,7 @@ class Camera(Part):
     exposure_min_us: float = Field(gt=0, description="shortest exposure [us]")
     exposure_max_us: float = Field(gt=0, description="longest exposure [us]")
     exposure_step_us: float = Field(gt=0, description="exposure step [us]")
-    readout_ms: float = Field(
-        default=0.0, ge=0, description="time per frame in which no exposure can run [ms]"
-    )
+    readout_ms: float = Field(default=0.0, ge=0, description="time per frame in which no exposure can run [ms]")
     gains: tuple[Gain, ...] = Field(default=(Gain(gain_db=0.0),), min_length=1, description="gain settings")
     channels: tuple[Channel, ...] = Field(min_length=1, description="one 'mono' or several colours")
 
@@ -133,13 +121,11 @@ class Camera(Part):
         stated = [name for name in ("dark_current_e_per_s", "dark_current_na_per_cm2") if self._has(name)]
         if len(stated) != 1:
             raise ValueError(
-                f"{len(stated)} dark currents are stated, must be one: "
-                "dark_current_e_per_s or dark_current_na_per_cm2"
+                f"{len(stated)} dark currents are stated, must be one: dark_current_e_per_s or dark_current_na_per_cm2"
             )
         if self.exposure_max_us < self.exposure_min_us:
             raise ValueError(
-                f"exposure_max_us is {self.exposure_max_us:g}, "
-                f"must be >= exposure_min_us {self.exposure_min_us:g}"
+                f"exposure_max_us is {self.exposure_max_us:g}, must be >= exposure_min_us {self.exposure_min_us:g}"
             )
         for values, key in (
             ([channel.name for channel in self.channels], "channels name"),
@@ -157,14 +143,10 @@ class Camera(Part):
     def _check_levels(self) -> None:
         """Catch values that contradict each other whatever the camera."""
         if self.read_noise_e >= self.full_well_e:
-            raise ValueError(
-                f"read_noise_e is {self.read_noise_e:g}, must be below full_well_e {self.full_well_e:g}"
-            )
+            raise ValueError(f"read_noise_e is {self.read_noise_e:g}, must be below full_well_e {self.full_well_e:g}")
         top = 2**self.bits - 1
         if self.black_level_dn >= top:
-            raise ValueError(
-                f"black_level_dn is {self.black_level_dn:g}, must be below the top grey value {top}"
-            )
+            raise ValueError(f"black_level_dn is {self.black_level_dn:g}, must be below the top grey value {top}")
         well_dn = self.full_well_e * self.conversion_gain_dn_per_e
         if not 0.02 < well_dn / top < 50:
             raise ValueError(
@@ -259,9 +241,7 @@ class Camera(Part):
         scaled = self.conversion_gain_dn_per_e * 10 ** (gain.gain_db / 20)
         return GainSetting(
             gain_db=gain.gain_db,
-            conversion_gain_dn_per_e=scaled
-            if gain.conversion_gain_dn_per_e is None
-            else gain.conversion_gain_dn_per_e,
+            conversion_gain_dn_per_e=scaled if gain.conversion_gain_dn_per_e is None else gain.conversion_gain_dn_per_e,
             read_noise_e=self.read_noise_e if gain.read_noise_e is None else gain.read_noise_e,
             full_well_e=self.full_well_e if gain.full_well_e is None else gain.full_well_e,
         )

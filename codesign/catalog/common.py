@@ -36,9 +36,7 @@ class Part(Record):
         description="name in lowercase letters, digits and single hyphens, e.g. 'nir-850-a'",
     )
     description: str = Field(default="", description="what it is, in words")
-    source: str = Field(
-        min_length=1, description="provenance: data sheet, page and revision, or who measured it"
-    )
+    source: str = Field(min_length=1, description="provenance: data sheet, page and revision, or who measured it")
     price: float | None = Field(default=None, ge=0, description="price per piece, any one currency")
     invented: bool = Field(default=False, description="true for made-up parts")
 
@@ -73,9 +71,7 @@ class Part(Record):
         curves = part.curve_files()
         for key, file in curves.items():
             if not (part._base_dir / file).is_file():
-                raise part.error(
-                    f"{key} is {file!r}, no such file; paths are relative to {where or 'the folder'}"
-                )
+                raise part.error(f"{key} is {file!r}, no such file; paths are relative to {where or 'the folder'}")
         return part
 
     def replaced(self, **changes: Any) -> Self:

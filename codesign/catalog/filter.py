@@ -58,13 +58,9 @@ class Filter(Part):
     )
     column: str | None = Field(default=None, description="column of the curve file, when it has several")
     unit: Literal["percent", "fraction"] | None = Field(default=None, description="unit of the curve")
-    center_nm: float | None = Field(
-        default=None, ge=150, le=20000, description="middle of the half-peak points [nm]"
-    )
+    center_nm: float | None = Field(default=None, ge=150, le=20000, description="middle of the half-peak points [nm]")
     fwhm_nm: float | None = Field(default=None, gt=0, description="full width at half maximum [nm]")
-    cut_nm: float | None = Field(
-        default=None, ge=150, le=20000, description="wavelength of half the peak [nm]"
-    )
+    cut_nm: float | None = Field(default=None, ge=150, le=20000, description="wavelength of half the peak [nm]")
     edge_width_nm: float | None = Field(default=None, gt=0, description="10 to 90 % width of an edge [nm]")
     peak_transmittance: float | None = Field(
         default=None, gt=0, le=1, description="fraction, 0 to 1; divide percent by 100"
@@ -77,14 +73,10 @@ class Filter(Part):
         default=None, gt=0, description="end of the blocked range; open at its peak above [nm]"
     )
     optical_density: float | None = Field(default=None, ge=0, le=10, description="-log10 of transmittance")
-    reference_thickness_mm: float | None = Field(
-        default=None, gt=0, description="thickness of the curve [mm]"
-    )
+    reference_thickness_mm: float | None = Field(default=None, gt=0, description="thickness of the curve [mm]")
     thickness_mm: float | None = Field(default=None, gt=0, description="thickness of this piece [mm]")
     refractive_index: float | None = Field(default=None, ge=1, le=4, description="for the loss at both faces")
-    parts: tuple[str, ...] | None = Field(
-        default=None, min_length=1, description="ids of the stacked filters"
-    )
+    parts: tuple[str, ...] | None = Field(default=None, min_length=1, description="ids of the stacked filters")
     effective_index: float | None = Field(
         default=None,
         ge=1,
@@ -104,8 +96,7 @@ class Filter(Part):
         if extra:
             allowed = ", ".join(sorted(needed | optional)) or "no further keys"
             raise ValueError(
-                f"{extra[0]} is {getattr(self, extra[0])!r}, not used by kind '{self.kind}'; "
-                f"it takes {allowed}"
+                f"{extra[0]} is {getattr(self, extra[0])!r}, not used by kind '{self.kind}'; it takes {allowed}"
             )
         if self.kind == "bandpass" and self.fwhm_nm >= 2 * self.center_nm:
             raise ValueError(f"fwhm_nm is {self.fwhm_nm:g}, must be below twice center_nm {self.center_nm:g}")
@@ -191,9 +182,7 @@ class Filter(Part):
         table = self.read_single_curve(self.curve or "", self.column)
         check_share(table, self.unit or "fraction")
         curve = table.column(table.names[0])
-        return Spectrum(
-            curve.wavelength_nm, curve.values * percent_factor(self.unit or "fraction"), curve.label
-        )
+        return Spectrum(curve.wavelength_nm, curve.values * percent_factor(self.unit or "fraction"), curve.label)
 
     def _curve_transmittance(self, grid: FloatArray, angles: FloatArray, weights: FloatArray) -> FloatArray:
         curve = self._measured()

@@ -97,8 +97,7 @@ def _check_slopes(current: FloatArray, flux: FloatArray, power: FloatArray) -> N
     if (np.diff(power_slope) < -1e-9 * power_slope[0]).any() or not (power > -1e-12).all():
         i = int(np.argmax(np.diff(power_slope) < 0)) + 1
         raise ValueError(
-            f"flux_curve[{i}] voltage_v makes current times voltage bend down, "
-            "must bend up; smooth the voltages"
+            f"flux_curve[{i}] voltage_v makes current times voltage bend down, must bend up; smooth the voltages"
         )
 
 

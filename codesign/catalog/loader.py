@@ -160,9 +160,7 @@ def _read_all(root: Path, head: dict[str, Any]) -> Iterable[Parts]:
         kind = path.stem.removesuffix("s")
         if kind not in PART_TYPES:
             names = ", ".join(f"{known_kind}s.csv" for known_kind in PART_TYPES)
-            raise CatalogError(
-                f"{path.name}: not a table of parts, must be one of {names}; put curves in curves/"
-            )
+            raise CatalogError(f"{path.name}: not a table of parts, must be one of {names}; put curves in curves/")
         yield _read_csv_parts(path, kind, root)
 
 
@@ -172,9 +170,7 @@ def _read_toml(path: Path) -> dict[str, Any]:
     except tomllib.TOMLDecodeError as error:
         raise CatalogError(f"{path.name}: not valid TOML, {error}; check quotes and brackets there") from None
     except UnicodeDecodeError as error:
-        raise CatalogError(
-            f"{path.name}: byte {error.start} is not UTF-8 text; save the file as UTF-8"
-        ) from None
+        raise CatalogError(f"{path.name}: byte {error.start} is not UTF-8 text; save the file as UTF-8") from None
 
 
 def _read_csv_parts(path: Path, kind: str, root: Path) -> Parts:
@@ -204,9 +200,7 @@ def _cell(cell: str, where: str) -> Any:
     try:
         return json.loads(cell)
     except json.JSONDecodeError as error:
-        raise CatalogError(
-            f"{where} is {cell!r}, not valid JSON: {error}; write e.g. [[100, 0.5], [350, 1]]"
-        ) from None
+        raise CatalogError(f"{where} is {cell!r}, not valid JSON: {error}; write e.g. [[100, 0.5], [350, 1]]") from None
 
 
 def _text(head: Mapping[str, Any], key: str) -> str:

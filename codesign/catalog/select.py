@@ -162,9 +162,7 @@ class _Evaluation:
                 return -inner
         if isinstance(node, ast.List | ast.Tuple):
             return tuple(self.value(item) for item in node.elts)
-        raise self._error(
-            node, "is outside the selection language; use names, numbers, text, lists, comparisons"
-        )
+        raise self._error(node, "is outside the selection language; use names, numbers, text, lists, comparisons")
 
     def _compare(self, node: ast.Compare) -> bool:
         values = [self.value(item) for item in (node.left, *node.comparators)]
@@ -178,9 +176,7 @@ class _Evaluation:
             return False
         sign, compare = COMPARISONS[type(step)]
         if isinstance(step, ORDERINGS) and isinstance(left, str) != isinstance(right, str):
-            raise self._error(
-                node, f"compares {left!r} {sign} {right!r}; compare text with text, numbers with numbers"
-            )
+            raise self._error(node, f"compares {left!r} {sign} {right!r}; compare text with text, numbers with numbers")
         try:
             return bool(compare(left, right))
         except TypeError:
@@ -192,9 +188,7 @@ class _Evaluation:
         try:
             return FUNCTIONS[node.func.id](*(self.value(item) for item in node.args))
         except TypeError:
-            raise self._error(
-                node, "looks for a word in something that holds none; use has(tags, ...)"
-            ) from None
+            raise self._error(node, "looks for a word in something that holds none; use has(tags, ...)") from None
 
     def _error(self, node: ast.expr, text: str) -> CatalogError:
         return CatalogError(f"selection {self.text!r}: {ast.unparse(node)!r} {text}")

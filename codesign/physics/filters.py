@@ -193,9 +193,7 @@ def bandpass(
     return _above_floor(shape, peak, blocking_od)
 
 
-def longpass(
-    wavelength_nm: ArrayLike, cut_nm: float, edge_width_nm: float, peak: float, blocking_od: float
-) -> Array:
+def longpass(wavelength_nm: ArrayLike, cut_nm: float, edge_width_nm: float, peak: float, blocking_od: float) -> Array:
     """Model of a long-pass filter: a logistic edge, half of the peak at ``cut_nm``.
 
     Parameters
@@ -218,9 +216,7 @@ def longpass(
     return _above_floor(1.0 / (1.0 + np.exp(np.clip(-distance, -_EXP_LIMIT, _EXP_LIMIT))), peak, blocking_od)
 
 
-def shortpass(
-    wavelength_nm: ArrayLike, cut_nm: float, edge_width_nm: float, peak: float, blocking_od: float
-) -> Array:
+def shortpass(wavelength_nm: ArrayLike, cut_nm: float, edge_width_nm: float, peak: float, blocking_od: float) -> Array:
     """Model of a short-pass filter; the mirror image of `longpass` about ``cut_nm``."""
     mirrored = 2.0 * cut_nm - np.asarray(wavelength_nm, dtype=float)
     return longpass(mirrored, cut_nm, edge_width_nm, peak, blocking_od)

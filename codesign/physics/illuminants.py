@@ -161,9 +161,7 @@ def spectral_irradiance(
         [W m⁻² nm⁻¹]
     """
     if (illuminance_lx is None) == (irradiance_w_per_m2 is None):
-        raise ProblemError(
-            f"ambient light {name!r}: give exactly one of illuminance_lx and irradiance_w_per_m2"
-        )
+        raise ProblemError(f"ambient light {name!r}: give exactly one of illuminance_lx and irradiance_w_per_m2")
     relative = named_illuminant(name, wavelength_nm, outside=outside)
     if irradiance_w_per_m2 is not None:
         return relative * (irradiance_w_per_m2 / integrate(relative, wavelength_nm))

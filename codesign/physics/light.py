@@ -150,9 +150,7 @@ def luminous_efficacy(wavelength_nm: ArrayLike, relative_spectrum: ArrayLike) ->
     return MAX_LUMINOUS_EFFICACY * seen / integrate(spectrum, wavelength_nm)
 
 
-def radiant_flux_from_luminous(
-    flux_lm: ArrayLike, wavelength_nm: ArrayLike, relative_spectrum: ArrayLike
-) -> Array:
+def radiant_flux_from_luminous(flux_lm: ArrayLike, wavelength_nm: ArrayLike, relative_spectrum: ArrayLike) -> Array:
     """Radiant flux of a source stated in lumens: ``flux / luminous_efficacy``. [W]"""
     return np.asarray(flux_lm, dtype=float) / luminous_efficacy(wavelength_nm, relative_spectrum)
 
@@ -257,9 +255,7 @@ def junction_temperature(
     return np.asarray(ambient_c, dtype=float) + np.asarray(thermal_resistance, dtype=float) * heat * duty
 
 
-def flux_at_temperature(
-    junction_c: ArrayLike, coefficient_per_k: ArrayLike, reference_c: ArrayLike = 25.0
-) -> Array:
+def flux_at_temperature(junction_c: ArrayLike, coefficient_per_k: ArrayLike, reference_c: ArrayLike = 25.0) -> Array:
     """Flux relative to that at the reference junction temperature, ``1 + c (T - T_ref)``, never below 0.
 
     The straight line of data sheets; see `flux_at_temperature_exponential` for the physical trend.

@@ -49,9 +49,7 @@ def quantization_variance_e2(conversion_gain: ArrayLike) -> Array:
     return QUANTIZATION_VARIANCE_DN2 / np.asarray(conversion_gain, dtype=float) ** 2
 
 
-def grey_value_variance(
-    mean_electrons: ArrayLike, *, dark_noise_e: ArrayLike, conversion_gain: ArrayLike
-) -> Array:
+def grey_value_variance(mean_electrons: ArrayLike, *, dark_noise_e: ArrayLike, conversion_gain: ArrayLike) -> Array:
     """Temporal variance of the grey value, ``K² (σ_d² + μ_e) + 1/12`` (photon transfer, eq. 15). [DN²]"""
     gain = np.asarray(conversion_gain, dtype=float)
     electrons = np.asarray(dark_noise_e, dtype=float) ** 2 + mean_electrons
@@ -134,9 +132,7 @@ def saturation_signal_to_noise(saturation_e: ArrayLike) -> Array:
     return np.sqrt(np.asarray(saturation_e, dtype=float))
 
 
-def dynamic_range(
-    saturation_e: ArrayLike, *, dark_noise_e: ArrayLike, conversion_gain: ArrayLike = np.inf
-) -> Array:
+def dynamic_range(saturation_e: ArrayLike, *, dark_noise_e: ArrayLike, conversion_gain: ArrayLike = np.inf) -> Array:
     """Saturation over sensitivity threshold, both in photo-electrons. [1]"""
     threshold = sensitivity_threshold_e(dark_noise_e=dark_noise_e, conversion_gain=conversion_gain)
     return np.asarray(saturation_e, dtype=float) / threshold
@@ -147,9 +143,7 @@ def decibels(ratio: ArrayLike) -> Array:
     return 20.0 * np.log10(np.asarray(ratio, dtype=float))
 
 
-def dark_noise_at_exposure(
-    read_noise_e: ArrayLike, dark_current_e_per_s: ArrayLike, exposure_s: ArrayLike
-) -> Array:
+def dark_noise_at_exposure(read_noise_e: ArrayLike, dark_current_e_per_s: ArrayLike, exposure_s: ArrayLike) -> Array:
     """Temporal dark noise with the shot noise of dark electrons, ``sqrt(σ_d0² + μ_I t)`` (eq. 30). [e⁻]"""
     electrons = np.asarray(dark_current_e_per_s, dtype=float) * exposure_s
     return np.sqrt(np.asarray(read_noise_e, dtype=float) ** 2 + electrons)

@@ -205,9 +205,7 @@ def silicon_quantum_efficiency(
     if pixel not in ("photodiode", "mos"):
         raise ProblemError(f"pixel must be 'photodiode' or 'mos', is {pixel!r}")
     if pixel == "photodiode" and gate_layer_um != 0.0:
-        raise ProblemError(
-            f"a photodiode has no gate, but gate_layer_um is {gate_layer_um:g}; use pixel 'mos'"
-        )
+        raise ProblemError(f"a photodiode has no gate, but gate_layer_um is {gate_layer_um:g}; use pixel 'mos'")
     if (coating_index is None) != (coating_thickness_nm is None):
         raise ProblemError("coating_index and coating_thickness_nm must be given together")
     wavelength = np.asarray(wavelength_nm, dtype=float)

@@ -137,9 +137,7 @@ class _Resolver:
 
     def _surface(self, key: str, name: str) -> Surface:
         if name not in self.catalog.surfaces:
-            raise self._error(
-                f"scene.{key} is {name!r}, no such surface; {nearest(name, self.catalog.surfaces)}"
-            )
+            raise self._error(f"scene.{key} is {name!r}, no such surface; {nearest(name, self.catalog.surfaces)}")
         return self.catalog.surfaces[name]
 
     def _range(self, surfaces: tuple[Surface, ...]) -> tuple[float, float]:
@@ -197,9 +195,7 @@ class _Resolver:
         leds = self._choose("led", self.spec.candidates.leds, fits)
         unknown = [name for name in lighting.led if name not in self.catalog.leds]
         if unknown:
-            raise self._error(
-                f"lighting.led.{unknown[0]}: no such LED; {nearest(unknown[0], self.catalog.leds)}"
-            )
+            raise self._error(f"lighting.led.{unknown[0]}: no such LED; {nearest(unknown[0], self.catalog.leds)}")
         if not leds:
             raise CoverageError(f"{self.where}: candidates.leds: no LED fits; {self.left_out[0]}")
         return tuple(self._channel(led) for led in leds)
@@ -212,9 +208,7 @@ class _Resolver:
                 known = camera.response_range(name)
                 if known is None:
                     response = camera.quantum_efficiency(name, _WIDE_GRID)
-                    known = (
-                        tuple(_WIDE_GRID[np.flatnonzero(response)[[0, -1]]]) if response.any() else (0.0, 0.0)
-                    )
+                    known = tuple(_WIDE_GRID[np.flatnonzero(response)[[0, -1]]]) if response.any() else (0.0, 0.0)
                 ends.append(known)
         return min(e[0] for e in ends), max(e[1] for e in ends)
 
@@ -256,9 +250,7 @@ class _Resolver:
 
     def _require_contrast(self, target: Surface, background: Surface, grid: Array) -> None:
         if target.id == background.id:
-            raise self._error(
-                f"scene.target and scene.background are both {target.id!r}; name two different surfaces"
-            )
+            raise self._error(f"scene.target and scene.background are both {target.id!r}; name two different surfaces")
         same = np.max(np.abs(target.mean(grid) - background.mean(grid))) < SAME_REFLECTANCE
         specular = target.specular_reflectance == background.specular_reflectance
         if same and specular:
@@ -270,9 +262,7 @@ class _Resolver:
         candidates = self.spec.candidates
         if candidates.filters in ("none", ()):
             return (NO_FILTER,)
-        chosen = self._choose(
-            "filter", candidates.filters, lambda part: _misfit(part.range(self.catalog), grid)
-        )
+        chosen = self._choose("filter", candidates.filters, lambda part: _misfit(part.range(self.catalog), grid))
         add_none = candidates.no_filter and all(part.kind != "none" for part in chosen)
         if not chosen and not add_none:
             raise CoverageError(f"{self.where}: candidates.filters: no filter fits; {self.left_out[-1]}")
@@ -341,6 +331,4 @@ class _Resolver:
 def _misfit(covered: tuple[float, float] | None, grid: Array) -> str | None:
     if covered is None or (covered[0] <= grid[0] and covered[1] >= grid[-1]):
         return None
-    return (
-        f"is known at {covered[0]:.0f}-{covered[1]:.0f} nm, the problem needs {grid[0]:.0f}-{grid[-1]:.0f} nm"
-    )
+    return f"is known at {covered[0]:.0f}-{covered[1]:.0f} nm, the problem needs {grid[0]:.0f}-{grid[-1]:.0f} nm"

@@ -126,6 +126,4 @@ def _named(parts, name: str, kind: str, where: str):
     for part in parts:
         if part.id == name:
             return part
-    raise ProblemError(
-        f"{where}: no {kind} {name!r} among the candidates; {nearest(name, [p.id for p in parts])}"
-    )
+    raise ProblemError(f"{where}: no {kind} {name!r} among the candidates; {nearest(name, [p.id for p in parts])}")

@@ -14,9 +14,7 @@ Choice = str | tuple[str, ...]
 class Ambient(Record):
     """One ambient light, stated by its spectrum and what a meter shows at the object."""
 
-    illuminant: str | None = Field(
-        default=None, description="'D65', 'A', 'E', 'fluorescent' or 'planck-<kelvin>'"
-    )
+    illuminant: str | None = Field(default=None, description="'D65', 'A', 'E', 'fluorescent' or 'planck-<kelvin>'")
     curve: str | None = Field(default=None, description="CSV with wavelength_nm and the relative spectrum")
     illuminance_lx: float | None = Field(default=None, ge=0, description="at the object [lx]")
     irradiance_w_per_m2: float | None = Field(
@@ -48,9 +46,7 @@ class Candidates(Record):
     filters: Choice = Field(default="all", description="filters to choose from")
     cameras: Choice = Field(default="all", description="cameras to choose from")
     no_filter: bool = Field(default=True, description="whether leaving the filter out is a choice too")
-    channels: Choice = Field(
-        default="all", description="camera channels to choose from, e.g. ['mono', 'red']"
-    )
+    channels: Choice = Field(default="all", description="camera channels to choose from, e.g. ['mono', 'red']")
     gains_db: tuple[float, ...] | None = Field(
         default=None, min_length=1, description="gains to choose from [dB]; all the camera has by default"
     )
@@ -61,9 +57,7 @@ class Optics(Record):
 
     f_numbers: tuple[float, ...] = Field(min_length=1, description="f-numbers to choose from")
     magnification: float = Field(ge=0, le=10, description="image size divided by object size")
-    lens_transmittance: float = Field(
-        default=0.9, gt=0, le=1, description="fraction, 0 to 1; divide percent by 100"
-    )
+    lens_transmittance: float = Field(default=0.9, gt=0, le=1, description="fraction, 0 to 1; divide percent by 100")
     lens_curve: str | None = Field(
         default=None, description="CSV with wavelength_nm and lens transmittance, as a further factor"
     )
@@ -94,18 +88,12 @@ class Optics(Record):
 class LedInRig(Record):
     """What is special about one LED type in this rig."""
 
-    emitters: int | None = Field(
-        default=None, ge=1, le=100000, description="number of emitters in the channel"
-    )
-    delivery_per_m2: float | None = Field(
-        default=None, gt=0, description="irradiance per watt emitted [1/m2]"
-    )
+    emitters: int | None = Field(default=None, ge=1, le=100000, description="number of emitters in the channel")
+    delivery_per_m2: float | None = Field(default=None, gt=0, description="irradiance per watt emitted [1/m2]")
     measured_irradiance_w_per_m2: float | None = Field(
         default=None, gt=0, description="measured at the object with all emitters at rated current [W/m2]"
     )
-    specular_weight: float | None = Field(
-        default=None, ge=0, le=1000, description="see [lighting] specular_weight"
-    )
+    specular_weight: float | None = Field(default=None, ge=0, le=1000, description="see [lighting] specular_weight")
     max_current_ma: float | None = Field(default=None, gt=0, description="driver limit of this channel [mA]")
 
     @model_validator(mode="after")
@@ -118,16 +106,12 @@ class LedInRig(Record):
 class Lighting(Record):
     """The rig: how emitters are driven, cooled and aimed."""
 
-    mode: Literal["continuous", "strobe"] = Field(
-        description="'continuous' or 'strobe' (on during the exposure only)"
-    )
+    mode: Literal["continuous", "strobe"] = Field(description="'continuous' or 'strobe' (on during the exposure only)")
     emitters_per_channel: int = Field(
         default=1, ge=1, le=100000, description="emitters of one type, all at the same current"
     )
     distance_mm: float | None = Field(default=None, gt=0, description="emitters to object [mm]")
-    incidence_deg: float = Field(
-        default=0.0, ge=0, lt=90, description="angle of the light on the object [deg]"
-    )
+    incidence_deg: float = Field(default=0.0, ge=0, lt=90, description="angle of the light on the object [deg]")
     delivery_per_m2: float | None = Field(
         default=None,
         gt=0,
@@ -161,9 +145,7 @@ class Motion(Record):
 class Timing(Record):
     """When and how long is exposed."""
 
-    frame_rate_hz: float | None = Field(
-        default=None, gt=0, description="frames per second [Hz]; a must for strobe"
-    )
+    frame_rate_hz: float | None = Field(default=None, gt=0, description="frames per second [Hz]; a must for strobe")
     exposure_min_us: float | None = Field(default=None, gt=0, description="shortest exposure wanted [us]")
     exposure_max_us: float | None = Field(default=None, gt=0, description="longest exposure wanted [us]")
 
@@ -211,9 +193,7 @@ class Grid(Record):
     """Wavelengths of all integrals."""
 
     step_nm: float = Field(default=1.0, gt=0, le=20, description="step [nm]")
-    from_nm: float | None = Field(
-        default=None, gt=0, description="start, where the surfaces begin by default [nm]"
-    )
+    from_nm: float | None = Field(default=None, gt=0, description="start, where the surfaces begin by default [nm]")
     to_nm: float | None = Field(default=None, gt=0, description="end, where the surfaces end by default [nm]")
 
 
@@ -251,20 +231,12 @@ class ProblemSpec(Record):
     def _check(self) -> Self:
         timing, lighting = self.timing, self.lighting
         if lighting.mode == "strobe" and timing.frame_rate_hz is None:
-            raise ValueError(
-                "timing.frame_rate_hz is missing; strobed light needs the frame rate for its duty"
-            )
+            raise ValueError("timing.frame_rate_hz is missing; strobed light needs the frame rate for its duty")
         low, high = timing.exposure_min_us, timing.exposure_max_us
         if low is not None and high is not None and low > high:
             raise ValueError(f"timing.exposure_min_us is {low:g}, must be <= exposure_max_us {high:g}")
-        if (
-            self.grid.from_nm is not None
-            and self.grid.to_nm is not None
-            and self.grid.from_nm >= self.grid.to_nm
-        ):
-            raise ValueError(
-                f"grid.from_nm is {self.grid.from_nm:g}, must be below to_nm {self.grid.to_nm:g}"
-            )
+        if self.grid.from_nm is not None and self.grid.to_nm is not None and self.grid.from_nm >= self.grid.to_nm:
+            raise ValueError(f"grid.from_nm is {self.grid.from_nm:g}, must be below to_nm {self.grid.to_nm:g}")
         return self
 
 

@@ -56,9 +56,7 @@ class _Walk:
     def __init__(self, program: Program, tolerance: float, hint: Hint | None) -> None:
         self.program = program
         self.tolerance = tolerance
-        self.columns = (
-            promising_columns(program) if hint is None else np.flatnonzero(np.isin(program.led, hint.leds))
-        )
+        self.columns = promising_columns(program) if hint is None else np.flatnonzero(np.isin(program.led, hint.leds))
         self.slice = ConvexSlice(program, self.columns)
         self.lines: list[Line] = []
         self.touch: list[tuple[float, float]] = []  # (signal, signal-dependent variance)
@@ -83,9 +81,7 @@ class _Walk:
             line, y = self.slice.solve(theta)
             gain = self._gain_outside(line, theta)
             spread = (
-                abs(float(self.program.signal[0] @ y))
-                if theta is None
-                else float(variance(self.program, y[None])[0])
+                abs(float(self.program.signal[0] @ y)) if theta is None else float(variance(self.program, y[None])[0])
             )
             # A loose ceiling costs little: lines and parabolas bend the bound down well before it.
             if gain.sum() <= (LOOSE_CEILING if theta is None else self.tolerance) * spread:
@@ -146,12 +142,8 @@ def promising_columns(program: Program) -> np.ndarray:
     light = np.bincount(program.led, reach, minlength=leds)
     square = np.einsum("rn,rn->n", program.noise_rows[0][:, :-1], program.noise_rows[0][:, :-1])
     with np.errstate(divide="ignore", invalid="ignore"):
-        clean = np.where(
-            reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal**2 / (square + 1e-300), 0.0
-        )
-        shot = np.where(
-            reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal / program.shot[0, :-1], 0.0
-        )
+        clean = np.where(reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal**2 / (square + 1e-300), 0.0)
+        shot = np.where(reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal / program.shot[0, :-1], 0.0)
     chosen = np.zeros(leds, dtype=bool)
     for score in (light, _best_of(program.led, clean, leds), _best_of(program.led, shot, leds)):
         chosen[np.argsort(-score)[:COLUMNS_BY_EACH_SCORE]] = True

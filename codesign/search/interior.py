@@ -165,10 +165,7 @@ def _iterate(state: _State, tolerance: float) -> Array:
         inner = strength * (np.einsum("pkn,pn->pk", rows[:, :, :-1], yx) + rows[:, :, -1] * yt[:, None])
         left = rx - (rest + cap) * yx + cap * yt[:, None] - np.einsum("pk,pkn->pn", inner, rows[:, :, :-1])
         late = (
-            rt
-            - (ends + cap.sum(axis=1)) * yt
-            + np.sum(cap * yx, axis=1)
-            - np.einsum("pk,pk->p", inner, rows[:, :, -1])
+            rt - (ends + cap.sum(axis=1)) * yt + np.sum(cap * yx, axis=1) - np.einsum("pk,pk->p", inner, rows[:, :, -1])
         )
         ex, et = solve(left, late)
         return yx + ex, yt + et
@@ -253,11 +250,7 @@ def _unscale(program: Program, state: _State, theta: Array | None, column: Array
     room, _ = segment_room(program, t)
     point = np.hstack([np.clip(q, 0.0, room), t[:, None]])
     rank = program.noise_rows.shape[1]
-    noise = (
-        np.zeros((program.size, rank))
-        if theta is None
-        else np.einsum("prn,pn->pr", program.noise_rows, point)
-    )
+    noise = np.zeros((program.size, rank)) if theta is None else np.einsum("prn,pn->pr", program.noise_rows, point)
     blank = np.zeros((program.size, program.heat_cap.size))
     anchor = np.maximum(np.einsum("pn,pn->p", program.signal, point), 1e-300)
     line = Line(

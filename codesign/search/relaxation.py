@@ -69,9 +69,7 @@ class ConvexSlice:
         right[at : at + heated] = 1.0
         matrix[at + heated :, n] = 1.0, -1.0
         right[at + heated :] = 1.0, -program.time_low[0] / program.time_high[0]
-        quadratic = csc_matrix(
-            (np.full(rank, 2.0), (n + 1 + np.arange(rank),) * 2), shape=(n + 1 + rank,) * 2
-        )
+        quadratic = csc_matrix((np.full(rank, 2.0), (n + 1 + np.arange(rank),) * 2), shape=(n + 1 + rank,) * 2)
         return quadratic, csc_matrix(matrix), right
 
     def solve(self, theta: float | None) -> tuple[Line, Array]:
@@ -89,9 +87,7 @@ class ConvexSlice:
         weight = 0.0 if theta is None else self.noise_unit / unit
         cones = [clarabel.ZeroConeT(rank), clarabel.NonnegativeConeT(right.size - rank)]
         linear = np.append(cost / unit, np.zeros(rank))
-        solution = clarabel.DefaultSolver(
-            quadratic * weight, linear, matrix, right, cones, _settings()
-        ).solve()
+        solution = clarabel.DefaultSolver(quadratic * weight, linear, matrix, right, cones, _settings()).solve()
         point = self._point(np.asarray(solution.x))
         return self._line(theta, np.nan_to_num(np.asarray(solution.z)), unit, point), point
 

@@ -106,9 +106,7 @@ class Walk:
         blocks = []
         for number in np.unique(setting):
             chosen = index[order][setting[order] == number]
-            block = self.assembly.program(
-                self.assembly.settings[number], (chosen // 2) % self.filters, coarse=coarse
-            )
+            block = self.assembly.program(self.assembly.settings[number], (chosen // 2) % self.filters, coarse=coarse)
             turn = np.where(chosen % 2 == 1, -1.0, 1.0)
             blocks.append(replace(block, signal=block.signal * turn[:, None]))
         return stack(blocks).take(np.argsort(order, kind="stable"))
@@ -116,9 +114,7 @@ class Walk:
     def same_parts(self, index: int) -> np.ndarray:
         """Mark the configurations with the same camera and filter as ``index``. (N,) bool"""
         chosen = self.configuration(index)
-        camera = np.array(
-            [setting.camera.id == chosen.setting.camera.id for setting in self.assembly.settings]
-        )
+        camera = np.array([setting.camera.id == chosen.setting.camera.id for setting in self.assembly.settings])
         filters = np.arange(self.filters) == chosen.filter
         return np.repeat((camera[:, None] & filters).ravel(), 2)
 
