@@ -14,18 +14,18 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from codesign.assemble import Assembly, flipped
-from codesign.certificate import Proof, bound
+from codesign.certificate import Proof
 from codesign.limits import Setting
-from codesign.program import Array, Program, contrast_to_noise, stack
+from codesign.program import Array, Program, stack
 from codesign.search.bounds import simple_proof
 from codesign.search.frontier import Certified, Hint, certify
-from codesign.search.interior import relax
+from codesign.search.tighten import Tightening
 
 SIGNS = (1, -1)
 #: Configurations refined together on rung 1: first few, to get a good target early, then many.
 FIRST_CHUNK, LARGEST_CHUNK = 48, 384
-#: Rung 1 needs multipliers good to some 1e-4, not more.
-ROUGH = {"iterations": 16, "tolerance": 1e-6}
+#: Rounds of tightening on rung 1.
+ROUNDS = 6
 
 
 @dataclass(frozen=True, slots=True)
@@ -161,21 +161,36 @@ class Walk:
         return np.stack(both, axis=1).ravel()
 
     def _refine(self, index: np.ndarray, target: float) -> None:
-        """Rung 1."""
+        """Rung 1: tighten until a configuration is out of the race or a few rounds are over."""
         self.refined[index] = True
         self.tally.refined += index.size
-        blocks = self._same_columns(index)
-        for part in blocks:
-            program = self.programs(part, coarse=True)
-            proof, value, promise, lit = rough_proof(program, target)
-            self.upper[part] = np.minimum(self.upper[part], value)
-            self.hints.update(
-                (int(i), Hint(proof.ceiling.take(k), np.flatnonzero(lit[k]), float(promise[k])))
-                for k, i in enumerate(part)
-            )
-            self.evidence.append(Evidence(part, proof, coarse=True))
+        for part in self._same_columns(index):
+            state = Tightening.start(self.programs(part, coarse=True), target)
             if not self.found:
-                self._certify(int(part[np.argmax(promise)]), target)
+                first = int(np.argmax(state.own))
+                self._suggest(part, state)
+                self._certify(int(part[first]), target)
+                target = self._leader(np.ones(self.upper.size, dtype=bool))[1]
+            for _ in range(ROUNDS):
+                open_ = state.bound > target * (1 + self.gap)
+                self._record(part[~open_], state.take(np.flatnonzero(~open_)))
+                part, state = part[open_], state.take(np.flatnonzero(open_))
+                if not part.size:
+                    break
+                state.round(target)
+            self._record(part, state)
+
+    def _record(self, part: np.ndarray, state: Tightening) -> None:
+        """Keep the bounds of some configurations and what proves them."""
+        if part.size:
+            self.upper[part] = np.minimum(self.upper[part], state.bound)
+            self.evidence.append(Evidence(part, state.proof(), coarse=True))
+            self._suggest(part, state)
+
+    def _suggest(self, part: np.ndarray, state: Tightening) -> None:
+        """Leave hints for the last rung."""
+        for k, i in enumerate(part):
+            self.hints[int(i)] = Hint(state.ceiling.take(k), np.flatnonzero(state.lit[k]), float(state.own[k]))
 
     def _same_columns(self, index: np.ndarray) -> list[np.ndarray]:
         """Split by pulse level: programs in one block share their columns."""
@@ -191,22 +206,3 @@ class Walk:
         self.upper[index] = min(self.upper[index], result.bound)
         self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False))
 
-
-def rough_proof(program: Program, target: float) -> tuple[Proof, Array, Array, np.ndarray]:
-    """Three batched convex programs: a proof of each program, its bound, the CNR its points reach, and the LEDs lit.
-
-    The LEDs lit, (P, L) bool, are those with a noticeable share of the signal in the two quiet points.
-    """
-    top = relax(program, None, **ROUGH)
-    own = np.maximum(contrast_to_noise(program, top.point), max(1e-3 * target, 1e-12))
-    ceiling = np.maximum(np.einsum("pn,pn->p", program.signal, top.point), 1e-300)
-    steep = relax(program, 2 * ceiling / own**2, **ROUGH)
-    own = np.maximum(own, contrast_to_noise(program, steep.point))
-    flat = relax(program, ceiling / np.maximum(own, target) ** 2, **ROUGH)
-    own = np.maximum(own, contrast_to_noise(program, flat.point))
-    proof = Proof(ceiling=top.line, lines=(steep.line, flat.line, replace(steep.line, anchor=ceiling)))
-    lit = np.zeros((program.size, program.heat_cap.size), dtype=bool)
-    for relaxed in (steep, flat):
-        share = np.abs(program.signal * relaxed.point)[:, :-1]
-        lit[:, program.led] |= share > 1e-2 * share.max(axis=1, keepdims=True)
-    return proof, bound(program, proof), own, lit
