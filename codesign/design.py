@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -264,11 +265,17 @@ class _Light:
     clutter: tuple[Array, Array]
 
 
+@lru_cache(maxsize=64)
+def _sensitivity(problem: Problem, camera: str, channel: str, filter_id: str, f_number: float) -> Array:
+    """Electron rate per unit of light leaving the object, filter included; the same for all drives of a recipe."""
+    weight = electrons_per_irradiance(problem, problem.camera(camera), channel, f_number)
+    return weight * filter_transmittance(problem, problem.filter(filter_id), f_number)
+
+
 def _electrons(problem: Problem, setting: Setting, design: Design, states: tuple[LedState, ...], t: float) -> _Light:
     """Integrate the light of the recipe over wavelength for each surface."""
     scene = reflectances(problem)
-    weight = electrons_per_irradiance(problem, setting.camera, setting.channel, design.f_number)
-    weight = weight * filter_transmittance(problem, problem.filter(design.filter), design.f_number)
+    weight = _sensitivity(problem, design.camera, design.channel, design.filter, design.f_number)
     diffuse, gloss = np.zeros(problem.grid.size), np.zeros(problem.grid.size)
     for state in states:
         channel = problem.channel(state.id)
@@ -325,8 +332,8 @@ def _limit_uses(problem, setting: Setting, design: Design, states, readings) -> 
     found += _power_uses(problem, states, t)
     for state in states:
         channel = problem.channel(state.id)
-        index = problem.channels.index(channel)
-        found.append(_use(f"current, {state.id}", "mA", state.drive_ma, setting.level.current_ma[index]))
+        top_ma = setting.level.current_ma[problem.channel_index[state.id]]
+        found.append(_use(f"current, {state.id}", "mA", state.drive_ma, top_ma))
         air, top = problem.spec.temperature.air_c, junction_limit(problem, channel)
         share = (state.junction_c - air) / (top - air) if top > air else np.inf
         found.append(

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 
@@ -204,12 +205,13 @@ def _step(problem: Problem, channel: LedChannel, width_us: float, duty: float) -
     return (width_us * 1e-6, "pulse width") if width_us * 1e-6 <= by_duty else (by_duty, "pulse duty")
 
 
-def pulse_levels(problem: Problem) -> list[PulseLevel]:
+@lru_cache(maxsize=16)
+def pulse_levels(problem: Problem) -> tuple[PulseLevel, ...]:
     """Steps of the exposure at which some LED's current rating changes, shortest first."""
     steady = [min(c.led.continuous_current_ma, c.driver_max_ma) for c in problem.channels]
     last = PulseLevel(name="continuous rating", longest_s=np.inf, cause="", current_ma=tuple(steady))
     if not problem.strobe:
-        return [last]
+        return (last,)
     options = [
         [(*_step(problem, c, b.max_width_us, b.max_duty), min(b.max_current_ma, c.driver_max_ma)) for b in c.led.pulse]
         for c in problem.channels
@@ -223,7 +225,8 @@ def pulse_levels(problem: Problem) -> list[PulseLevel]:
         )
         levels.append(PulseLevel(name=f"pulses to {end * 1e6:.6g} us", longest_s=end, cause=cause, current_ma=current))
     levels.append(last)
-    return [a for a, b in zip(levels, [*levels[1:], None], strict=True) if b is None or a.current_ma != b.current_ma]
+    pairs = zip(levels, [*levels[1:], None], strict=True)
+    return tuple(a for a, b in pairs if b is None or a.current_ma != b.current_ma)
 
 
 def depth_shortfall(problem: Problem, camera: Camera, f_number: float) -> float | None:

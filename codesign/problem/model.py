@@ -100,11 +100,15 @@ class Problem:
         """Whether the LEDs are on during the exposure only."""
         return self.spec.lighting.mode == "strobe"
 
+    @cached_property
+    def channel_index(self) -> dict[str, int]:
+        """Position of each LED among the channels, by id."""
+        return {channel.id: index for index, channel in enumerate(self.channels)}
+
     def channel(self, led: str) -> LedChannel:
         """Return the channel of an LED by id."""
-        for channel in self.channels:
-            if channel.id == led:
-                return channel
+        if led in self.channel_index:
+            return self.channels[self.channel_index[led]]
         raise ProblemError(
             f"{self.where}: no LED {led!r} among the candidates; {nearest(led, [c.id for c in self.channels])}"
         )
