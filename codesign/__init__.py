@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import sys
 from importlib import import_module
+from types import ModuleType
 from typing import Any
 
 __version__ = "0.1.0"
@@ -38,3 +40,15 @@ def __getattr__(name: str) -> Any:
 
 def __dir__() -> list[str]:
     return __all__
+
+
+class _Facade(ModuleType):
+    """Keeps `codesign.solve` and `codesign.verify` the functions, although modules of the same names are imported."""
+
+    def __setattr__(self, name: str, value: Any) -> None:
+        if isinstance(value, ModuleType) and _PUBLIC.get(name) == value.__name__:
+            value = getattr(value, name)
+        super().__setattr__(name, value)
+
+
+sys.modules[__name__].__class__ = _Facade
