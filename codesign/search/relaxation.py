@@ -6,14 +6,37 @@ are assembled once per program. The multipliers come back in SI units for `codes
 
 from __future__ import annotations
 
+from copy import copy
 from functools import cached_property
 
 import clarabel
 import numpy as np
-from scipy.sparse import csc_matrix
 
 from codesign.certificate import Line
 from codesign.program import Array, Program, row_scale
+
+
+class Columns:
+    """A matrix in compressed columns, as the library reads it.
+
+    Says no more than the library asks of a sparse matrix; importing a whole sparse package for this would
+    cost a third of the time a small problem takes.
+    """
+
+    has_canonical_format = True
+
+    def __init__(self, dense: Array) -> None:
+        column, row = np.nonzero(dense.T)
+        self.shape = dense.shape
+        self.indices = row.astype(np.int64)
+        self.indptr = np.searchsorted(column, np.arange(dense.shape[1] + 1)).astype(np.int64)
+        self.data = dense[row, column]
+
+    def scaled(self, factor: float) -> Columns:
+        """Return the matrix times a number."""
+        twin = copy(self)
+        twin.data = self.data * factor
+        return twin
 
 
 def _settings() -> clarabel.DefaultSettings:
@@ -47,7 +70,7 @@ class ConvexSlice:
         self.heat_leds = np.unique(self.led[np.isfinite(program.heat_cap[self.led])])
 
     @cached_property
-    def _matrices(self) -> tuple[csc_matrix, csc_matrix, Array]:
+    def _matrices(self) -> tuple[Columns, Columns, Array]:
         """Quadratic cost, constraint matrix and right-hand side over (kept y, g = R y) in unit scale."""
         program, keep = self.program, self.keep
         column = self.column[keep]
@@ -69,8 +92,8 @@ class ConvexSlice:
         right[at : at + heated] = 1.0
         matrix[at + heated :, n] = 1.0, -1.0
         right[at + heated :] = 1.0, -program.time_low[0] / program.time_high[0]
-        quadratic = csc_matrix((np.full(rank, 2.0), (n + 1 + np.arange(rank),) * 2), shape=(n + 1 + rank,) * 2)
-        return quadratic, csc_matrix(matrix), right
+        quadratic = np.diag(np.append(np.zeros(n + 1), np.full(rank, 2.0)))
+        return Columns(quadratic), Columns(matrix), right
 
     def solve(self, theta: float | None) -> tuple[Line, Array]:
         """Return the multipliers of the line of slope ``theta`` (None: of the signal ceiling) and the best point.
@@ -87,7 +110,7 @@ class ConvexSlice:
         weight = 0.0 if theta is None else self.noise_unit / unit
         cones = [clarabel.ZeroConeT(rank), clarabel.NonnegativeConeT(right.size - rank)]
         linear = np.append(cost / unit, np.zeros(rank))
-        solution = clarabel.DefaultSolver(quadratic * weight, linear, matrix, right, cones, _settings()).solve()
+        solution = clarabel.DefaultSolver(quadratic.scaled(weight), linear, matrix, right, cones, _settings()).solve()
         point = self._point(np.asarray(solution.x))
         return self._line(theta, np.nan_to_num(np.asarray(solution.z)), unit, point), point
 
