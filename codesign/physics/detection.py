@@ -7,6 +7,8 @@ place.
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 from numpy.typing import ArrayLike
 
@@ -30,9 +32,12 @@ def error_rate(cnr: ArrayLike) -> Array:
     ----------
     .. [1] D. M. Green and J. A. Swets, Signal Detection Theory and Psychophysics (1966).
     """
+    cnr = np.asarray(cnr, dtype=float)
+    if cnr.ndim == 0:  # one recipe: Φ(−x) = erfc(x/√2)/2, without loading a special-function library
+        return np.float64(math.erfc(cnr / math.sqrt(8.0)) / 2)
     from scipy.special import ndtr
 
-    return ndtr(-0.5 * np.asarray(cnr, dtype=float))
+    return ndtr(-0.5 * cnr)
 
 
 def auc(dprime: ArrayLike) -> Array:
