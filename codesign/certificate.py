@@ -28,6 +28,8 @@ from codesign.program import Array, Program, contrast_to_noise, violation
 
 #: A feasible recipe may exceed a limit by this share of it: round-off of sums of some hundred terms.
 FEASIBILITY_TOLERANCE = 1e-9
+#: Anchors below this are raised to it, which is as valid and keeps the arithmetic finite. [e⁻]
+LEAST_ANCHOR = 1e-100
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -132,6 +134,7 @@ def curves(program: Program, lines: tuple[Line, ...]) -> Curves:
     square = np.stack([np.einsum("pr,pr->p", line.noise, line.noise) for line in lines], axis=1)
     if not (anchor > 0).all():
         raise CertificateError("certificate: an anchor is not positive; the bound is rejected")
+    anchor = np.maximum(anchor, LEAST_ANCHOR)
     shot = least_shot_ratio(program)[:, None]
     return Curves(
         theta=theta,
