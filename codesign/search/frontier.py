@@ -8,7 +8,7 @@ recipe agree to the gap asked for. Unlike branching on boxes, no line is ever th
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -75,16 +75,20 @@ class _Walk:
         if value > self.best:
             self.best, self.point = value, y
 
-    def priced(self, theta: float | None) -> Line:
-        """Solve at slope ``theta``, bringing in columns until none left out could matter."""
+    def priced(self, theta: float | None, slack: float | None = None) -> Line:
+        """Solve at slope ``theta``, bringing in columns until none left out could matter.
+
+        ``slack`` is the share by which those left out may matter in sum.
+        """
+        if slack is None:  # a loose ceiling costs little: lines and parabolas bend the bound down well before it
+            slack = LOOSE_CEILING if theta is None else self.tolerance
         for _ in range(LARGEST_NUMBER_OF_PRICINGS):
             line, y = self.slice.solve(theta)
             gain = self._gain_outside(line, theta)
             spread = (
                 abs(float(self.program.signal[0] @ y)) if theta is None else float(variance(self.program, y[None])[0])
             )
-            # A loose ceiling costs little: lines and parabolas bend the bound down well before it.
-            if gain.sum() <= (LOOSE_CEILING if theta is None else self.tolerance) * spread:
+            if gain.sum() <= slack * spread:
                 break
             led = self.program.led
             by_led = np.bincount(led, gain, minlength=self.program.heat_cap.size)
@@ -108,6 +112,20 @@ class _Walk:
     def add(self, theta: float) -> None:
         """Touch the frontier at slope ``theta``."""
         self.lines.append(self.priced(theta))
+
+    def hopeless(self) -> bool:
+        """Whether no recipe has any signal of the wanted sign: then an exact ceiling is the whole proof."""
+        if self.best > 0:
+            return False
+        touched = len(self.touch)
+        exact = self.priced(None, slack=0.0)
+        del self.touch[touched:]
+        free = replace(exact, limit=np.zeros_like(exact.limit), heat=np.zeros_like(exact.heat))
+        for ceiling in (exact, free):  # without light of the wanted sign no price at all is exactly right
+            limit = float(signal_ceiling(self.program, ceiling)[0])
+            if limit < self.limit:
+                self.ceiling, self.limit = ceiling, limit
+        return self.best <= 0
 
     def peak(self) -> tuple[float, float]:
         """Present bound and the signal at which it is reached."""
@@ -176,7 +194,7 @@ def certify(program: Program, gap: float = 1e-3, target: float = 0.0, hint: Hint
         return Certified(point=walk.point, value=walk.best, bound=0.0, proof=proof)
     likely = max(walk.best, hint.promise if hint is not None else 0.0, 1e-3 * target, 1e-12)
     walk.add(2 * walk.limit / likely**2)
-    for _ in range(LARGEST_NUMBER_OF_LINES):
+    for _ in range(0 if walk.hopeless() else LARGEST_NUMBER_OF_LINES):
         value, v = walk.peak()
         if value <= max(walk.best, target) * (1 + gap):
             break
