@@ -24,7 +24,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from codesign.errors import CertificateError
-from codesign.program import Array, Program, contrast_to_noise, violation
+from codesign.program import Array, Program, contrast_to_noise, row_scale, violation
 
 #: A feasible recipe may exceed a limit by this share of it: round-off of sums of some hundred terms.
 FEASIBILITY_TOLERANCE = 1e-9
@@ -77,9 +77,13 @@ def _charge_cost(program: Program, line: Line, cost: Array) -> Array:
 
 
 def _price(program: Program, line: Line) -> Array:
-    """``λ·b + ω·heat_cap``, with 0·inf = 0."""
+    """``λ·b + ω·heat_cap`` with every limit as far out as a recipe that passes for feasible may lie, and 0·inf = 0.
+
+    This also keeps round-off out: the largest multipliers would turn it into a false proof.
+    """
     caps = np.where(np.isfinite(program.heat_cap), program.heat_cap, 0.0)
-    return np.einsum("pm,pm->p", line.limit, program.bounds) + line.heat @ caps
+    bounds = program.bounds + FEASIBILITY_TOLERANCE * row_scale(program)
+    return np.einsum("pm,pm->p", line.limit, bounds) + line.heat @ (caps * (1 + FEASIBILITY_TOLERANCE))
 
 
 def _require_valid(program: Program, line: Line) -> None:
@@ -95,16 +99,19 @@ def _require_valid(program: Program, line: Line) -> None:
 def intercept(program: Program, line: Line) -> Array:
     """α of each line, so that ``H(v) ≥ θ v + α``. (P,) [e⁻²]"""
     _require_valid(program, line)
-    cost = program.shot - line.theta[:, None] * program.signal
-    cost = cost + 2 * np.einsum("pr,prn->pn", line.noise, program.noise_rows)
-    free = box_minimum(program, _charge_cost(program, line, cost))
-    return free - _price(program, line) - np.einsum("pr,pr->p", line.noise, line.noise)
+    with np.errstate(over="ignore", invalid="ignore"):  # what overflows proves nothing, see `envelope`
+        cost = program.shot - line.theta[:, None] * program.signal
+        cost = cost + 2 * np.einsum("pr,prn->pn", line.noise, program.noise_rows)
+        free = box_minimum(program, _charge_cost(program, line, cost))
+        return free - _price(program, line) - np.einsum("pr,pr->p", line.noise, line.noise)
 
 
 def signal_ceiling(program: Program, line: Line) -> Array:
     """U of each program, so that ``d·y ≤ U`` (θ and g are not used). (P,) [e⁻]"""
     _require_valid(program, line)
-    return _price(program, line) - box_minimum(program, _charge_cost(program, line, -program.signal))
+    with np.errstate(over="ignore", invalid="ignore"):
+        top = _price(program, line) - box_minimum(program, _charge_cost(program, line, -program.signal))
+    return np.where(np.isnan(top), np.inf, top)
 
 
 def least_shot_ratio(program: Program) -> Array:
@@ -181,7 +188,7 @@ def envelope(floor: Array, ceiling: Array, found: Curves) -> tuple[Array, Array]
         usable = (high <= found.anchor[:, None, :] * (1 + 1e-12)) & (quadratic > 0)
         parabolas = np.where(usable, 1.0 / quadratic, np.inf)
     stretch = np.minimum(best[:, :, 0], np.minimum(lines.min(axis=2), np.nan_to_num(parabolas, nan=np.inf).min(axis=2)))
-    stretch = np.where(points[:, 1:] > points[:, :-1], stretch, 0.0)
+    stretch = np.where(points[:, 1:] > points[:, :-1], np.nan_to_num(stretch, nan=np.inf, posinf=np.inf), 0.0)
     pick, row = np.argmax(stretch, axis=1), np.arange(floor.size)
     left = (low[row, pick, 0] > 0) & (at_low.min(axis=2)[row, pick] > ratio.min(axis=2)[row, pick])
     signal = np.where(left, low[row, pick, 0], where[row, pick, 0])
