@@ -25,7 +25,7 @@ from codesign.noise import Sensor, noise_model
 from codesign.physics.light import flux_at_temperature
 from codesign.problem import Problem
 from codesign.program import Array, Program
-from codesign.radiometry import Rates, RateTable
+from codesign.radiometry import Rates, RateTable, main_rows, reflectances
 
 
 @dataclass(frozen=True, slots=True)
@@ -227,10 +227,13 @@ class Assembly:
             self._segments[key] = optimistic(found) if coarse else found
         return self._segments[key]
 
-    def program(self, setting: Setting, filters: slice | np.ndarray = slice(None), *, coarse: bool = False) -> Program:
-        """Programs of one setting for some filters, target brighter than background (see `flipped`).
+    def program(
+        self, setting: Setting, filters: slice | np.ndarray = slice(None), *, coarse: bool = False, pair: int = 0
+    ) -> Program:
+        """Programs of one setting for some filters and one pair, target brighter than background (see `flipped`).
 
-        ``coarse`` gives the relaxation of `optimistic`: one column per LED, bounds only.
+        ``coarse`` gives the relaxation of `optimistic`: one column per LED, bounds only. Programs of all pairs share
+        their columns and limits.
         """
         problem, rates = self.problem, self.rates(setting)
         surfaces = len(problem.surfaces)
@@ -240,17 +243,17 @@ class Assembly:
         dark = np.append(np.zeros(segments.width.size), dark_rate(problem, setting))
         noise = noise_model(Sensor.of(setting.camera, setting.gain), problem.spec.averaging)
         window = exposure_window(problem, setting)
-        kept, spread = photo[:, :surfaces], photo[:, surfaces:]
-        if coarse:  # dropping noise keeps the relaxation a relaxation
-            spread = spread[:, : self._table.clutter_rank]
+        kept, clutter = photo[:, :surfaces], photo[:, surfaces:]
+        chosen = problem.pairs[pair]
+        spread = np.concatenate([clutter[:, self._clutter_rows(surface, coarse)] for surface in chosen], axis=1)
         weight = np.append(np.full(segments.width.size, noise.linear[0]), noise.linear[1])
-        target, background = photo[:, 0], photo[:, 1]
+        target, background = photo[:, chosen[0]], photo[:, chosen[1]]
         rows, bounds, names = _rows(problem, setting, segments, kept + dark)
         return Program(
             signal=target - background,
             shot=(target + background) / 2 * weight + noise.linear[2] * dark,
             noise_rows=np.concatenate(
-                [photo[:, :2] * (noise.relative / np.sqrt(2)), spread * np.sqrt(noise.clutter_share / 2)],
+                [photo[:, list(chosen)] * (noise.relative / np.sqrt(2)), spread * np.sqrt(noise.clutter_share / 2)],
                 axis=1,
             ),
             floor=np.full(len(photo), noise.constant),
@@ -264,6 +267,11 @@ class Assembly:
             time_low=np.full(len(photo), window.low.time),
             time_high=_time_high(rows, bounds, window),
         )
+
+    def _clutter_rows(self, surface: int, coarse: bool) -> slice:
+        """Clutter rows of a surface; dropping the weak ones keeps a relaxation a relaxation."""
+        scene = reflectances(self.problem)
+        return main_rows(scene, surface) if coarse else scene.rows_of[surface]
 
 
 def flipped(program: Program) -> Program:

@@ -9,25 +9,15 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from functools import lru_cache
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from codesign.catalog import Camera, GainSetting
 from codesign.errors import ProblemError, nearest
-from codesign.limits import (
-    PulseLevel,
-    Setting,
-    dark_rate,
-    depth_shortfall,
-    junction_limit,
-    pulse_levels,
-    saturation_electrons,
-    sum_limits,
-    thermal_resistance,
-    time_limits,
-    well_bound,
-)
+from codesign.limit_use import LedState, LimitUse, limit_uses
+from codesign.limits import PulseLevel, Setting, dark_rate, pulse_levels, saturation_electrons, thermal_resistance
 from codesign.noise import NOISE_TERMS, Sensor
 from codesign.physics.detection import error_rate
 from codesign.physics.light import flux_at_temperature
@@ -41,13 +31,13 @@ from codesign.radiometry import (
 
 Array = NDArray[np.float64]
 
-#: A limit counts as met up to this share over its bound: well below any setting step, above round-off.
-TOLERANCE = 1e-6
-
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Design:
-    """What a user sets: parts, lens, exposure and the current of each LED channel (absent = off)."""
+    """What a user sets: parts, lens, exposure and the current of each LED channel (absent = off).
+
+    ``where`` names the file it comes from in messages.
+    """
 
     camera: str
     channel: str
@@ -56,6 +46,7 @@ class Design:
     f_number: float
     exposure_us: float
     drive_ma: Mapping[str, float] = field(default_factory=dict)
+    where: str = field(default="recipe", repr=False, compare=False)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -77,42 +68,23 @@ class SurfaceReading:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class LimitUse:
-    """How much of a limit is used. ``share`` is 1 at the limit; a ``floor`` is met from above."""
+class PairContrast:
+    """One target against one background: difference of mean electrons, and CNR (without sign)."""
 
-    name: str
-    unit: str
-    value: float
-    bound: float
-    share: float
-    floor: bool = False
-
-    @property
-    def met(self) -> bool:
-        """Whether the limit holds (to `TOLERANCE`)."""
-        return self.share <= 1 + TOLERANCE
-
-    def shortfall(self) -> str:
-        """Say by how much the limit is missed."""
-        word = "below" if self.floor else "above"
-        return f"{self.name} {self.value:.5g} {self.unit} is {abs(self.value - self.bound):.3g} {self.unit} {word} the limit {self.bound:.5g} {self.unit}"
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class LedState:
-    """One lit LED channel: current, electrical and optical power per emitter while on, junction."""
-
-    id: str
-    drive_ma: float
-    electrical_w: float
-    optical_w: float
-    junction_c: float
-    emitters: int
+    target: str
+    background: str
+    signal_e: float
+    cnr: float
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Performance:
-    """What a recipe achieves. ``noise`` maps each term to its variance at (target, background). [e⁻²]"""
+    """What a recipe achieves.
+
+    ``pairs`` lists every target and background; ``cnr``, ``signal_e`` and ``noise`` are those of the worst pair, the
+    noise as variance at (target, background) by term. [e⁻²] ``sign`` is the one all pairs must share: a pair that
+    shows the opposite sign cannot be told by the same threshold, and the CNR is then 0.
+    """
 
     design: Design
     signal_e: float
@@ -121,6 +93,7 @@ class Performance:
     error_rate: float
     surfaces: tuple[SurfaceReading, ...]
     noise: Mapping[str, tuple[float, float]]
+    pairs: tuple[PairContrast, ...]
     limits: tuple[LimitUse, ...]
     leds: tuple[LedState, ...]
     duty: float
@@ -138,25 +111,42 @@ class Performance:
 
 def setting_of(problem: Problem, design: Design) -> Setting:
     """Look up the parts of a design. Raises ProblemError naming what is unknown."""
-    camera = problem.camera(design.camera)
+    camera = candidate(problem, design, "camera")
     if design.channel not in camera.channel_names:
-        raise ProblemError(f"recipe: channel is {design.channel!r}; {nearest(design.channel, camera.channel_names)}")
+        raise ProblemError(
+            f"{design.where}: channel is {design.channel!r}, camera {camera.id!r} has none of that name; "
+            f"{nearest(design.channel, camera.channel_names)}"
+        )
     exposure = design.exposure_us * 1e-6
     return Setting(
         camera=camera,
         channel=design.channel,
-        gain=_gain(camera, design.gain_db),
+        gain=_gain(camera, design),
         f_number=design.f_number,
         level=level_at(problem, exposure),
     )
 
 
-def _gain(camera: Camera, gain_db: float) -> GainSetting:
+def candidate(problem: Problem, design: Design, kind: str) -> Any:
+    """Return the camera or filter a design names. Raises ProblemError when it is not a candidate."""
+    name, parts = getattr(design, kind), getattr(problem, f"{kind}s")
+    for part in parts:
+        if part.id == name:
+            return part
+    raise ProblemError(
+        f"{design.where}: {kind} is {name!r}, not among the candidates of {problem.where}; "
+        f"{nearest(name, [part.id for part in parts])}"
+    )
+
+
+def _gain(camera: Camera, design: Design) -> GainSetting:
     for gain in camera.gain_settings():
-        if abs(gain.gain_db - gain_db) < 1e-9:
+        if abs(gain.gain_db - design.gain_db) < 1e-9:
             return gain
     offered = ", ".join(f"{gain.gain_db:g}" for gain in camera.gain_settings())
-    raise ProblemError(f"recipe: gain_db is {gain_db:g}, must be one of {offered} that camera {camera.id!r} offers")
+    raise ProblemError(
+        f"{design.where}: gain_db is {design.gain_db:g}, must be one of {offered} that camera {camera.id!r} offers"
+    )
 
 
 def level_at(problem: Problem, exposure_s: float) -> PulseLevel:
@@ -223,46 +213,81 @@ def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float
     if junction_c is not None:
         states = tuple(replace(state, junction_c=junction_c[state.id]) for state in states)
     light = _electrons(problem, setting, design, states, t)
-    sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
-    noise = {
-        term.name: tuple(term.variance(sensor, light.electrons[i], light.clutter[i], averaging) for i in (0, 1))
-        for term in NOISE_TERMS
-    }
-    difference = float(light.electrons[0].sum() - light.electrons[1].sum())
-    variance = sum(pair[0] + pair[1] for pair in noise.values()) / 2
-    cnr = abs(difference) / np.sqrt(variance) if variance > 0 else 0.0
+    noise = _noise_by_surface(problem, setting, light)
+    pairs = tuple(_contrast(problem, light, noise, i, j) for i, j in problem.pairs)
+    direction, worst, cnr = _worst(pairs)
+    target, background = problem.pairs[worst]
     readings = tuple(_reading(problem, setting, i, light.electrons[i]) for i in range(len(problem.surfaces)))
     return Performance(
         design=design,
-        signal_e=difference,
-        cnr=float(cnr),
-        sign="brighter" if difference > 0 else "darker",
+        signal_e=pairs[worst].signal_e,
+        cnr=cnr,
+        sign="brighter" if direction > 0 else "darker",
         error_rate=float(error_rate(cnr)),
         surfaces=readings,
-        noise=noise,
-        limits=tuple(_limit_uses(problem, setting, design, states, readings)),
+        noise={name: (values[target], values[background]) for name, values in noise.items()},
+        pairs=pairs,
+        limits=tuple(limit_uses(problem, setting, design.f_number, t, states, readings)),
         leds=states,
         duty=duty,
     )
 
 
+def _noise_by_surface(problem: Problem, setting: Setting, light: _Light) -> dict[str, list[float]]:
+    """Variance of each term at each target and background, in the order of the surfaces. [e⁻²]"""
+    sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
+    count = len(problem.targets) + len(problem.backgrounds)
+    return {
+        term.name: [float(term.variance(sensor, light.electrons[i], light.clutter[i], averaging)) for i in range(count)]
+        for term in NOISE_TERMS
+    }
+
+
+def _contrast(problem: Problem, light: _Light, noise: Mapping[str, list[float]], i: int, j: int) -> PairContrast:
+    difference = float(light.electrons[i].sum() - light.electrons[j].sum())
+    variance = sum(values[i] + values[j] for values in noise.values()) / 2
+    return PairContrast(
+        target=problem.surfaces[i].id,
+        background=problem.surfaces[j].id,
+        signal_e=difference,
+        cnr=abs(difference) / np.sqrt(variance) if variance > 0 else 0.0,
+    )
+
+
+def _worst(pairs: tuple[PairContrast, ...]) -> tuple[int, int, float]:
+    """Best common sign, the worst pair under it and its CNR (0 where that pair shows the other sign)."""
+    signed = np.array([pair.cnr if pair.signal_e > 0 else -pair.cnr for pair in pairs])
+    direction = 1 if signed.min() >= -signed.max() else -1
+    worst = int(np.argmin(direction * signed))
+    return direction, worst, max(float(direction * signed[worst]), 0.0)
+
+
 def _check_values(problem: Problem, design: Design) -> None:
     if not design.exposure_us > 0 or not np.isfinite(design.exposure_us):
-        raise ProblemError(f"recipe: exposure_us is {design.exposure_us:g}, must be > 0")
+        raise ProblemError(f"{design.where}: exposure_us is {design.exposure_us:g}, must be > 0")
     if not design.f_number > 0 or not np.isfinite(design.f_number):
-        raise ProblemError(f"recipe: f_number is {design.f_number:g}, must be > 0")
+        raise ProblemError(f"{design.where}: f_number is {design.f_number:g}, must be > 0")
+    candidate(problem, design, "filter")
+    known = {channel.id: channel.led.largest_current_ma for channel in problem.channels}
     for led, drive in design.drive_ma.items():
-        top = problem.channel(led).led.largest_current_ma
+        if led not in known:
+            raise ProblemError(
+                f"{design.where}: drive_ma.{led}: no such LED among the candidates of {problem.where}; "
+                f"{nearest(led, known)}"
+            )
+        top = known[led]
         if not 0 <= drive <= top * (1 + 1e-9):
-            raise ProblemError(f"recipe: drive_ma.{led} is {drive:g}, must be 0 to {top:g} mA, its largest rating")
+            raise ProblemError(
+                f"{design.where}: drive_ma.{led} is {drive:g}, must be 0 to {top:g} mA, its largest rating"
+            )
 
 
 @dataclass(frozen=True, slots=True)
 class _Light:
-    """Electrons (S, 3) by origin, and clutter amplitudes of target and background."""
+    """Electrons (S, 3) by origin, and clutter amplitudes of each surface. [e⁻]"""
 
     electrons: Array
-    clutter: tuple[Array, Array]
+    clutter: tuple[Array, ...]
 
 
 @lru_cache(maxsize=64)
@@ -288,8 +313,7 @@ def _electrons(problem: Problem, setting: Setting, design: Design, states: tuple
     ambient = scene.mean @ (weight * problem.ambient) * t
     dark = np.full(len(led), dark_rate(problem, setting) * t)
     clutter = scene.clutter @ (weight * (diffuse + problem.ambient)) * t
-    rows = scene.target_rows
-    return _Light(np.stack([led, ambient, dark], axis=1), (clutter[:rows], clutter[rows:]))
+    return _Light(np.stack([led, ambient, dark], axis=1), tuple(clutter[rows] for rows in scene.rows_of))
 
 
 def _reading(problem: Problem, setting: Setting, index: int, electrons: Array) -> SurfaceReading:
@@ -298,80 +322,10 @@ def _reading(problem: Problem, setting: Setting, index: int, electrons: Array) -
     level = setting.camera.black_level_dn + setting.gain.conversion_gain_dn_per_e * total
     return SurfaceReading(
         id=surface.id,
-        role=("target", "background")[index] if index < 2 else "guard",
+        role=problem.role(index),
         led_e=float(electrons[0]),
         ambient_e=float(electrons[1]),
         dark_e=float(electrons[2]),
         grey_dn=min(level, 2**setting.camera.bits - 1.0),
         saturation_share=total / saturation_electrons(setting.camera, setting.gain),
     )
-
-
-def _use(name: str, unit: str, value: float, bound: float) -> LimitUse:
-    share = value / bound if bound > 0 else (0.0 if value <= 0 else np.inf)
-    return LimitUse(name=name, unit=unit, value=float(value), bound=float(bound), share=float(share))
-
-
-def _limit_uses(problem, setting: Setting, design: Design, states, readings) -> list[LimitUse]:
-    """Use of every limit, in the order of the signal chain."""
-    t = design.exposure_us * 1e-6
-    found = [_use(f"well, {r.id}", "e-", r.total_e, well_bound(problem, setting)) for r in readings]
-    for limit in time_limits(problem, setting):
-        value = limit.value(t)
-        share = limit.bound / value if limit.floor else value / limit.bound
-        found.append(
-            LimitUse(
-                name=limit.name,
-                unit=limit.unit,
-                value=value,
-                bound=limit.bound,
-                share=share,
-                floor=limit.floor,
-            )
-        )
-    found += _power_uses(problem, states, t)
-    for state in states:
-        channel = problem.channel(state.id)
-        top_ma = setting.level.current_ma[problem.channel_index[state.id]]
-        found.append(_use(f"current, {state.id}", "mA", state.drive_ma, top_ma))
-        air, top = problem.spec.temperature.air_c, junction_limit(problem, channel)
-        share = (state.junction_c - air) / (top - air) if top > air else np.inf
-        found.append(
-            LimitUse(name=f"junction, {state.id}", unit="deg C", value=state.junction_c, bound=top, share=share)
-        )
-    short = depth_shortfall(problem, setting.camera, design.f_number)
-    if problem.spec.optics.required_depth_mm is not None:
-        found.append(_depth_use(problem, setting, design, short))
-    return found
-
-
-def _depth_use(problem: Problem, setting: Setting, design: Design, short: float | None) -> LimitUse:
-    from codesign.physics.optics import depth_of_field
-
-    wanted = problem.spec.optics.required_depth_mm
-    depth = (
-        depth_of_field(design.f_number, setting.camera.pixel_pitch_um * 1e-6, problem.spec.optics.magnification) * 1e3
-    )
-    return LimitUse(
-        name="depth of field",
-        unit="mm",
-        value=float(depth),
-        bound=wanted,
-        share=float(wanted / depth),
-        floor=True,
-    )
-
-
-def _power_uses(problem: Problem, states: tuple[LedState, ...], t: float) -> list[LimitUse]:
-    heat = sum(s.emitters * (s.electrical_w - s.optical_w) for s in states)
-    power = sum(s.emitters * s.electrical_w for s in states)
-    duty = problem.duty(t)
-    return [
-        _use(
-            limit.name,
-            limit.unit,
-            (heat if limit.quantity == "heat" else power) * (duty if limit.mean else 1.0),
-            limit.bound,
-        )
-        for limit in sum_limits(problem)
-    ]

@@ -6,6 +6,7 @@ under every LED behind every filter.
 
 from __future__ import annotations
 
+import itertools
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -24,37 +25,41 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Reflectances:
-    """What the light meets: mean curves of the surfaces and the clutter of target and background.
+    """What the light meets: mean curves of the surfaces and the clutter of targets and backgrounds.
 
     Attributes
     ----------
     mean : (S, n) array
-        Target, background, further guards. [1]
+        Targets, backgrounds, further guards. [1]
     specular : (S,) array
         Mirror-like reflectance. [1]
     clutter : (C, n) array
-        Rows whose products give the covariance: first the target's, then the background's. [1]
-    target_rows : int
-        How many of the clutter rows are the target's.
+        Rows whose products give the covariance of each surface's samples, surface after surface, strongest first. [1]
+    rows_of : tuple of slice
+        Which clutter rows belong to each surface (none for guards).
     """
 
     mean: Array
     specular: Array
     clutter: Array
-    target_rows: int
+    rows_of: tuple[slice, ...]
 
 
 @lru_cache(maxsize=16)
 def reflectances(problem: Problem) -> Reflectances:
     """Resample all surfaces onto the problem's grid."""
     surfaces = problem.surfaces
-    target = problem.target.clutter_factor(problem.grid)
-    background = problem.background.clutter_factor(problem.grid)
+    none = np.zeros((0, problem.grid.size))
+    clutter = [
+        none if problem.role(index) == "guard" else surface.clutter_factor(problem.grid)
+        for index, surface in enumerate(surfaces)
+    ]
+    ends = np.cumsum([0, *(len(rows) for rows in clutter)])
     return Reflectances(
         mean=np.stack([surface.mean(problem.grid) for surface in surfaces]),
         specular=np.array([surface.specular_reflectance for surface in surfaces]),
-        clutter=np.concatenate([target, background]),
-        target_rows=len(target),
+        clutter=np.concatenate(clutter),
+        rows_of=tuple(slice(int(a), int(b)) for a, b in itertools.pairwise(ends)),
     )
 
 
@@ -122,16 +127,14 @@ class Rates:
 _MINOR_CLUTTER = 5e-3
 
 
-def _main_directions(clutter: Array) -> tuple[int, Array]:
-    """Rotate clutter rows so that the strongest come first; the covariance stays the same.
-
-    Returns how many rows hold all but `_MINOR_CLUTTER` of the energy, and the rows.
-    """
-    if not clutter.size:
-        return 0, clutter
-    _, strength, directions = np.linalg.svd(clutter, full_matrices=False)
-    left = 1.0 - np.cumsum(strength**2) / np.sum(strength**2)
-    return int(np.argmax(left <= _MINOR_CLUTTER)) + 1, strength[:, None] * directions
+def main_rows(scene: Reflectances, surface: int) -> slice:
+    """The strongest clutter rows of a surface, holding all but `_MINOR_CLUTTER` of its clutter energy."""
+    rows = scene.rows_of[surface]
+    energy = np.sum(scene.clutter[rows] ** 2, axis=1)
+    if not energy.size:
+        return rows
+    left = 1.0 - np.cumsum(energy) / energy.sum()
+    return slice(rows.start, rows.start + int(np.argmax(left <= _MINOR_CLUTTER)) + 1)
 
 
 class RateTable:
@@ -149,9 +152,8 @@ class RateTable:
         scene = reflectances(problem)
         light = np.stack([channel_irradiance(problem, c, t) for c, t in zip(problem.channels, junction_c, strict=True)])
         gloss = np.array([channel.specular_weight for channel in problem.channels])
-        self.clutter_rank, clutter = _main_directions(scene.clutter)
-        curves = np.concatenate([scene.mean, clutter])
-        shine = np.concatenate([scene.specular, np.zeros(len(clutter))])
+        curves = np.concatenate([scene.mean, scene.clutter])
+        shine = np.concatenate([scene.specular, np.zeros(len(scene.clutter))])
         # (S+C, L, n): each LED's light as it leaves each surface, as if from a diffuser
         self._from_leds = (curves[:, None, :] + np.outer(shine, gloss)[:, :, None]) * light
         self._from_ambient = curves * problem.ambient

@@ -14,6 +14,7 @@ from codesign.assemble import Assembly, flipped
 from codesign.certificate import check_bound, check_point
 from codesign.design import evaluate
 from codesign.errors import CertificateError
+from codesign.limits import Setting
 from codesign.program import Array
 from codesign.search.bounds import simple_proof
 from codesign.search.walk import Evidence, Walk
@@ -72,7 +73,7 @@ def _by_evidence(walk: Walk, evidence: tuple[Evidence, ...]) -> Array:
     """Bounds from the multipliers kept, ``inf`` where there are none."""
     bounds = np.full(walk.upper.size, np.inf)
     for item in evidence:
-        program = walk.programs(item.index, coarse=item.coarse)
+        program = walk.programs(item.index, coarse=item.coarse, pair=item.pair)
         bounds[item.index] = np.minimum(bounds[item.index], check_bound(program, item.proof, np.inf))
     return bounds
 
@@ -84,10 +85,14 @@ def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
     for number, setting in enumerate(walk.assembly.settings):
         part = slice(number * per_setting, (number + 1) * per_setting)
         if wanted[part].any():
-            program = walk.assembly.program(setting, coarse=True)
-            both = [check_bound(side, simple_proof(side)[0], np.inf) for side in (program, flipped(program))]
-            bounds[part] = np.stack(both, axis=1).ravel()
+            bounds[part] = np.min([_closed_form(walk, setting, pair) for pair in range(walk.pairs)], axis=0)
     return bounds
+
+
+def _closed_form(walk: Walk, setting: Setting, pair: int) -> Array:
+    program = walk.assembly.program(setting, coarse=True, pair=pair)
+    both = [check_bound(side, simple_proof(side)[0], np.inf) for side in (program, flipped(program))]
+    return np.stack(both, axis=1).ravel()
 
 
 def _check_winner(walk: Walk, solution: Solution) -> float:

@@ -108,20 +108,22 @@ class _Resolver:
 
     def problem(self) -> Problem:
         scene = self.spec.scene
-        target, background = (self._surface(key, getattr(scene, key)) for key in ("target", "background"))
+        targets, backgrounds = (self._surfaces(key, getattr(scene, key)) for key in ("target", "background"))
         guards = tuple(self._surface("guards", name) for name in scene.guards)
-        surfaces = (target, background, *guards)
+        surfaces = (*targets, *backgrounds, *guards)
         lo, hi = self._range(surfaces)
         channels = self._channels(lo, hi)
         grid = self._grid(channels, lo, hi)
-        self._require_contrast(target, background, grid)
+        for target in targets:
+            for background in backgrounds:
+                self._require_contrast(target, background, grid)
         return Problem(
             spec=self.spec,
             where=self.where,
             folder=self.folder,
             catalog=self.catalog,
-            target=target,
-            background=background,
+            targets=targets,
+            backgrounds=backgrounds,
             guards=guards,
             channels=channels,
             filters=self._filters(grid),
@@ -139,6 +141,13 @@ class _Resolver:
         if name not in self.catalog.surfaces:
             raise self._error(f"scene.{key} is {name!r}, no such surface; {nearest(name, self.catalog.surfaces)}")
         return self.catalog.surfaces[name]
+
+    def _surfaces(self, key: str, names: str | tuple[str, ...]) -> tuple[Surface, ...]:
+        names = (names,) if isinstance(names, str) else names
+        repeated = [name for name in names if names.count(name) > 1]
+        if repeated:
+            raise self._error(f"scene.{key} names {repeated[0]!r} twice; remove one")
+        return tuple(self._surface(key, name) for name in names)
 
     def _range(self, surfaces: tuple[Surface, ...]) -> tuple[float, float]:
         """Wavelengths at which all surfaces are known. [nm]"""

@@ -58,7 +58,8 @@ class Problem:
         Folder to which paths in the file are relative.
     catalog : Catalog
         All parts, inline ones included.
-    target, background : Surface
+    targets, backgrounds : tuple of Surface
+        Defect and good surfaces; the worst pair of them counts.
     guards : tuple of Surface
         Further surfaces that must not saturate.
     channels : tuple of LedChannel
@@ -78,8 +79,8 @@ class Problem:
     where: str
     folder: Path
     catalog: Catalog
-    target: Surface
-    background: Surface
+    targets: tuple[Surface, ...]
+    backgrounds: tuple[Surface, ...]
     guards: tuple[Surface, ...]
     channels: tuple[LedChannel, ...]
     filters: tuple[Filter, ...]
@@ -91,9 +92,31 @@ class Problem:
 
     @cached_property
     def surfaces(self) -> tuple[Surface, ...]:
-        """Target, background, then the guards that are neither."""
-        own = (self.target.id, self.background.id)
-        return (self.target, self.background, *(g for g in self.guards if g.id not in own))
+        """Targets, backgrounds, then the guards that are neither."""
+        own = (*self.targets, *self.backgrounds)
+        listed = {surface.id for surface in own}
+        return (*own, *(guard for guard in self.guards if guard.id not in listed))
+
+    @cached_property
+    def pairs(self) -> tuple[tuple[int, int], ...]:
+        """Every (target, background), as positions in ``surfaces``."""
+        first = len(self.targets)
+        return tuple((i, first + j) for i in range(first) for j in range(len(self.backgrounds)))
+
+    @property
+    def target(self) -> Surface:
+        """The first target."""
+        return self.targets[0]
+
+    @property
+    def background(self) -> Surface:
+        """The first background."""
+        return self.backgrounds[0]
+
+    def role(self, index: int) -> str:
+        """Say whether a surface is target, background or guard."""
+        first = len(self.targets)
+        return "target" if index < first else "background" if index < first + len(self.backgrounds) else "guard"
 
     @property
     def strobe(self) -> bool:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any, Literal, Self
+from typing import Annotated, Any, Literal, Self
 
 from pydantic import Field, model_validator
 
@@ -33,8 +33,12 @@ class Ambient(Record):
 class Scene(Record):
     """What is looked at and what else shines on it."""
 
-    target: str = Field(description="id of the defect surface")
-    background: str = Field(description="id of the good surface")
+    target: str | Annotated[tuple[str, ...], Field(min_length=1)] = Field(
+        description="id of the defect surface; several: the worst pair counts"
+    )
+    background: str | Annotated[tuple[str, ...], Field(min_length=1)] = Field(
+        description="id of the good surface; several: the worst pair counts"
+    )
     guards: tuple[str, ...] = Field(default=(), description="ids of further surfaces that must not saturate")
     ambient: tuple[Ambient, ...] = Field(default=(), description="lights that are not part of the rig")
 

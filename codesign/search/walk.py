@@ -48,11 +48,12 @@ class Tally:
 
 @dataclass(slots=True)
 class Evidence:
-    """Multipliers that bound some configurations, kept for the checker: indices and their proof."""
+    """Multipliers that bound some configurations by one pair, kept for the checker: indices and their proof."""
 
     index: np.ndarray
     proof: Proof
     coarse: bool
+    pair: int = 0
 
 
 @dataclass(slots=True)
@@ -92,21 +93,28 @@ class Walk:
         """Number of filters F."""
         return len(self.assembly.problem.filters)
 
+    @property
+    def pairs(self) -> int:
+        """Number of pairs of target and background."""
+        return len(self.assembly.problem.pairs)
+
     def configuration(self, index: int) -> Configuration:
         """Decode a configuration's number."""
         pair, sign = divmod(int(index), 2)
         setting, filter_index = divmod(pair, self.filters)
         return Configuration(self.assembly.settings[setting], filter_index, SIGNS[sign])
 
-    def programs(self, index: np.ndarray, *, coarse: bool) -> Program:
-        """Build the programs of some configurations, in the order of ``index``."""
+    def programs(self, index: np.ndarray, *, coarse: bool, pair: int = 0) -> Program:
+        """Build the programs of some configurations for one pair, in the order of ``index``."""
         index = np.asarray(index)
         setting = index // (2 * self.filters)
         order = np.argsort(setting, kind="stable")
         blocks = []
         for number in np.unique(setting):
             chosen = index[order][setting[order] == number]
-            block = self.assembly.program(self.assembly.settings[number], (chosen // 2) % self.filters, coarse=coarse)
+            block = self.assembly.program(
+                self.assembly.settings[number], (chosen // 2) % self.filters, coarse=coarse, pair=pair
+            )
             turn = np.where(chosen % 2 == 1, -1.0, 1.0)
             blocks.append(replace(block, signal=block.signal * turn[:, None]))
         return stack(blocks).take(np.argsort(order, kind="stable"))
@@ -155,36 +163,46 @@ class Walk:
         return leader, self.found[leader].value
 
     def _closed_form(self, setting: Setting) -> Array:
-        """Rung 0 for all filters and both signs of a setting, (2 F,)."""
-        program = self.assembly.program(setting, coarse=True)
-        both = [simple_proof(side)[1] for side in (program, flipped(program))]
-        return np.stack(both, axis=1).ravel()
+        """Rung 0 for all filters and both signs of a setting, (2 F,): the least bound of any pair."""
+        least = np.full((self.filters, 2), np.inf)
+        for pair in range(self.pairs):
+            program = self.assembly.program(setting, coarse=True, pair=pair)
+            both = [simple_proof(side)[1] for side in (program, flipped(program))]
+            least = np.minimum(least, np.stack(both, axis=1))
+        return least.ravel()
 
     def _refine(self, index: np.ndarray, target: float) -> None:
         """Rung 1: tighten until a configuration is out of the race or a few rounds are over."""
         self.refined[index] = True
         self.tally.refined += index.size
         for part in self._same_columns(index):
-            state = Tightening.start(self.programs(part, coarse=True), target)
-            if not self.found:
-                first = int(np.argmax(state.own))
-                self._suggest(part, state)
-                self._certify(int(part[first]), target)
-                target = self._leader(np.ones(self.upper.size, dtype=bool))[1]
-            for _ in range(ROUNDS):
-                open_ = state.bound > target * (1 + self.gap)
-                self._record(part[~open_], state.take(np.flatnonzero(~open_)))
-                part, state = part[open_], state.take(np.flatnonzero(open_))
-                if not part.size:
-                    break
-                state.round(target)
-            self._record(part, state)
+            for pair in range(self.pairs):
+                part = part[self.upper[part] > target * (1 + self.gap)] if pair else part
+                if part.size:
+                    target = self._tighten(part, pair, target)
 
-    def _record(self, part: np.ndarray, state: Tightening) -> None:
-        """Keep the bounds of some configurations and what proves them."""
+    def _tighten(self, part: np.ndarray, pair: int, target: float) -> float:
+        """Tighten the bounds of one pair until they are below the target or a few rounds are over; return the target."""
+        state = Tightening.start(self.programs(part, coarse=True, pair=pair), target)
+        if not self.found:
+            self._suggest(part, state)
+            self._certify(int(part[int(np.argmax(state.own))]), target)
+            target = self._leader(np.ones(self.upper.size, dtype=bool))[1]
+        for _ in range(ROUNDS):
+            open_ = state.bound > target * (1 + self.gap)
+            self._record(part[~open_], pair, state.take(np.flatnonzero(~open_)))
+            part, state = part[open_], state.take(np.flatnonzero(open_))
+            if not part.size:
+                return target
+            state.round(target)
+        self._record(part, pair, state)
+        return target
+
+    def _record(self, part: np.ndarray, pair: int, state: Tightening) -> None:
+        """Keep the bounds of some configurations by one pair and what proves them."""
         if part.size:
             self.upper[part] = np.minimum(self.upper[part], state.bound)
-            self.evidence.append(Evidence(part, state.proof(), coarse=True))
+            self.evidence.append(Evidence(part, state.proof(), coarse=True, pair=pair))
             self._suggest(part, state)
 
     def _suggest(self, part: np.ndarray, state: Tightening) -> None:
@@ -205,4 +223,3 @@ class Walk:
         self.found[int(index)] = result
         self.upper[index] = min(self.upper[index], result.bound)
         self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False))
-

@@ -1,0 +1,119 @@
+"""How much of each limit a recipe uses."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from codesign.limits import Setting, junction_limit, sum_limits, time_limits, well_bound
+from codesign.physics.optics import depth_of_field
+from codesign.problem import Problem
+
+#: A limit counts as met up to this share over its bound: well below any setting step, above round-off.
+TOLERANCE = 1e-6
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LimitUse:
+    """How much of a limit is used. ``share`` is 1 at the limit; a ``floor`` is met from above."""
+
+    name: str
+    unit: str
+    value: float
+    bound: float
+    share: float
+    floor: bool = False
+
+    @property
+    def met(self) -> bool:
+        """Whether the limit holds (to `TOLERANCE`)."""
+        return self.share <= 1 + TOLERANCE
+
+    def shortfall(self) -> str:
+        """Say by how much the limit is missed."""
+        word = "below" if self.floor else "above"
+        return f"{self.name} {self.value:.5g} {self.unit} is {abs(self.value - self.bound):.3g} {self.unit} {word} the limit {self.bound:.5g} {self.unit}"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LedState:
+    """One lit LED channel: current, electrical and optical power per emitter while on, junction."""
+
+    id: str
+    drive_ma: float
+    electrical_w: float
+    optical_w: float
+    junction_c: float
+    emitters: int
+
+
+def _use(name: str, unit: str, value: float, bound: float) -> LimitUse:
+    share = value / bound if bound > 0 else (0.0 if value <= 0 else np.inf)
+    return LimitUse(name=name, unit=unit, value=float(value), bound=float(bound), share=float(share))
+
+
+def limit_uses(
+    problem: Problem, setting: Setting, f_number: float, t: float, states: Sequence[LedState], readings: Sequence[Any]
+) -> list[LimitUse]:
+    """Use of every limit at exposure ``t`` [s], in the order of the signal chain.
+
+    ``readings`` are the surfaces read, with ``id`` and ``total_e``.
+    """
+    found = [_use(f"well, {r.id}", "e-", r.total_e, well_bound(problem, setting)) for r in readings]
+    for limit in time_limits(problem, setting):
+        value = limit.value(t)
+        share = limit.bound / value if limit.floor else value / limit.bound
+        found.append(
+            LimitUse(
+                name=limit.name,
+                unit=limit.unit,
+                value=value,
+                bound=limit.bound,
+                share=share,
+                floor=limit.floor,
+            )
+        )
+    found += _power_uses(problem, states, t)
+    for state in states:
+        channel = problem.channel(state.id)
+        top_ma = setting.level.current_ma[problem.channel_index[state.id]]
+        found.append(_use(f"current, {state.id}", "mA", state.drive_ma, top_ma))
+        air, top = problem.spec.temperature.air_c, junction_limit(problem, channel)
+        share = (state.junction_c - air) / (top - air) if top > air else np.inf
+        found.append(
+            LimitUse(name=f"junction, {state.id}", unit="deg C", value=state.junction_c, bound=top, share=share)
+        )
+    if problem.spec.optics.required_depth_mm is not None:
+        found.append(_depth_use(problem, setting, f_number))
+    return found
+
+
+def _depth_use(problem: Problem, setting: Setting, f_number: float) -> LimitUse:
+    wanted = problem.spec.optics.required_depth_mm
+    depth = depth_of_field(f_number, setting.camera.pixel_pitch_um * 1e-6, problem.spec.optics.magnification) * 1e3
+    return LimitUse(
+        name="depth of field",
+        unit="mm",
+        value=float(depth),
+        bound=wanted,
+        share=float(wanted / depth),
+        floor=True,
+    )
+
+
+def _power_uses(problem: Problem, states: tuple[LedState, ...], t: float) -> list[LimitUse]:
+    heat = sum(s.emitters * (s.electrical_w - s.optical_w) for s in states)
+    power = sum(s.emitters * s.electrical_w for s in states)
+    duty = problem.duty(t)
+    return [
+        _use(
+            limit.name,
+            limit.unit,
+            (heat if limit.quantity == "heat" else power) * (duty if limit.mean else 1.0),
+            limit.bound,
+        )
+        for limit in sum_limits(problem)
+    ]
