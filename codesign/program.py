@@ -123,8 +123,8 @@ def violation(program: Program, y: Array) -> Array:
     ]
     finite = np.isfinite(program.heat_cap)
     if finite.any():
-        heat = led_heat(program, q)[:, finite] / program.heat_cap[finite]
-        worst.append(np.max(heat - 1.0, axis=1))
+        cap = program.heat_cap[finite]
+        worst.append(np.max((led_heat(program, q)[:, finite] - cap) / np.maximum(cap, 1e-300), axis=1))
     return np.max(worst, axis=0)
 
 

@@ -159,7 +159,7 @@ def promising_columns(program: Program) -> np.ndarray:
     leds = program.heat_cap.size
     light = np.bincount(program.led, reach, minlength=leds)
     square = np.einsum("rn,rn->n", program.noise_rows[0][:, :-1], program.noise_rows[0][:, :-1])
-    with np.errstate(divide="ignore", invalid="ignore"):
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
         clean = np.where(reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal**2 / (square + 1e-300), 0.0)
         shot = np.where(reach > 1e-6 * max(reach.max(initial=0.0), 1e-300), signal / program.shot[0, :-1], 0.0)
     chosen = np.zeros(leds, dtype=bool)

@@ -68,6 +68,9 @@ class ConvexSlice:
         self.noise_unit = float(max(np.max(np.abs(noise).sum(axis=1), initial=0.0) ** 2, 1e-300))
         self.led = program.led[columns]
         self.heat_leds = np.unique(self.led[np.isfinite(program.heat_cap[self.led])])
+        # Size of each LED's heat row: its cap, or where there is none to speak of a part of what it could make.
+        most = np.bincount(program.led, program.heat * self.column[:-1], minlength=program.heat_cap.size)
+        self.heat_size = np.maximum(program.heat_cap, 1e-6 * most)[self.heat_leds]
 
     @cached_property
     def _matrices(self) -> tuple[Columns, Columns, Array]:
@@ -88,8 +91,8 @@ class ConvexSlice:
         matrix[at + n + index, index] = -1.0
         at += 2 * n
         share = np.where(self.led == self.heat_leds[:, None], program.heat[self.columns] * column[:-1], 0.0)
-        matrix[at : at + heated, :n] = share / program.heat_cap[self.heat_leds][:, None]
-        right[at : at + heated] = 1.0
+        matrix[at : at + heated, :n] = share / self.heat_size[:, None]
+        right[at : at + heated] = program.heat_cap[self.heat_leds] / self.heat_size
         matrix[at + heated :, n] = 1.0, -1.0
         right[at + heated :] = 1.0, -program.time_low[0] / program.time_high[0]
         quadratic = np.diag(np.append(np.zeros(n + 1), np.full(rank, 2.0)))
@@ -120,7 +123,7 @@ class ConvexSlice:
         heat = np.zeros(program.heat_cap.size)
         at = rank + m + 2 * n
         prices = np.maximum(duals[at : at + self.heat_leds.size], 0.0)
-        heat[self.heat_leds] = prices * unit / program.heat_cap[self.heat_leds]
+        heat[self.heat_leds] = prices * unit / self.heat_size
         # The multiplier of g = R y is 2 g itself.
         noise = np.zeros(rank) if theta is None else duals[:rank] * unit / (2 * np.sqrt(self.noise_unit))
         return Line(

@@ -90,7 +90,8 @@ class Tightening:
         v_high = np.where(has_high, signal[row, b], np.maximum(self.top, self.peak))
         steepest = np.where(has_high, theta[row, b], np.inf)
         level = (v_low + v_high) / np.maximum(self.own, target) ** 2
-        chord = (spread[row, b] - h_low) / np.maximum(v_high - v_low, 1e-300)
+        with np.errstate(over="ignore"):  # clipped below
+            chord = (spread[row, b] - h_low) / np.maximum(v_high - v_low, 1e-300)
         inside = (level > flattest) & (level < steepest)
         between = np.where(inside, level, np.clip(chord, flattest, steepest))
         return np.maximum(np.where(has_high, between, np.maximum(level, 2 * flattest)), 1e-300)
