@@ -11,8 +11,16 @@ from functools import lru_cache
 from pathlib import Path
 from typing import Any, ClassVar, Self
 
-from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, ValidationError
-from pydantic_core import ErrorDetails
+from pydantic import (
+    BaseModel,
+    ConfigDict,
+    Field,
+    PrivateAttr,
+    ValidationError,
+    ValidationInfo,
+    field_validator,
+)
+from pydantic_core import ErrorDetails, PydanticCustomError
 
 from codesign.errors import CatalogError, nearest
 from codesign.spectra import Table, read_table
@@ -24,6 +32,33 @@ class Record(BaseModel):
     """Base of parts and of the records nested in them: frozen, finite, no unknown keys."""
 
     model_config = ConfigDict(frozen=True, extra="forbid", allow_inf_nan=False, str_strip_whitespace=True)
+
+    @field_validator("*", mode="before")
+    @classmethod
+    def _refuse_truth_as_number(cls, value: Any, info: ValidationInfo) -> Any:
+        """``true`` typed for a number is a slip, not a 1."""
+        if _holds_truth(value) and info.field_name not in _truth_fields(cls):
+            raise PydanticCustomError("truth_as_number", "must not be true or false")
+        return value
+
+
+def _holds_truth(value: Any) -> bool:
+    """Whether a value, or anything in a list or a table of plain values, is true or false."""
+    if isinstance(value, list | tuple):
+        return any(_holds_truth(inner) for inner in value if not isinstance(inner, Mapping))
+    if isinstance(value, Mapping):
+        return any(isinstance(inner, bool) for inner in value.values())
+    return isinstance(value, bool)
+
+
+@lru_cache(maxsize=64)
+def _truth_fields(model: type[BaseModel]) -> frozenset[str]:
+    """Fields that may hold true or false: those declared so, and records, which look for themselves."""
+    return frozenset(
+        name
+        for name, field in model.model_fields.items()
+        if field.annotation is bool or _nested_model(model, name) or "Any" in repr(field.annotation)
+    )
 
 
 class Part(Record):
@@ -210,7 +245,7 @@ def _nested_model(model: type[BaseModel], name: str) -> type[BaseModel] | None:
 
 
 def _shown(value: Any) -> str:
-    text = repr(value)
+    text = repr(value).lower() if isinstance(value, bool) else repr(value)  # as TOML writes it
     return text if len(text) <= 60 else text[:57] + "..."
 
 
