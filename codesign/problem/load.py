@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import tomllib
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -12,9 +11,10 @@ from pydantic import ValidationError
 
 from codesign.catalog import Catalog, Filter, Surface, load_catalog, parse_parts, select
 from codesign.catalog.common import check_share, explain, percent_factor
-from codesign.errors import CoverageError, ProblemError, nearest
+from codesign.errors import CatalogError, CoverageError, ProblemError, nearest
 from codesign.physics.illuminants import spectral_irradiance
 from codesign.physics.light import delivery_from_beam
+from codesign.problem.files import missing_advice, problem_path, read_toml
 from codesign.problem.model import Array, LedChannel, Problem
 from codesign.problem.schema import Choice, ProblemSpec
 from codesign.spectra import read_table, trapezoid_weights, wavelength_grid
@@ -26,32 +26,6 @@ _WIDE_GRID = np.arange(250.0, 2501.0, 2.0)
 
 #: Reflectance curves of target and background closer than this everywhere are the same curve.
 SAME_REFLECTANCE = 1e-9
-
-
-def problem_path(name: str | Path) -> Path:
-    """Return the file meant by a path or by the bare name of an embedded demo problem."""
-    path = Path(name)
-    if path.is_file() or path.suffix or path.parent != Path("."):
-        return path
-    package = Path(__file__).resolve().parents[1]
-    for folder in (package / "_problems", package.parent / "problems"):
-        if (folder / f"{name}.toml").is_file():
-            return folder / f"{name}.toml"
-    return path
-
-
-def read_toml(path: Path) -> dict[str, Any]:
-    """Parse a TOML file. Raises ProblemError with the file and what is wrong."""
-    try:
-        return tomllib.loads(path.read_text(encoding="utf-8-sig"))
-    except FileNotFoundError:
-        raise ProblemError(f"{path}: no such file; 'cnr new {path}' writes one to start from") from None
-    except OSError as error:
-        raise ProblemError(f"{path}: cannot be read, {error.strerror}; give a TOML file") from None
-    except UnicodeDecodeError as error:
-        raise ProblemError(f"{path}: byte {error.start} is not UTF-8 text; save the file as UTF-8") from None
-    except tomllib.TOMLDecodeError as error:
-        raise ProblemError(f"{path}: not valid TOML, {error}; check quotes and brackets there") from None
 
 
 def load_problem(source: str | Path) -> Problem:
@@ -77,7 +51,8 @@ def load_problem(source: str | Path) -> Problem:
     'Yellow stain on white cloth'
     """
     path = problem_path(source)
-    return build_problem(read_toml(path), folder=path.parent, where=path.name)
+    table = read_toml(path, missing_advice(path))
+    return build_problem(table, folder=path.parent, where=path.name)
 
 
 def build_problem(
@@ -171,14 +146,15 @@ class _Resolver:
         pool = self.catalog.parts(kind)
         if isinstance(choice, str) and choice.endswith(".csv"):
             raise self._error(
-                f"candidates.{kind}s is {choice!r}, must be an expression or ids, not a file; give the folder as catalog"
+                f"candidates.{kind}s is {choice!r}, must be an expression or ids, not a file; "
+                "give the folder as catalog"
             )
         if not pool:
             raise self._error(
                 f"candidates.{kind}s: the catalogue {self.catalog.name!r} has no {kind}s; add [[{kind}]] tables"
             )
         chosen, named = [], {choice} if isinstance(choice, str) else set(choice)
-        for part in select(pool, self._listed(choice)):
+        for part in self._selected(kind, choice):
             misfit = fits(part)
             if misfit is None:
                 chosen.append(part)
@@ -212,7 +188,7 @@ class _Resolver:
     def _seen(self) -> tuple[float, float]:
         """Wavelengths any candidate camera responds to. [nm]"""
         ends = []
-        for camera in select(self.catalog.cameras, self._listed(self.spec.candidates.cameras)):
+        for camera in self._selected("camera", self.spec.candidates.cameras):
             for name in camera.channel_names:
                 known = camera.response_range(name)
                 if known is None:
@@ -221,9 +197,11 @@ class _Resolver:
                 ends.append(known)
         return min(e[0] for e in ends), max(e[1] for e in ends)
 
-    @staticmethod
-    def _listed(choice: Choice) -> str | list[str]:
-        return choice if isinstance(choice, str) else list(choice)
+    def _selected(self, kind: str, choice: Choice) -> tuple[Any, ...]:
+        try:
+            return select(self.catalog.parts(kind), choice if isinstance(choice, str) else list(choice))
+        except CatalogError as error:
+            raise CatalogError(f"{self.where}: candidates.{kind}s: {error}") from None
 
     def _channel(self, led) -> LedChannel:
         lighting = self.spec.lighting
@@ -264,7 +242,8 @@ class _Resolver:
         specular = target.specular_reflectance == background.specular_reflectance
         if same and specular:
             raise self._error(
-                f"scene: target {target.id!r} equals background {background.id!r} at all wavelengths; no light can show a difference"
+                f"scene: target {target.id!r} equals background {background.id!r} at all wavelengths; "
+                "no light can show a difference"
             )
 
     def _filters(self, grid: Array) -> tuple[Filter, ...]:
@@ -321,7 +300,8 @@ class _Resolver:
         lumens = float(luminous_efficacy(own, curve.values)) * float(curve.values @ trapezoid_weights(own))
         if not lumens > 0:
             raise ProblemError(
-                f"{label}: illuminance_lx is {light.illuminance_lx:g}, but {light.curve} holds no visible light; state irradiance_w_per_m2"
+                f"{label}: illuminance_lx is {light.illuminance_lx:g}, but {light.curve} holds no visible light; "
+                "state irradiance_w_per_m2"
             )
         return relative * (light.illuminance_lx / lumens)
 

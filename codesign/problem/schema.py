@@ -125,7 +125,7 @@ class Lighting(Record):
         default=0.0,
         ge=0,
         le=1000,
-        description="how much of a mirror-like reflection enters the lens, relative to a white diffuser; 0 = dark field",
+        description="share of a mirror-like reflection that enters the lens, against a white diffuser; 0 = dark field",
     )
     board_k_per_w: float = Field(default=0.0, ge=0, description="solder point to air, per emitter [K/W]")
     drive_step_ma: float = Field(default=1.0, gt=0, description="step of the current setting [mA]")
