@@ -1,0 +1,78 @@
+"""The small typographic means of the plain-text reports: sections, labelled lines, tables, bars."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Sequence
+
+#: Narrowest page a report is laid out for. [characters]
+NARROWEST = 60
+#: Width of the label column.
+LABEL = 12
+
+
+def heading(title: str, width: int) -> str:
+    """Return a section title with a rule to the right edge."""
+    return f"─ {title.upper()} ".ljust(width, "─")
+
+
+def labelled(label: str, text: str, width: int) -> list[str]:
+    """Return a label and its text, wrapped with a hanging indent."""
+    lines = textwrap.wrap(text, width - LABEL - 1, break_on_hyphens=False) or [""]
+    first, *rest = lines
+    return [f" {label:<{LABEL - 1}} {first}".rstrip(), *(" " * (LABEL + 1) + line for line in rest)]
+
+
+def bullet(text: str, width: int) -> list[str]:
+    """Return a wrapped list entry."""
+    lines = textwrap.wrap(text, width - 3, break_on_hyphens=False)
+    return [f" - {line}" if index == 0 else f"   {line}" for index, line in enumerate(lines)]
+
+
+def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left: int = 1) -> list[str]:
+    """Return rows in columns, the first ``left`` columns flush left, the others flush right.
+
+    A cell that would push the line over the edge is cut with an ellipsis, the widest column first.
+    """
+    cells = [list(header), *(list(row) for row in rows)]
+    sizes = [max(len(row[k]) for row in cells) for k in range(len(header))]
+    while sum(sizes) + 2 * len(sizes) > width and max(sizes) > 8:
+        sizes[sizes.index(max(sizes))] -= 1
+    lines = []
+    for row in cells:
+        parts = [_fit(cell, size, flush_left=k < left) for k, (cell, size) in enumerate(zip(row, sizes, strict=True))]
+        lines.append(" " + "  ".join(parts).rstrip())
+    return lines
+
+
+def _fit(cell: str, size: int, *, flush_left: bool) -> str:
+    if len(cell) > size:
+        cell = cell[: size - 1] + "…"
+    return cell.ljust(size) if flush_left else cell.rjust(size)
+
+
+def bar(share: float, size: int) -> str:
+    """Return a bar filled to a share; what is above 1 fills it all."""
+    filled = int(min(max(share, 0.0), 1.0) * size + 0.01)
+    return "█" * filled + "░" * (size - filled)
+
+
+def number(value: float, digits: int = 4) -> str:
+    """Return a number in few digits, without powers of ten in everyday ranges."""
+    if value != value or value in (float("inf"), float("-inf")):
+        return "none"
+    if 10**digits <= abs(value) < 1e9:
+        return f"{value:.0f}"
+    return f"{value:.{digits}g}"
+
+
+def percent(share: float, least: float = 0.0) -> str:
+    """Return a share as percent; what is below ``least`` is said to be so."""
+    value = 100 * share
+    if value > 9999:
+        return "> 9999 %"
+    if 0 < share < least:
+        return f"< {100 * least:g} %"
+    if value >= 0.1 or value == 0:
+        return f"{value:.0f} %" if value >= 999.5 else f"{value:.1f} %"
+    return f"{value:.1g} %"

@@ -1,0 +1,121 @@
+"""Getting text out: whole files or none, and terminals that cannot show every character."""
+
+from __future__ import annotations
+
+import os
+import sys
+import tempfile
+import time
+from pathlib import Path
+from typing import TextIO
+
+from codesign.errors import CodesignError
+
+#: How special characters of a report read where only ASCII can be shown.
+ASCII = str.maketrans(
+    {
+        "µ": "u", "°": "", "²": "2", "×": "x", "±": "+/-", "−": "-", "–": "-", "—": "-", "≤": "<=", "≥": ">=",
+        "·": ".", "█": "#", "▌": "#", "░": ".", "─": "-", "►": ">", "…": "...", "σ": "sigma", "⁻": "-", "λ": "lambda",
+    }
+)  # fmt: skip
+
+#: A search shorter than this shows no progress. [s]
+QUIET_SECONDS = 0.5
+
+
+def as_ascii(text: str) -> str:
+    """Return the text in plain ASCII; what has no likeness becomes ``?``."""
+    return text.translate(ASCII).encode("ascii", "replace").decode("ascii")
+
+
+def shown(text: str, encoding: str | None) -> str:
+    """Return the text as it is where the encoding can show it, else in ASCII."""
+    try:
+        text.encode(encoding or "ascii")
+    except (UnicodeEncodeError, LookupError):
+        return as_ascii(text)
+    return text
+
+
+def plain(text: str) -> str:
+    """Return words typed by someone else on one line, without control or direction characters."""
+    return " ".join("".join(c if c.isprintable() else " " for c in text).split())
+
+
+def write_file(path: str | Path, content: str | bytes, *, overwrite: bool = True) -> None:
+    """Write a whole file or nothing: an interrupted run never leaves half of one.
+
+    Parameters
+    ----------
+    path : path
+        Its folder must exist.
+    content : str or bytes
+        Text is written as UTF-8.
+    overwrite : bool
+        Whether an existing file may be replaced.
+
+    Raises
+    ------
+    CodesignError
+        When the folder does not exist, the path is a folder, or the file exists and must not be replaced.
+    """
+    path = Path(path)
+    data = content.encode("utf-8") if isinstance(content, str) else content
+    if path.is_dir():
+        raise CodesignError(f"{path}: is a folder; name a file in it")
+    if not path.parent.is_dir():
+        raise CodesignError(f"{path}: folder {str(path.parent)!r} does not exist; create it first")
+    if path.exists() and not overwrite:
+        raise CodesignError(f"{path}: exists already; choose another name, or --force to replace it")
+    try:
+        _write_anew(path.resolve(), data)
+    except OSError as error:
+        raise CodesignError(f"{path}: cannot be written, {error.strerror}; choose another place") from None
+
+
+def _write_anew(path: Path, data: bytes) -> None:
+    if path.exists() and not path.is_file():  # a pipe or a device has nothing to protect
+        path.write_bytes(data)
+        return
+    handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name[:40]}.")
+    try:
+        with os.fdopen(handle, "wb") as file:
+            file.write(data)
+        os.chmod(name, path.stat().st_mode & 0o777 if path.exists() else 0o666 & ~_umask())
+        os.replace(name, path)
+    except BaseException:
+        Path(name).unlink(missing_ok=True)
+        raise
+
+
+def _umask() -> int:
+    mask = os.umask(0)
+    os.umask(mask)
+    return mask
+
+
+class Progress:
+    """One line on a terminal that tells how far a search is; silent when nobody watches."""
+
+    def __init__(self, stream: TextIO | None = None) -> None:
+        self.stream = sys.stderr if stream is None else stream
+        self.watched = self.stream.isatty()
+        self.started = time.monotonic()
+        self.width = 0
+
+    def __call__(self, best: float, bound: float) -> None:
+        """Show the best CNR so far and the bound on what is left."""
+        seconds = time.monotonic() - self.started
+        if not self.watched or seconds < QUIET_SECONDS:
+            return
+        line = f"searching {seconds:.0f} s: best CNR {best:.4g}, none above {bound:.4g}"
+        self.stream.write("\r" + line.ljust(self.width))
+        self.stream.flush()
+        self.width = len(line)
+
+    def clear(self) -> None:
+        """Wipe the line."""
+        if self.width:
+            self.stream.write("\r" + " " * self.width + "\r")
+            self.stream.flush()
+            self.width = 0

@@ -1,0 +1,123 @@
+"""Catalogue parts as narrow tables, as one part in full, and as plain dictionaries."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping
+from typing import Any
+
+from codesign.catalog import Camera, Catalog, Filter, Led, Part, Surface
+from codesign.report.layout import NARROWEST, labelled, number, table
+from codesign.report.output import plain
+
+#: Kinds as people type them → kinds as the catalogue names them.
+KINDS = {"leds": "led", "filters": "filter", "cameras": "camera", "surfaces": "surface"}
+#: Curves are looked up in files, not listed.
+_BLANK = "-"
+
+
+def catalog_text(catalog: Catalog, width: int = 80) -> str:
+    """Return what a catalogue holds."""
+    lines = labelled("catalogue", plain(catalog.name), width) + labelled("source", plain(catalog.source), width)
+    for name, kind in KINDS.items():
+        lines += labelled(name, str(len(catalog.parts(kind))), width)
+    return "\n".join(lines) + "\n"
+
+
+def parts_text(parts: Iterable[Part], width: int = 80) -> str:
+    """Return parts of one kind as a table, one line each."""
+    parts = tuple(parts)
+    columns = COLUMNS[parts[0].table_name]
+    rows = [[_cell(value(part)) for value in columns.values()] for part in parts]
+    lines = table(tuple(columns), rows, max(width, NARROWEST), left=1)
+    invented = sum(part.invented for part in parts)
+    note = f" {len(parts)} parts" + (f", {invented} of them invented" if invented else "")
+    return "\n".join([*lines, note]) + "\n"
+
+
+def part_text(part: Part, width: int = 80) -> str:
+    """Return all a part states, one key per line, as it would be written in a file."""
+    lines = [f" {part.table_name} {part.id}"]
+    for key, value in part_dict(part).items():
+        lines += labelled_key(key, value, width)
+    return "\n".join(lines) + "\n"
+
+
+def labelled_key(key: str, value: Any, width: int) -> list[str]:
+    """Return one key and its value; lists of records take a line each."""
+    if isinstance(value, list) and value and isinstance(value[0], dict):
+        lines = [f"   {key}"]
+        for record in value:
+            lines += [f"     {inner}: {plain(str(text))}" for inner, text in record.items()]
+        return lines
+    head = f"   {key:<36} "
+    first, *rest = labelled("", plain(str(value)), width - len(head) + 13) or [""]
+    return [head + first.strip(), *(" " * len(head) + line.strip() for line in rest)]
+
+
+def part_dict(part: Part) -> dict[str, Any]:
+    """Return what a part states as plain values; keys left out of its file are left out here."""
+    return part.model_dump(mode="json", exclude_none=True, exclude_unset=True)
+
+
+def _cell(value: Any) -> str:
+    if value is None or value == "":
+        return _BLANK
+    return number(value) if isinstance(value, int | float) else plain(str(value))
+
+
+def _filter_what(part: Filter) -> str:
+    if part.kind == "bandpass":
+        return f"{part.center_nm:g} nm, {part.fwhm_nm:g} nm wide"
+    if part.kind in ("longpass", "shortpass"):
+        return f"cuts at {part.cut_nm:g} nm"
+    if part.kind == "neutral":
+        return f"optical density {part.optical_density:g}"
+    if part.kind == "stack":
+        return " + ".join(part.parts or ())
+    return part.description
+
+
+def _surface_range(part: Surface) -> str:
+    lo, hi = part.range()
+    return f"{lo:.0f}-{hi:.0f}"
+
+
+def _peak_share(part: Filter) -> float | None:
+    return part.peak_transmittance
+
+
+COLUMNS: Mapping[str, Mapping[str, Callable[[Any], Any]]] = {
+    Led.table_name: {
+        "LED": lambda p: p.id,
+        "peak [nm]": Led.peak,
+        "width [nm]": lambda p: p.fwhm_nm,
+        "flux [mW]": lambda p: 1e3 * p.flux_w(),
+        "at [mA]": lambda p: p.rated_current_ma,
+        "largest [mA]": lambda p: p.largest_current_ma,
+        "price": lambda p: p.price,
+    },
+    Filter.table_name: {
+        "filter": lambda p: p.id,
+        "peak": _peak_share,
+        "OD": lambda p: p.blocking_od,
+        "price": lambda p: p.price,
+        "kind": lambda p: p.kind,
+        "what": _filter_what,
+    },
+    Camera.table_name: {
+        "camera": lambda p: p.id,
+        "pixel [µm]": lambda p: p.pixel_pitch_um,
+        "well [e-]": lambda p: p.full_well_e,
+        "read [e-]": lambda p: p.read_noise_e,
+        "bits": lambda p: p.bits,
+        "price": lambda p: p.price,
+        "channels": lambda p: "/".join(p.channel_names),
+    },
+    Surface.table_name: {
+        "surface": lambda p: p.id,
+        "samples": lambda p: len(p.samples.values) if p.samples.values.ndim > 1 else 1,
+        "known at [nm]": _surface_range,
+        "gloss": lambda p: p.specular_reflectance,
+        "tags": lambda p: " ".join(p.tags),
+    },
+}

@@ -1,0 +1,258 @@
+"""Results as a narrow plain-text recipe: what to set, what you get, what limits it, how sure it is."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable
+
+from codesign.design import Design, LimitUse, Performance
+from codesign.problem import Problem
+from codesign.report.cautions import cautions
+from codesign.report.layout import NARROWEST, bar, bullet, heading, labelled, number, percent, table
+from codesign.report.output import plain
+from codesign.solve import Solution
+
+CNR_DEFINITION = "|target mean - background mean| / √(mean of their two variances)"
+
+#: From this share on a limit counts as reached. [1]
+REACHED = 0.999
+#: Length of the bars. [characters]
+BAR = 12
+#: Parts left out that are listed; the JSON result lists all.
+LISTED = 6
+
+
+def solution_text(solution: Solution, width: int = 80) -> str:
+    """Return a solution as plain text.
+
+    Parameters
+    ----------
+    solution : Solution
+    width : int
+        Page width, at least 60. [characters]
+
+    Returns
+    -------
+    str
+        Lines no wider than ``width``, with a few characters beyond ASCII (µ, °, bars).
+    """
+    width = max(width, NARROWEST)
+    problem, recipe = solution.problem, solution.recipe
+    blocks = [
+        _title(problem, width),
+        _settings(problem, recipe, width),
+        _results(problem, recipe, width),
+        _limits(recipe, width, solution.binding),
+        _noise(recipe, width),
+        _proof(solution, width),
+        _runners_up(solution, width),
+        _left_out(problem, width),
+        _cautions(problem, recipe, width),
+    ]
+    return _joined(blocks)
+
+
+def performance_text(problem: Problem, performance: Performance, width: int = 80) -> str:
+    """Return what a recipe achieves as plain text; limits that are missed come first.
+
+    Parameters
+    ----------
+    problem : Problem
+    performance : Performance
+    width : int
+        Page width, at least 60. [characters]
+    """
+    width = max(width, NARROWEST)
+    blocks = [
+        _title(problem, width),
+        _verdict(performance, width),
+        _settings(problem, performance, width),
+        _results(problem, performance, width),
+        _limits(performance, width),
+        _noise(performance, width),
+        _cautions(problem, performance, width),
+    ]
+    return _joined(blocks)
+
+
+def _joined(blocks: Iterable[list[str]]) -> str:
+    return "\n\n".join("\n".join(block) for block in blocks if block) + "\n"
+
+
+def _title(problem: Problem, width: int) -> list[str]:
+    return [*labelled("title", plain(problem.spec.title), width), *labelled("problem", plain(problem.where), width)]
+
+
+def _verdict(performance: Performance, width: int) -> list[str]:
+    if performance.feasible:
+        return [heading("verdict", width), *labelled("all limits", "are met", width)]
+    missed = performance.violated
+    lines = [heading("verdict", width)]
+    lines += labelled("NOT MET", f"{len(missed)} of {len(performance.limits)} limits:", width)
+    return lines + [line for limit in missed for line in bullet(limit.shortfall(), width)]
+
+
+def _settings(problem: Problem, performance: Performance, width: int) -> list[str]:
+    design = performance.design
+    lines = [heading("what to set", width)]
+    camera = f"{design.camera}, channel {plain(design.channel)}, gain {design.gain_db:g} dB"
+    for label, text in (
+        ("camera", camera),
+        ("filter", design.filter),
+        ("f-number", f"{design.f_number:g}"),
+        ("exposure", f"{design.exposure_us:.10g} µs, {_light_mode(problem, performance)}"),
+    ):
+        lines += labelled(label, text, width)
+    if not performance.leds:
+        return lines + labelled("LEDs", "all off", width)
+    rows = [
+        (s.id, f"{s.drive_ma:.10g} mA", f"× {s.emitters}", f"junction {s.junction_c:.1f} °C") for s in performance.leds
+    ]
+    return lines + table(("LED", "current", "emitters", "predicted"), rows, width)
+
+
+def _light_mode(problem: Problem, performance: Performance) -> str:
+    if not problem.strobe:
+        return "LEDs on continuously"
+    return f"LEDs on {percent(performance.duty)} of the time at {problem.spec.timing.frame_rate_hz:g} Hz"
+
+
+def _results(problem: Problem, performance: Performance, width: int) -> list[str]:
+    lines = [heading("what you get", width)]
+    sign = f"target {performance.sign} than background" if performance.cnr > 0 else "no usable contrast"
+    lines += labelled("CNR", f"{number(performance.cnr)} ({sign})", width)
+    lines += labelled("", f"= {CNR_DEFINITION}", width)
+    lines += _pairs(performance, width)
+    required = problem.spec.required_cnr
+    if required is not None:
+        lines += labelled("required", f"CNR {required:g}: {_compared(performance.cnr, required)}", width)
+    rate = performance.error_rate
+    text = f"{_rate(rate)} missed, as many false alarms, threshold midway"
+    lines += labelled("errors", text, width)
+    rows = [(r.id, r.role, f"{r.grey_dn:.1f}", percent(r.saturation_share)) for r in performance.surfaces]
+    return [*lines, *table(("surface", "role", "grey value [DN]", "of saturation"), rows, width, left=2)]
+
+
+def _pairs(performance: Performance, width: int) -> list[str]:
+    if len(performance.pairs) < 2:
+        return []
+    lines = labelled("", "of the worst pair:", width)
+    rows = [(p.target, p.background, number(p.cnr)) for p in sorted(performance.pairs, key=lambda p: p.cnr)]
+    return lines + table(("target", "background", "CNR"), rows, width, left=2)
+
+
+def _compared(cnr: float, required: float) -> str:
+    return f"met, {cnr / required:.2f} times" if cnr >= required else f"NOT met, {percent(1 - cnr / required)} short"
+
+
+def _rate(rate: float) -> str:
+    if rate < 1e-12:
+        return "fewer than one in 10^12"
+    return percent(rate) if rate >= 0.001 else f"1 in {number(1 / rate, 3)}"
+
+
+def _limits(performance: Performance, width: int, binding: tuple[str, ...] | None = None) -> list[str]:
+    """All limits, the most used first; ``binding`` are those the optimum touches before rounding."""
+    ordered = sorted(performance.limits, key=lambda limit: -limit.share)
+    rows = [_limit_row(limit, binding) for limit in ordered]
+    lines = [heading("what limits it", width)]
+    lines += _with_bars(table(("  limit", "value", "allowed", "used"), rows, width - BAR - 3), ordered, width)
+    if any(_bound(limit, binding) and limit.met for limit in ordered):
+        lines.append(" ► binds: loosening this limit can raise the CNR")
+    return lines if performance.feasible else [*lines, " ! exceeded"]
+
+
+def _with_bars(rows: list[str], limits: list[LimitUse], width: int) -> list[str]:
+    header, *rest = rows
+    return [header, *_drawn(rest, [limit.share for limit in limits], width)]
+
+
+def _drawn(rows: list[str], shares: list[float], width: int) -> list[str]:
+    """Put a bar at the right edge of each row."""
+    return [f"{row.ljust(width - BAR - 1)} {bar(share, BAR)}" for row, share in zip(rows, shares, strict=True)]
+
+
+def _bound(limit: LimitUse, binding: tuple[str, ...] | None) -> bool:
+    return limit.share >= REACHED if binding is None else limit.name in binding
+
+
+def _limit_row(limit: LimitUse, binding: tuple[str, ...] | None) -> tuple[str, str, str, str]:
+    mark = "!" if not limit.met else "►" if _bound(limit, binding) else " "
+    sign = "≥" if limit.floor else "≤"
+    allowed = f"{sign} {number(limit.bound)} {limit.unit}"
+    return f"{mark} {limit.name}", number(limit.value), allowed, percent(limit.share, least=0.001)
+
+
+def _noise(performance: Performance, width: int) -> list[str]:
+    total = sum(sum(pair) for pair in performance.noise.values())
+    if not total > 0:
+        return []
+    ordered = sorted(performance.noise.items(), key=lambda item: -sum(item[1]))
+    rows = [
+        (name, number(math.sqrt(a), 3), number(math.sqrt(b), 3), percent((a + b) / total, least=0.001))
+        for name, (a, b) in ordered
+        if a + b > 0
+    ]
+    header, *lines = table(("term", "σ target", "σ backgr.", "variance"), rows, width - BAR - 3)
+    shares = [sum(pair) / total for _, pair in ordered if sum(pair) > 0]
+    note = " σ: standard deviation in electrons"
+    return [heading("noise budget", width), header, *_drawn(lines, shares, width), note]
+
+
+def _proof(solution: Solution, width: int) -> list[str]:
+    proof = solution.certificate
+    lines = [heading("how sure it is", width)]
+    rows = (
+        ("bound", f"no setting of the candidates has a CNR above {number(proof.bound, 6)} (proven)"),
+        ("optimum", f"{number(proof.value, 6)} before rounding, gap {percent(proof.gap)}"),
+        ("recipe", f"{number(solution.recipe.cnr, 6)} in settable steps, {_loss(solution.rounding_loss)} the bound"),
+        (
+            "searched",
+            f"{proof.configurations} configurations of parts, gain, f-number, pulse rating and sign, all bounded, "
+            f"in {solution.seconds:.1f} s",
+        ),
+        (
+            "junctions",
+            f"temperatures assumed and reached agree within {number(max(proof.junction_residual_k, 1e-3), 2)} K, "
+            f"the CNR within {percent(max(proof.cnr_residual, 1e-6))}",
+        ),
+    )
+    for label, text in rows:
+        lines += labelled(label, text, width)
+    return lines
+
+
+def _loss(loss: float) -> str:
+    return f"{percent(loss, least=1e-6)} below" if loss > 0 else "at"
+
+
+def _runners_up(solution: Solution, width: int) -> list[str]:
+    if not solution.alternatives:
+        return []
+    best = solution.certificate.value
+    rows = [
+        (a.design.camera, a.design.filter, number(a.cnr), f"{100 * (a.cnr / best - 1):+.1f} %", _aperture(a.design))
+        for a in sorted(solution.alternatives, key=lambda a: -a.cnr)
+    ]
+    header = ("camera", "filter", "CNR", "change", "gain, f-number, exposure")
+    return [heading("runners-up with other parts, before rounding", width), *table(header, rows, width, left=2)]
+
+
+def _aperture(design: Design) -> str:
+    return f"{design.gain_db:g} dB, f/{design.f_number:g}, {number(design.exposure_us)} µs"
+
+
+def _left_out(problem: Problem, width: int) -> list[str]:
+    names = problem.left_out
+    if not names:
+        return []
+    lines = [heading("candidates left out", width)]
+    for text in names[:LISTED]:
+        lines += bullet(plain(text), width)
+    more = len(names) - LISTED
+    return lines + (bullet(f"and {more} more (--json lists all)", width) if more > 0 else [])
+
+
+def _cautions(problem: Problem, performance: Performance, width: int) -> list[str]:
+    found = cautions(problem, performance)
+    return [heading("cautions", width), *(line for text in found for line in bullet(text, width))] if found else []
