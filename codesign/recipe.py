@@ -15,6 +15,8 @@ from codesign.program import Array
 
 #: Currents below this share of a setting step count as off. [1]
 OFF = 1e-6
+#: Share of the optimum's CNR that is not worth another step.
+GOOD_ENOUGH = 1e-4
 #: Rounds of looking for a better neighbour.
 LARGEST_NUMBER_OF_ROUNDS = 60
 
@@ -45,7 +47,8 @@ def design_at(assembly: Assembly, setting: Setting, filter_index: int, point: Ar
 
 
 def settable(problem: Problem, design: Design) -> tuple[Design, Performance] | None:
-    """Round a design to steps inside all limits and climb to the best neighbour. None when no step fits."""
+    """Round a design to steps inside all limits and climb from there. None when no step fits."""
+    reference = evaluate(problem, design).cnr
     step_ma = problem.spec.lighting.drive_step_ma
     start = None
     for exposure in _exposures(problem, design):
@@ -54,7 +57,7 @@ def settable(problem: Problem, design: Design) -> tuple[Design, Performance] | N
         result = evaluate(problem, trial)
         if result.feasible and (start is None or result.cnr > start.cnr):
             start = result
-    return None if start is None else _climb(problem, design, start)
+    return None if start is None else _climb(problem, design, start, reference)
 
 
 def _steps(count: float, step: float) -> float:
@@ -68,10 +71,12 @@ def _exposures(problem: Problem, design: Design) -> list[float]:
     return [_steps(count, step) for count in dict.fromkeys((low, high)) if count > 0]
 
 
-def _climb(problem: Problem, optimum: Design, start: Performance) -> tuple[Design, Performance]:
-    """Take the best feasible neighbour until none is better."""
+def _climb(problem: Problem, optimum: Design, start: Performance, reference: float) -> tuple[Design, Performance]:
+    """Take the best feasible neighbour until none is better, or the optimum is as good as reached."""
     best = start
     for _ in range(LARGEST_NUMBER_OF_ROUNDS):
+        if best.cnr >= reference * (1 - GOOD_ENOUGH):
+            break
         trials = (evaluate(problem, trial) for trial in _neighbours(problem, optimum, best.design))
         better = max((r for r in trials if r.feasible), key=lambda r: r.cnr, default=None)
         if better is None or better.cnr <= best.cnr * (1 + 1e-12):

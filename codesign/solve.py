@@ -20,6 +20,8 @@ from codesign.search.walk import Configuration, Evidence, Tally, Walk
 
 #: Junction temperatures assumed and reached agree to this. [K]
 JUNCTION_TOLERANCE_K = 0.02
+#: The winner itself is worked out to this gap, so that its settings do not depend on luck.
+POLISH_GAP = 1e-5
 #: Gap of the first round.
 SCOUT_GAP = 0.03
 #: Rounds of the outer and inner loop over junction temperatures.
@@ -139,10 +141,11 @@ def solve(
             raise _nothing_seen(problem)
         known = walk.configuration(best)
         result = walk.found[best]
-        residual, settled = settle(problem, known, junction, gap)
+        residual, settled = settle(problem, known, junction, min(gap, POLISH_GAP))
         if residual <= JUNCTION_TOLERANCE_K and walk.gap <= gap:
             break
         junction = settled
+    result = walk.polish(best, min(gap, POLISH_GAP))
     design = design_at(walk.assembly, known.setting, known.filter, result.point)
     optimum = evaluate(problem, design)
     rounded = settable(problem, design)

@@ -131,6 +131,17 @@ class Walk:
         number = self.assembly.settings.index(known.setting)
         self._certify((number * self.filters + known.filter) * 2 + SIGNS.index(known.sign), 0.0)
 
+    def polish(self, index: int, gap: float) -> Certified:
+        """Work out a configuration already certified to a smaller gap, and return it."""
+        if self.found[index].gap > gap:
+            program = self.programs(np.array([index]), coarse=False)
+            result = certify(program, gap, 0.0, self.hints.get(int(index)))
+            if result.value >= self.found[index].value:
+                self.found[index] = result
+                self.upper[index] = min(self.upper[index], result.bound)
+                self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False))
+        return self.found[index]
+
     def best(self, allowed: np.ndarray | None = None) -> int | None:
         """Return the certified best of the allowed configurations, or None where none has any contrast.
 
