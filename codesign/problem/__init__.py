@@ -1,7 +1,7 @@
 """The problem file: schema, loading, and the resolved problem."""
 
 from codesign.problem.files import DemoProblem, demo_problems, problem_path, read_toml
-from codesign.problem.load import build_problem, load_problem
+from codesign.problem.load import build_problem, load_problem, solver_settings
 from codesign.problem.model import LedChannel, Problem
 from codesign.problem.schema import ProblemSpec, json_schema
 
@@ -16,4 +16,5 @@ __all__ = [
     "load_problem",
     "problem_path",
     "read_toml",
+    "solver_settings",
 ]

@@ -16,7 +16,7 @@ from codesign.physics.illuminants import spectral_irradiance
 from codesign.physics.light import delivery_from_beam
 from codesign.problem.files import missing_advice, problem_path, read_toml
 from codesign.problem.model import Array, LedChannel, Problem
-from codesign.problem.schema import Choice, ProblemSpec
+from codesign.problem.schema import Choice, ProblemSpec, Solver
 from codesign.spectra import read_table, trapezoid_weights, wavelength_grid
 
 NO_FILTER = Filter(id="none", kind="none", source="no filter")
@@ -72,6 +72,15 @@ def build_problem(
     inline = {kind: list(getattr(spec, kind)) for kind in ("led", "filter", "camera", "surface")}
     catalog = catalog.with_parts(parse_parts(inline, folder, where))
     return _Resolver(spec, folder, where, catalog).problem()
+
+
+def solver_settings(problem: Problem, **changes: float | None) -> Solver:
+    """Return the problem's solver settings with some replaced; None keeps one. Raises ProblemError when not allowed."""
+    wanted = {key: value for key, value in changes.items() if value is not None}
+    try:
+        return Solver.model_validate({**problem.spec.solver.model_dump(), **wanted})
+    except ValidationError as error:
+        raise ProblemError(explain(error, "option", Solver)) from None
 
 
 class _Resolver:

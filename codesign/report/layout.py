@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Sequence
+from collections.abc import Container, Sequence
 
 #: Narrowest page a report is laid out for. [characters]
 NARROWEST = 60
@@ -29,8 +29,8 @@ def bullet(text: str, width: int) -> list[str]:
     return [f" - {line}" if index == 0 else f"   {line}" for index, line in enumerate(lines)]
 
 
-def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left: int = 1) -> list[str]:
-    """Return rows in columns, the first ``left`` columns flush left, the others flush right.
+def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left: Container[int] = (0,)) -> list[str]:
+    """Return rows in columns, those in ``left`` flush left, the others flush right.
 
     A cell that would push the line over the edge is cut with an ellipsis, the widest column first.
     """
@@ -40,7 +40,7 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left
         sizes[sizes.index(max(sizes))] -= 1
     lines = []
     for row in cells:
-        parts = [_fit(cell, size, flush_left=k < left) for k, (cell, size) in enumerate(zip(row, sizes, strict=True))]
+        parts = [_fit(cell, size, flush_left=k in left) for k, (cell, size) in enumerate(zip(row, sizes, strict=True))]
         lines.append(" " + "  ".join(parts).rstrip())
     return lines
 

@@ -18,6 +18,8 @@ certificate              the proof: {"cnr": of the optimum at the junction tempe
                          program, "junction_c": {LED id: temperature assumed}, "junction_residual_k": largest
                          difference between assumed and reached, "cnr_residual": what that changes (relative),
                          "forward_residual": forward model against the optimiser's arrays (relative)}
+verified                 None, or what `codesign.verify` checked again: {"configurations": bounded anew,
+                         "by_kept_multipliers": number proven by the multipliers kept, "largest_bound", "value"}
 rounding_loss            1 - CNR of the recipe / cnr_bound
 binding                  [names of the limits the optimum touches]
 alternatives             [{"cnr": number, "settings": settings (below)}], certified runners-up with other parts, before
@@ -57,6 +59,7 @@ from __future__ import annotations
 
 import json
 import math
+from dataclasses import asdict
 from typing import Any
 
 import codesign
@@ -64,6 +67,7 @@ from codesign.design import Design, Performance
 from codesign.problem import Problem
 from codesign.report.cautions import cautions
 from codesign.solve import Solution
+from codesign.verify import Verdict
 
 SOLUTION_SCHEMA = "codesign.solution/1"
 PERFORMANCE_SCHEMA = "codesign.performance/1"
@@ -71,8 +75,11 @@ PERFORMANCE_SCHEMA = "codesign.performance/1"
 _PROOF = ("gap", "configurations", "refined", "certified", "junction_residual_k", "cnr_residual", "forward_residual")
 
 
-def solution_dict(solution: Solution) -> dict[str, Any]:
-    """Return a whole solution as a dictionary of plain values; the module says what each key holds."""
+def solution_dict(solution: Solution, verdict: Verdict | None = None) -> dict[str, Any]:
+    """Return a whole solution as a dictionary of plain values; the module says what each key holds.
+
+    ``verdict`` is what `codesign.verify` returned, where it was run.
+    """
     problem, proof = solution.problem, solution.certificate
     required = problem.spec.required_cnr
     best_first = sorted(solution.alternatives, key=lambda a: -a.cnr)
@@ -90,6 +97,7 @@ def solution_dict(solution: Solution) -> dict[str, Any]:
                 **{name: getattr(proof, name) for name in _PROOF},
                 "junction_c": proof.junction_c,
             },
+            "verified": None if verdict is None else asdict(verdict),
             "rounding_loss": solution.rounding_loss,
             "binding": solution.binding,
             "alternatives": [{"cnr": a.cnr, "settings": _settings(a.design)} for a in best_first],

@@ -2,17 +2,64 @@
 
 from __future__ import annotations
 
+import textwrap
 from collections.abc import Callable, Iterable, Mapping
 from typing import Any
 
-from codesign.catalog import Camera, Catalog, Filter, Led, Part, Surface
-from codesign.report.layout import NARROWEST, labelled, number, table
+from codesign.catalog import Camera, Catalog, Filter, Led, Part, Surface, select
+from codesign.errors import CatalogError, nearest
+from codesign.report.layout import NARROWEST, bullet, labelled, number, table
+from codesign.report.machine import as_json
 from codesign.report.output import plain
 
 #: Kinds as people type them → kinds as the catalogue names them.
 KINDS = {"leds": "led", "filters": "filter", "cameras": "camera", "surfaces": "surface"}
 #: Curves are looked up in files, not listed.
 _BLANK = "-"
+#: Columns of words, flush left.
+_WORDS = frozenset({"kind", "what", "tags", "channels"})
+#: Width of the key column of one part.
+KEY = 30
+
+
+def listing(catalog: Catalog, kind: str | None, expression: str, name: str | None, *, json: bool) -> str:
+    """Return what ``cnr parts`` prints: the catalogue's counts, a table of chosen parts, or one part in full.
+
+    Parameters
+    ----------
+    catalog : Catalog
+    kind : str or None
+        A key of `KINDS`.
+    expression : str
+        Which parts of the kind.
+    name : str or None
+        Id of the one part to show, of the kind or of any.
+    json : bool
+        JSON instead of text.
+    """
+    if name is not None:
+        part = _find(catalog, kind, name)
+        return as_json(part_dict(part)) if json else part_text(part)
+    if kind is None:
+        return as_json(catalog_dict(catalog)) if json else catalog_text(catalog)
+    chosen = select(catalog.parts(KINDS[kind]), expression)
+    return as_json([part_dict(part) for part in chosen]) if json else parts_text(chosen)
+
+
+def _find(catalog: Catalog, kind: str | None, name: str) -> Part:
+    if kind is not None:
+        return catalog.part(KINDS[kind], name)
+    everything = {part.id: part for each in KINDS.values() for part in catalog.parts(each).values()}
+    if name not in everything:
+        raise CatalogError(f"catalogue {catalog.name!r}: no part {name!r}, {nearest(name, everything)}")
+    return everything[name]
+
+
+def catalog_dict(catalog: Catalog) -> dict[str, Any]:
+    """Return name, source and the ids of each kind."""
+    return {"name": catalog.name, "source": catalog.source} | {
+        name: list(catalog.parts(kind)) for name, kind in KINDS.items()
+    }
 
 
 def catalog_text(catalog: Catalog, width: int = 80) -> str:
@@ -28,7 +75,8 @@ def parts_text(parts: Iterable[Part], width: int = 80) -> str:
     parts = tuple(parts)
     columns = COLUMNS[parts[0].table_name]
     rows = [[_cell(value(part)) for value in columns.values()] for part in parts]
-    lines = table(tuple(columns), rows, max(width, NARROWEST), left=1)
+    left = [k for k, name in enumerate(columns) if k == 0 or name in _WORDS]
+    lines = table(tuple(columns), rows, max(width, NARROWEST), left=left)
     invented = sum(part.invented for part in parts)
     note = f" {len(parts)} parts" + (f", {invented} of them invented" if invented else "")
     return "\n".join([*lines, note]) + "\n"
@@ -38,20 +86,26 @@ def part_text(part: Part, width: int = 80) -> str:
     """Return all a part states, one key per line, as it would be written in a file."""
     lines = [f" {part.table_name} {part.id}"]
     for key, value in part_dict(part).items():
-        lines += labelled_key(key, value, width)
+        lines += _key_lines(key, value, width)
     return "\n".join(lines) + "\n"
 
 
-def labelled_key(key: str, value: Any, width: int) -> list[str]:
-    """Return one key and its value; lists of records take a line each."""
+def _key_lines(key: str, value: Any, width: int) -> list[str]:
+    """Return one key and its value; each record of a list takes an entry of its own."""
     if isinstance(value, list) and value and isinstance(value[0], dict):
-        lines = [f"   {key}"]
-        for record in value:
-            lines += [f"     {inner}: {plain(str(text))}" for inner, text in record.items()]
-        return lines
-    head = f"   {key:<36} "
-    first, *rest = labelled("", plain(str(value)), width - len(head) + 13) or [""]
-    return [head + first.strip(), *(" " * len(head) + line.strip() for line in rest)]
+        entries = [plain(", ".join(f"{inner} = {text}" for inner, text in _flat(record).items())) for record in value]
+        return [f"   {key}", *("  " + line for entry in entries for line in bullet(entry, width - 2))]
+    head = f"   {key:<{KEY}} "
+    first, *rest = textwrap.wrap(plain(str(value)), width - len(head), break_on_hyphens=False) or [""]
+    return [head + first, *(" " * len(head) + line for line in rest)]
+
+
+def _flat(record: Mapping[str, Any]) -> dict[str, Any]:
+    """Return a record without nesting, keys joined by dots."""
+    flat: dict[str, Any] = {}
+    for key, value in record.items():
+        flat |= {f"{key}.{k}": v for k, v in _flat(value).items()} if isinstance(value, dict) else {key: value}
+    return flat
 
 
 def part_dict(part: Part) -> dict[str, Any]:

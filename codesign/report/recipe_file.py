@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from pathlib import Path
+from typing import Any
 
 from pydantic import Field, ValidationError
 
@@ -11,6 +12,8 @@ from codesign.catalog.common import Record, explain
 from codesign.design import Design
 from codesign.errors import ProblemError
 from codesign.problem import read_toml
+from codesign.report.output import plain, write_file
+from codesign.solve import Solution
 
 
 class Recipe(Record):
@@ -62,6 +65,18 @@ def _value(value: str | float) -> str:
     if isinstance(value, str):
         return json.dumps(value, ensure_ascii=False).replace("\x7f", "\\u007f")
     return repr(float(value))
+
+
+def write_recipe(solution: Solution, path: str | Path) -> None:
+    """Write a solution's recipe to a file, headed by what it is for."""
+    problem, recipe = solution.problem, solution.recipe
+    comment = f"Recipe for {plain(problem.spec.title)} ({plain(problem.where)}), predicted CNR {recipe.cnr:.6g}"
+    write_file(path, recipe_toml(recipe.design, comment))
+
+
+def recipe_schema() -> dict[str, Any]:
+    """JSON Schema of the recipe file."""
+    return {**Recipe.model_json_schema(), "$schema": "https://json-schema.org/draft/2020-12/schema"}
 
 
 def load_recipe(path: str | Path) -> Design:

@@ -11,6 +11,7 @@ from codesign.report.cautions import cautions
 from codesign.report.layout import NARROWEST, bar, bullet, heading, labelled, number, percent, table
 from codesign.report.output import plain
 from codesign.solve import Solution
+from codesign.verify import Verdict
 
 CNR_DEFINITION = "|target mean - background mean| / √(mean of their two variances)"
 
@@ -22,7 +23,7 @@ BAR = 12
 LISTED = 6
 
 
-def solution_text(solution: Solution, width: int = 80) -> str:
+def solution_text(solution: Solution, width: int = 80, verdict: Verdict | None = None) -> str:
     """Return a solution as plain text.
 
     Parameters
@@ -30,6 +31,8 @@ def solution_text(solution: Solution, width: int = 80) -> str:
     solution : Solution
     width : int
         Page width, at least 60. [characters]
+    verdict : Verdict, optional
+        What `codesign.verify` returned, where it was run.
 
     Returns
     -------
@@ -44,7 +47,7 @@ def solution_text(solution: Solution, width: int = 80) -> str:
         _results(problem, recipe, width),
         _limits(recipe, width, solution.binding),
         _noise(recipe, width),
-        _proof(solution, width),
+        _proof(solution, width, verdict),
         _runners_up(solution, width),
         _left_out(problem, width),
         _cautions(problem, recipe, width),
@@ -130,7 +133,7 @@ def _results(problem: Problem, performance: Performance, width: int) -> list[str
     text = f"{_rate(rate)} missed, as many false alarms, threshold midway"
     lines += labelled("errors", text, width)
     rows = [(r.id, r.role, f"{r.grey_dn:.1f}", percent(r.saturation_share)) for r in performance.surfaces]
-    return [*lines, *table(("surface", "role", "grey value [DN]", "of saturation"), rows, width, left=2)]
+    return [*lines, *table(("surface", "role", "grey value [DN]", "of saturation"), rows, width, left=(0, 1))]
 
 
 def _pairs(performance: Performance, width: int) -> list[str]:
@@ -138,7 +141,7 @@ def _pairs(performance: Performance, width: int) -> list[str]:
         return []
     lines = labelled("", "of the worst pair:", width)
     rows = [(p.target, p.background, number(p.cnr)) for p in sorted(performance.pairs, key=lambda p: p.cnr)]
-    return lines + table(("target", "background", "CNR"), rows, width, left=2)
+    return lines + table(("target", "background", "CNR"), rows, width, left=(0, 1))
 
 
 def _compared(cnr: float, required: float) -> str:
@@ -199,7 +202,7 @@ def _noise(performance: Performance, width: int) -> list[str]:
     return [heading("noise budget", width), header, *_drawn(lines, shares, width), note]
 
 
-def _proof(solution: Solution, width: int) -> list[str]:
+def _proof(solution: Solution, width: int, verdict: Verdict | None) -> list[str]:
     proof = solution.certificate
     lines = [heading("how sure it is", width)]
     rows = (
@@ -219,6 +222,9 @@ def _proof(solution: Solution, width: int) -> list[str]:
     )
     for label, text in rows:
         lines += labelled(label, text, width)
+    if verdict is not None:
+        text = f"again, from the problem up, without a solver: {verdict.configurations} configurations bounded, passed"
+        lines += labelled("verified", text, width)
     return lines
 
 
@@ -235,7 +241,7 @@ def _runners_up(solution: Solution, width: int) -> list[str]:
         for a in sorted(solution.alternatives, key=lambda a: -a.cnr)
     ]
     header = ("camera", "filter", "CNR", "change", "gain, f-number, exposure")
-    return [heading("runners-up with other parts, before rounding", width), *table(header, rows, width, left=2)]
+    return [heading("runners-up with other parts, before rounding", width), *table(header, rows, width, left=(0, 1))]
 
 
 def _aperture(design: Design) -> str:

@@ -1,0 +1,6 @@
+"""`python -m codesign` is the command ``cnr``."""
+
+from codesign.cli import run
+
+if __name__ == "__main__":
+    run()

@@ -1,0 +1,237 @@
+"""The command ``cnr``: thin commands over the library; a user's mistake becomes one line and an exit code.
+
+Exit codes: 0 done, 2 input that cannot be used, 3 limits that cannot be met (or a checked recipe that misses some),
+4 a result that failed its proof, 130 interrupted.
+
+Nothing but the argument parser is imported here, so that ``cnr --help`` stays quick; each command imports what it
+needs.
+"""
+
+from __future__ import annotations
+
+import os
+import sys
+from contextlib import contextmanager
+from enum import StrEnum
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
+
+import typer
+from typer.core import TyperGroup
+
+from codesign.errors import CodesignError, InfeasibleError
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator
+
+    from codesign.solve import Solution
+
+INTERRUPTED = 130
+
+
+class _Commands(TyperGroup):
+    """All commands, with errors translated in this one place; bugs keep their traceback."""
+
+    def invoke(self, ctx: Any) -> Any:
+        with _translated():
+            return super().invoke(ctx)
+
+
+@contextmanager
+def _translated() -> Iterator[None]:
+    try:
+        yield
+        sys.stdout.flush()
+    except CodesignError as error:
+        typer.echo(f"cnr: {' '.join(str(error).split())}", err=True)
+        raise typer.Exit(error.exit_code) from None
+    except KeyboardInterrupt:
+        typer.echo("cnr: interrupted", err=True)
+        raise typer.Exit(INTERRUPTED) from None
+    except BrokenPipeError:
+        # The reader has seen enough; keep the interpreter from flushing into nowhere on its way out.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+app = typer.Typer(
+    cls=_Commands,
+    no_args_is_help=True,
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    help="Certified choice of LEDs, drive currents, filter, camera and exposure for hard-to-see defects.",
+)
+
+ProblemFile = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
+AsJson = Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")]
+
+
+class PartKind(StrEnum):
+    """Kinds of parts, as typed."""
+
+    LEDS = "leds"
+    FILTERS = "filters"
+    CAMERAS = "cameras"
+    SURFACES = "surfaces"
+
+
+class SchemaKind(StrEnum):
+    """Files that have a JSON Schema."""
+
+    PROBLEM = "problem"
+    RECIPE = "recipe"
+
+
+@app.callback(invoke_without_command=True)
+def main(version: Annotated[bool, typer.Option("--version", help="Show the version and exit.")] = False) -> None:
+    if version:
+        from codesign import __version__
+
+        _print(f"cnr {__version__}\n")
+        raise typer.Exit
+
+
+@app.command()
+def solve(
+    problem: ProblemFile,
+    json: AsJson = False,
+    recipe: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the recipe here, for 'cnr check'.")] = None,
+    gap: Annotated[float | None, typer.Option(metavar="G", help="Relative gap to prove, 1e-8 to 0.5.")] = None,
+    alternatives: Annotated[int | None, typer.Option(metavar="N", help="Runners-up to certify, 0 to 50.")] = None,
+    verify: Annotated[bool, typer.Option("--verify", help="Check the whole proof again from the start.")] = False,
+) -> None:
+    """Find the recipe of greatest CNR, with its proof.
+
+    Example: cnr solve yellow-stain --recipe recipe.toml
+    """
+    solution = _solved(problem, gap, alternatives)
+    _show_solution(solution, _verified(solution) if verify else None, json=json)
+    if recipe is not None:
+        from codesign.report.recipe_file import write_recipe
+
+        write_recipe(solution, recipe)
+
+
+@app.command()
+def check(
+    problem: ProblemFile,
+    recipe: Annotated[Path, typer.Argument(metavar="RECIPE", help="Recipe file; 'cnr solve --recipe' writes one.")],
+    json: AsJson = False,
+) -> None:
+    """Predict what a recipe does and which limits it misses.
+
+    The exit code is 3 when it misses any. Example: cnr check yellow-stain recipe.toml
+    """
+    from codesign import evaluate, load_problem, load_recipe
+    from codesign.report import machine, text
+
+    loaded = load_problem(problem)
+    result = evaluate(loaded, load_recipe(recipe))
+    table = machine.as_json(machine.performance_dict(loaded, result)) if json else None
+    _print(table or text.performance_text(loaded, result))
+    if not result.feasible:
+        raise InfeasibleError(f"{recipe}: {'; '.join(limit.shortfall() for limit in result.violated)}")
+
+
+@app.command()
+def parts(
+    kind: Annotated[PartKind | None, typer.Argument(help="What to list.")] = None,
+    expression: Annotated[str, typer.Argument(help="e.g. '700 <= peak_nm <= 1000 and price < 12'")] = "all",
+    catalog: Annotated[str, typer.Option(metavar="FOLDER", help="Catalogue folder.")] = "demo",
+    id: Annotated[str | None, typer.Option(metavar="ID", help="Show all one part states.")] = None,
+    json: AsJson = False,
+) -> None:
+    """List, filter and inspect the parts of a catalogue.
+
+    Example: cnr parts leds "match(id, 'nir-*') and price < 10"
+    """
+    from codesign import load_catalog
+    from codesign.report.parts import listing
+
+    _print(listing(load_catalog(catalog), kind and kind.value, expression, id, json=json))
+
+
+@app.command()
+def new(
+    file: Annotated[Path, typer.Argument(metavar="FILE", help="Problem file to write, e.g. problem.toml.")],
+    force: Annotated[bool, typer.Option("--force", help="Replace the file if it exists.")] = False,
+) -> None:
+    """Write a commented problem file that runs as it is, to start from.
+
+    Example: cnr new problem.toml
+    """
+    from importlib.resources import files
+
+    from codesign.report.output import write_file
+
+    write_file(file, (files("codesign") / "data" / "new_problem.toml").read_bytes(), overwrite=force)
+    _print(f"wrote {file}; next: cnr solve {file}\n")
+
+
+@app.command()
+def schema(kind: Annotated[SchemaKind, typer.Argument(help="Which file.")] = SchemaKind.PROBLEM) -> None:
+    """Print the JSON Schema of a file, for editors and programs.
+
+    Example: cnr schema > problem.schema.json
+    """
+    from codesign.problem import json_schema
+    from codesign.report.machine import as_json
+    from codesign.report.recipe_file import recipe_schema
+
+    _print(as_json(json_schema() if kind is SchemaKind.PROBLEM else recipe_schema()))
+
+
+@app.command()
+def demos() -> None:
+    """List the embedded demo problems.
+
+    Example: cnr demos
+    """
+    from codesign.problem import demo_problems
+    from codesign.report.layout import table
+
+    rows = [(demo.name, demo.title) for demo in demo_problems()]
+    _print("\n".join(table(("demo", "what it finds"), rows, 80, left=(0, 1))) + "\n")
+
+
+def _solved(name: str, gap: float | None, alternatives: int | None) -> Solution:
+    from codesign import load_problem, solve
+    from codesign.problem import solver_settings
+    from codesign.report.output import Progress
+
+    problem = load_problem(name)
+    wanted = solver_settings(problem, gap=gap, alternatives=alternatives)
+    progress = Progress()
+    try:
+        return solve(problem, gap=wanted.gap, alternatives=wanted.alternatives, progress=progress)
+    finally:
+        progress.clear()
+
+
+def _verified(solution: Solution) -> Any:
+    from codesign import verify
+
+    return verify(solution)
+
+
+def _show_solution(solution: Solution, verdict: Any, *, json: bool) -> None:
+    from codesign.report import machine, text
+
+    if json:
+        _print(machine.as_json(machine.solution_dict(solution, verdict)))
+    else:
+        _print(text.solution_text(solution, verdict=verdict))
+
+
+def _print(text: str) -> None:
+    from codesign.report.output import shown
+
+    typer.echo(shown(text, sys.stdout.encoding), nl=False)
+
+
+def run() -> None:
+    """Console entry point."""
+    try:
+        app(prog_name="cnr")
+    except KeyboardInterrupt:
+        sys.exit(INTERRUPTED)
