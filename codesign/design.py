@@ -162,23 +162,35 @@ def led_state(problem: Problem, channel: LedChannel, drive_ma: float, duty: floa
     amps = drive_ma * 1e-3
     electrical = float(np.interp(amps, current, power))
     reference = led.flux_w() * float(np.interp(amps, current, flux))
-    resistance = thermal_resistance(problem, channel) * duty
-    coefficient, air = led.flux_temperature_coefficient_per_k, problem.spec.temperature.air_c
-    # T = air + R (P - F (1 + c (T - T_ref))) solved for T; flux never below 0.
-    junction = (air + resistance * (electrical - reference * (1 - coefficient * led.reference_junction_c))) / (
-        1 + resistance * reference * coefficient
-    )
-    factor = float(flux_at_temperature(junction, coefficient, led.reference_junction_c))
-    if factor <= 0:
-        junction, factor = air + resistance * electrical, 0.0
+    junction, factor = _balance(problem, channel, duty, electrical, reference)
     return LedState(
         id=led.id,
         drive_ma=drive_ma,
         electrical_w=electrical,
         optical_w=reference * factor,
-        junction_c=float(junction),
+        junction_c=junction,
         emitters=channel.emitters,
     )
+
+
+def _balance(
+    problem: Problem, channel: LedChannel, duty: float, electrical_w: float, reference_w: float
+) -> tuple[float, float]:
+    """Temperature at which heat and flux agree, and the flux there relative to the reference. [deg C], [1]
+
+    Where each kelvin takes more flux than heat leaves, there is no stable balance with light: all power is heat.
+    """
+    led, air = channel.led, problem.spec.temperature.air_c
+    resistance = thermal_resistance(problem, channel) * duty
+    coefficient, reference_c = led.flux_temperature_coefficient_per_k, led.reference_junction_c
+    # T = air + R (P - F (1 + c (T - T_ref))) solved for T; flux never below 0.
+    stiffness = 1 + resistance * reference_w * coefficient
+    if stiffness > 0:
+        junction = (air + resistance * (electrical_w - reference_w * (1 - coefficient * reference_c))) / stiffness
+        factor = float(flux_at_temperature(junction, coefficient, reference_c))
+        if factor > 0:
+            return float(junction), factor
+    return air + resistance * electrical_w, 0.0
 
 
 def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float] | None = None) -> Performance:
