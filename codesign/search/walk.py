@@ -13,11 +13,11 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from codesign.assemble import Assembly, flipped
+from codesign.assemble import Assembly
 from codesign.certificate import Proof
 from codesign.limits import Setting
 from codesign.program import Array, Program, stack
-from codesign.search.bounds import simple_proof
+from codesign.search.bounds import both_bounds
 from codesign.search.frontier import Certified, Hint, certify
 from codesign.search.tighten import Tightening
 
@@ -177,9 +177,7 @@ class Walk:
         """Rung 0 for all filters and both signs of a setting, (2 F,): the least bound of any pair."""
         least = np.full((self.filters, 2), np.inf)
         for pair in range(self.pairs):
-            program = self.assembly.program(setting, coarse=True, pair=pair)
-            both = [simple_proof(side)[1] for side in (program, flipped(program))]
-            least = np.minimum(least, np.stack(both, axis=1))
+            least = np.minimum(least, both_bounds(self.assembly.program(setting, coarse=True, pair=pair)))
         return least.ravel()
 
     def _refine(self, index: np.ndarray, target: float) -> None:
