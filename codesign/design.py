@@ -22,6 +22,7 @@ from codesign.noise import NOISE_TERMS, Sensor
 from codesign.physics.detection import error_rate
 from codesign.physics.light import flux_at_temperature
 from codesign.problem import LedChannel, Problem
+from codesign.problem.model import find_part
 from codesign.radiometry import (
     channel_irradiance,
     electrons_per_irradiance,
@@ -129,13 +130,13 @@ def setting_of(problem: Problem, design: Design) -> Setting:
 
 def candidate(problem: Problem, design: Design, kind: str) -> Any:
     """Return the camera or filter a design names. Raises ProblemError when it is not a candidate."""
-    name, parts = getattr(design, kind), getattr(problem, f"{kind}s")
-    for part in parts:
-        if part.id == name:
-            return part
+    name = getattr(design, kind)
+    part, names = find_part(getattr(problem, f"{kind}s"), name)
+    if part is not None:
+        return part
     raise ProblemError(
         f"{design.where}: {kind} is {name!r}, not among the candidates of {problem.where}; "
-        f"{nearest(name, [part.id for part in parts])}"
+        f"{nearest(name, names)}"
     )
 
 

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from functools import lru_cache
 from pathlib import Path
-from typing import Any, ClassVar, Self
+from typing import Any, ClassVar, Self, get_args
 
 from pydantic import (
     BaseModel,
@@ -57,7 +57,7 @@ def _truth_fields(model: type[BaseModel]) -> frozenset[str]:
     return frozenset(
         name
         for name, field in model.model_fields.items()
-        if field.annotation is bool or _nested_model(model, name) or "Any" in repr(field.annotation)
+        if field.annotation is bool or bool in get_args(field.annotation) or _nested_model(model, name) or "Any" in repr(field.annotation)
     )
 
 

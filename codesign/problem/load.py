@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -16,6 +16,7 @@ from codesign.physics.illuminants import spectral_irradiance
 from codesign.physics.light import delivery_from_beam
 from codesign.problem.files import missing_advice, problem_path, read_toml
 from codesign.problem.model import Array, LedChannel, Problem
+from codesign.problem.purchase import Purchase
 from codesign.problem.schema import Choice, ProblemSpec, Solver
 from codesign.spectra import read_table, trapezoid_weights, wavelength_grid
 
@@ -89,8 +90,10 @@ class _Resolver:
     def __init__(self, spec: ProblemSpec, folder: Path, where: str, catalog: Catalog) -> None:
         self.spec, self.folder, self.where, self.catalog = spec, folder, where, catalog
         self.left_out: list[str] = []
+        self.purchase = Purchase(spec, where, catalog)
 
     def problem(self) -> Problem:
+        self.purchase.check_names()
         scene = self.spec.scene
         targets, backgrounds = (self._surfaces(key, getattr(scene, key)) for key in ("target", "background"))
         guards = tuple(self._surface("guards", name) for name in scene.guards)
@@ -164,7 +167,9 @@ class _Resolver:
             )
         chosen, named = [], {choice} if isinstance(choice, str) else set(choice)
         for part in self._selected(kind, choice):
-            misfit = fits(part)
+            if self.purchase.refuses(part):
+                continue
+            misfit = self.purchase.unpriced(part) or fits(part)
             if misfit is None:
                 chosen.append(part)
             elif part.id in named:
@@ -191,7 +196,8 @@ class _Resolver:
         if unknown:
             raise self._error(f"lighting.led.{unknown[0]}: no such LED; {nearest(unknown[0], self.catalog.leds)}")
         if not leds:
-            raise CoverageError(f"{self.where}: candidates.leds: no LED fits; {self.left_out[0]}")
+            raise CoverageError(f"{self.where}: candidates.leds: no LED fits; {self._why_none()}")
+        self.purchase.require("led", leds)
         return tuple(self._channel(led) for led in leds)
 
     def _seen(self) -> tuple[float, float]:
@@ -255,15 +261,15 @@ class _Resolver:
                 "no light can show a difference"
             )
 
-    def _filters(self, grid: Array) -> tuple[Filter, ...]:
+    def _filters(self, grid: Array) -> Sequence[Filter]:
         candidates = self.spec.candidates
         if candidates.filters in ("none", ()):
-            return (NO_FILTER,)
+            return self.purchase.filters((NO_FILTER,))
         chosen = self._choose("filter", candidates.filters, lambda part: _misfit(part.range(self.catalog), grid))
         add_none = candidates.no_filter and all(part.kind != "none" for part in chosen)
         if not chosen and not add_none:
-            raise CoverageError(f"{self.where}: candidates.filters: no filter fits; {self.left_out[-1]}")
-        return (NO_FILTER, *chosen) if add_none else chosen
+            raise CoverageError(f"{self.where}: candidates.filters: no filter fits; {self._why_none()}")
+        return self.purchase.filters((NO_FILTER, *chosen) if add_none else chosen)
 
     def _cameras(self, grid: Array) -> tuple:
         def fits(camera) -> str | None:
@@ -272,8 +278,11 @@ class _Resolver:
 
         chosen = self._choose("camera", self.spec.candidates.cameras, fits)
         if not chosen:
-            raise CoverageError(f"{self.where}: candidates.cameras: no camera fits; {self.left_out[-1]}")
-        return chosen
+            raise CoverageError(f"{self.where}: candidates.cameras: no camera fits; {self._why_none()}")
+        return self.purchase.cameras(chosen)
+
+    def _why_none(self) -> str:
+        return self.left_out[-1] if self.left_out else "build.must_not names them all"
 
     def _ambient(self, grid: Array) -> Array:
         total = np.zeros(grid.size)

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from codesign.catalog import Camera, Catalog, Filter, Led, Surface
 from codesign.errors import ProblemError, nearest
+from codesign.problem.choices import FilterChoices
 from codesign.problem.schema import ProblemSpec
 
 Array = NDArray[np.float64]
@@ -63,7 +66,8 @@ class Problem:
     guards : tuple of Surface
         Further surfaces that must not saturate.
     channels : tuple of LedChannel
-    filters : tuple of Filter
+    filters : sequence of Filter
+        `FilterChoices` when pairs are among them.
     cameras : tuple of Camera
     grid : (n,) array
         [nm]
@@ -83,7 +87,7 @@ class Problem:
     backgrounds: tuple[Surface, ...]
     guards: tuple[Surface, ...]
     channels: tuple[LedChannel, ...]
-    filters: tuple[Filter, ...]
+    filters: Sequence[Filter]
     cameras: tuple[Camera, ...]
     grid: Array
     ambient: Array
@@ -150,7 +154,14 @@ class Problem:
 
 
 def _named(parts, name: str, kind: str, where: str):
-    for part in parts:
-        if part.id == name:
-            return part
-    raise ProblemError(f"{where}: no {kind} {name!r} among the candidates; {nearest(name, [p.id for p in parts])}")
+    found, names = find_part(parts, name)
+    if found is not None:
+        return found
+    raise ProblemError(f"{where}: no {kind} {name!r} among the candidates; {nearest(name, names)}")
+
+
+def find_part(parts, name: str) -> tuple[Any, list[str]]:
+    """Return the part of that name, or None, and the names there are (of pairs, those of the single filters)."""
+    if isinstance(parts, FilterChoices):
+        return parts.find(name), [part.id for part in parts.base]
+    return next((part for part in parts if part.id == name), None), [part.id for part in parts]

@@ -50,6 +50,10 @@ class Candidates(Record):
     filters: Choice = Field(default="all", description="filters to choose from")
     cameras: Choice = Field(default="all", description="cameras to choose from")
     no_filter: bool = Field(default=True, description="whether leaving the filter out is a choice too")
+    filter_pairs: bool | str = Field(
+        default=False,
+        description="whether any two of the filters, stacked, are a choice too; an expression: only of those it selects",
+    )
     channels: Choice = Field(default="all", description="camera channels to choose from, e.g. ['mono', 'red']")
     gains_db: tuple[float, ...] | None = Field(
         default=None, min_length=1, description="gains to choose from [dB]; all the camera has by default"
@@ -186,6 +190,36 @@ class Limits(Record):
     supply_peak_w: float | None = Field(default=None, gt=0, description="electrical power while on [W]")
 
 
+class Build(Record):
+    """What may be built: how many parts, and at what price."""
+
+    max_led_channels: int | None = Field(default=None, ge=1, description="LED types in use at most")
+    board_slots: int | None = Field(default=None, ge=1, description="emitters on the board at most")
+    price_budget: float | None = Field(
+        default=None, gt=0, description="camera, filters and emitters together at most, in the catalogue's currency"
+    )
+    emitters: Literal["fixed", "free"] = Field(
+        default="fixed",
+        description="'fixed': a channel in use has all its emitters; 'free': 1 to that many, chosen for the best CNR",
+    )
+    must_have: tuple[str, ...] = Field(
+        default=(), description="ids of parts that are bought in any case; an LED need not be lit"
+    )
+    must_not: tuple[str, ...] = Field(default=(), description="ids of parts that must not be used")
+
+    @property
+    def limited(self) -> bool:
+        """Whether any limit couples the choice of LEDs."""
+        return any(bound is not None for bound in (self.max_led_channels, self.board_slots, self.price_budget))
+
+    @model_validator(mode="after")
+    def _check(self) -> Self:
+        both = [name for name in self.must_have if name in self.must_not]
+        if both:
+            raise ValueError(f"must_have and must_not both name {both[0]!r}; remove one")
+        return self
+
+
 class Averaging(Record):
     """What the detection averages before it decides."""
 
@@ -223,6 +257,7 @@ class ProblemSpec(Record):
     timing: Timing = Timing()
     temperature: Temperature
     limits: Limits = Limits()
+    build: Build = Build()
     averaging: Averaging = Averaging()
     grid: Grid = Grid()
     solver: Solver = Solver()
