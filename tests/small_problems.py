@@ -14,6 +14,7 @@ SAMPLES = {
     "background": (0.49, 0.50, 0.51),
     "twin": (0.49, 0.50, 0.51),
     "bright": (0.9,),
+    "dim": (0.1,),
 }
 
 QUANTUM_EFFICIENCY = 0.6
