@@ -8,6 +8,7 @@ from functools import cached_property
 
 import numpy as np
 
+from codesign.assemble_build import with_build_rows
 from codesign.errors import InfeasibleError
 from codesign.limits import (
     Setting,
@@ -25,7 +26,7 @@ from codesign.noise import Sensor, noise_model
 from codesign.physics.light import flux_at_temperature
 from codesign.problem import Problem
 from codesign.program import Array, Program
-from codesign.radiometry import Rates, RateTable, main_rows, reflectances
+from codesign.radiometry import Rates, RateTable, main_reflectances, reflectances
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,7 +136,7 @@ class Assembly:
         self.problem = problem
         self.junction_c = np.asarray(junction_c, dtype=float)
         self._table = RateTable(problem, self.junction_c)
-        self._rates: dict[tuple[str, str, float], Rates] = {}
+        self._held: tuple[tuple, Rates] | None = None
         self._segments: dict[tuple[str, bool], Segments] = {}
 
     @cached_property
@@ -207,17 +208,25 @@ class Assembly:
             [low.name, high.name],
         )
 
-    def rates(self, setting: Setting) -> Rates:
-        """Electron rates of a setting's camera channel and f-number, kept for the other settings that share them.
+    def rates(self, setting: Setting, filters: slice | np.ndarray = slice(None), *, coarse: bool = False) -> Rates:
+        """Electron rates of a setting's camera channel and f-number behind some filters.
 
-        A filter in front of the lens does not see the f-number: one product serves all, scaled by 1/N².
+        A filter in front of the lens does not see the f-number: one product serves all, scaled by 1/N². The last
+        slice asked for is kept, for other gains and pulse levels of the same camera.
         """
         optics = self.problem.spec.optics
         base = optics.f_numbers[0] if optics.filter_position == "front" else setting.f_number
-        key = (setting.camera.id, setting.channel, base)
-        if key not in self._rates:
-            self._rates[key] = self._table.rates(setting.camera, setting.channel, base)
-        return self._rates[key].scaled((base / setting.f_number) ** 2)
+        channel = (setting.camera.id, setting.channel, base)
+        if isinstance(filters, slice):
+            key = (*channel, filters.start, filters.stop, filters.step, coarse)
+            held = self._held
+            if held is None or held[0] != key:
+                held = key, self._table.rates(setting.camera, setting.channel, base, filters, coarse)
+                self._held = held
+            found = held[1]
+        else:
+            found = self._table.rates(setting.camera, setting.channel, base, filters, coarse)
+        return found.scaled((base / setting.f_number) ** 2)
 
     def segments(self, setting: Setting, coarse: bool = False) -> Segments:
         """Drive segments of a setting's pulse level, kept for the settings that share it."""
@@ -235,11 +244,12 @@ class Assembly:
         ``coarse`` gives the relaxation of `optimistic`: one column per LED, bounds only. Programs of all pairs share
         their columns and limits.
         """
-        problem, rates = self.problem, self.rates(setting)
+        problem, rates = self.problem, self.rates(setting, filters, coarse=coarse)
         surfaces = len(problem.surfaces)
         segments = self.segments(setting, coarse)
-        by_segment = rates.led[filters][:, :, segments.led] * segments.flux
-        photo = np.concatenate([by_segment, rates.ambient[filters][:, :, None]], axis=2)
+        photo = np.empty((*rates.ambient.shape, segments.width.size + 1))
+        np.multiply(rates.led[:, :, segments.led], segments.flux, out=photo[:, :, :-1])
+        photo[:, :, -1] = rates.ambient
         dark = np.append(np.zeros(segments.width.size), dark_rate(problem, setting))
         noise = noise_model(Sensor.of(setting.camera, setting.gain), problem.spec.averaging)
         window = exposure_window(problem, setting)
@@ -248,7 +258,9 @@ class Assembly:
         spread = np.concatenate([clutter[:, self._clutter_rows(surface, coarse)] for surface in chosen], axis=1)
         weight = np.append(np.full(segments.width.size, noise.linear[0]), noise.linear[1])
         target, background = photo[:, chosen[0]], photo[:, chosen[1]]
-        rows, bounds, names = _rows(problem, setting, segments, kept + dark)
+        rows, bounds, names = with_build_rows(
+            problem, setting, segments, filters, _rows(problem, setting, segments, kept + dark)
+        )
         return Program(
             signal=target - background,
             shot=(target + background) / 2 * weight + noise.linear[2] * dark,
@@ -270,8 +282,7 @@ class Assembly:
 
     def _clutter_rows(self, surface: int, coarse: bool) -> slice:
         """Clutter rows of a surface; dropping the weak ones keeps a relaxation a relaxation."""
-        scene = reflectances(self.problem)
-        return main_rows(scene, surface) if coarse else scene.rows_of[surface]
+        return (main_reflectances if coarse else reflectances)(self.problem).rows_of[surface]
 
 
 def flipped(program: Program) -> Program:

@@ -9,20 +9,19 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from functools import lru_cache
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from codesign.catalog import Camera, GainSetting
+from codesign.design_checks import candidate, check_values
 from codesign.errors import ProblemError, nearest
-from codesign.limit_use import LedState, LimitUse, limit_uses
+from codesign.limit_use import LedState, LimitUse, build_uses, limit_uses
 from codesign.limits import PulseLevel, Setting, dark_rate, pulse_levels, saturation_electrons, thermal_resistance
 from codesign.noise import NOISE_TERMS, Sensor
 from codesign.physics.detection import error_rate
 from codesign.physics.light import flux_at_temperature
 from codesign.problem import LedChannel, Problem
-from codesign.problem.model import find_part
 from codesign.radiometry import (
     channel_irradiance,
     electrons_per_irradiance,
@@ -37,7 +36,8 @@ Array = NDArray[np.float64]
 class Design:
     """What a user sets: parts, lens, exposure and the current of each LED channel (absent = off).
 
-    ``where`` names the file it comes from in messages.
+    ``emitters`` holds how many emitters each LED channel has where the problem leaves that free (absent = all the
+    channel can have). ``where`` names the file it comes from in messages.
     """
 
     camera: str
@@ -47,6 +47,7 @@ class Design:
     f_number: float
     exposure_us: float
     drive_ma: Mapping[str, float] = field(default_factory=dict)
+    emitters: Mapping[str, int] = field(default_factory=dict)
     where: str = field(default="recipe", repr=False, compare=False)
 
 
@@ -128,18 +129,6 @@ def setting_of(problem: Problem, design: Design) -> Setting:
     )
 
 
-def candidate(problem: Problem, design: Design, kind: str) -> Any:
-    """Return the camera or filter a design names. Raises ProblemError when it is not a candidate."""
-    name = getattr(design, kind)
-    part, names = find_part(getattr(problem, f"{kind}s"), name)
-    if part is not None:
-        return part
-    raise ProblemError(
-        f"{design.where}: {kind} is {name!r}, not among the candidates of {problem.where}; "
-        f"{nearest(name, names)}"
-    )
-
-
 def _gain(camera: Camera, design: Design) -> GainSetting:
     for gain in camera.gain_settings():
         if abs(gain.gain_db - design.gain_db) < 1e-9:
@@ -218,11 +207,12 @@ def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float
     -----
     CNR = |mean target − mean background| / sqrt((variance target + variance background) / 2).
     """
-    _check_values(problem, design)
+    check_values(problem, design)
     setting = setting_of(problem, design)
     t = design.exposure_us * 1e-6
     duty = problem.duty(t)
     states = tuple(led_state(problem, problem.channel(led), ma, duty) for led, ma in design.drive_ma.items() if ma > 0)
+    states = tuple(replace(state, emitters=design.emitters.get(state.id, state.emitters)) for state in states)
     if junction_c is not None:
         states = tuple(replace(state, junction_c=junction_c[state.id]) for state in states)
     light = _electrons(problem, setting, design, states, t)
@@ -240,7 +230,10 @@ def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float
         surfaces=readings,
         noise={name: (values[target], values[background]) for name, values in noise.items()},
         pairs=pairs,
-        limits=tuple(limit_uses(problem, setting, design.f_number, t, states, readings)),
+        limits=(
+            *limit_uses(problem, setting, design.f_number, t, states, readings),
+            *build_uses(problem, design),
+        ),
         leds=states,
         duty=duty,
     )
@@ -275,26 +268,6 @@ def _worst(pairs: tuple[PairContrast, ...]) -> tuple[int, int, float]:
     return direction, worst, max(float(direction * signed[worst]), 0.0)
 
 
-def _check_values(problem: Problem, design: Design) -> None:
-    if not design.exposure_us > 0 or not np.isfinite(design.exposure_us):
-        raise ProblemError(f"{design.where}: exposure_us is {design.exposure_us:g}, must be > 0")
-    if not design.f_number > 0 or not np.isfinite(design.f_number):
-        raise ProblemError(f"{design.where}: f_number is {design.f_number:g}, must be > 0")
-    candidate(problem, design, "filter")
-    known = {channel.id: channel.led.largest_current_ma for channel in problem.channels}
-    for led, drive in design.drive_ma.items():
-        if led not in known:
-            raise ProblemError(
-                f"{design.where}: drive_ma.{led}: no such LED among the candidates of {problem.where}; "
-                f"{nearest(led, known)}"
-            )
-        top = known[led]
-        if not 0 <= drive <= top * (1 + 1e-9):
-            raise ProblemError(
-                f"{design.where}: drive_ma.{led} is {drive:g}, must be 0 to {top:g} mA, its largest rating"
-            )
-
-
 @dataclass(frozen=True, slots=True)
 class _Light:
     """Electrons (S, 3) by origin, and clutter amplitudes of each surface. [e⁻]"""
@@ -319,7 +292,7 @@ def _electrons(problem: Problem, setting: Setting, design: Design, states: tuple
         channel = problem.channel(state.id)
         current, flux, _ = channel.led.operating_points()
         share = float(np.interp(state.drive_ma * 1e-3, current, flux))
-        light = channel_irradiance(problem, channel, state.junction_c) * share
+        light = channel_irradiance(problem, channel, state.junction_c) * (share * state.emitters / channel.emitters)
         diffuse += light
         gloss += light * channel.specular_weight
     led = (scene.mean @ (weight * diffuse) + scene.specular * float(weight @ gloss)) * t

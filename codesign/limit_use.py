@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from codesign.build import build_limits, free, part_price, units_in_use
 from codesign.limits import Setting, junction_limit, sum_limits, time_limits, well_bound
 from codesign.physics.optics import depth_of_field
 from codesign.problem import Problem
@@ -89,6 +90,30 @@ def limit_uses(
     if problem.spec.optics.required_depth_mm is not None:
         found.append(_depth_use(problem, setting, f_number))
     return found
+
+
+def build_uses(problem: Problem, design: Any) -> list[LimitUse]:
+    """Use of the build limits by a design: ``drive_ma``, ``emitters``, ``camera`` and ``filter``."""
+    if not problem.spec.build.limited:
+        return []
+    units = units_in_use(problem, design.drive_ma, design.emitters)
+    price = recipe_price(problem, design) if problem.spec.build.price_budget is not None else 0.0
+    return [
+        _use(limit.name, limit.unit, price if limit.name == "price" else float(limit.cost(units).sum()), limit.bound)
+        for limit in build_limits(problem)
+    ]
+
+
+def recipe_price(problem: Problem, design: Any) -> float | None:
+    """Price of camera, filters and emitters of a design, None when a price is not known."""
+    units = units_in_use(problem, design.drive_ma, design.emitters)
+    count = units if free(problem) else units * np.array([channel.emitters for channel in problem.channels])
+    prices = [part_price(problem, problem.camera(design.camera)), part_price(problem, problem.filter(design.filter))]
+    prices += [
+        int(n) * part_price(problem, channel.led) for n, channel in zip(count, problem.channels, strict=True) if n
+    ]
+    total = float(sum(prices))
+    return None if np.isnan(total) else total
 
 
 def _depth_use(problem: Problem, setting: Setting, f_number: float) -> LimitUse:

@@ -19,6 +19,7 @@ LAYERS = (
     "radiometry",
     "noise",
     "limits",
+    "build",
     "limit_use",
     "design",
     "program",

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from functools import lru_cache
 from pathlib import Path
-from typing import Any, ClassVar, Self, get_args
+from typing import Annotated, Any, ClassVar, Self, get_args, get_origin
 
 from pydantic import (
     BaseModel,
@@ -57,7 +57,10 @@ def _truth_fields(model: type[BaseModel]) -> frozenset[str]:
     return frozenset(
         name
         for name, field in model.model_fields.items()
-        if field.annotation is bool or bool in get_args(field.annotation) or _nested_model(model, name) or "Any" in repr(field.annotation)
+        if field.annotation is bool
+        or bool in get_args(field.annotation)
+        or _nested_model(model, name)
+        or "Any" in repr(field.annotation)
     )
 
 
@@ -201,7 +204,10 @@ def explain(error: ValidationError, label: str, model: type[BaseModel]) -> str:
     # An unknown key first: it explains the missing ones.
     details = sorted(error.errors(include_url=False), key=lambda detail: detail["type"] != "extra_forbidden")
     line = f"{label}: {_sentence(details[0], model)}"
-    return line if len(details) == 1 else f"{line} (and {len(details) - 1} more)"
+    key = _resolve(details[0]["loc"], model)[0]
+    others = {_resolve(detail["loc"], model)[0] for detail in details if detail is not details[0]}
+    more = [other for other in others if not (key and other.startswith(key))]
+    return f"{line} (and {len(more)} more)" if more else line
 
 
 def _sentence(detail: ErrorDetails, model: type[BaseModel]) -> str:
@@ -216,7 +222,9 @@ def _sentence(detail: ErrorDetails, model: type[BaseModel]) -> str:
     advice = f"; {field.description}" if field is not None and field.description else ""
     if detail["type"] == "missing":
         return f"{key} is missing{advice}"
-    return f"{key} is {_shown(detail['input'])}, {_allowed(detail['type'], context, detail['msg'])}{advice}"
+    either = field is not None and _takes_text_or_list(field.annotation) and detail["type"] == "string_type"
+    allowed = "must be text or a list of text" if either else _allowed(detail["type"], context, detail["msg"])
+    return f"{key} is {_shown(detail['input'])}, {allowed}{advice}"
 
 
 def _resolve(loc: tuple[int | str, ...], model: type[BaseModel]) -> tuple[str, type[BaseModel], str]:
@@ -226,10 +234,19 @@ def _resolve(loc: tuple[int | str, ...], model: type[BaseModel]) -> tuple[str, t
         if isinstance(step, int):
             key += f"[{step}]"
             continue
+        field = holder.model_fields.get(name)
+        if field is not None and _takes_text_or_list(field.annotation):
+            continue  # names the alternative that was tried, not a key
         if name:
             holder = _nested_model(holder, name) or holder
         key, name = (f"{key}.{step}" if key else step), step
     return key, holder, name
+
+
+def _takes_text_or_list(annotation: Any) -> bool:
+    """Whether a field takes either text or a list of text."""
+    kinds = [get_origin(kind) or kind for kind in get_args(annotation)]
+    return str in kinds and any(kind in (tuple, Annotated) for kind in kinds)
 
 
 def _nested_model(model: type[BaseModel], name: str) -> type[BaseModel] | None:
@@ -261,6 +278,7 @@ def _allowed(kind: str, context: dict[str, Any], message: str) -> str:
     words = {
         "finite_number": "must be finite",
         "string_too_short": "must not be empty",
+        "too_short": "must not be empty",
         "string_pattern_mismatch": "is not allowed",
     }
     if kind in words:

@@ -52,7 +52,7 @@ class Candidates(Record):
     no_filter: bool = Field(default=True, description="whether leaving the filter out is a choice too")
     filter_pairs: bool | str = Field(
         default=False,
-        description="whether any two of the filters, stacked, are a choice too; an expression: only of those it selects",
+        description="whether any two of the filters, stacked, are a choice too; an expression: of those it selects",
     )
     channels: Choice = Field(default="all", description="camera channels to choose from, e.g. ['mono', 'red']")
     gains_db: tuple[float, ...] | None = Field(
@@ -230,7 +230,7 @@ class Averaging(Record):
 class Grid(Record):
     """Wavelengths of all integrals."""
 
-    step_nm: float = Field(default=1.0, gt=0, le=20, description="step [nm]")
+    step_nm: float = Field(default=1.0, ge=0.05, le=20, description="step [nm]")
     from_nm: float | None = Field(default=None, gt=0, description="start, where the surfaces begin by default [nm]")
     to_nm: float | None = Field(default=None, gt=0, description="end, where the surfaces end by default [nm]")
 
