@@ -98,12 +98,22 @@ def _require_valid(program: Program, line: Line) -> None:
 
 def intercept(program: Program, line: Line) -> Array:
     """α of each line, so that ``H(v) ≥ θ v + α``. (P,) [e⁻²]"""
+    return _dual_value(program, line) - _square(line)
+
+
+def _square(line: Line) -> Array:
+    """``|g|²``. (P,)"""
+    return np.einsum("pr,pr->p", line.noise, line.noise)
+
+
+def _dual_value(program: Program, line: Line) -> Array:
+    """``α + |g|²``, on its own because a huge ``|g|²`` taken off and put back would leave round-off only. (P,)"""
     _require_valid(program, line)
     with np.errstate(over="ignore", invalid="ignore"):  # what overflows proves nothing, see `envelope`
         cost = program.shot - line.theta[:, None] * program.signal
         cost = cost + 2 * np.einsum("pr,prn->pn", line.noise, program.noise_rows)
         free = box_minimum(program, _charge_cost(program, line, cost))
-        return free - _price(program, line) - np.einsum("pr,pr->p", line.noise, line.noise)
+        return free - _price(program, line)
 
 
 def signal_ceiling(program: Program, line: Line) -> Array:
@@ -136,19 +146,19 @@ class Curves:
 def curves(program: Program, lines: tuple[Line, ...]) -> Curves:
     """Work out lines and parabolas of a proof from its multipliers. [e⁻²]"""
     theta = np.stack([line.theta for line in lines], axis=1)
-    alpha = np.stack([intercept(program, line) for line in lines], axis=1)
+    value = np.stack([_dual_value(program, line) for line in lines], axis=1)
     anchor = np.stack([line.anchor for line in lines], axis=1)
-    square = np.stack([np.einsum("pr,pr->p", line.noise, line.noise) for line in lines], axis=1)
+    square = np.stack([_square(line) for line in lines], axis=1)
     if not (anchor > 0).all():
         raise CertificateError("certificate: an anchor is not positive; the bound is rejected")
     anchor = np.maximum(anchor, LEAST_ANCHOR)
     shot = least_shot_ratio(program)[:, None]
     return Curves(
         theta=theta,
-        alpha=alpha,
+        alpha=value - square,
         anchor=anchor,
         k=(theta - shot - square / anchor) / anchor,
-        e=shot + (alpha + square) / anchor,
+        e=shot + value / anchor,
     )
 
 
@@ -171,7 +181,8 @@ def envelope(floor: Array, ceiling: Array, found: Curves) -> tuple[Array, Array]
     (the ratio is convex), a parabola where ``c z² + e z + k`` with z = 1/v is least. ``H ≥ 0`` is always known.
     Returns the bound on CNR (not squared) and the signal, both (P,).
     """
-    points = _break_points(found, np.maximum(ceiling, 0.0)[:, None])
+    with np.errstate(over="ignore", invalid="ignore"):  # nearly parallel lines cross beyond all signals
+        points = _break_points(found, np.maximum(ceiling, 0.0)[:, None])
     low, high = points[:, :-1, None], points[:, 1:, None]
     c = floor[:, None, None]
     with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
