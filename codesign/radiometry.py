@@ -92,6 +92,21 @@ def filter_transmittance(problem: Problem, part: Filter, f_number: float) -> Arr
     return part.transmittance(problem.grid, *cone_angles(problem, f_number), problem.catalog)
 
 
+@lru_cache(maxsize=8)
+def _all_transmittances(problem: Problem, f_number: float) -> Array:
+    """`filter_transmittance` of every filter, kept for all junction temperatures. (F, n) [1]"""
+    return np.stack([filter_transmittance(problem, part, f_number) for part in problem.filters])
+
+
+def transmittances(problem: Problem, f_number: float, filters: slice | Array = slice(None)) -> Array:
+    """Transmittances of some filters, by position. (F, n) [1]
+
+    A filter in front of the lens does not care about the f-number.
+    """
+    base = problem.spec.optics.f_numbers[0] if problem.spec.optics.filter_position == "front" else f_number
+    return _all_transmittances(problem, base)[filters]
+
+
 def electrons_per_irradiance(problem: Problem, camera: Camera, channel: str, f_number: float) -> Array:
     """Electron rate per unit of (spectral irradiance × reflectance × filter), with the integral's weights.
 
@@ -125,16 +140,42 @@ class Rates:
 
 #: Clutter directions that hold all but this share of the clutter energy serve the quick bounds.
 _MINOR_CLUTTER = 5e-3
+#: Light below this share of an LED's peak is left out: far below round-off even behind a filter that blocks the peak.
+_NO_LIGHT = 1e-18
+#: LEDs whose light is integrated over one range together.
+_LEDS_TOGETHER = 10
 
 
-def main_rows(scene: Reflectances, surface: int) -> slice:
-    """The strongest clutter rows of a surface, holding all but `_MINOR_CLUTTER` of its clutter energy."""
-    rows = scene.rows_of[surface]
-    energy = np.sum(scene.clutter[rows] ** 2, axis=1)
+@lru_cache(maxsize=16)
+def main_reflectances(problem: Problem) -> Reflectances:
+    """`reflectances` with each surface's strongest clutter rows only: all but `_MINOR_CLUTTER` of the energy."""
+    scene = reflectances(problem)
+    kept = [scene.clutter[rows][: _main(scene.clutter[rows])] for rows in scene.rows_of]
+    ends = np.cumsum([0, *(len(rows) for rows in kept)])
+    return Reflectances(
+        mean=scene.mean,
+        specular=scene.specular,
+        clutter=np.concatenate(kept),
+        rows_of=tuple(slice(int(a), int(b)) for a, b in itertools.pairwise(ends)),
+    )
+
+
+def _main(clutter: Array) -> int:
+    """How many of a surface's clutter rows are enough."""
+    energy = np.sum(clutter**2, axis=1)
     if not energy.size:
-        return rows
+        return 0
     left = 1.0 - np.cumsum(energy) / energy.sum()
-    return slice(rows.start, rows.start + int(np.argmax(left <= _MINOR_CLUTTER)) + 1)
+    return int(np.argmax(left <= _MINOR_CLUTTER)) + 1
+
+
+@dataclass(frozen=True, slots=True)
+class _Band:
+    """The light of some LEDs as it leaves each surface, over the wavelengths where they shine: (rows·leds, n_band)."""
+
+    leds: NDArray[np.intp]
+    start: int
+    light: Array
 
 
 class RateTable:
@@ -149,31 +190,54 @@ class RateTable:
 
     def __init__(self, problem: Problem, junction_c: Array) -> None:
         self.problem = problem
-        scene = reflectances(problem)
-        light = np.stack([channel_irradiance(problem, c, t) for c, t in zip(problem.channels, junction_c, strict=True)])
-        gloss = np.array([channel.specular_weight for channel in problem.channels])
-        curves = np.concatenate([scene.mean, scene.clutter])
-        shine = np.concatenate([scene.specular, np.zeros(len(scene.clutter))])
-        # (S+C, L, n): each LED's light as it leaves each surface, as if from a diffuser
-        self._from_leds = (curves[:, None, :] + np.outer(shine, gloss)[:, :, None]) * light
-        self._from_ambient = curves * problem.ambient
-        self._filters: dict[float, Array] = {}
+        self._light = np.stack(
+            [channel_irradiance(problem, c, t) for c, t in zip(problem.channels, junction_c, strict=True)]
+        )
+        self._bands: dict[bool, list[_Band]] = {}
 
-    def _transmittances(self, f_number: float) -> Array:
-        """(F, n) transmittances; a filter in front of the lens does not care about the f-number."""
-        key = f_number if self.problem.spec.optics.filter_position == "sensor" else 0.0
-        if key not in self._filters:
-            self._filters[key] = np.stack(
-                [filter_transmittance(self.problem, f, f_number) for f in self.problem.filters]
-            )
-        return self._filters[key]
+    def _scene(self, main: bool) -> Reflectances:
+        return main_reflectances(self.problem) if main else reflectances(self.problem)
 
-    def rates(self, camera: Camera, channel: str, f_number: float) -> Rates:
-        """Return the rates of one camera channel at one f-number: one matrix product."""
+    def bands(self, main: bool) -> list[_Band]:
+        """LEDs in groups of neighbouring spectra, each group cut to the wavelengths where it shines."""
+        if main not in self._bands:
+            scene = self._scene(main)
+            gloss = np.array([channel.specular_weight for channel in self.problem.channels])
+            curves = np.concatenate([scene.mean, scene.clutter])
+            shine = np.concatenate([scene.specular, np.zeros(len(scene.clutter))])
+            lit = self._light > _NO_LIGHT * self._light.max(axis=1, keepdims=True)
+            order = np.lexsort((np.argmax(self._light, axis=1), lit.sum(axis=1) > 0.75 * lit.shape[1]))
+            self._bands[main] = [
+                self._band(leds, lit[leds].any(axis=0), curves, np.outer(shine, gloss[leds]))
+                for leds in np.array_split(order, max(1, round(order.size / _LEDS_TOGETHER)))
+            ]
+        return self._bands[main]
+
+    def _band(self, leds: NDArray[np.intp], lit: NDArray[np.bool_], curves: Array, shine: Array) -> _Band:
+        """As if from a diffuser, mirror-like part included."""
+        where = np.flatnonzero(lit)
+        span = slice(int(where[0]), int(where[-1]) + 1) if where.size else slice(0, 1)
+        light = (curves[:, None, span] + shine[:, :, None]) * self._light[leds, span]
+        return _Band(leds, span.start, light.reshape(-1, light.shape[2]))
+
+    def rates(
+        self, camera: Camera, channel: str, f_number: float, filters: slice | Array = slice(None), main: bool = False
+    ) -> Rates:
+        """Return the rates of one camera channel at one f-number for some filters: matrix products, band by band.
+
+        ``main`` leaves out the weak clutter rows, see `main_reflectances`.
+        """
         weight = electrons_per_irradiance(self.problem, camera, channel, f_number)
-        seen = np.flatnonzero(weight)
-        transmittance = self._transmittances(f_number)[:, seen] * weight[seen]
-        rows, leds, _ = self._from_leds.shape
-        led = transmittance @ self._from_leds[:, :, seen].reshape(rows * leds, -1).T
-        ambient = transmittance @ self._from_ambient[:, seen].T
-        return Rates(led=led.reshape(-1, rows, leds), ambient=ambient)
+        transmittance = transmittances(self.problem, f_number, filters) * weight
+        scene = self._scene(main)
+        rows, ambient = len(scene.mean) + len(scene.clutter), self.problem.ambient
+        led = np.empty((len(transmittance), rows, len(self._light)))
+        for band in self.bands(main):
+            part = transmittance[:, band.start : band.start + band.light.shape[1]]
+            led[:, :, band.leds] = (part @ band.light.T).reshape(len(part), rows, -1)
+        return Rates(
+            led=led,
+            ambient=transmittance @ (np.concatenate([scene.mean, scene.clutter]) * ambient).T
+            if np.any(ambient)
+            else np.zeros((len(transmittance), rows)),
+        )
