@@ -263,6 +263,7 @@ def _nested_model(model: type[BaseModel], name: str) -> type[BaseModel] | None:
 
 def _shown(value: Any) -> str:
     text = repr(value).lower() if isinstance(value, bool) else repr(value)  # as TOML writes it
+    text = value.isoformat() if hasattr(value, "isoformat") else text
     return text if len(text) <= 60 else text[:57] + "..."
 
 

@@ -10,15 +10,15 @@ import numpy as np
 from pydantic import ValidationError
 
 from codesign.catalog import Catalog, Filter, Surface, load_catalog, parse_parts, select
-from codesign.catalog.common import check_share, explain, percent_factor
+from codesign.catalog.common import explain
 from codesign.errors import CatalogError, CoverageError, ProblemError, nearest
-from codesign.physics.illuminants import spectral_irradiance
 from codesign.physics.light import delivery_from_beam
 from codesign.problem.files import missing_advice, problem_path, read_toml
 from codesign.problem.model import Array, LedChannel, Problem
 from codesign.problem.purchase import Purchase
 from codesign.problem.schema import Choice, ProblemSpec, Solver
-from codesign.spectra import read_table, trapezoid_weights, wavelength_grid
+from codesign.problem.surroundings import ambient_irradiance, lens_transmittance
+from codesign.spectra import wavelength_grid
 
 NO_FILTER = Filter(id="none", kind="none", source="no filter")
 
@@ -69,10 +69,17 @@ def build_problem(
         raise ProblemError(explain(error, where, ProblemSpec)) from None
     folder = Path(folder)
     if catalog is None:
-        catalog = load_catalog(spec.catalog if spec.catalog == "demo" else folder / spec.catalog)
+        catalog = _catalog(spec.catalog, folder, where)
     inline = {kind: list(getattr(spec, kind)) for kind in ("led", "filter", "camera", "surface")}
     catalog = catalog.with_parts(parse_parts(inline, folder, where))
     return _Resolver(spec, folder, where, catalog).problem()
+
+
+def _catalog(name: str, folder: Path, where: str) -> Catalog:
+    try:
+        return load_catalog(name if name == "demo" else folder / name)
+    except CatalogError as error:
+        raise CatalogError(f"{where}: catalog is {name!r}: {error}") from None
 
 
 def solver_settings(problem: Problem, **changes: float | None) -> Solver:
@@ -116,8 +123,8 @@ class _Resolver:
             filters=self._filters(grid),
             cameras=self._cameras(grid),
             grid=grid,
-            ambient=self._ambient(grid),
-            lens=self._lens(grid),
+            ambient=ambient_irradiance(self.spec, self.folder, self.where, grid),
+            lens=lens_transmittance(self.spec, self.folder, self.where, grid),
             left_out=tuple(self.left_out),
         )
 
@@ -263,6 +270,8 @@ class _Resolver:
 
     def _filters(self, grid: Array) -> Sequence[Filter]:
         candidates = self.spec.candidates
+        if candidates.filters == () and not candidates.no_filter:
+            raise self._error("candidates.filters is [] and no_filter is false, which leaves no choice; name a filter")
         if candidates.filters in ("none", ()):
             return self.purchase.filters((NO_FILTER,))
         chosen = self._choose("filter", candidates.filters, lambda part: _misfit(part.range(self.catalog), grid))
@@ -279,60 +288,20 @@ class _Resolver:
         chosen = self._choose("camera", self.spec.candidates.cameras, fits)
         if not chosen:
             raise CoverageError(f"{self.where}: candidates.cameras: no camera fits; {self._why_none()}")
+        self._require_known("channels", [name for camera in chosen for name in camera.channel_names])
+        self._require_known("gains_db", [gain.gain_db for camera in chosen for gain in camera.gain_settings()])
         return self.purchase.cameras(chosen)
+
+    def _require_known(self, key: str, offered: list[Any]) -> None:
+        """Each channel and gain asked for must be one that some candidate camera has."""
+        wanted = getattr(self.spec.candidates, key)
+        for value in () if wanted in (None, "all") else (wanted,) if isinstance(wanted, str) else wanted:
+            if value not in offered:
+                advice = nearest(str(value), [str(each) for each in offered])
+                raise self._error(f"candidates.{key}: no candidate camera offers {value!r}; {advice}")
 
     def _why_none(self) -> str:
         return self.left_out[-1] if self.left_out else "build.must_not names them all"
-
-    def _ambient(self, grid: Array) -> Array:
-        total = np.zeros(grid.size)
-        for index, light in enumerate(self.spec.scene.ambient):
-            label = f"{self.where}: scene.ambient[{index}]"
-            if light.curve is None:
-                try:
-                    total += spectral_irradiance(
-                        light.illuminant,
-                        grid,
-                        outside="zero",
-                        illuminance_lx=light.illuminance_lx,
-                        irradiance_w_per_m2=light.irradiance_w_per_m2,
-                    )
-                except ValueError as error:
-                    raise ProblemError(f"{label}: {error}") from None
-                continue
-            total += self._measured_ambient(light, label, grid)
-        return total
-
-    def _measured_ambient(self, light, label: str, grid: Array) -> Array:
-        from codesign.physics.light import luminous_efficacy
-
-        table = read_table(self.folder / light.curve, label=f"{label}: {light.curve}")
-        table.require(table.spectrum.values >= 0, "must be >= 0; subtract the dark reading")
-        curve = table.column(table.names[0])
-        if not curve.covers(grid[0], grid[-1]):
-            curve.resample(grid)  # raises with both ranges
-        relative = curve.resample(grid)
-        if light.irradiance_w_per_m2 is not None:
-            return relative * (light.irradiance_w_per_m2 / (relative @ trapezoid_weights(grid)))
-        own = curve.wavelength_nm
-        lumens = float(luminous_efficacy(own, curve.values)) * float(curve.values @ trapezoid_weights(own))
-        if not lumens > 0:
-            raise ProblemError(
-                f"{label}: illuminance_lx is {light.illuminance_lx:g}, but {light.curve} holds no visible light; "
-                "state irradiance_w_per_m2"
-            )
-        return relative * (light.illuminance_lx / lumens)
-
-    def _lens(self, grid: Array) -> Array:
-        optics = self.spec.optics
-        lens = np.full(grid.size, optics.lens_transmittance)
-        if optics.lens_curve is not None:
-            table = read_table(
-                self.folder / optics.lens_curve, label=f"{self.where}: optics.lens_curve: {optics.lens_curve}"
-            )
-            check_share(table, optics.lens_unit)
-            lens = lens * table.column(table.names[0]).resample(grid) * percent_factor(optics.lens_unit)
-        return lens
 
 
 def _misfit(covered: tuple[float, float] | None, grid: Array) -> str | None:

@@ -11,6 +11,15 @@ from codesign.catalog.common import ABSOLUTE_ZERO_C, Record
 Choice = str | tuple[str, ...]
 
 
+def _require_one(record: Record, first: str, second: str) -> None:
+    """Raise ValueError unless exactly one of two fields is given."""
+    a, b = getattr(record, first), getattr(record, second)
+    if a is None and b is None:
+        raise ValueError(f"{first} and {second} are both missing, must be one of the two")
+    if a is not None and b is not None:
+        raise ValueError(f"{first} is {a!r} and {second} is {b!r}, must be only one of the two")
+
+
 class Ambient(Record):
     """One ambient light, stated by its spectrum and what a meter shows at the object."""
 
@@ -23,10 +32,8 @@ class Ambient(Record):
 
     @model_validator(mode="after")
     def _check(self) -> Self:
-        if (self.illuminant is None) == (self.curve is None):
-            raise ValueError("give either illuminant or curve, one of the two")
-        if (self.illuminance_lx is None) == (self.irradiance_w_per_m2 is None):
-            raise ValueError("give either illuminance_lx or irradiance_w_per_m2, one of the two")
+        _require_one(self, "illuminant", "curve")
+        _require_one(self, "illuminance_lx", "irradiance_w_per_m2")
         return self
 
 
@@ -138,8 +145,7 @@ class Lighting(Record):
 
     @model_validator(mode="after")
     def _check(self) -> Self:
-        if (self.distance_mm is None) == (self.delivery_per_m2 is None):
-            raise ValueError("give either distance_mm or delivery_per_m2, one of the two")
+        _require_one(self, "distance_mm", "delivery_per_m2")
         return self
 
 
@@ -261,10 +267,10 @@ class ProblemSpec(Record):
     averaging: Averaging = Averaging()
     grid: Grid = Grid()
     solver: Solver = Solver()
-    led: tuple[dict[str, Any], ...] = Field(default=(), description="own LEDs, as in a catalogue")
-    filter: tuple[dict[str, Any], ...] = Field(default=(), description="own filters, as in a catalogue")
-    camera: tuple[dict[str, Any], ...] = Field(default=(), description="own cameras, as in a catalogue")
-    surface: tuple[dict[str, Any], ...] = Field(default=(), description="own surfaces, as in a catalogue")
+    led: tuple[dict[str, Any], ...] = Field(default=(), description="own LEDs, each under [[led]]")
+    filter: tuple[dict[str, Any], ...] = Field(default=(), description="own filters, each under [[filter]]")
+    camera: tuple[dict[str, Any], ...] = Field(default=(), description="own cameras, each under [[camera]]")
+    surface: tuple[dict[str, Any], ...] = Field(default=(), description="own surfaces, each under [[surface]]")
 
     @model_validator(mode="after")
     def _check(self) -> Self:
