@@ -9,9 +9,9 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from codesign.assemble import Assembly, flipped
+from codesign.assemble_conflicts import no_step_fits, nothing_seen, require_usable_leds
 from codesign.certificate import check_point
 from codesign.design import Design, Performance, evaluate
-from codesign.errors import InfeasibleError
 from codesign.problem import Problem
 from codesign.program import Array
 from codesign.recipe import design_at, settable
@@ -127,6 +127,7 @@ def solve(
     True
     """
     started = time.perf_counter()
+    require_usable_leds(problem)
     gap = problem.spec.solver.gap if gap is None else gap
     wanted = problem.spec.solver.alternatives if alternatives is None else alternatives
     junction = np.full(len(problem.channels), problem.spec.temperature.air_c)
@@ -138,7 +139,7 @@ def solve(
             walk.seed(known)
         best = walk.best()
         if best is None:
-            raise _nothing_seen(problem)
+            raise nothing_seen(walk.assembly)
         known = walk.configuration(best)
         result = walk.found[best]
         residual, settled = settle(problem, known, junction, min(gap, POLISH_GAP))
@@ -149,11 +150,8 @@ def solve(
     design = design_at(walk.assembly, known.setting, known.filter, result.point)
     optimum = evaluate(problem, design)
     rounded = settable(problem, design)
-    if rounded is None:
-        raise InfeasibleError(
-            f"{problem.where}: no setting in whole steps meets all limits; make lighting.drive_step_ma smaller",
-            ["setting steps"],
-        )
+    if rounded is None or (optimum.leds and not rounded[1].leds):
+        raise no_step_fits(problem)
     return Solution(
         problem=problem,
         optimum=optimum,
@@ -229,11 +227,3 @@ def _alternatives(walk: Walk, best: int, count: int):
             design=design_at(walk.assembly, chosen.setting, chosen.filter, result.point), cnr=result.value
         )
         listed = found
-
-
-def _nothing_seen(problem: Problem) -> InfeasibleError:
-    return InfeasibleError(
-        f"{problem.where}: no configuration shows any difference between target and background within the limits; "
-        "look at the candidates and at junction and current limits",
-        ["candidates"],
-    )
