@@ -85,9 +85,9 @@ class SchemaKind(StrEnum):
 @app.callback(invoke_without_command=True)
 def main(version: Annotated[bool, typer.Option("--version", help="Show the version and exit.")] = False) -> None:
     if version:
-        from codesign import __version__
+        import codesign
 
-        _print(f"cnr {__version__}\n")
+        _print(f"cnr {codesign.__version__}\n")
         raise typer.Exit
 
 
@@ -122,8 +122,10 @@ def check(
 
     The exit code is 3 when it misses any. Example: cnr check yellow-stain recipe.toml
     """
-    from codesign import evaluate, load_problem, load_recipe
+    from codesign.design import evaluate
+    from codesign.problem import load_problem
     from codesign.report import machine, text
+    from codesign.report.recipe_file import load_recipe
 
     loaded = load_problem(problem)
     result = evaluate(loaded, load_recipe(recipe))
@@ -145,7 +147,7 @@ def parts(
 
     Example: cnr parts leds "match(id, 'nir-*') and price < 10"
     """
-    from codesign import load_catalog
+    from codesign.catalog import load_catalog
     from codesign.report.parts import listing
 
     _print(listing(load_catalog(catalog), kind and kind.value, expression, id, json=json))
@@ -195,9 +197,9 @@ def demos() -> None:
 
 
 def _solved(name: str, gap: float | None, alternatives: int | None) -> Solution:
-    from codesign import load_problem, solve
-    from codesign.problem import solver_settings
+    from codesign.problem import load_problem, solver_settings
     from codesign.report.output import Progress
+    from codesign.solve import solve
 
     problem = load_problem(name)
     wanted = solver_settings(problem, gap=gap, alternatives=alternatives)
@@ -209,7 +211,7 @@ def _solved(name: str, gap: float | None, alternatives: int | None) -> Solution:
 
 
 def _verified(solution: Solution) -> Any:
-    from codesign import verify
+    from codesign.verify import verify
 
     return verify(solution)
 
