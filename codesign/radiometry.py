@@ -18,6 +18,7 @@ from codesign.physics.filters import cone_quadrature
 from codesign.physics.light import flux_at_temperature, photons_per_joule
 from codesign.physics.optics import cone_half_angle_deg, image_irradiance, radiance_of_diffuse
 from codesign.problem import LedChannel, Problem
+from codesign.problem.choices import FilterChoices
 from codesign.spectra import trapezoid_weights
 
 Array = NDArray[np.float64]
@@ -94,17 +95,24 @@ def filter_transmittance(problem: Problem, part: Filter, f_number: float) -> Arr
 
 @lru_cache(maxsize=8)
 def _all_transmittances(problem: Problem, f_number: float) -> Array:
-    """`filter_transmittance` of every filter, kept for all junction temperatures. (F, n) [1]"""
-    return np.stack([filter_transmittance(problem, part, f_number) for part in problem.filters])
+    """`filter_transmittance` of every single filter, kept for all junction temperatures. (F₀, n) [1]"""
+    base = FilterChoices.of(problem.filters).base
+    return np.stack([filter_transmittance(problem, part, f_number) for part in base])
 
 
 def transmittances(problem: Problem, f_number: float, filters: slice | Array = slice(None)) -> Array:
-    """Transmittances of some filters, by position. (F, n) [1]
+    """Transmittances of some filters, by position; of a pair the product. (F, n) [1]
 
     A filter in front of the lens does not care about the f-number.
     """
     base = problem.spec.optics.f_numbers[0] if problem.spec.optics.filter_position == "front" else f_number
-    return _all_transmittances(problem, base)[filters]
+    table = _all_transmittances(problem, base)
+    first, second = FilterChoices.of(problem.filters).members[filters].T
+    found = table[first]
+    stacked = np.flatnonzero(second >= 0)
+    if stacked.size:
+        found[stacked] *= table[second[stacked]]
+    return found
 
 
 def electrons_per_irradiance(problem: Problem, camera: Camera, channel: str, f_number: float) -> Array:
