@@ -22,6 +22,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from codesign.errors import CertificateError
 from codesign.program import Array, Program, contrast_to_noise, row_scale, violation
@@ -64,9 +65,18 @@ class Proof:
 
 
 def box_minimum(program: Program, cost: Array) -> Array:
-    """Least ``cost·y`` over ``0 ≤ q ≤ width·t``, ``t_low ≤ t ≤ t_high``: linear in t once q is out. (P,)"""
+    """Least ``cost·y`` over ``0 ≤ q ≤ width·t``, ``t_low ≤ t ≤ t_high``: linear in t once q is out. (P,)
+
+    Infinite where no exposure is allowed at all: then every bound holds, also zero.
+    """
     per_second = cost[:, -1] + np.minimum(cost[:, :-1], 0.0) @ program.width
-    return np.where(per_second >= 0, program.time_low, program.time_high) * per_second
+    least = np.where(per_second >= 0, program.time_low, program.time_high) * per_second
+    return np.where(no_exposure(program), np.inf, least)
+
+
+def no_exposure(program: Program) -> NDArray[np.bool_]:
+    """Whether the exposure range is empty: ambient light alone fills a well before the shortest exposure ends. (P,)"""
+    return program.time_low > program.time_high * (1 + 2 * FEASIBILITY_TOLERANCE)
 
 
 def _charge_cost(program: Program, line: Line, cost: Array) -> Array:

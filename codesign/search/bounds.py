@@ -48,7 +48,8 @@ def cut_prices(program: Program, cost: Array, t: Array) -> Array:
     return out
 
 
-def _zero_line(program: Program) -> Line:
+def no_prices(program: Program) -> Line:
+    """All multipliers zero."""
     size = program.size
     return Line(
         theta=np.zeros(size),
@@ -70,7 +71,7 @@ def simple_ceiling(program: Program) -> tuple[Line, Array]:
         with np.errstate(divide="ignore", invalid="ignore"):
             price = np.max(np.where(signal > 0, signal / row, 0.0), axis=1)
         usable = np.isfinite(price) & (row[:, :-1] >= 0).all(axis=1) & (price >= 0)
-        trial = _zero_line(program)
+        trial = no_prices(program)
         trial.limit[:, k] = np.where(usable, price, 0.0)
         reached = signal_ceiling(program, trial)
         better = usable & (reached < value)
@@ -81,7 +82,7 @@ def simple_ceiling(program: Program) -> tuple[Line, Array]:
 
 def _full_drive(program: Program) -> Line:
     """Every LED as far as its own limits go at the longest exposure."""
-    line = _zero_line(program)
+    line = no_prices(program)
     heat = cut_prices(program, -program.signal[:, :-1], program.time_high)
     return replace(line, heat=heat)
 
@@ -95,7 +96,7 @@ def ratio_line(program: Program, noise: Array, top: Array) -> Line:
     positive = program.signal > 0
     theta = np.min(np.divide(cost, program.signal, out=np.full_like(cost, np.inf), where=positive), axis=1)
     theta = np.where(np.isfinite(theta), theta, 0.0)
-    return replace(_zero_line(program), theta=theta, noise=noise, anchor=np.maximum(top, 1e-300))
+    return replace(no_prices(program), theta=theta, noise=noise, anchor=np.maximum(top, 1e-300))
 
 
 def lone_led_noise(program: Program, top: Array) -> Array:

@@ -8,12 +8,13 @@ recipe agree to the gap asked for. Unlike branching on boxes, no line is ever th
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
-from codesign.certificate import Line, Proof, bound, curves, envelope, signal_ceiling
+from codesign.certificate import Line, Proof, bound, curves, envelope, no_exposure, signal_ceiling
 from codesign.program import Array, Program, contrast_to_noise, variance
+from codesign.search.bounds import no_prices
 from codesign.search.relaxation import ConvexSlice
 
 #: A frontier walk needs 3 to 8 lines; this stops a stalled one, whose honest gap is then reported.
@@ -120,8 +121,7 @@ class _Walk:
         touched = len(self.touch)
         exact = self.priced(None, slack=0.0)
         del self.touch[touched:]
-        free = replace(exact, limit=np.zeros_like(exact.limit), heat=np.zeros_like(exact.heat))
-        for ceiling in (exact, free):  # without light of the wanted sign no price at all is exactly right
+        for ceiling in (exact, no_prices(self.program)):  # without light of the wanted sign no price at all is exactly right
             limit = float(signal_ceiling(self.program, ceiling)[0])
             if limit < self.limit:
                 self.ceiling, self.limit = ceiling, limit
@@ -188,6 +188,9 @@ def certify(program: Program, gap: float = 1e-3, target: float = 0.0, hint: Hint
     hint : Hint, optional
         Where to start, from a cheaper bound.
     """
+    if no_exposure(program)[0]:
+        dark = np.append(np.zeros(program.segments), program.time_low)
+        return Certified(point=dark, value=0.0, bound=0.0, proof=Proof(ceiling=no_prices(program), lines=()))
     walk = _Walk(program, 0.05 * gap, hint)
     if walk.limit <= 0:
         proof = Proof(ceiling=walk.ceiling, lines=())
