@@ -46,8 +46,14 @@ def check_values(problem: Problem, design: Any) -> None:
 
 
 def _check_emitters(problem: Problem, design: Any) -> None:
+    known = {channel.id: channel.emitters for channel in problem.channels}
     for led, count in design.emitters.items():
-        most = problem.channel(led).emitters
+        if led not in known:
+            raise ProblemError(
+                f"{design.where}: emitters.{led}: no such LED among the candidates of {problem.where}; "
+                f"{nearest(led, known)}"
+            )
+        most = known[led]
         if not free(problem) and count != most:
             raise ProblemError(
                 f"{design.where}: emitters.{led} is {count}, must be {most}; build.emitters = 'free' lets it vary"

@@ -35,7 +35,8 @@ seconds                  time the search took [s]
 schema                   "codesign.performance/1"
 problem                  as above
 settings                 {"camera": id, "channel": name, "gain_db": number, "filter": id, "f_number": number,
-                         "exposure_us": number, "drive_ma": {LED id: current of each emitter}}
+                         "exposure_us": number, "drive_ma": {LED id: current of each emitter}, "emitters": {LED id:
+                         number in use}, empty where the problem fixes the numbers}
 cnr                      contrast-to-noise ratio of the worst pair
 sign                     "brighter" or "darker": the target against the background
 signal_e                 mean electrons of the target minus the background, worst pair
@@ -124,7 +125,7 @@ def _problem(problem: Problem) -> dict[str, Any]:
 
 
 def _settings(design: Design) -> dict[str, Any]:
-    names = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "drive_ma")
+    names = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "drive_ma", "emitters")
     return {name: getattr(design, name) for name in names}
 
 

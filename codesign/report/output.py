@@ -62,16 +62,20 @@ def write_file(path: str | Path, content: str | bytes, *, overwrite: bool = True
     """
     path = Path(path)
     data = content.encode("utf-8") if isinstance(content, str) else content
+    try:
+        _require_place(path, overwrite)
+        _write_anew(path.resolve(), data)
+    except OSError as error:
+        raise CodesignError(f"{path}: cannot be written, {error.strerror}; choose another place") from None
+
+
+def _require_place(path: Path, overwrite: bool) -> None:
     if path.is_dir():
         raise CodesignError(f"{path}: is a folder; name a file in it")
     if not path.parent.is_dir():
         raise CodesignError(f"{path}: folder {str(path.parent)!r} does not exist; create it first")
     if path.exists() and not overwrite:
         raise CodesignError(f"{path}: exists already; choose another name, or --force to replace it")
-    try:
-        _write_anew(path.resolve(), data)
-    except OSError as error:
-        raise CodesignError(f"{path}: cannot be written, {error.strerror}; choose another place") from None
 
 
 def _write_anew(path: Path, data: bytes) -> None:

@@ -26,6 +26,9 @@ class Recipe(Record):
     f_number: float = Field(ge=0.5, le=64, description="f-number of the lens")
     exposure_us: float = Field(gt=0, description="exposure [us]")
     drive_ma: dict[str, float] = Field(description="current of each LED by id [mA]; LEDs left out are off")
+    emitters: dict[str, int] = Field(
+        default={}, description="number of emitters of an LED by id, where build.emitters = 'free'"
+    )
 
 
 def recipe_toml(design: Design, comment: str = "") -> str:
@@ -57,7 +60,9 @@ def recipe_toml(design: Design, comment: str = "") -> str:
     names = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us")
     settings = [f"{name} = {_value(getattr(design, name))}" for name in names]
     drives = [f"{led} = {_value(ma)}" for led, ma in design.drive_ma.items()]
-    return "\n".join([*head, *settings, "", "[drive_ma]", *drives, ""])
+    emitters = [f"{led} = {count}" for led, count in design.emitters.items()]
+    counts = ["", "[emitters]", *emitters] if emitters else []
+    return "\n".join([*head, *settings, "", "[drive_ma]", *drives, *counts, ""])
 
 
 def _value(value: str | float) -> str:
