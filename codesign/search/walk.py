@@ -198,7 +198,7 @@ class Walk:
             self._certify(int(part[int(np.argmax(state.own))]), target)
             target = self._leader(np.ones(self.upper.size, dtype=bool))[1]
         for _ in range(ROUNDS):
-            open_ = state.bound > target * (1 + self.gap)
+            open_ = (state.bound > target * (1 + self.gap)) & ~state.settled(target)
             self._record(part[~open_], pair, state.take(np.flatnonzero(~open_)))
             part, state = part[open_], state.take(np.flatnonzero(open_))
             if not part.size:
