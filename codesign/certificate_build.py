@@ -8,15 +8,28 @@ imported here.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from codesign.assemble_build import first_shares, shares
-from codesign.build import ROUND_OFF, Box, BuildLimit, Units, tightened
-from codesign.certificate import bound
+from codesign.build import (
+    ROUND_OFF,
+    Box,
+    BuildLimit,
+    Units,
+    build_limits,
+    most_units,
+    other_prices,
+    root_box,
+    tightened,
+)
+from codesign.catalog import Camera
+from codesign.certificate import Proof, bound, check_point
+from codesign.certificate_pairs import PairProof, check_pair_point, pair_bound
 from codesign.errors import CertificateError
+from codesign.problem import Problem
 from codesign.program import Array, Program
 
 #: Width of the one column kept where no LED may be in use, as a share of its own: a program needs a column.
@@ -39,9 +52,10 @@ class BuildSpace:
 
 @dataclass(frozen=True, slots=True)
 class BuildLeaf:
-    """A box bounded by multipliers; None where the limits leave no choice in it."""
+    """A box bounded by multipliers, of one pair or of all together; None where the limits leave no choice in it."""
 
-    proof: object | None
+    proof: Proof | PairProof | None
+    pair: int = 0
 
 
 @dataclass(frozen=True, slots=True)
@@ -52,6 +66,15 @@ class BuildSplit:
     at: int
     below: BuildLeaf | BuildSplit
     above: BuildLeaf | BuildSplit
+
+
+def build_space(problem: Problem, camera: Camera, filter_index: int) -> BuildSpace:
+    """Whole choices of LEDs beside one camera and filter."""
+    return BuildSpace(
+        most_units(problem),
+        build_limits(problem, float(other_prices(problem, camera)[filter_index])),
+        root_box(problem),
+    )
 
 
 def restricted(program: Program, space: BuildSpace, box: Box) -> tuple[Program, np.ndarray]:
@@ -117,9 +140,7 @@ def _shared_rows(node: Program, name: str, slope: Array, room: float) -> list[tu
     if (np.diff(node.led) == 0).any():
         entries.append(first_shares(node.led, node.width))
     names = (name, f"{name}, first segments")
-    return [
-        (n, np.append(slope[node.led] * entry, -room), 0.0) for n, entry in zip(names, entries, strict=False)
-    ]
+    return [(n, np.append(slope[node.led] * entry, -room), 0.0) for n, entry in zip(names, entries, strict=False)]
 
 
 def _alone(node: Program) -> Array:
@@ -139,18 +160,18 @@ def _alone(node: Program) -> Array:
     return entries[np.argmax(load, axis=0)[node.led], np.arange(node.width.size)]
 
 
-def tree_bound(
-    programs: Sequence[Program],
-    space: BuildSpace,
-    tree: BuildLeaf | BuildSplit,
-    bound_of: Callable[[list[Program], object], float] | None = None,
-) -> float:
+def _leaf_bound(programs: Sequence[Program], leaf: BuildLeaf) -> float:
+    if isinstance(leaf.proof, PairProof):
+        return pair_bound(programs, leaf.proof)
+    return float(bound(programs[leaf.pair], leaf.proof)[0])
+
+
+def tree_bound(programs: Sequence[Program], space: BuildSpace, tree: BuildLeaf | BuildSplit) -> float:
     """Bound on the CNR over every whole choice that follows from a tree; 0 where there is no choice.
 
-    ``programs`` are those of the pairs of one configuration, ``bound_of`` turns a leaf's programs and proof into a
-    bound. Raises CertificateError when a split leaves something out or a leaf has no proof.
+    ``programs`` are those of the pairs of one configuration. Raises CertificateError when a split leaves something
+    out or a leaf has no proof.
     """
-    bound_of = bound_of or (lambda programs, proof: float(bound(programs[0], proof)[0]))
     largest, waiting = 0.0, [(space.root, tree)]
     while waiting:
         box, node = waiting.pop()
@@ -164,5 +185,26 @@ def tree_bound(
         elif node.proof is None:
             raise CertificateError("certificate: a branch is said to be empty but holds a choice of LEDs")
         else:
-            largest = max(largest, bound_of([restricted(program, space, box)[0] for program in programs], node.proof))
+            largest = max(largest, _leaf_bound([restricted(program, space, box)[0] for program in programs], node))
     return largest
+
+
+def check_recipe(
+    programs: Sequence[Program], y: Array, claimed: float, space: BuildSpace, units: Units | None = None
+) -> float:
+    """Confirm that a point is feasible for its units, that the limits allow these, and its (worst) CNR; return it.
+
+    Raises CertificateError naming what is off. Without ``units`` there must be no build limit.
+    """
+    if (units is None) != (not space.limits):
+        raise CertificateError("certificate: build limits and units of the LEDs must come together")
+    if units is not None:
+        if not space.allows(units):
+            raise CertificateError("certificate: the LEDs in use exceed a build limit")
+        small, keep = zip(*(restricted(program, space, Box(units, units)) for program in programs), strict=True)
+        if np.delete(y[:-1], keep[0]).any():
+            raise CertificateError("certificate: an LED that is not in use carries current")
+        programs, y = small, np.append(y[keep[0]], y[-1])
+    if len(programs) == 1:
+        return check_point(programs[0], y, claimed)
+    return check_pair_point(programs, y, claimed)

@@ -8,6 +8,7 @@ from dataclasses import replace
 import numpy as np
 
 from codesign.assemble import Assembly
+from codesign.build import Units, free
 from codesign.design import Design, Performance, evaluate
 from codesign.limits import Setting
 from codesign.problem import Problem
@@ -21,20 +22,29 @@ GOOD_ENOUGH = 1e-4
 LARGEST_NUMBER_OF_ROUNDS = 60
 
 
-def design_at(assembly: Assembly, setting: Setting, filter_index: int, point: Array) -> Design:
-    """Translate an optimiser's point ``(q_1 .. q_n, t)`` into currents: the light of each LED, segments in order."""
+def design_at(
+    assembly: Assembly, setting: Setting, filter_index: int, point: Array, units: Units | None = None
+) -> Design:
+    """Translate an optimiser's point ``(q_1 .. q_n, t)`` into currents: the light of each LED, segments in order.
+
+    ``units`` (L,) are those in use under build limits; the charge is a mean over all emitters there could be.
+    """
     problem = assembly.problem
     segments = assembly.segments(setting)
     t = float(point[-1])
-    drive = {}
+    drive, emitters = {}, {}
+    counted = units is not None and free(problem)
     for index, channel in enumerate(problem.channels):
         own = segments.led == index
-        flux = float(segments.flux[own] @ point[:-1][own]) / t
+        share = units[index] / channel.emitters if counted else 1.0
+        flux = float(segments.flux[own] @ point[:-1][own]) / t / max(share, 1e-300)
         reached = np.concatenate([[0.0], np.cumsum(segments.flux[own] * segments.width[own])])
         current = np.concatenate([[0.0], np.cumsum(segments.width[own])])
         amps = float(np.interp(flux, reached, current))
         if amps * 1e3 > OFF * problem.spec.lighting.drive_step_ma:
             drive[channel.id] = amps * 1e3
+        if counted and units[index] > 0:
+            emitters[channel.id] = int(units[index])
     return Design(
         camera=setting.camera.id,
         channel=setting.channel,
@@ -43,6 +53,7 @@ def design_at(assembly: Assembly, setting: Setting, filter_index: int, point: Ar
         f_number=setting.f_number,
         exposure_us=t * 1e6,
         drive_ma=drive,
+        emitters=emitters,
     )
 
 

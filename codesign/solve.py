@@ -8,24 +8,15 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from codesign.assemble import Assembly, flipped
-from codesign.assemble_conflicts import no_step_fits, nothing_seen, require_usable_leds
-from codesign.certificate import check_point
+from codesign.assemble_conflicts import no_step_fits, nothing_seen
+from codesign.build import Units
+from codesign.certificate_build import check_recipe
 from codesign.design import Design, Performance, evaluate
 from codesign.problem import Problem
 from codesign.program import Array
 from codesign.recipe import design_at, settable
-from codesign.search.frontier import Certified, certify
-from codesign.search.walk import Configuration, Evidence, Tally, Walk
-
-#: Junction temperatures assumed and reached agree to this. [K]
-JUNCTION_TOLERANCE_K = 0.02
-#: The winner itself is worked out to this gap, so that its settings do not depend on luck.
-POLISH_GAP = 1e-5
-#: Gap of the first round.
-SCOUT_GAP = 0.03
-#: Rounds of the outer and inner loop over junction temperatures.
-LARGEST_NUMBER_OF_ROUNDS = 8
+from codesign.search.walk import Evidence, Tally, Walk
+from codesign.solve_rounds import POLISH_GAP, Clock, Search, default_gap, search_rounds
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -66,7 +57,9 @@ class Solution:
     """The optimum, the settable recipe near it, and the proof.
 
     ``optimum`` is the continuous optimum, ``recipe`` the same in whole setting steps (what to dial in). ``winner``,
-    ``point`` and ``evidence`` are what `codesign.verify` re-derives the proof from.
+    ``point``, ``units`` (of each LED, under build limits) and ``evidence`` are what `codesign.verify` re-derives the
+    proof from. ``status`` is "proven", or "stopped" when time limit or interrupt ended the search before the gap asked
+    for was reached.
     """
 
     problem: Problem = field(repr=False)
@@ -75,8 +68,10 @@ class Solution:
     certificate: Certificate
     alternatives: tuple[Alternative, ...]
     seconds: float
+    status: str
     winner: int = field(repr=False)
     point: Array = field(repr=False)
+    units: Units | None = field(repr=False)
     evidence: tuple[Evidence, ...] = field(repr=False)
 
     @property
@@ -96,6 +91,7 @@ def solve(
     gap: float | None = None,
     alternatives: int | None = None,
     progress: Callable[[float, float], None] | None = None,
+    time_limit: float | None = None,
 ) -> Solution:
     """Find the recipe of greatest CNR over all configurations, with a checked proof.
 
@@ -108,6 +104,9 @@ def solve(
         Number of certified runners-up; the problem's own by default.
     progress : callable, optional
         Called with (best CNR so far, bound so far).
+    time_limit : float, optional
+        Stop about then with the best so far; its certificate states the gap that is proven. An interrupt does the
+        same. [s]
 
     Returns
     -------
@@ -127,75 +126,46 @@ def solve(
     True
     """
     started = time.perf_counter()
-    require_usable_leds(problem)
-    gap = problem.spec.solver.gap if gap is None else gap
+    gap = default_gap(problem) if gap is None else gap
     wanted = problem.spec.solver.alternatives if alternatives is None else alternatives
-    junction = np.full(len(problem.channels), problem.spec.temperature.air_c)
-    known: Configuration | None = None
-    for attempt in range(LARGEST_NUMBER_OF_ROUNDS):
-        # The first round only has to find the temperatures; a later one proves.
-        walk = Walk(Assembly(problem, junction), max(gap, SCOUT_GAP) if attempt == 0 else gap, progress)
-        if known is not None:
-            walk.seed(known)
-        best = walk.best()
-        if best is None:
-            raise nothing_seen(walk.assembly)
-        known = walk.configuration(best)
-        result = walk.found[best]
-        residual, settled = settle(problem, known, junction, min(gap, POLISH_GAP))
-        if residual <= JUNCTION_TOLERANCE_K and walk.gap <= gap:
-            break
-        junction = settled
+    clock = Clock.lasting(time_limit)
+    search = search_rounds(problem, gap, progress=progress, clock=clock)
+    if search.best is None:
+        raise nothing_seen(search.walk.assembly)
+    return solution_of(search, gap, started, wanted)
+
+
+def solution_of(search: Search, gap: float, started: float, alternatives: int = 0) -> Solution:
+    """Recipe, certificate and runners-up of a search that found something."""
+    walk, best, known = search.walk, search.best, search.known
+    problem = walk.assembly.problem
     result = walk.polish(best, min(gap, POLISH_GAP))
-    design = design_at(walk.assembly, known.setting, known.filter, result.point)
+    units = getattr(result, "units", None)
+    design = design_at(walk.assembly, known.setting, known.filter, result.point, units)
     optimum = evaluate(problem, design)
     rounded = settable(problem, design)
     if rounded is None or (optimum.leds and not rounded[1].leds):
         raise no_step_fits(problem)
+    certificate = _certificate(walk, best, known, result, design, optimum)
     return Solution(
         problem=problem,
         optimum=optimum,
         recipe=rounded[1],
-        certificate=_certificate(walk, best, known, result, design, optimum),
-        alternatives=tuple(_alternatives(walk, best, wanted)),
+        certificate=certificate,
+        alternatives=() if search.stopped else tuple(_alternatives(walk, best, alternatives)),
         seconds=time.perf_counter() - started,
+        status="stopped" if search.stopped and certificate.gap > gap else "proven",
         winner=best,
         point=result.point,
+        units=units,
         evidence=tuple(walk.evidence),
     )
 
 
-def settle(problem: Problem, configuration: Configuration, junction: Array, gap: float) -> tuple[float, Array]:
-    """Iterate one configuration's junction temperatures to self-consistency.
-
-    Returns how far ``junction`` is from what its own optimum leads to [K], and the settled temperatures (L,). LEDs
-    that are off keep the temperature they last had when lit, so that none looks cooler than it would be in use.
-    """
-    first = None
-    for _ in range(LARGEST_NUMBER_OF_ROUNDS):
-        assembly = Assembly(problem, junction)
-        program = assembly.program(configuration.setting, np.array([configuration.filter]))
-        result = certify(program if configuration.sign > 0 else flipped(program), gap)
-        design = design_at(assembly, configuration.setting, configuration.filter, result.point)
-        reached = _reached(problem, evaluate(problem, design), junction)
-        residual = float(np.max(np.abs(reached - junction), initial=0.0))
-        first = residual if first is None else first
-        if residual <= 0.1 * JUNCTION_TOLERANCE_K:
-            break
-        junction = reached
-    return first, junction
-
-
-def _reached(problem: Problem, performance: Performance, junction: Array) -> Array:
-    """Junction temperatures of a recipe; LEDs that are off keep those assumed."""
-    states = {state.id: state.junction_c for state in performance.leds}
-    return np.array([states.get(c.id, t) for c, t in zip(problem.channels, junction, strict=True)])
-
-
-def _certificate(walk: Walk, best: int, known, result: Certified, design: Design, optimum: Performance) -> Certificate:
+def _certificate(walk: Walk, best: int, known, result, design: Design, optimum: Performance) -> Certificate:
     """Check the winner with code that knows no solver, and put the numbers of the proof together."""
     problem = walk.assembly.problem
-    check_point(walk.programs(np.array([best]), coarse=False), result.point, result.value)
+    check_recipe(walk.every_pair(best), result.point, result.value, walk.space(best), getattr(result, "units", None))
     assumed = {c.id: float(t) for c, t in zip(problem.channels, walk.assembly.junction_c, strict=True)}
     same = evaluate(problem, design, junction_c=assumed)
     tally: Tally = walk.tally
@@ -224,6 +194,9 @@ def _alternatives(walk: Walk, best: int, count: int):
         chosen = walk.configuration(found)
         result = walk.found[found]
         yield Alternative(
-            design=design_at(walk.assembly, chosen.setting, chosen.filter, result.point), cnr=result.value
+            design=design_at(
+                walk.assembly, chosen.setting, chosen.filter, result.point, getattr(result, "units", None)
+            ),
+            cnr=result.value,
         )
         listed = found

@@ -11,13 +11,15 @@ from dataclasses import dataclass
 import numpy as np
 
 from codesign.assemble import Assembly, flipped
-from codesign.certificate import check_bound, check_point
+from codesign.certificate import check_bound
+from codesign.certificate_build import BuildLeaf, BuildSplit, check_recipe, tree_bound
+from codesign.certificate_pairs import PairProof, pair_bound
 from codesign.design import evaluate
 from codesign.errors import CertificateError
 from codesign.limits import Setting
 from codesign.program import Array
 from codesign.search.bounds import simple_proof
-from codesign.search.walk import Evidence, Walk
+from codesign.search.walk import FILTERS_TOGETHER, Evidence, Walk
 from codesign.solve import Solution
 
 #: Forward model and optimiser's arrays must agree to this at equal junction temperatures.
@@ -75,9 +77,17 @@ def _by_evidence(walk: Walk, evidence: tuple[Evidence, ...]) -> Array:
     """Bounds from the multipliers kept, ``inf`` where there are none."""
     bounds = np.full(walk.upper.size, np.inf)
     for item in evidence:
-        program = walk.programs(item.index, coarse=item.coarse, pair=item.pair)
-        bounds[item.index] = np.minimum(bounds[item.index], check_bound(program, item.proof, np.inf))
+        bounds[item.index] = np.minimum(bounds[item.index], _bounds_of(walk, item))
     return bounds
+
+
+def _bounds_of(walk: Walk, item: Evidence) -> Array:
+    """Bounds that one piece of evidence shows, in the order of its configurations."""
+    if isinstance(item.proof, BuildLeaf | BuildSplit):
+        return np.array([tree_bound(walk.every_pair(i), walk.space(i), item.proof) for i in item.index])
+    if isinstance(item.proof, PairProof):
+        return np.array([pair_bound(walk.every_pair(index), item.proof) for index in item.index])
+    return check_bound(walk.programs(item.index, coarse=item.coarse, pair=item.pair), item.proof, np.inf)
 
 
 def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
@@ -87,20 +97,30 @@ def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
     for number, setting in enumerate(walk.assembly.settings):
         part = slice(number * per_setting, (number + 1) * per_setting)
         if wanted[part].any():
-            bounds[part] = np.min([_closed_form(walk, setting, pair) for pair in range(walk.pairs)], axis=0)
+            bounds[part] = _of_setting(walk, setting)
     return bounds
 
 
-def _closed_form(walk: Walk, setting: Setting, pair: int) -> Array:
-    program = walk.assembly.program(setting, coarse=True, pair=pair)
+def _of_setting(walk: Walk, setting: Setting) -> Array:
+    """Bounds of all filters and both signs of a setting, some filters at a time. (2 F,)"""
+    found = np.empty((walk.filters, 2))
+    for start in range(0, walk.filters, FILTERS_TOGETHER):
+        part = slice(start, min(start + FILTERS_TOGETHER, walk.filters))
+        found[part] = np.min([_closed_form(walk, setting, part, pair) for pair in range(walk.pairs)], axis=0)
+    return walk.buildable(setting, found).ravel()
+
+
+def _closed_form(walk: Walk, setting: Setting, part: slice, pair: int) -> Array:
+    program = walk.assembly.program(setting, part, coarse=True, pair=pair)
     both = [check_bound(side, simple_proof(side)[0], np.inf) for side in (program, flipped(program))]
-    return np.stack(both, axis=1).ravel()
+    return np.stack(both, axis=1)
 
 
 def _check_winner(walk: Walk, solution: Solution) -> float:
     """Winner's point against the arrays, and its recipe against the forward model."""
     certificate = solution.certificate
-    value = check_point(walk.programs(np.array([solution.winner]), coarse=False), solution.point, certificate.value)
+    winner = solution.winner
+    value = check_recipe(walk.every_pair(winner), solution.point, certificate.value, walk.space(winner), solution.units)
     same = evaluate(solution.problem, solution.optimum.design, junction_c=certificate.junction_c)
     if not abs(same.cnr / value - 1) <= FORWARD_TOLERANCE:
         raise CertificateError(

@@ -15,10 +15,12 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from codesign.build import Box, Units, tightened
-from codesign.certificate import Line
+from codesign.certificate import Line, Proof
 from codesign.certificate_build import BuildLeaf, BuildSpace, BuildSplit, restricted
+from codesign.certificate_pairs import PairProof
 from codesign.program import Array, Program
 from codesign.search.frontier import Certified, Hint, certify
+from codesign.search.pairs import CertifiedPairs, certify_pairs
 
 #: Share of the gap left to each box's own proof.
 OWN_SHARE = 0.25
@@ -27,7 +29,7 @@ DUST = 1e-6
 #: Boxes explored at most; the honest gap is reported then.
 LARGEST_NUMBER_OF_BOXES = 20000
 
-Solve = Callable[[Sequence[Program], float, float, Hint | None], Certified]
+Solve = Callable[[Sequence[Program], float, float, Hint | None], Certified | CertifiedPairs]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -53,7 +55,8 @@ class _Node:
 
     box: Box | None
     bound: float = 0.0
-    proof: object | None = None
+    proof: Proof | PairProof | None = None
+    pair: int | None = 0
     use: Array | None = None
     worth: Array | None = None
     hint: Hint | None = None
@@ -63,9 +66,14 @@ class _Node:
     above: _Node | None = None
 
 
-def single(programs: Sequence[Program], gap: float, target: float, hint: Hint | None) -> Certified:
+def one_pair(programs: Sequence[Program], gap: float, target: float, hint: Hint | None) -> Certified:
     """One pair: the frontier."""
     return certify(programs[0], gap, target, hint)
+
+
+def all_pairs(programs: Sequence[Program], gap: float, target: float, hint: Hint | None) -> CertifiedPairs:
+    """Several pairs: the worst of them."""
+    return certify_pairs(programs, gap, target)
 
 
 @dataclass(slots=True)
@@ -104,7 +112,8 @@ class _Search:
         found = self.solve(small, own, self.cutoff / (1 + own), _fitted(hint, names, small[0]))
         use, worth = self._use(small[0], found.point)
         lit = np.flatnonzero(use > DUST)
-        node = _Node(box, found.bound, found.proof, use * box.high, worth, names=small[0].row_names)
+        node = _Node(box, found.bound, found.proof, use=use * box.high, worth=worth, names=small[0].row_names)
+        node.pair = getattr(found, "pair", 0)
         ceiling = getattr(found.proof, "ceiling", None)
         if ceiling is not None:
             node.hint = Hint(ceiling, lit, max(found.value, 1e-12))
@@ -192,7 +201,6 @@ def certify_build(
     target: float = 0.0,
     hint: Hint | None = None,
     *,
-    solve: Solve = single,
     stop: Callable[[], bool] = lambda: False,
     known: Units | None = None,
 ) -> Built:
@@ -209,14 +217,12 @@ def certify_build(
         CNR reached elsewhere: boxes that cannot beat it by more than the gap are left.
     hint : Hint, optional
         From a cheaper bound of the same configuration.
-    solve : function
-        Certifies the programs of one box.
     stop : function
         Asked between boxes; True ends the search with the gap reached.
     known : (L,) int array, optional
         A choice worth trying first.
     """
-    search = _Search(programs, space, gap, target, solve)
+    search = _Search(programs, space, gap, target, one_pair if len(programs) == 1 else all_pairs)
     if known is not None:
         search.offer(np.asarray(known, dtype=np.int64))
     root = search.node(space.root, None, hint)
@@ -244,7 +250,7 @@ def certify_build(
 def _tree(node: _Node) -> tuple[BuildLeaf | BuildSplit, float]:
     """The branching record, and the largest bound of its leaves."""
     if node.split is None:
-        return BuildLeaf(node.proof), max(node.bound, 0.0)
+        return BuildLeaf(node.proof, node.pair or 0), max(node.bound, 0.0)
     below, above = _tree(node.below), _tree(node.above)
     return BuildSplit(*node.split, below[0], above[0]), max(below[1], above[1])
 
@@ -263,3 +269,12 @@ def _fitted(hint: Hint | None, names: tuple[str, ...], program: Program) -> Hint
             limit[0, k] = hint.ceiling.limit[0, place[name]]
     ceiling: Line = replace(hint.ceiling, limit=limit)
     return Hint(ceiling, leds, hint.promise)
+
+
+def polish_build(programs: Sequence[Program], space: BuildSpace, found: Built, gap: float) -> Built:
+    """Work out the best recipe for the units found to a smaller gap; the bound over all choices stays."""
+    search = _Search(programs, space, gap, 0.0, one_pair if len(programs) == 1 else all_pairs)
+    search.offer(found.units)
+    if search.value <= found.value:
+        return found
+    return replace(found, point=search.point, value=search.value, bound=max(found.bound, search.value))

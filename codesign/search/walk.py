@@ -14,16 +14,23 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from codesign.assemble import Assembly
+from codesign.build import Units, affordable, choosing
 from codesign.certificate import Proof
+from codesign.certificate_build import BuildLeaf, BuildSpace, BuildSplit, build_space
+from codesign.certificate_pairs import PairProof, pair_contrasts
 from codesign.limits import Setting
 from codesign.program import Array, Program, stack
 from codesign.search.bounds import both_bounds
+from codesign.search.build import Built, certify_build, polish_build
 from codesign.search.frontier import Certified, Hint, certify
+from codesign.search.pairs import CertifiedPairs, certify_pairs, polish_pairs
 from codesign.search.tighten import Tightening
 
 SIGNS = (1, -1)
 #: Configurations refined together on rung 1: first few, to get a good target early, then many.
 FIRST_CHUNK, LARGEST_CHUNK = 48, 384
+#: Filters bounded together on rung 0, to bound the memory.
+FILTERS_TOGETHER = 4096
 #: Rounds of tightening on rung 1.
 ROUNDS = 6
 
@@ -48,12 +55,20 @@ class Tally:
 
 @dataclass(slots=True)
 class Evidence:
-    """Multipliers that bound some configurations by one pair, kept for the checker: indices and their proof."""
+    """Multipliers that bound some configurations, kept for the checker: indices and their proof.
+
+    A `Proof` bounds them by the pair ``pair`` alone, a `PairProof` one configuration by all pairs together,
+    a `BuildLeaf` or `BuildSplit` one configuration over all whole choices of LEDs.
+    """
 
     index: np.ndarray
-    proof: Proof
+    proof: Proof | PairProof | BuildLeaf | BuildSplit
     coarse: bool
     pair: int = 0
+
+
+def _never() -> bool:
+    return False
 
 
 @dataclass(slots=True)
@@ -66,12 +81,18 @@ class Walk:
     assembly: Assembly
     gap: float = 1e-3
     progress: Callable[[float, float], None] | None = None
+    stop: Callable[[], bool] = _never
+    #: CNR at which the search may end; configurations that stay below it are of no interest.
+    enough: float | None = None
     upper: Array = field(init=False)
     refined: np.ndarray = field(init=False)
-    found: dict[int, Certified] = field(init=False, default_factory=dict)
+    found: dict[int, Certified | CertifiedPairs | Built] = field(init=False, default_factory=dict)
     evidence: list[Evidence] = field(init=False, default_factory=list)
     tally: Tally = field(init=False, default_factory=Tally)
     hints: dict[int, Hint] = field(init=False, default_factory=dict)
+    pair_order: list[int] = field(init=False)
+    #: Least target against which a configuration was certified, ``inf`` where it never was.
+    tried: Array = field(init=False)
 
     closed_form: bool = True
 
@@ -81,6 +102,8 @@ class Walk:
         if self.closed_form:
             self.upper = np.concatenate([self._closed_form(setting) for setting in self.assembly.settings])
         self.refined = np.zeros(count, dtype=bool)
+        self.tried = np.full(count, np.inf)
+        self.pair_order = list(range(self.pairs))
         self.tally.configurations = count
 
     @classmethod
@@ -126,14 +149,38 @@ class Walk:
         filters = np.arange(self.filters) == chosen.filter
         return np.repeat((camera[:, None] & filters).ravel(), 2)
 
-    def seed(self, known: Configuration) -> None:
-        """Certify a configuration likely to be best first, so that others are dropped sooner."""
-        number = self.assembly.settings.index(known.setting)
-        self._certify((number * self.filters + known.filter) * 2 + SIGNS.index(known.sign), 0.0)
+    def number(self, known: Configuration) -> int:
+        """Number of a configuration."""
+        setting = self.assembly.settings.index(known.setting)
+        return (setting * self.filters + known.filter) * 2 + SIGNS.index(known.sign)
 
-    def polish(self, index: int, gap: float) -> Certified:
-        """Work out a configuration already certified to a smaller gap, and return it."""
-        if self.found[index].gap > gap:
+    def seed(self, known: Configuration, found: Certified | CertifiedPairs | Built) -> None:
+        """Certify a configuration likely to be best first, so that others are dropped sooner."""
+        self._certify(self.number(known), self._aim(0.0), getattr(found, "units", None))
+
+    def _aim(self, value: float) -> float:
+        """CNR that others must beat by more than the gap to be of interest."""
+        return max(value, 0.0 if self.enough is None else self.enough / (1 + self.gap))
+
+    def space(self, index: int) -> BuildSpace:
+        """Whole choices of LEDs of one configuration."""
+        chosen = self.configuration(index)
+        return build_space(self.assembly.problem, chosen.setting.camera, chosen.filter)
+
+    def every_pair(self, index: int) -> list[Program]:
+        """Build the full program of one configuration for each pair."""
+        return [self.programs(np.array([index]), coarse=False, pair=pair) for pair in range(self.pairs)]
+
+    def polish(self, index: int, gap: float) -> Certified | CertifiedPairs | Built:
+        """Work out a configuration already certified to a smaller gap, and return it.
+
+        With several pairs or build limits the recipe is improved to its best and the bound stays.
+        """
+        if isinstance(self.found[index], Built):
+            self.found[index] = polish_build(self.every_pair(index), self.space(index), self.found[index], gap)
+        elif self.pairs > 1:
+            self.found[index] = polish_pairs(self.every_pair(index), self.found[index])
+        elif self.found[index].gap > gap:
             program = self.programs(np.array([index]), coarse=False)
             result = certify(program, gap, 0.0, self.hints.get(int(index)))
             if result.value >= self.found[index].value:
@@ -145,26 +192,36 @@ class Walk:
     def best(self, allowed: np.ndarray | None = None) -> int | None:
         """Return the certified best of the allowed configurations, or None where none has any contrast.
 
-        On return no allowed configuration's bound exceeds the best value by more than the gap.
+        On return no allowed configuration's bound exceeds the best value by more than the gap, but for those whose
+        own search ended with a larger one. `stop` and `enough` end the search earlier.
         """
         allowed = np.ones(self.upper.size, dtype=bool) if allowed is None else allowed
         chunk = FIRST_CHUNK
         while True:
             leader, value = self._leader(allowed)
-            open_ = np.flatnonzero(allowed & (self.upper > max(value * (1 + self.gap), 0.0)))
+            aim = self._aim(value)
+            open_ = np.flatnonzero(allowed & (self.upper > max(aim * (1 + self.gap), 0.0)) & (self.tried > aim))
             if leader is not None:
                 open_ = open_[open_ != leader]
             if self.progress is not None:
                 self.progress(value, float(self.upper[open_].max(initial=value)))
-            if open_.size == 0:
+            if open_.size == 0 or self._done(leader, value):
                 return leader
             rough = open_[~self.refined[open_]]
             top = open_[np.argmax(self.upper[open_])]
             if self.refined[top]:
-                self._certify(top, value)
+                self._certify(top, aim)
             else:
-                self._refine(rough[np.argsort(-self.upper[rough])[:chunk]], value)
+                self._refine(rough[np.argsort(-self.upper[rough])[:chunk]], aim)
                 chunk = min(2 * chunk, LARGEST_CHUNK)
+
+    def _done(self, leader: int | None, value: float) -> bool:
+        return leader is not None and (self.stop() or (self.enough is not None and value >= self.enough))
+
+    @property
+    def leader(self) -> int | None:
+        """The best configuration certified so far."""
+        return self._leader(np.ones(self.upper.size, dtype=bool))[0]
 
     def _leader(self, allowed: np.ndarray) -> tuple[int | None, float]:
         inside = [i for i in self.found if allowed[i] and self.found[i].value > 0]
@@ -176,17 +233,26 @@ class Walk:
     def _closed_form(self, setting: Setting) -> Array:
         """Rung 0 for all filters and both signs of a setting, (2 F,): the least bound of any pair."""
         least = np.full((self.filters, 2), np.inf)
-        for pair in range(self.pairs):
-            least = np.minimum(least, both_bounds(self.assembly.program(setting, coarse=True, pair=pair)))
-        return least.ravel()
+        for start in range(0, self.filters, FILTERS_TOGETHER):
+            part = slice(start, min(start + FILTERS_TOGETHER, self.filters))
+            for pair in range(self.pairs):
+                bounds = both_bounds(self.assembly.program(setting, part, coarse=True, pair=pair))
+                least[part] = np.minimum(least[part], bounds)
+        return self.buildable(setting, least).ravel()
+
+    def buildable(self, setting: Setting, bounds: Array) -> Array:
+        """Bounds (F, 2) of a setting, 0 where camera and filter leave too little of the budget."""
+        if choosing(self.assembly.problem):
+            bounds[~affordable(self.assembly.problem, setting.camera)] = 0.0
+        return bounds
 
     def _refine(self, index: np.ndarray, target: float) -> None:
         """Rung 1: tighten until a configuration is out of the race or a few rounds are over."""
         self.refined[index] = True
         self.tally.refined += index.size
         for part in self._same_columns(index):
-            for pair in range(self.pairs):
-                part = part[self.upper[part] > target * (1 + self.gap)] if pair else part
+            for pair in list(self.pair_order):
+                part = part[self.upper[part] > target * (1 + self.gap)]
                 if part.size:
                     target = self._tighten(part, pair, target)
 
@@ -196,7 +262,7 @@ class Walk:
         if not self.found:
             self._suggest(part, state)
             self._certify(int(part[int(np.argmax(state.own))]), target)
-            target = self._leader(np.ones(self.upper.size, dtype=bool))[1]
+            target = max(target, self._leader(np.ones(self.upper.size, dtype=bool))[1])
         for _ in range(ROUNDS):
             open_ = (state.bound > target * (1 + self.gap)) & ~state.settled(target)
             self._record(part[~open_], pair, state.take(np.flatnonzero(~open_)))
@@ -210,8 +276,8 @@ class Walk:
     def _record(self, part: np.ndarray, pair: int, state: Tightening) -> None:
         """Keep the bounds of some configurations by one pair and what proves them."""
         if part.size:
-            self.upper[part] = np.minimum(self.upper[part], state.bound)
             self.evidence.append(Evidence(part, state.proof(), coarse=True, pair=pair))
+            self.upper[part] = np.minimum(self.upper[part], state.bound)
             self._suggest(part, state)
 
     def _suggest(self, part: np.ndarray, state: Tightening) -> None:
@@ -224,11 +290,25 @@ class Walk:
         levels = np.array([self.assembly.settings[i // (2 * self.filters)].level.name for i in index])
         return [index[levels == name] for name in dict.fromkeys(levels)]
 
-    def _certify(self, index: int, target: float) -> None:
+    def _certify(self, index: int, target: float, units: Units | None = None) -> None:
         """Rung 2."""
         self.tally.certified += 1
-        program = self.programs(np.array([index]), coarse=False)
-        result = certify(program, self.gap, target, self.hints.get(int(index)))
+        pair = 0
+        if choosing(self.assembly.problem):
+            result = certify_build(
+                self.every_pair(index), self.space(index), self.gap, target, self.hints.get(int(index)),
+                stop=self.stop, known=units,
+            )  # fmt: skip
+        elif self.pairs == 1:
+            program = self.programs(np.array([index]), coarse=False)
+            result = certify(program, self.gap, target, self.hints.get(int(index)))
+        else:
+            programs = self.every_pair(index)
+            result = certify_pairs(programs, self.gap, target, first=self.pair_order[0])
+            self.pair_order = [int(k) for k in np.argsort(pair_contrasts(programs, result.point))]
+            pair = result.pair
+        # Evidence first: an interrupt must not leave a bound that nothing proves.
+        self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False, pair=pair))
         self.found[int(index)] = result
+        self.tried[index] = min(self.tried[index], target)
         self.upper[index] = min(self.upper[index], result.bound)
-        self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False))
