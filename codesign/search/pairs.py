@@ -1,9 +1,9 @@
 """The certified optimum of one configuration over several pairs: the largest worst CNR, by branch and bound on cells.
 
-The most limiting pair alone often settles it; its frontier is tried first. Otherwise cells of the recipes are split at
-the shot-noise variance of the pair whose chord errs most (`codesign.certificate_pairs`), best-first, until no cell could
-hold anything better. Recipes come from the relaxations, improved by convex-concave steps: the concave part of each noise
-is replaced by its tangent, which restricts the problem and never makes a recipe worse.
+The most limiting pair alone often settles it; its frontier is tried first. Otherwise cells of the recipes are split,
+best-first, at the shot-noise variance of the pair that falls short by most (`codesign.certificate_pairs`), until no
+cell could hold anything better. Recipes come from the relaxations, improved by convex-concave steps: the concave part
+of each noise is replaced by its tangent, which restricts the problem and never makes a recipe worse.
 """
 
 from __future__ import annotations
@@ -132,10 +132,10 @@ class _Search:
         found = []
         for k, program in enumerate(self.programs):
             line, top = simple_ceiling(replace(program, signal=program.shot))
+            nothing = np.zeros_like(self.floor)
             leaf = Leaf(
-                level=0.0, weight=np.zeros_like(self.floor), share=np.zeros_like(self.floor),
-                noise=tuple(np.zeros(len(p.noise_rows[0])) for p in self.programs), limit=line.limit[0], heat=line.heat[0],
-                below=np.eye(len(self.programs))[k], above=np.zeros_like(self.floor),
+                level=0.0, weight=nothing, share=nothing, noise=tuple(np.zeros(len(p.noise_rows[0])) for p in self.programs),
+                limit=line.limit[0], heat=line.heat[0], below=np.eye(len(self.programs))[k], above=nothing,
             )  # fmt: skip
             found.append((float(top[0]) * (1 + 1e-6), leaf))
         return found
@@ -148,17 +148,16 @@ class _Search:
         return _Node(low, high, step, leaf)
 
     def split(self, node: _Node, level: float) -> None:
-        """Cut a cell where the pair whose chord errs most has its relaxed recipe."""
-        h = self.shot @ node.step.point
+        """Cut a cell where its relaxed recipe is, for the pair that falls short of the level by most."""
+        y = node.step.point
+        h = self.shot @ y
         lines = np.array([chord(*args) for args in zip(self.floor, node.low, node.high, strict=True)])
-        error = (np.sqrt(self.floor + h) - lines[:, 0] - lines[:, 1] * h) * node.leaf.weight * node.leaf.share
-        pair = int(np.argmax(error))
-        at = float(h[pair])
-        if np.isfinite(node.high[pair]):
-            room = 0.1 * (node.high[pair] - node.low[pair])
-            at = float(np.clip(at, node.low[pair] + room, node.high[pair] - room))
-        elif not at > node.low[pair]:
-            at = float(2 * node.low[pair] + self.floor[pair])
+        root = np.sqrt(self.floor + h)
+        error = 1.0 - (lines[:, 0] + lines[:, 1] * h) / root
+        missing = 1.0 - pair_contrasts(self.programs, y) / level
+        pair = int(np.argmax(np.minimum(error, missing)))
+        room = 0.1 * (node.high[pair] - node.low[pair])
+        at = float(np.clip(h[pair], node.low[pair] + room, node.high[pair] - room))
         cut = np.arange(len(self.programs)) == pair
         node.pair, node.at = pair, at
         node.parts = (
