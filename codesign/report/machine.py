@@ -61,14 +61,16 @@ from __future__ import annotations
 import json
 import math
 from dataclasses import asdict
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import codesign
 from codesign.design import Design, Performance
 from codesign.problem import Problem
 from codesign.report.cautions import cautions
-from codesign.solve import Solution
-from codesign.verify import Verdict
+
+if TYPE_CHECKING:
+    from codesign.solve import Solution
+    from codesign.verify import Verdict
 
 SOLUTION_SCHEMA = "codesign.solution/1"
 PERFORMANCE_SCHEMA = "codesign.performance/1"

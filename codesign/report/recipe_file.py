@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from pydantic import Field, ValidationError
 
@@ -13,7 +13,9 @@ from codesign.design import Design
 from codesign.errors import ProblemError
 from codesign.problem import read_toml
 from codesign.report.output import plain, write_file
-from codesign.solve import Solution
+
+if TYPE_CHECKING:
+    from codesign.solve import Solution
 
 
 class Recipe(Record):

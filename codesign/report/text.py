@@ -4,14 +4,17 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable
+from typing import TYPE_CHECKING
 
 from codesign.design import Design, LimitUse, Performance
 from codesign.problem import Problem
 from codesign.report.cautions import cautions
 from codesign.report.layout import NARROWEST, bar, bullet, heading, labelled, number, percent, table
 from codesign.report.output import plain
-from codesign.solve import Solution
-from codesign.verify import Verdict
+
+if TYPE_CHECKING:
+    from codesign.solve import Solution
+    from codesign.verify import Verdict
 
 CNR_DEFINITION = "|target mean - background mean| / √(mean of their two variances)"
 
