@@ -70,7 +70,7 @@ def channel_irradiance(problem: Problem, channel: LedChannel, junction_c: float)
     The junction temperature scales the flux and shifts the peak.
     """
     led = channel.led
-    shift = led.peak_shift_nm_per_k * (junction_c - led.reference_junction_c)
+    shift = channel.peak_shift_nm + led.peak_shift_nm_per_k * (junction_c - led.reference_junction_c)
     flux = flux_at_temperature(junction_c, led.flux_temperature_coefficient_per_k, led.reference_junction_c)
     return led.spectrum(problem.grid, shift) * (float(flux) * channel.delivery)
 

@@ -115,6 +115,9 @@ class Camera(Part):
     readout_ms: float = Field(default=0.0, ge=0, description="time per frame in which no exposure can run [ms]")
     gains: tuple[Gain, ...] = Field(default=(Gain(gain_db=0.0),), min_length=1, description="gain settings")
     channels: tuple[Channel, ...] = Field(min_length=1, description="one 'mono' or several colours")
+    response_factor: float = Field(
+        default=1.0, gt=0, le=10, description="quantum efficiency of this piece relative to its stated curves"
+    )
 
     @model_validator(mode="after")
     def _check(self) -> Self:
@@ -195,8 +198,10 @@ class Camera(Part):
         CoverageError
             When the curve does not cover the grid and does not state ``outside = "zero"``.
         """
+        return self.response_factor * self._stated_efficiency(channel, np.asarray(grid_nm, dtype=np.float64))
+
+    def _stated_efficiency(self, channel: str, grid: FloatArray) -> FloatArray:
         chosen = self.channel(channel)
-        grid = np.asarray(grid_nm, dtype=np.float64)
         if chosen.silicon is not None:
             return silicon_quantum_efficiency(grid, **chosen.silicon.model_dump())
         table = self._checked_table(chosen)

@@ -24,7 +24,7 @@ FilterKind = Literal["curve", "bandpass", "longpass", "shortpass", "neutral", "g
 
 _EDGE = frozenset({"edge_width_nm", "peak_transmittance", "blocking_od"})
 _BLOCKED_RANGE = frozenset({"blocking_from_nm", "blocking_to_nm"})
-_TILT = frozenset({"effective_index"})
+_TILT = frozenset({"effective_index", "shift_nm"})
 # kind → (fields it needs, fields it may have)
 KIND_FIELDS: Mapping[str, tuple[frozenset[str], frozenset[str]]] = {
     "curve": (frozenset({"curve", "unit"}), frozenset({"column"}) | _TILT),
@@ -34,7 +34,7 @@ KIND_FIELDS: Mapping[str, tuple[frozenset[str], frozenset[str]]] = {
     "neutral": (frozenset({"optical_density"}), frozenset()),
     "glass": (
         frozenset({"curve", "unit", "reference_thickness_mm", "thickness_mm", "refractive_index"}),
-        frozenset({"column"}),
+        frozenset({"column", "shift_nm"}),
     ),
     "stack": (frozenset({"parts"}), frozenset()),
     "none": (frozenset(), frozenset()),
@@ -82,6 +82,12 @@ class Filter(Part):
         ge=1,
         le=5,
         description="effective index of the tilt law; leave out for absorbing filters",
+    )
+    shift_nm: float | None = Field(
+        default=None,
+        ge=-100,
+        le=100,
+        description="how far this piece lies above its stated wavelengths [nm]; the ends of a curve are held",
     )
 
     @model_validator(mode="after")
@@ -186,13 +192,14 @@ class Filter(Part):
 
     def _curve_transmittance(self, grid: FloatArray, angles: FloatArray, weights: FloatArray) -> FloatArray:
         curve = self._measured()
-        if self.effective_index is None:
+        if self.effective_index is None and not self.shift_nm:
             return curve.resample(grid)
         if not curve.covers(grid.min(), grid.max()):
             curve.resample(grid)  # raises with both ranges
-        return model.tilted_transmittance(
-            curve.wavelength_nm, curve.values, grid, angles, weights, self.effective_index
-        )
+        own_nm = curve.wavelength_nm + (self.shift_nm or 0.0)
+        if self.effective_index is None:
+            return np.interp(grid, own_nm, curve.values)
+        return model.tilted_transmittance(own_nm, curve.values, grid, angles, weights, self.effective_index)
 
     def _blocked_range(self) -> tuple[float, float]:
         lo = 0.0 if self.blocking_from_nm is None else self.blocking_from_nm
@@ -201,6 +208,10 @@ class Filter(Part):
 
     def _normal_incidence(self) -> Transmittance:
         """Return the transmittance at normal incidence as a function of wavelength."""
+        stated, shift = self._stated_normal_incidence(), self.shift_nm or 0.0
+        return (lambda wavelength: stated(wavelength - shift)) if shift else stated
+
+    def _stated_normal_incidence(self) -> Transmittance:
         if self.kind == "none":
             return np.ones_like
         if self.kind == "neutral":
@@ -215,7 +226,8 @@ class Filter(Part):
         return self._opened(lambda x: formula(x, self.cut_nm, **edge))
 
     def _glass(self, wavelength: FloatArray) -> FloatArray:
-        internal = self._measured().resample(wavelength)
+        # A shifted piece is asked for a little outside its curve.
+        internal = self._measured().resample(wavelength, outside="edge" if self.shift_nm else "error")
         ratio = self.thickness_mm / self.reference_thickness_mm
         return model.glass_transmittance(internal, ratio, self.refractive_index)
 

@@ -32,6 +32,9 @@ class Surface(Part):
     specular_reflectance: float = Field(
         default=0.0, ge=0, le=1, description="mirror-like share, 0 to 1; divide percent by 100"
     )
+    reflectance_factor: float = Field(
+        default=1.0, gt=0, le=10, description="reflectance relative to the stated samples, e.g. of a corrected standard"
+    )
     tags: tuple[str, ...] = Field(default=(), description="free words for selection")
 
     @property
@@ -42,7 +45,8 @@ class Surface(Part):
             table = table.keep(self.columns)
         check_share(table, self.unit, top=LARGEST_REFLECTANCE)
         curves = table.spectrum
-        return Spectrum(curves.wavelength_nm, curves.values * percent_factor(self.unit), table.label)
+        factor = percent_factor(self.unit) * self.reflectance_factor
+        return Spectrum(curves.wavelength_nm, curves.values * factor, table.label)
 
     def range(self) -> tuple[float, float]:
         """Return the wavelengths covered. [nm]"""

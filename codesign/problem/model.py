@@ -33,6 +33,8 @@ class LedChannel:
         Weight of mirror-like reflection. [1]
     driver_max_ma : float
         Driver limit, ``inf`` where none. [mA]
+    peak_shift_nm : float
+        How far these emitters lie above the stated wavelengths. [nm]
     """
 
     led: Led
@@ -40,6 +42,7 @@ class LedChannel:
     delivery: float
     specular_weight: float
     driver_max_ma: float
+    peak_shift_nm: float = 0.0
 
     @property
     def id(self) -> str:
