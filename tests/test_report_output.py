@@ -102,3 +102,13 @@ def test_progress_shows_on_a_terminal_only_and_wipes_itself(monkeypatch):
     assert "best CNR 5" in terminal.getvalue()
     assert terminal.getvalue().endswith(" \r")
     assert pipe.getvalue() == ""
+
+
+def test_progress_keeps_the_best_while_runners_up_are_looked_for(monkeypatch):
+    monkeypatch.setattr("codesign.report.output.QUIET_SECONDS", 0.0)
+    terminal = _Terminal()
+    progress = Progress(terminal)
+    progress(5.0, 7.0)
+    progress(0.0, 4.0)
+    assert "best CNR 5, none above 7" in terminal.getvalue()
+    assert "best CNR 5, looking for runners-up" in terminal.getvalue()

@@ -107,13 +107,17 @@ class Progress:
         self.watched = self.stream.isatty()
         self.started = time.monotonic()
         self.width = 0
+        self.best = 0.0
 
     def __call__(self, best: float, bound: float) -> None:
         """Show the best CNR so far and the bound on what is left."""
         seconds = time.monotonic() - self.started
+        self.best = max(self.best, best)
         if not self.watched or seconds < QUIET_SECONDS:
             return
-        line = f"searching {seconds:.0f} s: best CNR {best:.4g}, none above {bound:.4g}"
+        # A search among fewer parts starts from nothing again: it is after runners-up.
+        doing = f"none above {bound:.4g}" if best >= self.best else "looking for runners-up"
+        line = f"searching {seconds:.0f} s: best CNR {self.best:.4g}, {doing}"
         self.stream.write("\r" + line.ljust(self.width))
         self.stream.flush()
         self.width = len(line)
