@@ -18,6 +18,8 @@ from codesign.program import Array
 OFF = 1e-6
 #: Share of the optimum's CNR that is not worth another step.
 GOOD_ENOUGH = 1e-4
+#: Currents tried in turn, as shares of the design's, where it exceeds a limit at the temperatures it leads to. [1]
+DIMMINGS = (1.0, 0.995, 0.99, 0.98, 0.96, 0.92, 0.85, 0.7, 0.5)
 #: Rounds of looking for a better neighbour.
 LARGEST_NUMBER_OF_ROUNDS = 60
 
@@ -60,15 +62,20 @@ def design_at(
 def settable(problem: Problem, design: Design) -> tuple[Design, Performance] | None:
     """Round a design to steps inside all limits and climb from there. None when no step fits."""
     reference = evaluate(problem, design).cnr
+    for dimming in DIMMINGS:
+        trials = [evaluate(problem, trial) for trial in _rounded_down(problem, design, dimming)]
+        start = max((result for result in trials if result.feasible), key=lambda result: result.cnr, default=None)
+        if start is not None:
+            return _climb(problem, design, start, reference)
+    return None
+
+
+def _rounded_down(problem: Problem, design: Design, dimming: float) -> Iterator[Design]:
+    """Currents in whole steps, not above those of the design; exposures to either side."""
     step_ma = problem.spec.lighting.drive_step_ma
-    start = None
     for exposure in _exposures(problem, design):
-        lower = {led: _steps(np.floor(ma / step_ma + 1e-6), step_ma) for led, ma in design.drive_ma.items()}
-        trial = replace(design, exposure_us=exposure, drive_ma={k: v for k, v in lower.items() if v > 0})
-        result = evaluate(problem, trial)
-        if result.feasible and (start is None or result.cnr > start.cnr):
-            start = result
-    return None if start is None else _climb(problem, design, start, reference)
+        lower = {led: _steps(np.floor(ma * dimming / step_ma + 1e-6), step_ma) for led, ma in design.drive_ma.items()}
+        yield replace(design, exposure_us=exposure, drive_ma={k: v for k, v in lower.items() if v > 0})
 
 
 def _steps(count: float, step: float) -> float:

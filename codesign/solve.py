@@ -16,7 +16,7 @@ from codesign.problem import Problem
 from codesign.program import Array
 from codesign.recipe import design_at, settable
 from codesign.search.walk import Evidence, Tally, Walk
-from codesign.solve_rounds import POLISH_GAP, Clock, Search, default_gap, search_rounds
+from codesign.solve_rounds import POLISH_GAP, Clock, Search, search_rounds
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -126,7 +126,7 @@ def solve(
     True
     """
     started = time.perf_counter()
-    gap = default_gap(problem) if gap is None else gap
+    gap = problem.spec.solver.gap if gap is None else gap
     wanted = problem.spec.solver.alternatives if alternatives is None else alternatives
     clock = Clock.lasting(time_limit)
     search = search_rounds(problem, gap, progress=progress, clock=clock)
