@@ -17,6 +17,8 @@ from dataclasses import dataclass, fields, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from codesign.errors import SolveError
+
 Array = NDArray[np.float64]
 
 
@@ -84,8 +86,15 @@ class Program:
 
 
 def stack(blocks: list[Program]) -> Program:
-    """Join blocks that share columns and row names."""
+    """Join blocks that share columns and row names.
+
+    Raises SolveError for others: they would be judged by the current and heat limits of the first.
+    """
     shared = ("row_names", "width", "led", "heat", "heat_cap")
+    for name in shared:
+        first = getattr(blocks[0], name)
+        if not all(np.array_equal(first, getattr(block, name)) for block in blocks[1:]):
+            raise SolveError(f"programs with other columns cannot be stacked: their {name} differ")
     merged = {
         f.name: np.concatenate([getattr(b, f.name) for b in blocks]) for f in fields(Program) if f.name not in shared
     }
