@@ -1,0 +1,1 @@
+"""What if: studies of many related problems, each point certified."""
