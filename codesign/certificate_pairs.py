@@ -1,6 +1,7 @@
 """Rigorous upper bound on the worst of several CNRs of one configuration: the proof and its checker.
 
-Pairs k share the recipe ``y`` and its limits; signal ``d_k·y`` and noise ``σ_k(y) = √(c_k + s_k·y + |R_k y|²)`` are their own.
+Pairs k share the recipe ``y`` and its limits; each has its own signal ``d_k·y`` and noise ``σ_k(y)``, whose square is
+``c_k + s_k·y + |R_k y|²``.
 A *cell* is the part of all recipes with ``low_k ≤ s_k·y ≤ high_k``. There the square root lies above its chord
 ``e_k(y) = a_k + b_k s_k·y`` (without an upper end: above ``√(c_k + low_k)``), so that for every ``α_k² + |g_k|² ≤ 1``
 

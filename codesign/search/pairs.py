@@ -32,14 +32,18 @@ from codesign.search.bounds import simple_ceiling
 from codesign.search.cone import ConeProgram, Step
 from codesign.search.frontier import certify
 
+#: Pairs certified alone before all are taken together.
+ALONE = 2
 #: Cells after which an honest gap is reported instead.
 LARGEST_NUMBER_OF_CELLS = 200
 #: Convex-concave steps from one start, and the relative gain below which they end.
 LARGEST_NUMBER_OF_STEPS, LEAST_GAIN = 12, 1e-5
 #: The same for the last polish.
 POLISHING_STEPS, POLISHING_GAIN = 60, 1e-10
+#: Share of an LED's reach below which it counts as off where a search starts. [1]
+DUST = 1e-3
 #: Pairs this close to the worst one enter the cone programs at once. [1]
-CLOSE = 0.2
+CLOSE = 0.03
 #: A positive level for pairs that no recipe seen so far shows with the wanted sign, relative to what is asked.
 NO_LEVEL = 1e-6
 
@@ -82,7 +86,8 @@ class _Search:
 
     def __init__(self, programs: Sequence[Program], start: Array, tolerance: float) -> None:
         self.programs = programs
-        lit = np.isin(programs[0].led, programs[0].led[start[:-1] > 0])
+        bright = start[:-1] > DUST * programs[0].width * start[-1]
+        lit = np.isin(programs[0].led, programs[0].led[bright])
         self.cone = ConeProgram(programs, np.flatnonzero(lit), tolerance)
         self.floor = np.array([p.floor[0] for p in programs])
         self.shot = np.stack([p.shot[0] for p in programs])
@@ -132,9 +137,9 @@ class _Search:
         found = []
         for k, program in enumerate(self.programs):
             line, top = simple_ceiling(replace(program, signal=program.shot))
-            nothing = np.zeros_like(self.floor)
+            nothing, blank = np.zeros_like(self.floor), tuple(np.zeros(len(p.noise_rows[0])) for p in self.programs)
             leaf = Leaf(
-                level=0.0, weight=nothing, share=nothing, noise=tuple(np.zeros(len(p.noise_rows[0])) for p in self.programs),
+                level=0.0, weight=nothing, share=nothing, noise=blank,
                 limit=line.limit[0], heat=line.heat[0], below=np.eye(len(self.programs))[k], above=nothing,
             )  # fmt: skip
             found.append((float(top[0]) * (1 + 1e-6), leaf))
@@ -245,7 +250,7 @@ def _start(programs: Sequence[Program], found: CertifiedPairs, tolerance: float)
 def _by_one_pair(programs: Sequence[Program], gap: float, target: float, pair: int) -> CertifiedPairs:
     """Certify single pairs, next the one that limits the recipe found, while that lowers the bound."""
     best = None
-    for _ in programs:
+    for _ in programs[:ALONE]:
         one = certify(programs[pair], gap, target)
         value = worst_contrast(programs, one.point)
         found = CertifiedPairs(point=one.point, value=value, bound=one.bound, proof=one.proof, pair=pair)

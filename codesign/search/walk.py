@@ -31,6 +31,8 @@ SIGNS = (1, -1)
 FIRST_CHUNK, LARGEST_CHUNK = 48, 384
 #: Filters bounded together on rung 0, to bound the memory.
 FILTERS_TOGETHER = 4096
+#: Most pairs of target and background whose bounds are worked out for every configuration on rung 0.
+QUICK_PAIRS = 3
 #: Rounds of tightening on rung 1.
 ROUNDS = 6
 
@@ -90,6 +92,8 @@ class Walk:
     evidence: list[Evidence] = field(init=False, default_factory=list)
     tally: Tally = field(init=False, default_factory=Tally)
     hints: dict[int, Hint] = field(init=False, default_factory=dict)
+    #: Pairs on rung 0, and all pairs in the order in which they are likely to limit.
+    quick_pairs: list[int] = field(init=False, default_factory=list)
     pair_order: list[int] = field(init=False)
     #: Least target against which a configuration was certified, ``inf`` where it never was.
     tried: Array = field(init=False)
@@ -99,11 +103,12 @@ class Walk:
     def __post_init__(self) -> None:
         count = 2 * self.filters * len(self.assembly.settings)
         self.upper = np.full(count, np.inf)
+        self.pair_order = list(range(self.pairs))
         if self.closed_form:
+            self.quick_pairs = self._limiting_pairs()
             self.upper = np.concatenate([self._closed_form(setting) for setting in self.assembly.settings])
         self.refined = np.zeros(count, dtype=bool)
         self.tried = np.full(count, np.inf)
-        self.pair_order = list(range(self.pairs))
         self.tally.configurations = count
 
     @classmethod
@@ -235,10 +240,20 @@ class Walk:
         least = np.full((self.filters, 2), np.inf)
         for start in range(0, self.filters, FILTERS_TOGETHER):
             part = slice(start, min(start + FILTERS_TOGETHER, self.filters))
-            for pair in range(self.pairs):
+            for pair in self.quick_pairs:
                 bounds = both_bounds(self.assembly.program(setting, part, coarse=True, pair=pair))
                 least[part] = np.minimum(least[part], bounds)
         return self.buildable(setting, least).ravel()
+
+    def _limiting_pairs(self) -> list[int]:
+        """The pairs that most often have the least closed-form bound, judged by one setting; these do for rung 0."""
+        if self.pairs <= QUICK_PAIRS:
+            return list(range(self.pairs))
+        setting, part = self.assembly.settings[0], slice(0, min(self.filters, FILTERS_TOGETHER))
+        programs = (self.assembly.program(setting, part, coarse=True, pair=pair) for pair in range(self.pairs))
+        bounds = [both_bounds(program) for program in programs]
+        often = np.bincount(np.argmin(bounds, axis=0).ravel(), minlength=self.pairs)
+        return [int(pair) for pair in np.argsort(-often, kind="stable")[:QUICK_PAIRS]]
 
     def buildable(self, setting: Setting, bounds: Array) -> Array:
         """Bounds (F, 2) of a setting, 0 where camera and filter leave too little of the budget."""
