@@ -134,3 +134,15 @@ def test_all_kinds_are_read_from_one_folder(folder):
         "camera": ["mono-5mp"],
         "surface": ["paper"],
     }
+
+
+def test_held_edges_extend_a_surface_by_what_it_states(tmp_path):
+    (tmp_path / "s.csv").write_text("wavelength_nm,a,b\n500,0.2,0.3\n600,0.4,0.5\n", encoding="utf-8")
+    table = {"id": "s", "source": "test", "curve": "s.csv", "unit": "fraction"}
+    plain = Surface.from_table(table, base_dir=tmp_path)
+    held = Surface.from_table({**table, "hold_edges_nm": 30}, base_dir=tmp_path)
+    assert plain.range() == (500, 600)
+    assert held.range() == (470, 630)
+    np.testing.assert_allclose(held.mean([475, 550, 625]), [0.25, 0.35, 0.45])
+    with pytest.raises(CoverageError):
+        plain.mean([475])

@@ -35,18 +35,29 @@ class Surface(Part):
     reflectance_factor: float = Field(
         default=1.0, gt=0, le=10, description="reflectance relative to the stated samples, e.g. of a corrected standard"
     )
+    hold_edges_nm: float = Field(
+        default=0.0,
+        ge=0,
+        le=200,
+        description="how far beyond its measured ends the reflectance may be taken as constant [nm]",
+    )
     tags: tuple[str, ...] = Field(default=(), description="free words for selection")
 
     @property
     def samples(self) -> Spectrum:
-        """All samples as fractions, shape (k, n)."""
+        """All samples as fractions, shape (k, n), with held ends where the surface states them."""
         table = self.read_curve(self.curve)
         if self.columns is not None:
             table = table.keep(self.columns)
         check_share(table, self.unit, top=LARGEST_REFLECTANCE)
         curves = table.spectrum
         factor = percent_factor(self.unit) * self.reflectance_factor
-        return Spectrum(curves.wavelength_nm, curves.values * factor, table.label)
+        wavelength, values = curves.wavelength_nm, curves.values * factor
+        if self.hold_edges_nm:
+            ends = max(wavelength[0] - self.hold_edges_nm, 1.0), wavelength[-1] + self.hold_edges_nm
+            wavelength = np.concatenate([ends[:1], wavelength, ends[1:]])
+            values = np.concatenate([values[..., :1], values, values[..., -1:]], axis=-1)
+        return Spectrum(wavelength, values, table.label)
 
     def range(self) -> tuple[float, float]:
         """Return the wavelengths covered. [nm]"""
