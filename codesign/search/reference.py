@@ -93,7 +93,9 @@ def fixed_signal(program: Program, v: float) -> Slice:
     """``H(v) = min s·y + |R y|²`` over the limits and ``d·y = v``: the noise frontier at signal v. [e⁻²]"""
     model = _Model(program)
     electrons = max(float(np.max(np.abs(model.signal))), 1e-300)
-    unit = max(float(np.max(model.shot)) * max(abs(v), 1e-300) / electrons, 1e-300)
+    share = abs(v) / electrons
+    growing = float(np.max(np.abs(model.noise_rows), initial=0.0)) * share
+    unit = float(program.floor[0]) + float(np.max(model.shot)) * share + growing**2
     return model.least(model.noise(unit), unit, (model.signal / electrons) @ model.u == v / electrons)
 
 
