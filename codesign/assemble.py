@@ -157,6 +157,12 @@ class Assembly:
             raise self._conflict(conflicts)
         return tuple(self._without_dominated(found))
 
+    def at(self, junction_c: Array) -> Assembly:
+        """Return the same problem at other junction temperatures; the discrete choices do not depend on them."""
+        other = Assembly(self.problem, junction_c)
+        other.settings = self.settings
+        return other
+
     def _all_settings(self) -> Iterator[Setting]:
         spec = self.problem.spec
         wanted = spec.candidates

@@ -23,13 +23,20 @@ from codesign.problem import Problem
 from codesign.problem.choices import FilterChoices
 from codesign.program import Array
 from codesign.recipe import design_at, settable
+from codesign.search.frontier import Certified, Hint
 from codesign.search.walk import Configuration, Evidence, Walk
 from codesign.solve import Certificate, Solution
-from codesign.solve_rounds import JUNCTION_TOLERANCE_K, LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP, search_rounds, settle
+from codesign.solve_rounds import JUNCTION_TOLERANCE_K, LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP, search_rounds
 from codesign.study.multipliers import Multipliers
 
 #: So few configurations left open go to the last rung at once: cheaper than a batch.
 FEW = 12
+#: Relative change of the CNR below which junction temperatures that toggle between equal recipes are left as they are.
+INDIFFERENT = 1e-6
+#: Junction temperatures may be off by this much where it makes no difference. [K]
+LARGEST_RESIDUAL_K = 2.0
+#: Rounds over junction temperatures before it is asked whether they make a difference.
+PATIENCE = 3
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -65,6 +72,8 @@ class Resolved:
         Where related problems may start.
     multipliers : Multipliers
         What proved this one, to prove related ones.
+    hint : Hint or None
+        Where a search of the same configuration may start.
     """
 
     problem: Problem = field(repr=False)
@@ -72,6 +81,7 @@ class Resolved:
     certificate: Certificate
     known: Known
     multipliers: Multipliers = field(repr=False)
+    hint: Hint | None = field(repr=False)
     winner: int = field(repr=False)
     point: Array = field(repr=False)
     units: np.ndarray | None = field(repr=False)
@@ -148,25 +158,25 @@ def resolve(problem: Problem, near: Resolved | Known | Solution | None = None, *
     require_usable_leds(problem)
     require_buildable(problem)
     air = problem.spec.temperature.air_c
-    junction = np.array([known.junction_c.get(channel.id, air) for channel in problem.channels])
-    seed = _find(problem, junction, known)
+    assembly = Assembly(problem, np.array([known.junction_c.get(c.id, air) for c in problem.channels]))
+    seed = _find(assembly, known)
     if seed is None:
         return _cold(problem, gap, carried)
     units = _units(problem, known)
-    junction = _settled(problem, junction, seed, units, gap)
+    hint = near.hint if isinstance(near, Resolved) else None
     for _ in range(LARGEST_NUMBER_OF_ROUNDS):
-        walk = Walk(Assembly(problem, junction), gap)
-        start = _start(walk, seed, units, carried)
+        first = _settled(assembly, seed, units, gap, hint)
+        walk = Walk(first.assembly, gap)
+        start = _start(walk, first, walk.number(seed), carried)
         best = walk.best()
         if best is None:
             raise nothing_seen(walk.assembly)
         carried = carried.learned(walk, walk.evidence[start:])
         walk.polish(best, min(gap, POLISH_GAP))
-        if _residual(walk, best) <= JUNCTION_TOLERANCE_K:
+        if walk.configuration(best) == seed or _settles(walk, best, indifferent=True)[0]:
             break
-        seed, found = walk.configuration(best), walk.found[best]
-        junction = settle(problem, seed, found, junction, min(gap, POLISH_GAP))[1]
-        units = getattr(found, "units", None)
+        seed, units, hint = walk.configuration(best), getattr(walk.found[best], "units", None), _hint(walk, best)
+        assembly = walk.assembly
     return _finished(walk, best, gap, carried)
 
 
@@ -211,13 +221,13 @@ def _cold(problem: Problem, gap: float, carried: Multipliers) -> Resolved:
     return _finished(search.walk, search.best, gap, carried.learned(search.walk, search.walk.evidence))
 
 
-def _find(problem: Problem, junction: Array, known: Known) -> Configuration | None:
+def _find(assembly: Assembly, known: Known) -> Configuration | None:
     """The configuration of those names among those of the problem, at the pulse level that allows the exposure."""
-    part = next((i for i, each in enumerate(problem.filters) if each.id == known.filter), None)
+    part = next((i for i, each in enumerate(assembly.problem.filters) if each.id == known.filter), None)
     wanted = (known.camera, known.channel, known.gain_db, known.f_number)
     settings = [
         setting
-        for setting in Assembly(problem, junction).settings
+        for setting in assembly.settings
         if (setting.camera.id, setting.channel, setting.gain.gain_db, setting.f_number) == wanted
     ]
     if part is None or not settings:
@@ -230,32 +240,76 @@ def _units(problem: Problem, known: Known) -> np.ndarray | None:
     return None if known.units is None else np.array([known.units.get(c.id, 0) for c in problem.channels])
 
 
-def _settled(problem: Problem, junction: Array, seed: Configuration, units: np.ndarray | None, gap: float) -> Array:
-    """Junction temperatures at which the configuration agrees with itself."""
-    walk = Walk.blank(Assembly(problem, junction))
-    walk.gap = gap
-    found = None
-    if walk.pairs > 1 or choosing(problem):
+def _settled(assembly: Assembly, seed: Configuration, units: np.ndarray | None, gap: float, hint: Hint | None) -> Walk:
+    """Certify one configuration at junction temperatures that agree with its own recipe: a walk of that one alone."""
+    for attempt in range(LARGEST_NUMBER_OF_ROUNDS):
+        walk = Walk.blank(assembly)
+        number = walk.number(seed)
+        # With one pair and no choice of LEDs a small gap is cheap, and nothing is left to polish.
+        walk.gap = gap if walk.pairs > 1 or choosing(assembly.problem) else min(gap, POLISH_GAP)
+        if hint is not None and _fits(hint, walk, number):
+            walk.hints[number] = hint
         walk.seed(seed, SimpleNamespace(units=units))
-        found = walk.found[walk.number(seed)]
-    return settle(problem, seed, found, junction, min(gap, POLISH_GAP))[1]
+        walk.polish(number, min(gap, POLISH_GAP))
+        done, reached = _settles(walk, number, indifferent=attempt >= PATIENCE)
+        if done or attempt == LARGEST_NUMBER_OF_ROUNDS - 1:
+            break
+        hint, units = _hint(walk, number), getattr(walk.found[number], "units", None)
+        assembly = assembly.at(reached)
+    return walk
 
 
-def _start(walk: Walk, seed: Configuration, units: np.ndarray | None, carried: Multipliers) -> int:
-    """Certify the configuration likely best, drop others by multipliers known; return how much evidence that is."""
-    gap = walk.gap
-    if walk.pairs == 1 and not choosing(walk.assembly.problem):
-        walk.gap = min(gap, POLISH_GAP)  # then nothing is left to polish
-    walk.seed(seed, SimpleNamespace(units=units))
-    walk.gap = gap
-    number = walk.number(seed)
-    value = walk.found[number].value
-    own = walk.evidence[:]
-    walk.evidence.clear()
+def _settles(walk: Walk, number: int, *, indifferent: bool) -> tuple[bool, Array]:
+    """Whether the junction temperatures assumed agree with the recipe's; and those reached. (L,)
+
+    ``indifferent`` also takes those that disagree without effect: recipes of equal CNR may toggle for ever.
+    """
+    problem, found = walk.assembly.problem, walk.found[number]
+    if found.value <= 0:
+        return True, walk.assembly.junction_c
+    performance = evaluate(problem, _design(walk, number))
+    states = {state.id: state.junction_c for state in performance.leds}
+    assumed = walk.assembly.junction_c
+    reached = np.array([states.get(c.id, t) for c, t in zip(problem.channels, assumed, strict=True)])
+    residual = float(np.max(np.abs(reached - assumed), initial=0.0))
+    equal = indifferent and abs(performance.cnr / found.value - 1) <= INDIFFERENT and residual <= LARGEST_RESIDUAL_K
+    return residual <= JUNCTION_TOLERANCE_K / 2 or equal, reached
+
+
+def _fits(hint: Hint, walk: Walk, number: int) -> bool:
+    """Whether a hint from a related problem has the shape of the program at hand."""
+    program = walk.programs(np.array([number]), coarse=False)
+    ceiling = hint.ceiling
+    return (
+        ceiling.limit.shape == program.rows.shape[:2]
+        and ceiling.heat.shape[1] == program.heat_cap.size
+        and not ceiling.heat[:, ~np.isfinite(program.heat_cap)].any()
+        and hint.leds.max(initial=-1) < program.heat_cap.size
+    )
+
+
+def _hint(walk: Walk, number: int) -> Hint | None:
+    """What a related search of the same configuration should start from."""
+    result = walk.found[number]
+    if not isinstance(result, Certified) or result.value <= 0:
+        return None
+    program = walk.programs(np.array([number]), coarse=False)
+    share = np.abs(program.signal[0] * result.point)[:-1]
+    lit = np.unique(program.led[share > 1e-6 * share.max(initial=1e-300)])
+    return Hint(result.proof.ceiling, lit, result.value)
+
+
+def _start(walk: Walk, first: Walk, number: int, carried: Multipliers) -> int:
+    """Take over a certified configuration, drop others by multipliers known; return how much evidence these are."""
+    value = first.found[number].value
     carried.apply(walk, value)
     count = len(walk.evidence)
-    walk.evidence.extend(own)
-    open_ = np.flatnonzero(walk.upper > value * (1 + gap))
+    walk.found[number] = first.found[number]
+    walk.tried[number] = first.tried[number]
+    walk.upper[number] = min(walk.upper[number], first.upper[number])
+    walk.evidence.extend(first.evidence)
+    walk.tally.certified += first.tally.certified
+    open_ = np.flatnonzero(walk.upper > value * (1 + walk.gap))
     if open_.size <= FEW:
         walk.refined[open_] = True
     return count
@@ -265,14 +319,6 @@ def _design(walk: Walk, best: int) -> Design:
     """What to dial in for a configuration as certified."""
     chosen, result = walk.configuration(best), walk.found[best]
     return design_at(walk.assembly, chosen.setting, chosen.filter, result.point, getattr(result, "units", None))
-
-
-def _residual(walk: Walk, best: int) -> float:
-    """How far the junction temperatures assumed are from those the recipe leads to. [K]"""
-    problem = walk.assembly.problem
-    assumed = dict(zip((c.id for c in problem.channels), walk.assembly.junction_c, strict=True))
-    leds = evaluate(problem, _design(walk, best)).leds
-    return max((abs(state.junction_c - assumed[state.id]) for state in leds), default=0.0)
 
 
 def _finished(walk: Walk, best: int, gap: float, multipliers: Multipliers) -> Resolved:
@@ -302,6 +348,7 @@ def _finished(walk: Walk, best: int, gap: float, multipliers: Multipliers) -> Re
         certificate=certificate,
         known=_known(walk, best, optimum, units),
         multipliers=multipliers,
+        hint=_hint(walk, best),
         winner=best,
         point=result.point,
         units=units,
