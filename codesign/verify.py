@@ -62,7 +62,8 @@ def verify(solution: Solution) -> Verdict:
     if not np.max(bounds) <= certificate.bound * (1 + ROUND_OFF):
         worst = int(np.argmax(bounds))
         raise CertificateError(
-            f"certificate: configuration {worst} is bounded by {bounds[worst]:.10g} only, above the claimed {certificate.bound:.10g}"
+            f"certificate: configuration {worst} is bounded by {bounds[worst]:.10g} only, "
+            f"above the claimed {certificate.bound:.10g}"
         )
     value = _check_winner(walk, solution)
     return Verdict(
@@ -126,7 +127,24 @@ def _check_winner(walk: Walk, solution: Solution) -> float:
         raise CertificateError(
             f"certificate: the forward model gives {same.cnr:.12g}, the optimiser's arrays {value:.12g}"
         )
+    _check_temperatures(solution)
     again = evaluate(solution.problem, solution.recipe.design)
     if not again.feasible or abs(again.cnr - solution.recipe.cnr) > 1e-9 * again.cnr:
         raise CertificateError("certificate: the settable recipe is not feasible, or its CNR is not what is claimed")
     return value
+
+
+def _check_temperatures(solution: Solution) -> None:
+    """The optimum at the junction temperatures it leads to, against what is said about those assumed."""
+    certificate = solution.certificate
+    settled = evaluate(solution.problem, solution.optimum.design)
+    residual = max((abs(led.junction_c - certificate.junction_c[led.id]) for led in settled.leds), default=0.0)
+    if not residual <= certificate.junction_residual_k + 1e-6:
+        raise CertificateError(
+            f"certificate: LEDs come to {residual:.4g} K from the junction temperatures the proof assumes, "
+            f"not the claimed {certificate.junction_residual_k:.4g} K"
+        )
+    if not abs(settled.cnr - solution.optimum.cnr) <= FORWARD_TOLERANCE * abs(settled.cnr):
+        raise CertificateError(
+            f"certificate: the optimum's CNR is {settled.cnr:.12g}, not the claimed {solution.optimum.cnr:.12g}"
+        )

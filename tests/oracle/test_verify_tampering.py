@@ -7,7 +7,10 @@ import pytest
 from random_problems import random_problem
 
 from codesign import Solution, evaluate, solve, verify
+from codesign.assemble import Assembly
 from codesign.errors import CertificateError, CodesignError, InfeasibleError
+from codesign.recipe import design_at
+from codesign.search.walk import Walk
 
 pytestmark = pytest.mark.oracle
 
@@ -115,6 +118,33 @@ def test_other_junction_temperatures_are_rejected(solutions):
     for solution in solutions:
         cooler = {led: c - 5.0 for led, c in solution.certificate.junction_c.items()}
         rejected(replace(solution, certificate=replace(solution.certificate, junction_c=cooler)))
+
+
+def test_proof_for_lamps_at_other_temperatures_than_claimed_is_rejected(solutions):
+    """A complete and valid proof, but for junctions 20 K cooler than the recipe makes them."""
+    for solution in solutions:
+        problem, certificate = solution.problem, solution.certificate
+        cooler = {led: c - 20.0 for led, c in certificate.junction_c.items()}
+        walk = Walk(Assembly(problem, np.array([cooler[c.id] for c in problem.channels])), 1e-3)
+        best = walk.best()
+        chosen, result = walk.configuration(best), walk.found[best]
+        design = design_at(walk.assembly, chosen.setting, chosen.filter, result.point)
+        forged = replace(
+            solution,
+            winner=best,
+            point=result.point,
+            evidence=tuple(walk.evidence),
+            optimum=evaluate(problem, design),
+            certificate=replace(certificate, value=result.value, bound=float(walk.upper.max()), junction_c=cooler),
+        )
+        rejected(forged, "junction temperatures")
+
+
+def test_embellished_optimum_is_rejected(solutions):
+    for solution in solutions:
+        rejected(
+            replace(solution, optimum=replace(solution.optimum, cnr=solution.optimum.cnr * 1.001)), "optimum's CNR"
+        )
 
 
 def test_recipe_pushed_over_the_well_is_rejected(solutions):
