@@ -35,6 +35,12 @@ class Surface(Part):
     reflectance_factor: float = Field(
         default=1.0, gt=0, le=10, description="reflectance relative to the stated samples, e.g. of a corrected standard"
     )
+    spread_factor: float = Field(
+        default=1.0,
+        ge=0,
+        le=10,
+        description="spread of the samples about their mean relative to that measured, e.g. on a finer finish",
+    )
     hold_edges_nm: float = Field(
         default=0.0,
         ge=0,
@@ -81,12 +87,13 @@ class Surface(Part):
         Returns
         -------
         (r, n) array
-            ``rows.T @ rows`` is the sample covariance with divisor k - 1; r = 0 for a single sample.
+            ``rows.T @ rows`` is the sample covariance with divisor k - 1, times the squared spread factor; r = 0
+            for a single sample.
         """
         samples = self.samples.resample(grid_nm)
         if len(samples) < 2:
             return np.zeros((0, samples.shape[-1]))
-        centred = (samples - samples.mean(axis=0)) / np.sqrt(len(samples) - 1)
+        centred = (samples - samples.mean(axis=0)) * (self.spread_factor / np.sqrt(len(samples) - 1))
         _, singular, rows = np.linalg.svd(centred, full_matrices=False)
         kept = singular > CLUTTER_CUTOFF * max(singular[0], np.finfo(float).tiny)
         return singular[kept, np.newaxis] * rows[kept]
