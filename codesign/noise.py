@@ -26,7 +26,7 @@ SIGNALS = ("led", "ambient", "dark")
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Sensor:
-    """The noise figures of one camera at one gain."""
+    """The noise figures of one camera at one gain; of many pieces of it where the figures are arrays."""
 
     read_noise_e: float
     conversion_gain_dn_per_e: float
@@ -92,7 +92,7 @@ NOISE_TERMS: tuple[NoiseTerm, ...] = (
     NoiseTerm(
         name="quantisation",
         averages="samples",
-        constant=lambda s: float(quantization_variance_e2(s.conversion_gain_dn_per_e)),
+        constant=lambda s: quantization_variance_e2(s.conversion_gain_dn_per_e),
     ),
     NoiseTerm(name="light shot noise", averages="samples", linear=(1.0, 0.0, 0.0)),
     NoiseTerm(name="ambient shot noise", averages="samples", linear=(0.0, 1.0, 0.0)),
@@ -122,6 +122,6 @@ def noise_model(sensor: Sensor, averaging: Averaging, terms: tuple[NoiseTerm, ..
     return NoiseModel(
         constant=sum(s * term.constant(sensor) for s, term in zip(share, terms, strict=True)),
         linear=sum((s * np.array(term.linear) for s, term in zip(share, terms, strict=True)), np.zeros(3)),
-        relative=float(np.sqrt(sum(s * term.relative(sensor) ** 2 for s, term in zip(share, terms, strict=True)))),
+        relative=np.sqrt(sum(s * term.relative(sensor) ** 2 for s, term in zip(share, terms, strict=True))),
         clutter_share=sum(s for s, term in zip(share, terms, strict=True) if term.clutter),
     )

@@ -7,6 +7,7 @@ from typing import Annotated, Any, Literal, Self
 from pydantic import Field, model_validator
 
 from codesign.catalog.common import ABSOLUTE_ZERO_C, Record
+from codesign.problem.tolerances import Tolerance
 
 Choice = str | tuple[str, ...]
 
@@ -233,6 +234,17 @@ class Averaging(Record):
     frames: int = Field(default=1, ge=1, description="frames averaged; fixed pattern stays")
 
 
+class Detection(Record):
+    """What one decision rests on: one reading, or several combined by the best linear weights."""
+
+    combine_channels: bool = Field(
+        default=False, description="whether all channels of a colour camera are read together, with the best weights"
+    )
+    shots: int = Field(
+        default=1, ge=1, le=3, description="exposures one after another in a frame, each with its own currents"
+    )
+
+
 class Grid(Record):
     """Wavelengths of all integrals."""
 
@@ -265,8 +277,10 @@ class ProblemSpec(Record):
     limits: Limits = Limits()
     build: Build = Build()
     averaging: Averaging = Averaging()
+    detection: Detection = Detection()
     grid: Grid = Grid()
     solver: Solver = Solver()
+    tolerance: Tolerance = Tolerance()
     led: tuple[dict[str, Any], ...] = Field(default=(), description="own LEDs, each under [[led]]")
     filter: tuple[dict[str, Any], ...] = Field(default=(), description="own filters, each under [[filter]]")
     camera: tuple[dict[str, Any], ...] = Field(default=(), description="own cameras, each under [[camera]]")
@@ -275,6 +289,7 @@ class ProblemSpec(Record):
     @model_validator(mode="after")
     def _check(self) -> Self:
         timing, lighting = self.timing, self.lighting
+        self._check_detection()
         if lighting.mode == "strobe" and timing.frame_rate_hz is None:
             raise ValueError("timing.frame_rate_hz is missing; strobed light needs the frame rate for its duty")
         low, high = timing.exposure_min_us, timing.exposure_max_us
@@ -283,6 +298,18 @@ class ProblemSpec(Record):
         if self.grid.from_nm is not None and self.grid.to_nm is not None and self.grid.from_nm >= self.grid.to_nm:
             raise ValueError(f"grid.from_nm is {self.grid.from_nm:g}, must be below to_nm {self.grid.to_nm:g}")
         return self
+
+
+    def _check_detection(self) -> None:
+        detection, scene = self.detection, self.scene
+        if not detection.combine_channels and detection.shots == 1:
+            return
+        if detection.combine_channels and detection.shots > 1:
+            raise ValueError("detection.combine_channels and detection.shots > 1 do not go together; choose one")
+        if not all(isinstance(names, str) or len(names) == 1 for names in (scene.target, scene.background)):
+            raise ValueError("detection combines readings of one target and one background; name one of each in scene")
+        if detection.shots > 1 and self.lighting.mode != "strobe":
+            raise ValueError("detection.shots > 1 needs lighting.mode = 'strobe'; each shot has its own light")
 
 
 def json_schema() -> dict[str, Any]:
