@@ -50,7 +50,7 @@ def test_with_signal_dependent_noise_searching_everywhere_finds_no_more(seed):
         assert_certified(program, reference, gap)
 
 
-@pytest.mark.parametrize("seed", range(200, 205))
+@pytest.mark.parametrize("seed", range(200, 203))
 def test_scan_of_the_noise_frontier_in_a_modelling_language_agrees(seed):
     program = small(seed, quiet=False)
     scan = best_by_scan(program, 60)
