@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import Any, ClassVar, Literal
 
 import numpy as np
@@ -90,13 +91,9 @@ class Surface(Part):
             ``rows.T @ rows`` is the sample covariance with divisor k - 1, times the squared spread factor; r = 0
             for a single sample.
         """
-        samples = self.samples.resample(grid_nm)
-        if len(samples) < 2:
-            return np.zeros((0, samples.shape[-1]))
-        centred = (samples - samples.mean(axis=0)) * (self.spread_factor / np.sqrt(len(samples) - 1))
-        _, singular, rows = np.linalg.svd(centred, full_matrices=False)
-        kept = singular > CLUTTER_CUTOFF * max(singular[0], np.finfo(float).tiny)
-        return singular[kept, np.newaxis] * rows[kept]
+        grid = np.ascontiguousarray(grid_nm, dtype=np.float64)
+        rows = _spread_rows(self.samples, grid.tobytes())
+        return self.spread_factor * rows if self.spread_factor > 0 else rows[:0]
 
     def check(self) -> None:
         """Read the samples now."""
@@ -105,3 +102,17 @@ class Surface(Part):
     def selectable(self) -> dict[str, Any]:
         """Fields, with the number of samples."""
         return {**super().selectable(), "sample_count": lambda: len(self.samples.values)}
+
+
+@lru_cache(maxsize=256)
+def _spread_rows(samples: Spectrum, grid: bytes) -> FloatArray:
+    """Rows of `Surface.clutter_factor` as measured, worked out once for problems that share surfaces and grid."""
+    values = samples.resample(np.frombuffer(grid))
+    if len(values) < 2:
+        return np.zeros((0, values.shape[-1]))
+    centred = (values - values.mean(axis=0)) / np.sqrt(len(values) - 1)
+    _, singular, rows = np.linalg.svd(centred, full_matrices=False)
+    kept = singular > CLUTTER_CUTOFF * max(singular[0], np.finfo(float).tiny)
+    found = singular[kept, np.newaxis] * rows[kept]
+    found.flags.writeable = False
+    return found
