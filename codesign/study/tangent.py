@@ -1,0 +1,181 @@
+"""How the optimum of one configuration moves with anything in the problem, the LEDs' own warming included.
+
+The conditions of `codesign.study.stationary` and the balance of each lit junction,
+
+    T − air − R (duty / t) Σ heat·charge = 0,
+
+are one system F(z; p) = 0 in z = (u, τ, μ, λ, T). Its derivative along z is solved once with the row of τ = log CNR;
+the resulting weights w give the derivative of log CNR along any quantity as ``−w·∂F/∂p``: the multipliers of the
+limits, with the feedback through the temperatures in them. ∂F/∂p comes from the arrays of two nudged problems, at the
+same z. So a change that brings heat or flux is met by temperatures that settle again, as in a problem solved anew.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from codesign.design import Design
+from codesign.errors import SolveError
+from codesign.limits import thermal_resistance
+from codesign.problem import Problem
+from codesign.program import Array, Program
+from codesign.study.choice import Choice, narrowed, point_of, programs_of, shares
+from codesign.study.stationary import Stationary, stationary, warm_ends
+
+#: Gain (relative CNR per share of an LED) below which an unlit LED stays off.
+WORTHLESS = 1e-9
+LARGEST_NUMBER_OF_ROUNDS = 30
+
+
+@dataclass(frozen=True, slots=True)
+class Rig:
+    """One configuration of a narrowed problem, whose arrays hang on the junction temperatures."""
+
+    problem: Problem
+    choice: Choice
+
+    def programs(self, junction_c: Array) -> list[Program]:
+        """Arrays of each pair."""
+        return programs_of(self.problem, self.choice, junction_c)
+
+    def _resistance(self) -> Array:
+        """Rise per mean heat of all emitters there could be. (L,) [K/W]"""
+        own = np.array([thermal_resistance(self.problem, channel) for channel in self.problem.channels])
+        return own / shares(self.problem, self.choice)
+
+    def balance(self, program: Program, y: Array, junction_c: Array) -> Array:
+        """Junction temperature assumed minus that reached, of each LED. (L,) [K]"""
+        heat = np.bincount(program.led, program.heat * y[:-1], minlength=junction_c.size)
+        rise = self._resistance() * heat * self._per_second(y)
+        return junction_c - self.problem.spec.temperature.air_c - rise
+
+    def _per_second(self, y: Array) -> float:
+        """Frames, or exposures without a pause, per second."""
+        return self.problem.spec.timing.frame_rate_hz if self.problem.strobe else 1.0 / y[-1]
+
+    def balance_slope(self, program: Program, y: Array) -> Array:
+        """Derivative of the balance along charges and exposure. (L, n+1)"""
+        resistance = self._resistance()
+        slope = np.zeros((resistance.size, y.size))
+        per_charge = -resistance[program.led] * program.heat * self._per_second(y)
+        slope[program.led, np.arange(program.segments)] = per_charge
+        if not self.problem.strobe:
+            slope[:, -1] = -(slope[:, :-1] @ y[:-1]) / y[-1]
+        return slope
+
+
+@dataclass(frozen=True, slots=True)
+class Optimum:
+    """Self-consistent optimum of one configuration over its lit LEDs."""
+
+    rig: Rig
+    state: Stationary
+
+    @property
+    def cnr(self) -> float:
+        """CNR reached."""
+        return float(np.exp(self.state.value))
+
+
+def optimum_near(problem: Problem, choice: Choice, design: Design, junction_c: Mapping[str, float]) -> Optimum:
+    """The optimum of a configuration to the last digits, temperatures settled, from a recipe close to it.
+
+    LEDs are lit or put out as the multipliers ask; those that are off stay at ``junction_c``. [deg C]
+    """
+    full = narrowed(problem, choice)
+    known = dict(junction_c)
+    lit = [channel.id for channel in full.channels if design.drive_ma.get(channel.id, 0.0) > 0]
+    for _ in range(LARGEST_NUMBER_OF_ROUNDS):
+        rig = Rig(narrowed(problem, choice, lit), choice)
+        names = [channel.id for channel in rig.problem.channels]
+        junction = np.array([known[name] for name in names])
+        found = settled(rig, point_of(rig.problem, choice, design, junction), junction)
+        known.update(zip(names, found.state.junction_c, strict=True))
+        joining = _joining(full, found, np.array([known[c.id] for c in full.channels]), lit)
+        if not joining:
+            return found
+        lit += joining
+        design = _with_currents(design, found)
+    raise SolveError("no settled set of lit LEDs was found near the optimum")
+
+
+def settled(rig: Rig, point: Array, junction_c: Array) -> Optimum:
+    """The optimum over the LEDs of a narrowed problem at which junction temperatures and recipe agree."""
+    return Optimum(rig, stationary(rig.programs(junction_c), point, rig, junction_c))
+
+
+def _joining(full: Problem, found: Optimum, junction_c: Array, lit: Sequence[str]) -> list[str]:
+    """LEDs that are off and whose light would raise the CNR, the best first few."""
+    dark = [channel.id for channel in full.channels if channel.id not in lit]
+    if not dark:
+        return []
+    state, choice = found.state, found.rig.choice
+    programs = programs_of(full, choice, junction_c)
+    order = {channel.id: index for index, channel in enumerate(full.channels)}
+    own = np.array([order[channel.id] for channel in found.rig.problem.channels])
+    y = np.zeros(programs[0].segments + 1)
+    y[np.append(np.isin(programs[0].led, own), True)] = state.point
+    column = np.append(programs[0].width, 1.0) * programs[0].time_high[0]
+    rows = state.price[: programs[0].rows.shape[1]] / state.scale.row
+    gain = -(rows @ programs[0].rows[0])
+    for program, weight in zip(programs, state.weight, strict=True):
+        noise = program.noise_rows[0]
+        spread = program.floor[0] + program.shot[0] @ y + np.sum((noise @ y) ** 2)
+        slope = program.shot[0] + 2 * (noise @ y) @ noise
+        gain = gain + weight * (program.signal[0] / (program.signal[0] @ y) - slope / (2 * spread))
+    gain = (gain * column)[:-1]
+    worth = np.full(len(full.channels), -np.inf)
+    np.maximum.at(worth, programs[0].led, gain)
+    worth[own] = -np.inf
+    best = np.argsort(-worth)[:3]
+    return [full.channels[i].id for i in best if worth[i] > WORTHLESS]
+
+
+def _with_currents(design: Design, found: Optimum) -> Design:
+    """The design with the currents and exposure of a point, so that it can be read in another set of columns."""
+    y, program = found.state.point, found.state.programs[0]
+    share = shares(found.rig.problem, found.rig.choice)
+    amps = np.bincount(program.led, y[:-1], minlength=share.size) / y[-1] / share
+    drive = {c.id: float(a * 1e3) for c, a in zip(found.rig.problem.channels, amps, strict=True)}
+    return replace(design, drive_ma=drive, exposure_us=float(y[-1] * 1e6))
+
+
+class Tangent:
+    """Derivatives of log CNR at an optimum."""
+
+    def __init__(self, optimum: Optimum) -> None:
+        self.optimum = optimum
+        state, rig = optimum.state, optimum.rig
+        system = state.system(rig, warm_ends(rig, state.junction_c))
+        wanted = np.zeros(len(system))
+        wanted[state.u.size] = 1.0  # τ
+        self._weights = np.linalg.lstsq(system.T, wanted, rcond=1e-13)[0]
+
+    def slope(self, low: Problem, high: Problem, span: float) -> float:
+        """Derivative of log CNR between two narrowed problems nudged by ``span`` in sum.
+
+        NaN where they differ in shape.
+        """
+        ends = [self._residual(problem) for problem in (low, high)]
+        if any(end.shape != self._weights.shape for end in ends):
+            return float("nan")
+        return float(-self._weights @ (ends[1] - ends[0]) / span)
+
+    def row_price(self, name: str) -> float:
+        """Derivative of log CNR per unit of the bound of one coupling row, e.g. of a well."""
+        state = self.optimum.state
+        row = state.programs[0].row_names.index(name)
+        if not state.active[row]:
+            return 0.0
+        position = state.u.size + 1 + int(state.pairs.sum()) + int(state.active[:row].sum())
+        return float(-self._weights[position] / state.scale.row[row])
+
+    def _residual(self, problem: Problem) -> Array:
+        state, rig = self.optimum.state, Rig(problem, self.optimum.rig.choice)
+        programs = rig.programs(state.junction_c)
+        if programs[0].segments + 1 != state.u.size or programs[0].rows.shape[1] != state.scale.row.size:
+            return np.zeros(0)
+        return state.residual(programs, state.junction_c, rig)
