@@ -242,12 +242,13 @@ def _units(problem: Problem, known: Known) -> np.ndarray | None:
 
 def _settled(assembly: Assembly, seed: Configuration, units: np.ndarray | None, gap: float, hint: Hint | None) -> Walk:
     """Certify one configuration at junction temperatures that agree with its own recipe: a walk of that one alone."""
+    before: tuple[Array, Array] | None = None
     for attempt in range(LARGEST_NUMBER_OF_ROUNDS):
         walk = Walk.blank(assembly)
         number = walk.number(seed)
         # With one pair and no choice of LEDs a small gap is cheap, and nothing is left to polish.
         walk.gap = gap if walk.pairs > 1 or choosing(assembly.problem) else min(gap, POLISH_GAP)
-        if hint is not None and _fits(hint, walk, number):
+        if hint is not None and (attempt or _fits(hint, walk, number)):
             walk.hints[number] = hint
         walk.seed(seed, SimpleNamespace(units=units))
         walk.polish(number, min(gap, POLISH_GAP))
@@ -255,8 +256,20 @@ def _settled(assembly: Assembly, seed: Configuration, units: np.ndarray | None, 
         if done or attempt == LARGEST_NUMBER_OF_ROUNDS - 1:
             break
         hint, units = _hint(walk, number), getattr(walk.found[number], "units", None)
-        assembly = assembly.at(reached)
+        assumed = assembly.junction_c
+        assembly = assembly.at(_extrapolated(before, assumed, reached))
+        before = assumed, reached
     return walk
+
+
+def _extrapolated(before: tuple[Array, Array] | None, assumed: Array, reached: Array) -> Array:
+    """Junction temperatures to try next: what was reached, carried on where two rounds show how it depends. (L,)"""
+    if before is None:
+        return reached
+    step = assumed - before[0]
+    slope = np.divide(reached - before[1], step, out=np.zeros_like(step), where=np.abs(step) > 1e-6)
+    slope = np.where(np.abs(slope) < 0.5, slope, 0.0)
+    return assumed + (reached - assumed) / (1 - slope)
 
 
 def _settles(walk: Walk, number: int, *, indifferent: bool) -> tuple[bool, Array]:
@@ -293,9 +306,8 @@ def _hint(walk: Walk, number: int) -> Hint | None:
     result = walk.found[number]
     if not isinstance(result, Certified) or result.value <= 0:
         return None
-    program = walk.programs(np.array([number]), coarse=False)
-    share = np.abs(program.signal[0] * result.point)[:-1]
-    lit = np.unique(program.led[share > 1e-6 * share.max(initial=1e-300)])
+    segments = walk.assembly.segments(walk.configuration(number).setting)
+    lit = np.unique(segments.led[result.point[:-1] > 1e-6 * segments.width * result.point[-1]])
     return Hint(result.proof.ceiling, lit, result.value)
 
 
