@@ -152,6 +152,10 @@ class Curves:
     e: Array
     anchor: Array
 
+    def joined(self, other: Curves) -> Curves:
+        """These curves and further ones of the same programs."""
+        return Curves(**{n: np.hstack([getattr(self, n), getattr(other, n)]) for n in self.__slots__})
+
 
 def curves(program: Program, lines: tuple[Line, ...]) -> Curves:
     """Work out lines and parabolas of a proof from its multipliers. [e⁻²]"""

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from codesign.certificate import Line, Proof, bound, curves, envelope, no_exposure, signal_ceiling
+from codesign.certificate import Curves, Line, Proof, bound, curves, envelope, no_exposure, signal_ceiling
 from codesign.program import Array, Program, contrast_to_noise, variance
 from codesign.search.bounds import no_prices
 from codesign.search.relaxation import ConvexSlice
@@ -60,6 +60,7 @@ class _Walk:
         self.columns = promising_columns(program) if hint is None else np.flatnonzero(np.isin(program.led, hint.leds))
         self.slice = ConvexSlice(program, self.columns)
         self.lines: list[Line] = []
+        self.curves: Curves | None = None
         self.touch: list[tuple[float, float]] = []  # (signal, signal-dependent variance)
         self.best = -np.inf
         self.point = np.append(np.zeros(program.segments), program.time_low)
@@ -113,6 +114,8 @@ class _Walk:
     def add(self, theta: float) -> None:
         """Touch the frontier at slope ``theta``."""
         self.lines.append(self.priced(theta))
+        own = curves(self.program, tuple(self.lines[-1:]))
+        self.curves = own if self.curves is None else self.curves.joined(own)
 
     def hopeless(self) -> bool:
         """Whether no recipe has any signal of the wanted sign: then an exact ceiling is the whole proof."""
@@ -129,8 +132,7 @@ class _Walk:
 
     def peak(self) -> tuple[float, float]:
         """Present bound and the signal at which it is reached."""
-        found = curves(self.program, tuple(self.lines))
-        value, v = envelope(self.program.floor, np.array([self.limit]), found)
+        value, v = envelope(self.program.floor, np.array([self.limit]), self.curves)
         return float(value[0]), float(v[0])
 
     def next_slope(self, v: float) -> float | None:
@@ -197,13 +199,17 @@ def certify(program: Program, gap: float = 1e-3, target: float = 0.0, hint: Hint
         return Certified(point=walk.point, value=walk.best, bound=0.0, proof=proof)
     likely = max(walk.best, hint.promise if hint is not None else 0.0, 1e-3 * target, 1e-12)
     walk.add(2 * walk.limit / likely**2)
+    proven = None
     for _ in range(0 if walk.hopeless() else LARGEST_NUMBER_OF_LINES):
-        value, v = walk.peak()
-        if value <= max(walk.best, target) * (1 + gap):
+        proven, v = walk.peak()
+        if proven <= max(walk.best, target) * (1 + gap):
             break
         slope = walk.next_slope(v)
         if slope is None:
             break
         walk.add(slope)
+        proven = None
     proof = Proof(ceiling=walk.ceiling, lines=tuple(walk.lines))
-    return Certified(point=walk.point, value=walk.best, bound=float(bound(program, proof)[0]), proof=proof)
+    if proven is None:
+        proven = float(bound(program, proof)[0])
+    return Certified(point=walk.point, value=walk.best, bound=proven, proof=proof)

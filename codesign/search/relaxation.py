@@ -7,7 +7,7 @@ are assembled once per program. The multipliers come back in SI units for `codes
 from __future__ import annotations
 
 from copy import copy
-from functools import cached_property
+from functools import cache, cached_property
 
 import clarabel
 import numpy as np
@@ -39,6 +39,7 @@ class Columns:
         return twin
 
 
+@cache
 def _settings() -> clarabel.DefaultSettings:
     settings = clarabel.DefaultSettings()
     settings.verbose = False
@@ -115,7 +116,7 @@ class ConvexSlice:
         linear = np.append(cost / unit, np.zeros(rank))
         solution = clarabel.DefaultSolver(quadratic.scaled(weight), linear, matrix, right, cones, _settings()).solve()
         point = self._point(np.asarray(solution.x))
-        return self._line(theta, np.nan_to_num(np.asarray(solution.z)), unit, point), point
+        return self._line(theta, _finite(np.asarray(solution.z)), unit, point), point
 
     def _line(self, theta: float | None, duals: Array, unit: float, point: Array) -> Line:
         program = self.program
@@ -136,8 +137,12 @@ class ConvexSlice:
 
     def _point(self, scaled: Array) -> Array:
         y = np.zeros(self.column.size)
-        y[self.keep] = np.nan_to_num(scaled[: self.keep.size])
+        y[self.keep] = _finite(scaled[: self.keep.size])
         return feasible(self.program, (y * self.column)[None])[0]
+
+
+def _finite(values: Array) -> Array:
+    return values if np.isfinite(values).all() else np.nan_to_num(values)
 
 
 def feasible(program: Program, y: Array) -> Array:
