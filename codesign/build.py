@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -77,6 +78,7 @@ def root_box(problem: Problem) -> Box:
     return Box(needed.astype(np.int64), most_units(problem))
 
 
+@lru_cache(maxsize=8)
 def filter_prices(problem: Problem) -> Array:
     """Price of each filter choice, NaN where unknown. (F,)"""
     choices = FilterChoices.of(problem.filters)

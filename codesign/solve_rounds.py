@@ -14,6 +14,7 @@ from codesign.build import require_buildable
 from codesign.certificate_build import build_space
 from codesign.design import Performance, evaluate
 from codesign.problem import Problem
+from codesign.problem.choices import FilterChoices
 from codesign.program import Array
 from codesign.recipe import design_at
 from codesign.search.build import Built, polish_build
@@ -96,7 +97,7 @@ def search_rounds(
         walk = None
         try:
             walk = Walk(
-                Assembly(problem, junction), max(gap, SCOUT_GAP) if scout else gap, progress, clock, enough,
+                Assembly(_singles(problem) if scout else problem, junction), max(gap, SCOUT_GAP) if scout else gap, progress, clock, enough,
             )  # fmt: skip
             if seed is not None:
                 walk.seed(*seed)
@@ -106,20 +107,33 @@ def search_rounds(
             best = None if walk is None else walk.leader
             if last is None and best is None:
                 raise
+        partly = scout and walk is not None and walk.assembly.problem is not problem
+        if best is None and partly:
+            continue
         if best is None:
             return last if clock() and last is not None else Search(walk, None, clock())
         found = Search(walk, best, clock())
+        if found.stopped and partly:  # the bounds of all pairs must still be worked out
+            seed = (found.known, walk.found[best])
+            continue
         if found.stopped and last is not None and last.gap < found.gap:
             return Search(last.walk, last.best, True)
         if found.stopped:
             return found
-        last, seed = found, (found.known, walk.found[best])
+        last, seed = None if partly else found, (found.known, walk.found[best])
         residual, settled = settle(problem, *seed, junction, min(gap, POLISH_GAP))
         moved = float(np.max(np.abs(settled - junction), initial=0.0))
         if min(residual, moved) <= JUNCTION_TOLERANCE_K and not scout:
             break
         junction = settled
     return last
+
+
+def _singles(problem: Problem) -> Problem:
+    """The problem without filter pairs, which come after the single filters: enough to find the temperatures."""
+    choices = FilterChoices.of(problem.filters)
+    single = int(np.sum(choices.members[:, 1] < 0))
+    return problem if single in (0, len(choices)) else replace(problem, filters=choices[:single])
 
 
 def settle(

@@ -28,6 +28,7 @@ LAYERS = (
     "search",
     "recipe",
     "solve",
+    "least_cost",
     "verify",
     "study",
     "report",

@@ -33,6 +33,10 @@ FIRST_CHUNK, LARGEST_CHUNK = 48, 384
 FILTERS_TOGETHER = 4096
 #: Most pairs of target and background whose bounds are worked out for every configuration on rung 0.
 QUICK_PAIRS = 3
+#: How far rung 1 has looked at a configuration: at its coarse program, at its full one.
+COARSELY, FULLY = 1, 2
+#: Fewer open configurations than these go to rung 2 one at a time without a look at their full programs together.
+MANY = 64
 #: Rounds of tightening on rung 1.
 ROUNDS = 6
 
@@ -67,6 +71,11 @@ class Evidence:
     proof: Proof | PairProof | BuildLeaf | BuildSplit
     coarse: bool
     pair: int = 0
+
+
+def _largest(index: np.ndarray, value: Array, count: int) -> np.ndarray:
+    """The ``count`` indices of largest value, in their order."""
+    return index if index.size <= count else np.sort(index[np.argpartition(-value, count)[:count]])
 
 
 def _never() -> bool:
@@ -107,7 +116,7 @@ class Walk:
         if self.closed_form:
             self.quick_pairs = self._limiting_pairs()
             self.upper = np.concatenate([self._closed_form(setting) for setting in self.assembly.settings])
-        self.refined = np.zeros(count, dtype=bool)
+        self.refined = np.zeros(count, dtype=np.int8)
         self.tried = np.full(count, np.inf)
         self.tally.configurations = count
 
@@ -212,12 +221,12 @@ class Walk:
                 self.progress(value, float(self.upper[open_].max(initial=value)))
             if open_.size == 0 or self._done(leader, value):
                 return leader
-            rough = open_[~self.refined[open_]]
             top = open_[np.argmax(self.upper[open_])]
-            if self.refined[top]:
+            alike = open_[self.refined[open_] == self.refined[top]]
+            if self.refined[top] == FULLY or (self.refined[top] and (alike.size < MANY or leader is None)):
                 self._certify(top, aim)
             else:
-                self._refine(rough[np.argsort(-self.upper[rough])[:chunk]], aim)
+                self._refine(_largest(alike, self.upper[alike], chunk), aim)
                 chunk = min(2 * chunk, LARGEST_CHUNK)
 
     def _done(self, leader: int | None, value: float) -> bool:
@@ -262,36 +271,40 @@ class Walk:
         return bounds
 
     def _refine(self, index: np.ndarray, target: float) -> None:
-        """Rung 1: tighten until a configuration is out of the race or a few rounds are over."""
-        self.refined[index] = True
-        self.tally.refined += index.size
+        """Rung 1: tighten until a configuration is out of the race or a few rounds are over.
+
+        Coarse programs the first time, full ones the second.
+        """
+        coarse = self.refined[index[0]] == 0
+        self.refined[index] = COARSELY if coarse else FULLY
+        self.tally.refined += index.size if coarse else 0
         for part in self._same_columns(index):
             for pair in list(self.pair_order):
                 part = part[self.upper[part] > target * (1 + self.gap)]
                 if part.size:
-                    target = self._tighten(part, pair, target)
+                    target = self._tighten(part, pair, target, coarse)
 
-    def _tighten(self, part: np.ndarray, pair: int, target: float) -> float:
+    def _tighten(self, part: np.ndarray, pair: int, target: float, coarse: bool) -> float:
         """Tighten the bounds of one pair until they are below the target or a few rounds are over; return the target."""
-        state = Tightening.start(self.programs(part, coarse=True, pair=pair), target)
+        state = Tightening.start(self.programs(part, coarse=coarse, pair=pair), target)
         if not self.found:
             self._suggest(part, state)
             self._certify(int(part[int(np.argmax(state.own))]), target)
             target = max(target, self._leader(np.ones(self.upper.size, dtype=bool))[1])
         for _ in range(ROUNDS):
             open_ = (state.bound > target * (1 + self.gap)) & ~state.settled(target)
-            self._record(part[~open_], pair, state.take(np.flatnonzero(~open_)))
+            self._record(part[~open_], pair, coarse, state.take(np.flatnonzero(~open_)))
             part, state = part[open_], state.take(np.flatnonzero(open_))
             if not part.size:
                 return target
             state.round(target)
-        self._record(part, pair, state)
+        self._record(part, pair, coarse, state)
         return target
 
-    def _record(self, part: np.ndarray, pair: int, state: Tightening) -> None:
+    def _record(self, part: np.ndarray, pair: int, coarse: bool, state: Tightening) -> None:
         """Keep the bounds of some configurations by one pair and what proves them."""
         if part.size:
-            self.evidence.append(Evidence(part, state.proof(), coarse=True, pair=pair))
+            self.evidence.append(Evidence(part, state.proof(), coarse=coarse, pair=pair))
             self.upper[part] = np.minimum(self.upper[part], state.bound)
             self._suggest(part, state)
 
