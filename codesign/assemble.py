@@ -9,6 +9,8 @@ from functools import cached_property
 import numpy as np
 
 from codesign.assemble_build import with_build_rows
+from codesign.catalog import Camera
+from codesign.design import JOINT
 from codesign.errors import InfeasibleError
 from codesign.limits import (
     Setting,
@@ -167,15 +169,19 @@ class Assembly:
         spec = self.problem.spec
         wanted = spec.candidates
         for camera in self.problem.cameras:
-            for channel in camera.channel_names:
-                if wanted.channels != "all" and channel not in _listed(wanted.channels):
-                    continue
+            for channel in self._channels(camera):
                 for gain in camera.gain_settings():
                     if wanted.gains_db is not None and all(abs(gain.gain_db - g) > 1e-9 for g in wanted.gains_db):
                         continue
                     for f_number in spec.optics.f_numbers:
                         for level in pulse_levels(self.problem):
                             yield Setting(camera=camera, channel=channel, gain=gain, f_number=f_number, level=level)
+
+    def _channels(self, camera: Camera) -> list[str]:
+        """Channels of a camera to choose from, joined where they are read together."""
+        wanted = self.problem.spec.candidates.channels
+        names = [name for name in camera.channel_names if wanted == "all" or name in _listed(wanted)]
+        return [JOINT.join(names)] if names and self.problem.spec.detection.combine_channels else names
 
     def _without_dominated(self, settings: list[Setting]) -> Iterator[Setting]:
         """Drop pulse levels longer than any exposure allowed while a shorter one already covers it."""

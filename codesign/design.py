@@ -31,6 +31,17 @@ from codesign.radiometry import (
 
 Array = NDArray[np.float64]
 
+#: Joins the names of channels that are read together.
+JOINT = "+"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Shot:
+    """One of several exposures of a frame: its length, and the current of each LED (absent = off)."""
+
+    exposure_us: float
+    drive_ma: Mapping[str, float] = field(default_factory=dict)
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Design:
@@ -38,6 +49,10 @@ class Design:
 
     ``emitters`` holds how many emitters each LED channel has where the problem leaves that free (absent = all the
     channel can have). ``where`` names the file it comes from in messages.
+
+    Several channels read together are joined by ``+``; several ``shots`` have their own exposures and currents, and
+    ``exposure_us`` is then their sum. ``weights`` combine the readings (channels by name, shots as "shot 1" ..);
+    absent = the best ones.
     """
 
     camera: str
@@ -48,6 +63,8 @@ class Design:
     exposure_us: float
     drive_ma: Mapping[str, float] = field(default_factory=dict)
     emitters: Mapping[str, int] = field(default_factory=dict)
+    shots: tuple[Shot, ...] = ()
+    weights: Mapping[str, float] = field(default_factory=dict)
     where: str = field(default="recipe", repr=False, compare=False)
 
 
@@ -86,6 +103,8 @@ class Performance:
     ``pairs`` lists every target and background; ``cnr``, ``signal_e`` and ``noise`` are those of the worst pair, the
     noise as variance at (target, background) by term. [e⁻²] ``sign`` is the one all pairs must share: a pair that
     shows the opposite sign cannot be told by the same threshold, and the CNR is then 0.
+
+    Where several readings are combined, ``weights`` (length 1) say how; signal and noise are those of the weighted sum.
     """
 
     design: Design
@@ -99,6 +118,7 @@ class Performance:
     limits: tuple[LimitUse, ...]
     leds: tuple[LedState, ...]
     duty: float
+    weights: Mapping[str, float] = field(default_factory=dict)
 
     @property
     def feasible(self) -> bool:
@@ -114,11 +134,12 @@ class Performance:
 def setting_of(problem: Problem, design: Design) -> Setting:
     """Look up the parts of a design. Raises ProblemError naming what is unknown."""
     camera = candidate(problem, design, "camera")
-    if design.channel not in camera.channel_names:
-        raise ProblemError(
-            f"{design.where}: channel is {design.channel!r}, camera {camera.id!r} has none of that name; "
-            f"{nearest(design.channel, camera.channel_names)}"
-        )
+    for channel in design.channel.split(JOINT):
+        if channel not in camera.channel_names:
+            raise ProblemError(
+                f"{design.where}: channel is {channel!r}, camera {camera.id!r} has none of that name; "
+                f"{nearest(channel, camera.channel_names)}"
+            )
     exposure = design.exposure_us * 1e-6
     return Setting(
         camera=camera,
@@ -152,7 +173,7 @@ def led_state(problem: Problem, channel: LedChannel, drive_ma: float, duty: floa
     amps = drive_ma * 1e-3
     electrical = float(np.interp(amps, current, power))
     reference = led.flux_w() * float(np.interp(amps, current, flux))
-    junction, factor = _balance(problem, channel, duty, electrical, reference)
+    junction, factor = balance(problem, channel, duty, electrical, reference)
     return LedState(
         id=led.id,
         drive_ma=drive_ma,
@@ -163,7 +184,7 @@ def led_state(problem: Problem, channel: LedChannel, drive_ma: float, duty: floa
     )
 
 
-def _balance(
+def balance(
     problem: Problem, channel: LedChannel, duty: float, electrical_w: float, reference_w: float
 ) -> tuple[float, float]:
     """Temperature at which heat and flux agree, and the flux there relative to the reference. [deg C], [1]
@@ -207,6 +228,10 @@ def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float
     -----
     CNR = |mean target − mean background| / sqrt((variance target + variance background) / 2).
     """
+    if design.shots or JOINT in design.channel:
+        from codesign.design_combined import evaluate_combined
+
+        return evaluate_combined(problem, design, junction_c=junction_c)
     check_values(problem, design)
     setting = setting_of(problem, design)
     t = design.exposure_us * 1e-6
@@ -215,12 +240,12 @@ def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float
     states = tuple(replace(state, emitters=design.emitters.get(state.id, state.emitters)) for state in states)
     if junction_c is not None:
         states = tuple(replace(state, junction_c=junction_c[state.id]) for state in states)
-    light = _electrons(problem, setting, design, states, t)
+    light = electrons(problem, setting, design, states, t)
     noise = _noise_by_surface(problem, setting, light)
     pairs = tuple(_contrast(problem, light, noise, i, j) for i, j in problem.pairs)
     direction, worst, cnr = _worst(pairs)
     target, background = problem.pairs[worst]
-    readings = tuple(_reading(problem, setting, i, light.electrons[i]) for i in range(len(problem.surfaces)))
+    readings = tuple(reading(problem, setting, i, light.electrons[i]) for i in range(len(problem.surfaces)))
     return Performance(
         design=design,
         signal_e=pairs[worst].signal_e,
@@ -239,7 +264,7 @@ def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float
     )
 
 
-def _noise_by_surface(problem: Problem, setting: Setting, light: _Light) -> dict[str, list[float]]:
+def _noise_by_surface(problem: Problem, setting: Setting, light: Light) -> dict[str, list[float]]:
     """Variance of each term at each target and background, in the order of the surfaces. [e⁻²]"""
     sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
     count = len(problem.targets) + len(problem.backgrounds)
@@ -249,7 +274,7 @@ def _noise_by_surface(problem: Problem, setting: Setting, light: _Light) -> dict
     }
 
 
-def _contrast(problem: Problem, light: _Light, noise: Mapping[str, list[float]], i: int, j: int) -> PairContrast:
+def _contrast(problem: Problem, light: Light, noise: Mapping[str, list[float]], i: int, j: int) -> PairContrast:
     difference = float(light.electrons[i].sum() - light.electrons[j].sum())
     variance = sum(values[i] + values[j] for values in noise.values()) / 2
     return PairContrast(
@@ -269,7 +294,7 @@ def _worst(pairs: tuple[PairContrast, ...]) -> tuple[int, int, float]:
 
 
 @dataclass(frozen=True, slots=True)
-class _Light:
+class Light:
     """Electrons (S, 3) by origin, and clutter amplitudes of each surface. [e⁻]"""
 
     electrons: Array
@@ -283,7 +308,7 @@ def _sensitivity(problem: Problem, camera: str, channel: str, filter_id: str, f_
     return weight * filter_transmittance(problem, problem.filter(filter_id), f_number)
 
 
-def _electrons(problem: Problem, setting: Setting, design: Design, states: tuple[LedState, ...], t: float) -> _Light:
+def electrons(problem: Problem, setting: Setting, design: Design, states: tuple[LedState, ...], t: float) -> Light:
     """Integrate the light of the recipe over wavelength for each surface."""
     scene = reflectances(problem)
     weight = _sensitivity(problem, design.camera, design.channel, design.filter, design.f_number)
@@ -299,10 +324,10 @@ def _electrons(problem: Problem, setting: Setting, design: Design, states: tuple
     ambient = scene.mean @ (weight * problem.ambient) * t
     dark = np.full(len(led), dark_rate(problem, setting) * t)
     clutter = scene.clutter @ (weight * (diffuse + problem.ambient)) * t
-    return _Light(np.stack([led, ambient, dark], axis=1), tuple(clutter[rows] for rows in scene.rows_of))
+    return Light(np.stack([led, ambient, dark], axis=1), tuple(clutter[rows] for rows in scene.rows_of))
 
 
-def _reading(problem: Problem, setting: Setting, index: int, electrons: Array) -> SurfaceReading:
+def reading(problem: Problem, setting: Setting, index: int, electrons: Array) -> SurfaceReading:
     surface = problem.surfaces[index]
     total = float(electrons.sum())
     level = setting.camera.black_level_dn + setting.gain.conversion_gain_dn_per_e * total

@@ -126,6 +126,10 @@ def solve(
     True
     """
     started = time.perf_counter()
+    if problem.combined:
+        from codesign.solve_combined import solve_combined
+
+        return solve_combined(problem, gap, Clock.lasting(time_limit))
     gap = problem.spec.solver.gap if gap is None else gap
     wanted = problem.spec.solver.alternatives if alternatives is None else alternatives
     clock = Clock.lasting(time_limit)

@@ -49,6 +49,8 @@ def verify(solution: Solution) -> Verdict:
         Naming the first thing that does not hold.
     """
     certificate, problem = solution.certificate, solution.problem
+    if problem.combined:
+        return _verdict_of_combined(solution)
     junction = np.array([certificate.junction_c[channel.id] for channel in problem.channels])
     walk = Walk.blank(Assembly(problem, junction))
     if walk.upper.size != certificate.configurations:
@@ -69,6 +71,18 @@ def verify(solution: Solution) -> Verdict:
     return Verdict(
         configurations=bounds.size,
         by_kept_multipliers=int((~open_).sum()),
+        largest_bound=float(np.max(bounds)),
+        value=value,
+    )
+
+
+def _verdict_of_combined(solution: Solution) -> Verdict:
+    from codesign.solve_combined import verify_combined
+
+    bounds, value = verify_combined(solution)
+    return Verdict(
+        configurations=bounds.size,
+        by_kept_multipliers=len({item.index for item in solution.evidence}),
         largest_bound=float(np.max(bounds)),
         value=value,
     )

@@ -56,5 +56,6 @@ def test_byte_order_mark_is_accepted(tmp_path):
 
 def test_schema_asks_for_every_setting():
     schema = recipe_schema()
-    assert set(schema["required"]) == {"camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "drive_ma"}
+    assert set(schema["required"]) == {"camera", "channel", "gain_db", "filter", "f_number"}
+    assert schema["oneOf"] == [{"required": ["exposure_us", "drive_ma"]}, {"required": ["shot"]}]
     assert schema["additionalProperties"] is False

@@ -126,6 +126,11 @@ class Problem:
         return "target" if index < first else "background" if index < first + len(self.backgrounds) else "guard"
 
     @property
+    def combined(self) -> bool:
+        """Whether a decision rests on several readings combined by weights."""
+        return self.spec.detection.combine_channels or self.spec.detection.shots > 1
+
+    @property
     def strobe(self) -> bool:
         """Whether the LEDs are on during the exposure only."""
         return self.spec.lighting.mode == "strobe"

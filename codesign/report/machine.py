@@ -36,7 +36,9 @@ schema                   "codesign.performance/1"
 problem                  as above
 settings                 {"camera": id, "channel": name, "gain_db": number, "filter": id, "f_number": number,
                          "exposure_us": number, "drive_ma": {LED id: current of each emitter}, "emitters": {LED id:
-                         number in use}, empty where the problem fixes the numbers}
+                         number in use}, empty where the problem fixes the numbers}; with several shots also
+                         "shots": [{"exposure_us", "drive_ma"}], exposure_us is then their sum and drive_ma empty
+weights                  {channel or "shot 1" ..: number}, only where several readings are combined
 cnr                      contrast-to-noise ratio of the worst pair
 sign                     "brighter" or "darker": the target against the background
 signal_e                 mean electrons of the target minus the background, worst pair
@@ -128,13 +130,17 @@ def _problem(problem: Problem) -> dict[str, Any]:
 
 def _settings(design: Design) -> dict[str, Any]:
     names = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "drive_ma", "emitters")
-    return {name: getattr(design, name) for name in names}
+    found = {name: getattr(design, name) for name in names}
+    if design.shots:
+        found["shots"] = [_fields(shot, "exposure_us drive_ma") for shot in design.shots]
+    return found
 
 
 def _performance(performance: Performance) -> dict[str, Any]:
     total = sum(sum(pair) for pair in performance.noise.values())
     return {
         "settings": _settings(performance.design),
+        **({"weights": dict(performance.weights)} if performance.weights else {}),
         "cnr": performance.cnr,
         "sign": performance.sign,
         "signal_e": performance.signal_e,

@@ -3,19 +3,28 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Mapping
+from dataclasses import replace
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Self
 
-from pydantic import Field, ValidationError
+from pydantic import Field, ValidationError, model_validator
 
 from codesign.catalog.common import Record, explain
-from codesign.design import Design
+from codesign.design import Design, Shot
 from codesign.errors import ProblemError
 from codesign.problem import read_toml
 from codesign.report.output import plain, write_file
 
 if TYPE_CHECKING:
     from codesign.solve import Solution
+
+
+class ShotRecipe(Record):
+    """One of several exposures of a frame."""
+
+    exposure_us: float = Field(gt=0, description="exposure [us]")
+    drive_ma: dict[str, float] = Field(description="current of each LED by id [mA]; LEDs left out are off")
 
 
 class Recipe(Record):
@@ -26,11 +35,29 @@ class Recipe(Record):
     gain_db: float = Field(ge=-40, le=80, description="gain of the camera [dB]")
     filter: str = Field(min_length=1, description="id of the filter, 'none' for no filter")
     f_number: float = Field(ge=0.5, le=64, description="f-number of the lens")
-    exposure_us: float = Field(gt=0, description="exposure [us]")
-    drive_ma: dict[str, float] = Field(description="current of each LED by id [mA]; LEDs left out are off")
+    exposure_us: float | None = Field(default=None, gt=0, description="exposure [us]; not with [[shot]] tables")
+    drive_ma: dict[str, float] | None = Field(
+        default=None, description="current of each LED by id [mA]; LEDs left out are off; not with [[shot]] tables"
+    )
     emitters: dict[str, int] = Field(
         default={}, description="number of emitters of an LED by id, where build.emitters = 'free'"
     )
+    shot: tuple[ShotRecipe, ...] = Field(
+        default=(), max_length=3, description="shots of one frame, in place of exposure_us and drive_ma"
+    )
+    weights: dict[str, float] = Field(
+        default={}, description="weight of each channel, or of 'shot 1' .., where several are combined; best if absent"
+    )
+
+    @model_validator(mode="after")
+    def _check(self) -> Self:
+        for name in ("exposure_us", "drive_ma"):
+            given = getattr(self, name) is not None
+            if given and self.shot:
+                raise ValueError(f"{name} and [[shot]] tables do not go together; give it in each [[shot]]")
+            if not given and not self.shot:
+                raise ValueError(f"{name} is missing")
+        return self
 
 
 def recipe_toml(design: Design, comment: str = "") -> str:
@@ -59,12 +86,22 @@ def recipe_toml(design: Design, comment: str = "") -> str:
     <BLANKLINE>
     """
     head = [f"# {line}".rstrip() for line in comment.splitlines()]
-    names = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us")
+    names = ("camera", "channel", "gain_db", "filter", "f_number", *(() if design.shots else ("exposure_us",)))
     settings = [f"{name} = {_value(getattr(design, name))}" for name in names]
-    drives = [f"{led} = {_value(ma)}" for led, ma in design.drive_ma.items()]
+    drives = [] if design.shots else ["", *_section("[drive_ma]", design.drive_ma)]
     emitters = [f"{led} = {count}" for led, count in design.emitters.items()]
     counts = ["", "[emitters]", *emitters] if emitters else []
-    return "\n".join([*head, *settings, "", "[drive_ma]", *drives, *counts, ""])
+    weights = {json.dumps(name): value for name, value in design.weights.items()}
+    weighted = ["", *_section("[weights]", weights)] if weights else []
+    shots = []
+    for shot in design.shots:
+        exposure = f"exposure_us = {_value(shot.exposure_us)}"
+        shots += ["", "[[shot]]", exposure, *_section("[shot.drive_ma]", shot.drive_ma)]
+    return "\n".join([*head, *settings, *drives, *counts, *weighted, *shots, ""])
+
+
+def _section(title: str, values: Mapping[str, float]) -> list[str]:
+    return [title, *(f"{name} = {_value(value)}" for name, value in values.items())]
 
 
 def _value(value: str | float) -> str:
@@ -78,12 +115,13 @@ def write_recipe(solution: Solution, path: str | Path) -> None:
     """Write a solution's recipe to a file, headed by what it is for."""
     problem, recipe = solution.problem, solution.recipe
     comment = f"Recipe for {plain(problem.spec.title)} ({plain(problem.where)}), predicted CNR {recipe.cnr:.6g}"
-    write_file(path, recipe_toml(recipe.design, comment))
+    write_file(path, recipe_toml(replace(recipe.design, weights=recipe.weights), comment))
 
 
 def recipe_schema() -> dict[str, Any]:
     """JSON Schema of the recipe file."""
-    return {**Recipe.model_json_schema(), "$schema": "https://json-schema.org/draft/2020-12/schema"}
+    either = {"oneOf": [{"required": ["exposure_us", "drive_ma"]}, {"required": ["shot"]}]}
+    return {**Recipe.model_json_schema(), **either, "$schema": "https://json-schema.org/draft/2020-12/schema"}
 
 
 def load_recipe(path: str | Path) -> Design:
@@ -100,8 +138,17 @@ def load_recipe(path: str | Path) -> Design:
         recipe = Recipe.model_validate(table)
     except ValidationError as error:
         raise ProblemError(explain(error, path.name, Recipe)) from None
-    negative = next((led for led, ma in recipe.drive_ma.items() if ma < 0), None)
-    if negative is not None:
-        ma = recipe.drive_ma[negative]
-        raise ProblemError(f"{path.name}: drive_ma.{negative} is {ma:g}, must be >= 0; 0 is off")
-    return Design(**{name: getattr(recipe, name) for name in Recipe.model_fields}, where=path.name)
+    for drives in (recipe.drive_ma or {}, *(shot.drive_ma for shot in recipe.shot)):
+        negative = next((led for led, ma in drives.items() if ma < 0), None)
+        if negative is not None:
+            ma = drives[negative]
+            raise ProblemError(f"{path.name}: drive_ma.{negative} is {ma:g}, must be >= 0; 0 is off")
+    shots = tuple(Shot(exposure_us=shot.exposure_us, drive_ma=shot.drive_ma) for shot in recipe.shot)
+    plain_names = ("camera", "channel", "gain_db", "filter", "f_number", "emitters", "weights")
+    return Design(
+        **{name: getattr(recipe, name) for name in plain_names},
+        exposure_us=sum(shot.exposure_us for shot in shots) if shots else recipe.exposure_us,
+        drive_ma=recipe.drive_ma or {},
+        shots=shots,
+        where=path.name,
+    )

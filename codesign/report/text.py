@@ -6,7 +6,7 @@ import math
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
-from codesign.design import Design, LimitUse, Performance
+from codesign.design import Design, LedState, LimitUse, Performance
 from codesign.problem import Problem
 from codesign.report.cautions import cautions
 from codesign.report.layout import NARROWEST, bar, bullet, heading, labelled, number, percent, table
@@ -106,15 +106,34 @@ def _settings(problem: Problem, performance: Performance, width: int) -> list[st
         ("camera", camera),
         ("filter", design.filter),
         ("f-number", f"{design.f_number:g}"),
-        ("exposure", f"{design.exposure_us:.10g} µs, {_light_mode(problem, performance)}"),
+        ("exposure", f"{_exposure(design)}, {_light_mode(problem, performance)}"),
+        *([("weights", _weights(performance))] if performance.weights else []),
     ):
         lines += labelled(label, text, width)
     if not performance.leds:
         return lines + labelled("LEDs", "all off", width)
     rows = [
-        (s.id, f"{s.drive_ma:.10g} mA", f"× {s.emitters}", f"junction {s.junction_c:.1f} °C") for s in performance.leds
+        (s.id, _currents(design, s), f"× {s.emitters}", f"junction {s.junction_c:.1f} °C") for s in performance.leds
     ]
     return lines + table(("LED", "current", "emitters", "predicted"), rows, width)
+
+
+def _exposure(design: Design) -> str:
+    if not design.shots:
+        return f"{design.exposure_us:.10g} µs"
+    return f"{len(design.shots)} shots of " + ", ".join(f"{shot.exposure_us:.10g}" for shot in design.shots) + " µs"
+
+
+def _currents(design: Design, state: LedState) -> str:
+    """Current of an LED, shot after shot."""
+    if not design.shots:
+        return f"{state.drive_ma:.10g} mA"
+    return ", ".join(f"{shot.drive_ma.get(state.id, 0.0):.10g}" for shot in design.shots) + " mA"
+
+
+def _weights(performance: Performance) -> str:
+    """How the readings are added up before the threshold."""
+    return ", ".join(f"{plain(name)} {weight:+.4f}" for name, weight in performance.weights.items())
 
 
 def _light_mode(problem: Problem, performance: Performance) -> str:

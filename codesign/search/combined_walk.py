@@ -1,0 +1,172 @@
+"""Walk over all configurations whose readings are combined by weights: channels read together, or several shots.
+
+A first bound of every configuration leaves out the clutter that readings share, which makes them independent:
+``CNR² ≤ Σ_m CNR_m²``. The most promising ones are certified over all recipes and weights, best first, until the bound is
+within the gap or a number of them is done; the gap is then what it is.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from codesign.assemble import Assembly
+from codesign.certificate_combined import CombinedProof, Readings
+from codesign.design import JOINT
+from codesign.limits import Setting
+from codesign.program import Array
+from codesign.search.bounds import both_bounds
+from codesign.search.combined import Combined, alternate, best_alternation, certify_combined, turned
+from codesign.search.readings import channel_readings, frame_time, shot_readings, single
+
+#: Configurations looked at to find the temperatures, and certified before an honest gap is reported.
+SCOUTED, MOST_CERTIFIED = 4, 20
+#: Filters bounded together.
+FILTERS_TOGETHER = 4096
+#: Factors on the exposure of one shot that are tried, and gain of the last polish.
+EXPOSURE_STEPS, POLISH_GAP = (0.5, 2.0), 1e-5
+
+
+@dataclass(frozen=True, slots=True)
+class CombinedEvidence:
+    """Proofs, one for each contrast sign, that bound one configuration."""
+
+    index: int
+    proof: tuple[CombinedProof, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Recipe:
+    """Recipe and weights found for a configuration; exposures [s] where there are shots."""
+
+    point: Array
+    weights: Array
+    value: float
+    exposures: Array | None
+
+
+def _never() -> bool:
+    return False
+
+
+@dataclass(slots=True)
+class CombinedWalk:
+    """Bounds of all configurations, numbered ``setting · F + filter``, and what was found."""
+
+    assembly: Assembly
+    gap: float
+    stop: Callable[[], bool] = _never
+    upper: Array = field(init=False)
+    found: dict[int, Recipe] = field(init=False, default_factory=dict)
+    evidence: list[CombinedEvidence] = field(init=False, default_factory=list)
+
+    def __post_init__(self) -> None:
+        self.upper = np.concatenate([self.independent(setting) for setting in self.assembly.settings])
+
+    @property
+    def filters(self) -> int:
+        """Number of filters F."""
+        return len(self.assembly.problem.filters)
+
+    @property
+    def shots(self) -> int:
+        """Shots in a frame."""
+        return self.assembly.problem.spec.detection.shots
+
+    def configuration(self, index: int) -> tuple[Setting, int]:
+        """Setting and filter of a number."""
+        setting, filter_index = divmod(int(index), self.filters)
+        return self.assembly.settings[setting], filter_index
+
+    def independent(self, setting: Setting) -> Array:
+        """Closed-form bounds of all filters of a setting, as if the readings shared no clutter. (F,)"""
+        names = setting.channel.split(JOINT)
+        total = np.zeros(self.filters)
+        for start in range(0, self.filters, FILTERS_TOGETHER):
+            part = slice(start, min(start + FILTERS_TOGETHER, self.filters))
+            for name in names:
+                program = self.assembly.program(replace(setting, channel=name), part, coarse=True)
+                if len(names) * self.shots > 1:
+                    program = replace(program, noise_rows=program.noise_rows[:, :2])
+                total[part] += self.shots * both_bounds(program).max(axis=1) ** 2
+        fits = self.shots == 1 or frame_time(self.assembly, setting, self.shots) > 0
+        return np.sqrt(total) if fits else np.zeros(self.filters)
+
+    def readings(self, index: int, exposures: Array | None = None) -> Readings:
+        """Readings of a configuration; for shots at fixed exposures [s] or, without, as a relaxation over all."""
+        setting, filter_index = self.configuration(index)
+        if self.shots == 1:
+            return channel_readings(self.assembly, setting, filter_index)
+        return shot_readings(self.assembly, setting, filter_index, self.shots, exposures)
+
+    def recipe(self, index: int, gap: float) -> Recipe:
+        """Best recipe that alternation finds; shots also try other exposures."""
+        if self.shots == 1:
+            return Recipe(*best_alternation(self.readings(index), gap), None)
+        setting, filter_index = self.configuration(index)
+        one = single(self.assembly, setting, filter_index)
+        low, high = float(one.time_low[0]), float(one.time_high[0])
+        total = frame_time(self.assembly, setting, self.shots)
+        exposures = np.full(self.shots, min(high, total / self.shots))
+        if exposures[0] < low:
+            return Recipe(np.zeros(0), np.zeros(self.shots), 0.0, exposures)
+        best = Recipe(*best_alternation(self.readings(index, exposures), gap), exposures)
+        for shot in range(self.shots):
+            for factor in EXPOSURE_STEPS:
+                trial = best.exposures.copy()
+                trial[shot] = np.clip(trial[shot] * factor, low, min(high, total - trial.sum() + trial[shot]))
+                if abs(trial[shot] / best.exposures[shot] - 1) > 1e-6:
+                    best = max(best, self._from(index, best.weights, trial, gap), key=lambda r: r.value)
+        return best
+
+    def _from(self, index: int, weights: Array, exposures: Array | None, gap: float) -> Recipe:
+        """Alternation from known weights at fixed exposures, with either contrast sign."""
+        readings = self.readings(index, exposures)
+        both = [alternate(turned(readings, sign), weights, gap) for sign in (1.0, -1.0)]
+        return Recipe(*max(both, key=lambda item: item[2]), exposures)
+
+    def polish(self, index: int, known: Recipe) -> Recipe:
+        """Improve a recipe at its exposures from its own weights."""
+        better = self._from(index, known.weights, known.exposures, POLISH_GAP)
+        return better if better.value >= known.value else known
+
+    def scout(self) -> int | None:
+        """Best of the configurations that look best, without proof; None where none has any contrast."""
+        for index in np.argsort(-self.upper)[:SCOUTED]:
+            if self.upper[index] > 0:
+                self.found[int(index)] = self.recipe(int(index), self.gap)
+        return self.leader
+
+    @property
+    def leader(self) -> int | None:
+        """Best configuration found."""
+        seen = {i: r.value for i, r in self.found.items() if r.value > 0}
+        return max(seen, key=seen.get) if seen else None
+
+    def best(self) -> int | None:
+        """Certify, best bound first, until no configuration can beat the best found by more than the gap."""
+        done: set[int] = set()
+        while len(done) < MOST_CERTIFIED and not self.stop():
+            value = 0.0 if self.leader is None else self.found[self.leader].value
+            open_ = [i for i in np.flatnonzero(self.upper > value * (1 + self.gap)) if i not in done]
+            if not open_:
+                break
+            index = int(max(open_, key=lambda i: self.upper[i]))
+            done.add(index)
+            self._certify(index, value)
+        return self.leader
+
+    def _certify(self, index: int, target: float) -> None:
+        known = self.found.get(index) or self.recipe(index, self.gap)
+        self.found[index] = known
+        result: Combined = certify_combined(
+            self.readings(index),
+            self.gap,
+            target,
+            known=(known.point, known.weights, known.value),
+            exchangeable=self.shots > 1,
+        )
+        self.evidence.append(CombinedEvidence(index, result.proof))
+        self.upper[index] = min(self.upper[index], result.bound)
