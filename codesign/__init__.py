@@ -18,6 +18,7 @@ _PUBLIC = {
     "build_problem": "codesign.problem",
     "errors": "codesign",
     "evaluate": "codesign.design",
+    "least_cost": "codesign.least_cost",
     "load_catalog": "codesign.catalog",
     "load_problem": "codesign.problem",
     "load_recipe": "codesign.report.recipe_file",

@@ -159,7 +159,7 @@ class _Bisection:
 
     def _open(self) -> None:
         """Reach the CNR without a limit on the quantity, or say the greatest CNR there is."""
-        reached, proven = self._step(np.inf)
+        reached, _ = self._step(np.inf)
         if reached:
             return
         search = search_rounds(self.problem, CNR_GAP, clock=self.clock, start=self.near)
