@@ -24,6 +24,7 @@ from codesign.errors import CodesignError, InfeasibleError
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
+    from codesign.least_cost import LeastCost
     from codesign.solve import Solution
 
 INTERRUPTED = 130
@@ -99,13 +100,25 @@ def solve(
     gap: Annotated[float | None, typer.Option(metavar="G", help="Relative gap to prove, 1e-8 to 0.5.")] = None,
     alternatives: Annotated[int | None, typer.Option(metavar="N", help="Runners-up to certify, 0 to 50.")] = None,
     verify: Annotated[bool, typer.Option("--verify", help="Check the whole proof again from the start.")] = False,
+    time_limit: Annotated[
+        float | None, typer.Option(metavar="SECONDS", min=0, help="Stop then with the best so far and its proven gap.")
+    ] = None,
+    least: Annotated[
+        str | None, typer.Option(metavar="WHAT", help="Least price, heat or exposure for the CNR required instead.")
+    ] = None,
+    cnr: Annotated[float | None, typer.Option(metavar="CNR", help="CNR required with --least.")] = None,
 ) -> None:
     """Find the recipe of greatest CNR, with its proof.
 
     Example: cnr solve yellow-stain --recipe recipe.toml
     """
-    solution = _solved(problem, gap, alternatives)
-    _show_solution(solution, _verified(solution) if verify else None, json=json)
+    cost = None
+    if least is None:
+        solution = _solved(problem, gap, alternatives, time_limit)
+    else:
+        cost = _least(problem, least, cnr, gap, time_limit)
+        solution = cost.solution
+    _show_solution(solution, _verified(solution) if verify else None, json=json, cost=cost)
     if recipe is not None:
         from codesign.report.recipe_file import write_recipe
 
@@ -196,7 +209,16 @@ def demos() -> None:
     _print("\n".join(table(("demo", "what it finds"), rows, 80, left=(0, 1))) + "\n")
 
 
-def _solved(name: str, gap: float | None, alternatives: int | None) -> Solution:
+def _least(name: str, quantity: str, cnr: float | None, gap: float | None, time_limit: float | None) -> LeastCost:
+    from codesign.least_cost import DEFAULT_GAP, least_cost
+    from codesign.problem import load_problem, solver_settings
+
+    problem = load_problem(name)
+    wanted = solver_settings(problem, gap=gap).gap if gap is not None else DEFAULT_GAP
+    return least_cost(problem, quantity, cnr, gap=wanted, time_limit=time_limit)
+
+
+def _solved(name: str, gap: float | None, alternatives: int | None, time_limit: float | None = None) -> Solution:
     from codesign.problem import load_problem, solver_settings
     from codesign.report.output import Progress
     from codesign.solve import solve
@@ -205,7 +227,9 @@ def _solved(name: str, gap: float | None, alternatives: int | None) -> Solution:
     wanted = solver_settings(problem, gap=gap, alternatives=alternatives)
     progress = Progress()
     try:
-        return solve(problem, gap=wanted.gap, alternatives=wanted.alternatives, progress=progress)
+        return solve(
+            problem, gap=wanted.gap, alternatives=wanted.alternatives, progress=progress, time_limit=time_limit
+        )
     finally:
         progress.clear()
 
@@ -216,12 +240,23 @@ def _verified(solution: Solution) -> Any:
     return verify(solution)
 
 
-def _show_solution(solution: Solution, verdict: Any, *, json: bool) -> None:
+def _show_solution(solution: Solution, verdict: Any, *, json: bool, cost: LeastCost | None = None) -> None:
     from codesign.report import machine, text
 
     if json:
-        _print(machine.as_json(machine.solution_dict(solution, verdict)))
+        result = machine.solution_dict(solution, verdict)
+        if cost is not None:
+            names = ("quantity", "unit", "value", "bound", "required_cnr", "status")
+            result["least"] = {name: getattr(cost, name) for name in names}
+        _print(machine.as_json(result))
     else:
+        if cost is not None:
+            _print(
+                f"least {cost.quantity}  {cost.value:.6g} {cost.unit}\n"
+                f"  reaches CNR {cost.required_cnr:g}; none does with {cost.bound:.6g} {cost.unit} ({cost.status})\n\n"
+            )
+        if solution.status == "stopped":
+            _print(f"stopped early: the proven gap is {solution.certificate.gap:.3g}\n\n")
         _print(text.solution_text(solution, verdict=verdict))
 
 
