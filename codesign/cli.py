@@ -19,6 +19,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 from typer.core import TyperGroup
 
+from codesign.cli_vary import vary, worth
 from codesign.errors import CodesignError, InfeasibleError
 
 if TYPE_CHECKING:
@@ -264,6 +265,10 @@ def _print(text: str) -> None:
     from codesign.report.output import shown
 
     typer.echo(shown(text, sys.stdout.encoding), nl=False)
+
+
+app.command()(vary)
+app.command()(worth)
 
 
 def run() -> None:

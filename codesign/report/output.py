@@ -128,3 +128,19 @@ class Progress:
             self.stream.write("\r" + " " * self.width + "\r")
             self.stream.flush()
             self.width = 0
+
+    close = clear
+
+
+class PointProgress(Progress):
+    """The same for a study of many points."""
+
+    def __call__(self, done: int, total: int) -> None:
+        """Show how many points are solved."""
+        seconds = time.monotonic() - self.started
+        if not self.watched or seconds < QUIET_SECONDS:
+            return
+        line = f"{done} of {total} points, {seconds:.0f} s"
+        self.stream.write("\r" + line.ljust(self.width))
+        self.stream.flush()
+        self.width = len(line)

@@ -93,6 +93,12 @@ class Resolved:
         return self.optimum.cnr
 
     @property
+    def drive_ma(self) -> dict[str, float]:
+        """Currents of the LEDs that matter: half a setting step at least. [mA]"""
+        least = 0.5 * self.problem.spec.lighting.drive_step_ma
+        return {led: ma for led, ma in self.optimum.design.drive_ma.items() if ma >= least}
+
+    @property
     def bound(self) -> float:
         """No configuration has a CNR above this."""
         return self.certificate.bound

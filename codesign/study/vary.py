@@ -267,7 +267,7 @@ def _solve(
         filter=design.filter,
         f_number=design.f_number,
         exposure_us=design.exposure_us,
-        drive_ma=dict(design.drive_ma),
+        drive_ma=found.drive_ma,
         binding=found.binding,
     )
     return point, found
