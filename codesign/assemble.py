@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from functools import cached_property
+from threading import get_ident
 
 import numpy as np
 
@@ -138,7 +139,7 @@ class Assembly:
         self.problem = problem
         self.junction_c = np.asarray(junction_c, dtype=float)
         self._table = RateTable(problem, self.junction_c)
-        self._held: tuple[tuple, Rates] | None = None
+        self._held: dict[int, tuple[tuple, Rates]] = {}
         self._segments: dict[tuple[str, bool], Segments] = {}
 
     @cached_property
@@ -224,21 +225,25 @@ class Assembly:
         """Electron rates of a setting's camera channel and f-number behind some filters.
 
         A filter in front of the lens does not see the f-number: one product serves all, scaled by 1/N². The last
-        slice asked for is kept, for other gains and pulse levels of the same camera.
+        slice each thread asked for is kept, for other gains and pulse levels of the same camera, until `forget`.
         """
         optics = self.problem.spec.optics
         base = optics.f_numbers[0] if optics.filter_position == "front" else setting.f_number
         channel = (setting.camera.id, setting.channel, base)
         if isinstance(filters, slice):
             key = (*channel, filters.start, filters.stop, filters.step, coarse)
-            held = self._held
+            held = self._held.get(get_ident())
             if held is None or held[0] != key:
                 held = key, self._table.rates(setting.camera, setting.channel, base, filters, coarse)
-                self._held = held
+                self._held[get_ident()] = held
             found = held[1]
         else:
             found = self._table.rates(setting.camera, setting.channel, base, filters, coarse)
         return found.scaled((base / setting.f_number) ** 2)
+
+    def forget(self) -> None:
+        """Let go of the rates kept."""
+        self._held.clear()
 
     def segments(self, setting: Setting, coarse: bool = False) -> Segments:
         """Drive segments of a setting's pulse level, kept for the settings that share it."""

@@ -19,7 +19,8 @@ from codesign.errors import CertificateError
 from codesign.limits import Setting
 from codesign.program import Array
 from codesign.search.bounds import simple_proof
-from codesign.search.walk import FILTERS_TOGETHER, Evidence, Walk
+from codesign.search.closed_form import blocks
+from codesign.search.walk import Evidence, Walk
 from codesign.solve import Solution
 
 #: Forward model and optimiser's arrays must agree to this at equal junction temperatures.
@@ -119,8 +120,7 @@ def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
 def _of_setting(walk: Walk, setting: Setting) -> Array:
     """Bounds of all filters and both signs of a setting, some filters at a time. (2 F,)"""
     found = np.empty((walk.filters, 2))
-    for start in range(0, walk.filters, FILTERS_TOGETHER):
-        part = slice(start, min(start + FILTERS_TOGETHER, walk.filters))
+    for part in blocks(walk.filters):
         found[part] = np.min([_closed_form(walk, setting, part, pair) for pair in range(walk.pairs)], axis=0)
     return walk.buildable(setting, found).ravel()
 

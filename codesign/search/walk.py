@@ -20,8 +20,8 @@ from codesign.certificate_build import BuildLeaf, BuildSpace, BuildSplit, build_
 from codesign.certificate_pairs import PairProof, pair_contrasts
 from codesign.limits import Setting
 from codesign.program import Array, Program, stack
-from codesign.search.bounds import both_bounds
 from codesign.search.build import Built, certify_build, polish_build
+from codesign.search.closed_form import closed_form, limiting_pairs
 from codesign.search.frontier import Certified, Hint, certify
 from codesign.search.pairs import CertifiedPairs, certify_pairs, polish_pairs
 from codesign.search.tighten import Tightening
@@ -29,10 +29,6 @@ from codesign.search.tighten import Tightening
 SIGNS = (1, -1)
 #: Configurations refined together on rung 1: first few, to get a good target early, then many.
 FIRST_CHUNK, LARGEST_CHUNK = 48, 384
-#: Filters bounded together on rung 0, to bound the memory.
-FILTERS_TOGETHER = 4096
-#: Most pairs of target and background whose bounds are worked out for every configuration on rung 0.
-QUICK_PAIRS = 3
 #: How far rung 1 has looked at a configuration: at its coarse program, at its full one.
 COARSELY, FULLY = 1, 2
 #: Fewer open configurations than these go to rung 2 one at a time without a look at their full programs together.
@@ -114,8 +110,10 @@ class Walk:
         self.upper = np.full(count, np.inf)
         self.pair_order = list(range(self.pairs))
         if self.closed_form:
-            self.quick_pairs = self._limiting_pairs()
-            self.upper = np.concatenate([self._closed_form(setting) for setting in self.assembly.settings])
+            self.quick_pairs = limiting_pairs(self.assembly)
+            bounds = closed_form(self.assembly, self.quick_pairs)
+            settings = zip(self.assembly.settings, bounds, strict=True)
+            self.upper = np.stack([self.buildable(setting, own) for setting, own in settings]).ravel()
         self.refined = np.zeros(count, dtype=np.int8)
         self.tried = np.full(count, np.inf)
         self.tally.configurations = count
@@ -243,26 +241,6 @@ class Walk:
             return None, 0.0
         leader = max(inside, key=lambda i: self.found[i].value)
         return leader, self.found[leader].value
-
-    def _closed_form(self, setting: Setting) -> Array:
-        """Rung 0 for all filters and both signs of a setting, (2 F,): the least bound of any pair."""
-        least = np.full((self.filters, 2), np.inf)
-        for start in range(0, self.filters, FILTERS_TOGETHER):
-            part = slice(start, min(start + FILTERS_TOGETHER, self.filters))
-            for pair in self.quick_pairs:
-                bounds = both_bounds(self.assembly.program(setting, part, coarse=True, pair=pair))
-                least[part] = np.minimum(least[part], bounds)
-        return self.buildable(setting, least).ravel()
-
-    def _limiting_pairs(self) -> list[int]:
-        """The pairs that most often have the least closed-form bound, judged by one setting; these do for rung 0."""
-        if self.pairs <= QUICK_PAIRS:
-            return list(range(self.pairs))
-        setting, part = self.assembly.settings[0], slice(0, min(self.filters, FILTERS_TOGETHER))
-        programs = (self.assembly.program(setting, part, coarse=True, pair=pair) for pair in range(self.pairs))
-        bounds = [both_bounds(program) for program in programs]
-        often = np.bincount(np.argmin(bounds, axis=0).ravel(), minlength=self.pairs)
-        return [int(pair) for pair in np.argsort(-often, kind="stable")[:QUICK_PAIRS]]
 
     def buildable(self, setting: Setting, bounds: Array) -> Array:
         """Bounds (F, 2) of a setting, 0 where camera and filter leave too little of the budget."""
