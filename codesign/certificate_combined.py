@@ -1,7 +1,7 @@
 """Several readings of one decision combined by linear weights: weighted programs, and a bound over all weights.
 
-Readings m (channels of one exposure, or shots one after another) have signals ``d_m·y``, independent variances
-``V_m(y) = c_m + s_m·y + |P_m y|²`` and surface clutter ``C_m y`` that is common to them: the same samples. With weights w
+Readings m (channels of one exposure, or shots in turn) have signals ``d_m·y``, independent variances
+``V_m(y) = c_m + s_m·y + |P_m y|²`` and surface clutter ``C_m y`` in common: the same samples. With weights w
 
     CNR_w = Σ w_m d_m·y / σ_w,   σ_w² = Σ w_m² V_m + |Σ w_m C_m y|²,
 
@@ -11,10 +11,14 @@ Bound over all weights. σ is a norm in w. A box of weights is the hull of its c
 component drawn on its own from its two ends), and if no recipe exceeds Γ at any corner,
 ``Σ w_m d_m·y ≤ Γ Σ θ_i σ(w^i) ≤ Γ √(Σ θ_i σ(w^i)²)``. The last sum exceeds ``σ_w²`` by the spread of the corners,
 ``Σ_m var_m (V_m + |C_m y|²) ≤ Σ_m var_m (1+Λ_m) V_m`` with Λ_m a bound on clutter over independent variance. For an
-interval ``[a, b]`` of one sign ``var_m ≤ w_m² (b−a)²/(4ab)``; else ``var_m V_m ≤ ρ_m V_face (b−a)²/4`` with ρ_m a bound on
-``V_m/V_face``, where the face's own weight is 1. So no weights of the box reach more than κ Γ with
+interval ``[a, b]`` of one sign ``var_m ≤ w_m² (b−a)²/(4ab)``; else ``var_m V_m ≤ ρ_m V_face (b−a)²/4`` with ρ_m a
+bound on ``V_m/V_face``, where the face's own weight is 1. So no weights of the box reach more than κ Γ with
 
     κ² = 1 + max over the one-sign intervals of (1+Λ_m) (b−a)²/(4ab) + Σ over the others of (1+Λ_m) ρ_m (b−a)²/4.
+
+Shots have columns of their own, which gives a bound without κ. In a box of one sign ``y'_m = |w_m|/high_m · y_m`` only
+takes light away, so it is feasible; signal, PRNU and clutter of ``(w, y)`` are those of ``(high, y')``, shot noise is
+at least ``low_m high_m s_m·y'_m``, the floor at least ``low_m² c_m`` (sizes). One such program bounds the whole box.
 
 No solver is imported here.
 """
@@ -23,7 +27,7 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -64,6 +68,22 @@ class Readings:
             floor=np.array([w**2 @ self.floor]),
         )
 
+    def separate(self) -> bool:
+        """Whether each column serves one reading only, none the common time, and less light breaks no limit."""
+        parts = [self.signal[:, None], self.shot[:, None], self.pattern, self.clutter]
+        used = np.any([np.any(part != 0, axis=1) for part in parts], axis=0)
+        fixed = self.limits.time_low[0] == self.limits.time_high[0]
+        alone = (used.sum(axis=0) <= 1).all() and not used[:, -1].any()
+        return bool(alone and fixed and (self.limits.rows[:, :, :-1] >= 0).all())
+
+    def boxed(self, low: Array, high: Array) -> Program:
+        """The program that bounds all weights between ``low`` and ``high`` (M,) of one sign, for separate readings."""
+        far = np.where(np.abs(high) >= np.abs(low), high, low)
+        near = np.minimum(np.abs(low), np.abs(high))
+        program = self.weighted(far)
+        shot = (near * np.abs(far)) @ self.shot
+        return replace(program, shot=shot[None], floor=np.array([near**2 @ self.floor]))
+
     def moments(self, y: Array) -> tuple[Array, Array]:
         """Difference of means (M,) and mean covariance (M, M) at a recipe ``y`` (n+1,). [e⁻], [e⁻²]"""
         pattern, clutter = self.pattern @ y, self.clutter @ y
@@ -72,7 +92,7 @@ class Readings:
 
 
 def shot_tops(readings: Readings) -> Array:
-    """Most shot noise of each reading, from one limit at a time: each column's share of the limit it fills first. (M,)"""
+    """Most shot noise of each reading, from one limit at a time. (M,) [e⁻²]"""
     first = readings.limits
     full = np.append(first.width, 1.0) * first.time_high[0]
     tops = readings.shot @ full
@@ -123,6 +143,10 @@ class Box:
     low: tuple[float, ...]
     high: tuple[float, ...]
 
+    def one_sign(self) -> bool:
+        """Whether no interval reaches across zero."""
+        return all(low * high >= 0 for low, high in zip(self.low, self.high, strict=True))
+
     def corners(self) -> list[tuple[float, ...]]:
         """All corners, once each."""
         return list(dict.fromkeys(itertools.product(*zip(self.low, self.high, strict=True))))
@@ -164,10 +188,11 @@ def faces(count: int, exchangeable: bool) -> list[Box]:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class CombinedProof:
-    """Boxes that cover all weights, and the proof of each corner's bound."""
+    """Boxes that cover all weights, and proofs of the corners' bounds or, for separate readings, of whole boxes."""
 
     boxes: tuple[Box, ...]
     corners: Mapping[tuple[float, ...], Proof]
+    whole: Mapping[Box, Proof] = field(default_factory=dict)
 
 
 def combined_bound(readings: Readings, proof: CombinedProof, exchangeable: bool = False) -> float:
@@ -178,8 +203,17 @@ def combined_bound(readings: Readings, proof: CombinedProof, exchangeable: bool 
     _require_cover(proof.boxes, faces(readings.count, exchangeable))
     reached = {w: float(bound(readings.weighted(np.array(w)), p)[0]) for w, p in proof.corners.items()}
     spread_ = spread(readings)
+    if proof.whole and not readings.separate():
+        raise CertificateError("certificate: readings that share columns cannot be bounded by whole boxes")
+
+    def of_box(box: Box) -> float:
+        if box in proof.whole and box.one_sign():
+            program = readings.boxed(np.array(box.low), np.array(box.high))
+            return float(bound(program, proof.whole[box])[0])
+        return widening(box, spread_) * max(reached[w] for w in box.corners())
+
     try:
-        return max(widening(box, spread_) * max(reached[w] for w in box.corners()) for box in proof.boxes)
+        return max(of_box(box) for box in proof.boxes)
     except KeyError:
         raise CertificateError("certificate: a corner of the weights has no proof; the bound is rejected") from None
 

@@ -182,7 +182,8 @@ def _combined_noise(
     sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
     found = []
     for surface in (0, 1):
-        variance = sum(v**2 * _independent(term, sensor, x, surface, averaging) for v, x in zip(w, readings, strict=True))
+        own = [_independent(term, sensor, item, surface, averaging) for item in readings]
+        variance = float(w**2 @ own)
         if term.clutter:
             common = sum(v * item.light.clutter[surface] for v, item in zip(w, readings, strict=True))
             variance += float(common @ common) / term.divisor(averaging)

@@ -43,7 +43,7 @@ def solve_combined(
         raise nothing_seen(walk.assembly)
     for _ in range(2):
         junction = _settled(walk, best, junction)
-        walk = CombinedWalk(Assembly(problem, junction), gap, stop)
+        walk = CombinedWalk(Assembly(problem, junction), gap, stop, walk.found)
         walk.scout()
         first, best = best, walk.best()
         if best == first or best is None or stop():

@@ -12,7 +12,7 @@ from test_photon_simulation import estimate_cnr, estimate_mean, estimate_varianc
 
 from codesign import Design, build_problem, evaluate, load_recipe, solve, verify
 from codesign.assemble import Assembly
-from codesign.certificate_combined import CombinedProof, combined_bound
+from codesign.certificate_combined import CombinedProof, combined_bound, faces
 from codesign.design import Shot
 from codesign.errors import CertificateError, ProblemError
 from codesign.report.recipe_file import recipe_toml
@@ -293,3 +293,39 @@ def test_recipe_with_shots_and_an_exposure_is_refused(shots, tmp_path):
     )
     with pytest.raises(ProblemError, match="do not go together"):
         load_recipe(path)
+
+
+# --- shots: whole boxes of weights -------------------------------------------------------------------------------
+
+
+@pytest.fixture(scope="module")
+def difference_images():
+    """Two shots where averaging leaves mostly surface clutter: the best weights have opposite signs."""
+    return solve(build_problem(changed(SHOTS, averaging={"pixels": 400})))
+
+
+def test_difference_images_cancel_clutter(difference_images):
+    weights = list(difference_images.recipe.weights.values())
+    assert weights[0] * weights[1] < 0
+    plain = solve(build_problem(changed(SHOTS, averaging={"pixels": 400}, detection=None)), alternatives=0)
+    assert difference_images.recipe.cnr > 1.2 * plain.certificate.bound
+    assert difference_images.certificate.gap <= 0.05
+    verify(difference_images)
+
+
+def test_box_bound_holds_for_weights_and_exposures_all_around(difference_images):
+    problem, certificate = difference_images.problem, difference_images.certificate
+    junction = np.array([certificate.junction_c[c.id] for c in problem.channels])
+    walk = CombinedWalk(Assembly(problem, junction), 0.05)
+    for exposures in ([2e-3, 2e-3], [2e-3, 5e-4]):
+        readings = walk.readings(difference_images.winner, np.array(exposures))
+        for angle in np.linspace(0, 2 * np.pi, 24, endpoint=False):
+            value = certify(readings.weighted(np.array([np.cos(angle), np.sin(angle)])), 1e-2).value
+            assert value <= certificate.bound * (1 + 1e-9)
+
+
+def test_whole_boxes_need_separate_readings(readings, difference_images):
+    proof = difference_images.evidence[0].proof[0]
+    assert proof.whole
+    with pytest.raises(CertificateError, match="share columns"):
+        combined_bound(readings, replace(proof, boxes=tuple(faces(2, False))))

@@ -29,8 +29,12 @@ from codesign.search.frontier import certify
 SIGNS = (1.0, -1.0)
 #: Alternations from one start, and the relative gain below which they end.
 LARGEST_NUMBER_OF_ROUNDS, LEAST_GAIN = 30, 1e-5
+#: Rounds from every start, and how many of the results are worked out.
+SHORT_ROUNDS, LEADERS = 3, 2
 #: Corners certified for each contrast sign before an honest gap is reported.
 LARGEST_NUMBER_OF_CORNERS = 150
+#: The same for whole boxes of separate readings.
+LARGEST_NUMBER_OF_BOXES = 300
 #: Gap of the programs at fixed weights, as a share of the gap asked for.
 CORNER_SHARE = 0.2
 
@@ -56,10 +60,12 @@ def turned(readings: Readings, sign: float) -> Readings:
     return replace(readings, signal=readings.signal * sign)
 
 
-def alternate(readings: Readings, weights: Array, gap: float) -> tuple[Array, Array, float]:
+def alternate(
+    readings: Readings, weights: Array, gap: float, rounds: int = LARGEST_NUMBER_OF_ROUNDS
+) -> tuple[Array, Array, float]:
     """Best recipe at the weights, best weights at the recipe, and so on; never falls. Returns recipe, weights, CNR."""
     point, value = None, 0.0
-    for _ in range(LARGEST_NUMBER_OF_ROUNDS):
+    for _ in range(rounds):
         trial = certify(readings.weighted(weights), gap).point
         cnr, better = hotelling(*readings.moments(trial))
         if point is not None and not cnr > value * (1 + LEAST_GAIN):
@@ -77,11 +83,18 @@ def starts(count: int) -> list[Array]:
 
 
 def best_alternation(readings: Readings, gap: float) -> tuple[Array, Array, float]:
-    """The best of the alternations from all starts, with either contrast sign."""
-    found = [
-        alternate(turned(readings, sign), weights, gap) for weights in starts(readings.count) for sign in SIGNS
-    ]
-    return max(found, key=lambda item: item[2])
+    """The best of the alternations from all starts with either contrast sign.
+
+    A few rounds from each start, the leaders to the end. The weights returned make the weighted target brighter.
+    """
+    first = [alternate(readings, sign * w, gap, SHORT_ROUNDS) for w in starts(readings.count) for sign in SIGNS]
+    leaders = sorted(first, key=lambda item: -item[2])[:LEADERS]
+    return max((better(readings, known, gap) for known in leaders), key=lambda item: item[2])
+
+
+def better(readings: Readings, known: tuple[Array, Array, float], gap: float) -> tuple[Array, Array, float]:
+    """Alternation from a recipe and weights already found; never worse."""
+    return max(known, alternate(readings, known[1], gap), key=lambda item: item[2]) if known[2] > 0 else known
 
 
 class _Corners:
@@ -106,7 +119,9 @@ class _Corners:
 def bound_over_weights(
     readings: Readings, gap: float, value: float, exchangeable: bool, most: int = LARGEST_NUMBER_OF_CORNERS
 ) -> tuple[float, CombinedProof]:
-    """Bound on the CNR over all recipes and weights of one contrast sign, to the gap above ``value`` where that works."""
+    """Bound on the CNR over all recipes and weights of one sign, to the gap above ``value`` where that works."""
+    if readings.separate():
+        return _bound_by_boxes(readings, gap, value, exchangeable)
     spread_, corners = spread(readings), _Corners(readings, CORNER_SHARE * gap)
     aim, ticket = value * (1 + gap), itertools.count()
 
@@ -125,10 +140,40 @@ def bound_over_weights(
     return -open_[0][0], CombinedProof(boxes=used, corners=kept)
 
 
+def _bound_by_boxes(
+    readings: Readings, gap: float, value: float, exchangeable: bool, most: int = LARGEST_NUMBER_OF_BOXES
+) -> tuple[float, CombinedProof]:
+    """As `bound_over_weights` for readings with columns of their own: one program for each box of one sign."""
+    aim, ticket, whole = value * (1 + gap), itertools.count(), {}
+
+    def entry(box: Box):
+        if not box.one_sign():
+            return (-np.inf, next(ticket), box)
+        program = readings.boxed(np.array(box.low), np.array(box.high))
+        result = certify(program, CORNER_SHARE * gap, aim / (1 + CORNER_SHARE * gap))
+        whole[box] = result.proof
+        return (-result.bound, next(ticket), box)
+
+    open_ = [entry(box) for box in faces(readings.count, exchangeable)]
+    heapq.heapify(open_)
+    while -open_[0][0] > aim and (len(whole) < most or not np.isfinite(open_[0][0])):
+        _, _, box = heapq.heappop(open_)
+        whole.pop(box, None)
+        low, high = np.array(box.low), np.array(box.high)
+        for part in _cut(box, int(np.argmax(high - low))):
+            heapq.heappush(open_, entry(part))
+    used = tuple(box for _, _, box in open_)
+    return -open_[0][0], CombinedProof(boxes=used, corners={}, whole=whole)
+
+
 def _halves(box: Box, spread_: Spread) -> tuple[Box, Box]:
-    """Cut a box where its interval widens the bound most: at zero, else in the middle, by ratio away from zero."""
+    """Cut a box where its interval widens the bound most."""
     found, _ = intervals(box, spread_)
-    m = int(np.argmax(found))
+    return _cut(box, int(np.argmax(found)))
+
+
+def _cut(box: Box, m: int) -> tuple[Box, Box]:
+    """Cut an interval of a box: at zero, else in the middle, by ratio away from zero."""
     low, high = box.low[m], box.high[m]
     if low < 0 < high:
         at = 0.0

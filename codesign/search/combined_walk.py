@@ -1,13 +1,13 @@
 """Walk over all configurations whose readings are combined by weights: channels read together, or several shots.
 
 A first bound of every configuration leaves out the clutter that readings share, which makes them independent:
-``CNR² ≤ Σ_m CNR_m²``. The most promising ones are certified over all recipes and weights, best first, until the bound is
-within the gap or a number of them is done; the gap is then what it is.
+``CNR² ≤ Σ_m CNR_m²``. The most promising ones are certified over all recipes and weights, best first, until the bound
+is within the gap or a number of them is done; the gap is then what it is.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -18,7 +18,7 @@ from codesign.design import JOINT
 from codesign.limits import Setting
 from codesign.program import Array
 from codesign.search.bounds import both_bounds
-from codesign.search.combined import Combined, alternate, best_alternation, certify_combined, turned
+from codesign.search.combined import Combined, alternate, best_alternation, certify_combined
 from codesign.search.readings import channel_readings, frame_time, shot_readings, single
 
 #: Configurations looked at to find the temperatures, and certified before an honest gap is reported.
@@ -58,6 +58,8 @@ class CombinedWalk:
     assembly: Assembly
     gap: float
     stop: Callable[[], bool] = _never
+    #: Recipes of a walk at other temperatures, to start from.
+    start: Mapping[int, Recipe] = field(default_factory=dict)
     upper: Array = field(init=False)
     found: dict[int, Recipe] = field(init=False, default_factory=dict)
     evidence: list[CombinedEvidence] = field(init=False, default_factory=list)
@@ -103,6 +105,8 @@ class CombinedWalk:
 
     def recipe(self, index: int, gap: float) -> Recipe:
         """Best recipe that alternation finds; shots also try other exposures."""
+        if index in self.start and self.start[index].value > 0:
+            return self._from(index, self.start[index].weights, self.start[index].exposures, gap)
         if self.shots == 1:
             return Recipe(*best_alternation(self.readings(index), gap), None)
         setting, filter_index = self.configuration(index)
@@ -122,10 +126,8 @@ class CombinedWalk:
         return best
 
     def _from(self, index: int, weights: Array, exposures: Array | None, gap: float) -> Recipe:
-        """Alternation from known weights at fixed exposures, with either contrast sign."""
-        readings = self.readings(index, exposures)
-        both = [alternate(turned(readings, sign), weights, gap) for sign in (1.0, -1.0)]
-        return Recipe(*max(both, key=lambda item: item[2]), exposures)
+        """Alternation from known weights at fixed exposures."""
+        return Recipe(*alternate(self.readings(index, exposures), weights, gap), exposures)
 
     def polish(self, index: int, known: Recipe) -> Recipe:
         """Improve a recipe at its exposures from its own weights."""
