@@ -10,22 +10,29 @@ import numpy as np
 from codesign.assemble import Assembly, flipped, light_segments
 from codesign.build import build_limits, free
 from codesign.design import Design, Performance, level_at
+from codesign.errors import SolveError
 from codesign.limits import Setting, pulse_levels
 from codesign.problem import Problem
 from codesign.problem.choices import JOINT, FilterChoices
 from codesign.program import Array, Program
 
+#: Between the names of channels read together.
+JOINT_CHANNELS = "+"
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Choice:
-    """One configuration: parts by name, rank of the pulse level, contrast sign, share of each LED's emitters in use."""
+    """One configuration: parts by name, exposure that picks the pulse level [s], contrast sign, share of each LED in use.
+
+    ``share`` holds the emitters in use over those there could be, by LED id, absent for all.
+    """
 
     camera: str
     channel: str
     gain_db: float
     f_number: float
     filter: str
-    level: int
+    exposure_s: float
     sign: int
     share: Mapping[str, float]
 
@@ -35,7 +42,7 @@ class Choice:
         return f"{self.camera} {self.channel}, {self.gain_db:g} dB, filter {self.filter}, f/{self.f_number:g}"
 
     def same_parts(self, other: Choice) -> bool:
-        """Whether all but the pulse level agree."""
+        """Whether all but the exposure agree."""
         names = ("camera", "channel", "gain_db", "f_number", "filter", "sign", "share")
         return all(getattr(self, name) == getattr(other, name) for name in names)
 
@@ -43,7 +50,8 @@ class Choice:
 def choice_of(problem: Problem, optimum: Performance) -> Choice:
     """The configuration of an optimum."""
     design = optimum.design
-    level = level_at(problem, design.exposure_us * 1e-6)
+    if design.shots or JOINT_CHANNELS in design.channel:
+        raise SolveError("several readings are combined: sensitivities are worked out for one reading only")
     share = {led: n / problem.channel(led).emitters for led, n in design.emitters.items()} if free(problem) else {}
     return Choice(
         camera=design.camera,
@@ -51,7 +59,7 @@ def choice_of(problem: Problem, optimum: Performance) -> Choice:
         gain_db=design.gain_db,
         f_number=design.f_number,
         filter=design.filter,
-        level=pulse_levels(problem).index(level),
+        exposure_s=design.exposure_us * 1e-6,
         sign=1 if optimum.sign == "brighter" else -1,
         share=share,
     )
@@ -69,11 +77,16 @@ def narrowed(problem: Problem, choice: Choice, leds: Sequence[str] | None = None
     return replace(problem, cameras=(problem.camera(choice.camera),), filters=filters, channels=channels)
 
 
-def setting_of_choice(problem: Problem, choice: Choice) -> Setting:
+def level_rank(problem: Problem, choice: Choice) -> int:
+    """Which of a problem's pulse levels holds; a nudged problem keeps the rank, not the times."""
+    return pulse_levels(problem).index(level_at(problem, choice.exposure_s))
+
+
+def setting_of_choice(problem: Problem, choice: Choice, rank: int) -> Setting:
     """Its setting in a problem, which may be a nudged one."""
     camera = problem.camera(choice.camera)
     gain = next(g for g in camera.gain_settings() if abs(g.gain_db - choice.gain_db) < 1e-9)
-    level = pulse_levels(problem)[choice.level]
+    level = pulse_levels(problem)[rank]
     return Setting(camera=camera, channel=choice.channel, gain=gain, f_number=choice.f_number, level=level)
 
 
@@ -82,9 +95,9 @@ def shares(problem: Problem, choice: Choice) -> Array:
     return np.array([choice.share.get(channel.id, 1.0) for channel in problem.channels])
 
 
-def programs_of(problem: Problem, choice: Choice, junction_c: Array) -> list[Program]:
+def programs_of(problem: Problem, choice: Choice, rank: int, junction_c: Array) -> list[Program]:
     """Programs of a narrowed problem, one for each pair, for the numbers of emitters chosen."""
-    assembly, setting = Assembly(problem, junction_c), setting_of_choice(problem, choice)
+    assembly, setting = Assembly(problem, junction_c), setting_of_choice(problem, choice, rank)
     share = shares(problem, choice)
     whole = {limit.name for limit in build_limits(problem)}
     found = []
@@ -105,9 +118,9 @@ def programs_of(problem: Problem, choice: Choice, junction_c: Array) -> list[Pro
     return found
 
 
-def point_of(problem: Problem, choice: Choice, design: Design, junction_c: Array) -> Array:
+def point_of(problem: Problem, choice: Choice, rank: int, design: Design, junction_c: Array) -> Array:
     """Charges and exposure of a design, in the columns of `programs_of`. (n+1,)"""
-    segments = light_segments(problem, setting_of_choice(problem, choice), junction_c)
+    segments = light_segments(problem, setting_of_choice(problem, choice, rank), junction_c)
     start = np.cumsum(segments.width) - segments.width
     start = start - start[np.searchsorted(segments.led, segments.led)]
     amps = np.array([design.drive_ma.get(channel.id, 0.0) * 1e-3 for channel in problem.channels])

@@ -210,19 +210,25 @@ def stationary(
     is no optimum to be found from there.
     """
     junction_c = np.zeros(0) if warming is None else np.asarray(junction_c, dtype=float)
-    now = _first_guess(programs, point, junction_c)
+    now, released = _first_guess(programs, point, junction_c), None
     ends = warm_ends(warming, junction_c)
     for _ in range(LARGEST_NUMBER_OF_STEPS):
         _require_shape(now, [programs for pair in ends for programs in pair])
         residual = now.residual(now.programs, now.junction_c, warming)
         step = np.linalg.lstsq(now.system(warming, ends), -residual, rcond=1e-13)[0]
+        if released is not None and _outward(now, step, released):
+            now, released = _jumped(now, step, warming), None
+            continue
+        released = None
         now, blocked = _moved(now, step, warming)
         n = now.u.size
         if blocked or _add_violated(now):
             continue
         small = np.abs(step[:n]).max() < EXACT and np.abs(step[step.size - junction_c.size :]).max(initial=0) < EXACT_K
-        if small and not _release(now):
-            return now
+        if small:
+            released, free = _release(now)
+            if not free:
+                return now
     raise SolveError("the multipliers of the optimum could not be worked out to the last digits")
 
 
@@ -296,14 +302,31 @@ def _add_violated(now: Stationary) -> bool:
     return True
 
 
-def _release(now: Stationary) -> bool:
-    """Let go of the limit or pair with the most negative multiplier; whether there was one."""
+def _release(now: Stationary) -> tuple[int | None, bool]:
+    """Let go of the limit or pair with the most negative multiplier; which limit, and whether there was any."""
     lowest, least = np.where(now.active, now.price, np.inf), np.where(now.pairs, now.weight, np.inf)
     i, k = int(np.argmin(lowest)), int(np.argmin(least))
     if min(lowest[i], least[k]) > -1e-9:
-        return False
+        return None, False
     if lowest[i] <= least[k]:
         now.active[i], now.price[i] = False, 0.0
-    else:
-        now.pairs[k], now.weight[k] = False, 0.0
-    return True
+        return i, True
+    now.pairs[k], now.weight[k] = False, 0.0
+    return None, True
+
+
+def _outward(now: Stationary, step: Array, released: int) -> bool:
+    """Whether a step leaves through the limit just let go: away from it CNR grows without a stationary point."""
+    return float(limits_of(now.programs[0], now.scale)[0][released] @ step[: now.u.size]) > 0
+
+
+def _jumped(now: Stationary, step: Array, warming: Warming | None) -> Stationary:
+    """Go the other way as far as the limits allow, and begin anew there."""
+    inward = -step[: now.u.size] * (1e6 / max(float(np.abs(step[: now.u.size]).max()), 1e-300))
+    u = now.u + _room(now, inward)[0] * inward
+    programs, junction_c = now.programs, now.junction_c
+    if warming is not None:
+        junction_c = junction_c - warming.balance(programs[0], u * now.scale.column, junction_c)
+        programs = warming.programs(junction_c)
+        _require_shape(now, [programs])
+    return _first_guess(programs, u * now.scale.column, junction_c)

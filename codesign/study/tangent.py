@@ -19,10 +19,10 @@ import numpy as np
 
 from codesign.design import Design
 from codesign.errors import SolveError
-from codesign.limits import thermal_resistance
+from codesign.limits import Setting, thermal_resistance
 from codesign.problem import Problem
 from codesign.program import Array, Program
-from codesign.study.choice import Choice, narrowed, point_of, programs_of, shares
+from codesign.study.choice import Choice, level_rank, narrowed, point_of, programs_of, setting_of_choice, shares
 from codesign.study.stationary import Stationary, stationary, warm_ends
 
 #: Gain (relative CNR per share of an LED) below which an unlit LED stays off.
@@ -36,10 +36,31 @@ class Rig:
 
     problem: Problem
     choice: Choice
+    rank: int
+
+    @classmethod
+    def of(cls, problem: Problem, choice: Choice, leds: Sequence[str] | None = None) -> Rig:
+        """Narrow a problem to a configuration and some LEDs."""
+        part = narrowed(problem, choice, leds)
+        return cls(part, choice, level_rank(part, choice))
+
+    def at(self, problem: Problem) -> Rig:
+        """The same configuration of a nudged twin of the narrowed problem."""
+        return replace(self, problem=problem)
+
+    @property
+    def leds(self) -> tuple[str, ...]:
+        """Ids of its LEDs."""
+        return tuple(channel.id for channel in self.problem.channels)
+
+    @property
+    def setting(self) -> Setting:
+        """Its discrete setting."""
+        return setting_of_choice(self.problem, self.choice, self.rank)
 
     def programs(self, junction_c: Array) -> list[Program]:
         """Arrays of each pair."""
-        return programs_of(self.problem, self.choice, junction_c)
+        return programs_of(self.problem, self.choice, self.rank, junction_c)
 
     def _resistance(self) -> Array:
         """Rise per mean heat of all emitters there could be. (L,) [K/W]"""
@@ -85,16 +106,15 @@ def optimum_near(problem: Problem, choice: Choice, design: Design, junction_c: M
 
     LEDs are lit or put out as the multipliers ask; those that are off stay at ``junction_c``. [deg C]
     """
-    full = narrowed(problem, choice)
+    full = Rig.of(problem, choice)
     known = dict(junction_c)
-    lit = [channel.id for channel in full.channels if design.drive_ma.get(channel.id, 0.0) > 0]
+    lit = [name for name in full.leds if design.drive_ma.get(name, 0.0) > 0]
     for _ in range(LARGEST_NUMBER_OF_ROUNDS):
-        rig = Rig(narrowed(problem, choice, lit), choice)
-        names = [channel.id for channel in rig.problem.channels]
-        junction = np.array([known[name] for name in names])
-        found = settled(rig, point_of(rig.problem, choice, design, junction), junction)
-        known.update(zip(names, found.state.junction_c, strict=True))
-        joining = _joining(full, found, np.array([known[c.id] for c in full.channels]), lit)
+        rig = Rig.of(problem, choice, lit)
+        junction = np.array([known[name] for name in rig.leds])
+        found = settled(rig, point_of_rig(rig, design, junction), junction)
+        known.update(zip(rig.leds, found.state.junction_c, strict=True))
+        joining = _joining(full, found, np.array([known[name] for name in full.leds]))
         if not joining:
             return found
         lit += joining
@@ -102,36 +122,36 @@ def optimum_near(problem: Problem, choice: Choice, design: Design, junction_c: M
     raise SolveError("no settled set of lit LEDs was found near the optimum")
 
 
+def point_of_rig(rig: Rig, design: Design, junction_c: Array) -> Array:
+    """Charges and exposure of a design in the columns of a rig. (n+1,)"""
+    return point_of(rig.problem, rig.choice, rig.rank, design, junction_c)
+
+
 def settled(rig: Rig, point: Array, junction_c: Array) -> Optimum:
     """The optimum over the LEDs of a narrowed problem at which junction temperatures and recipe agree."""
     return Optimum(rig, stationary(rig.programs(junction_c), point, rig, junction_c))
 
 
-def _joining(full: Problem, found: Optimum, junction_c: Array, lit: Sequence[str]) -> list[str]:
+def _joining(full: Rig, found: Optimum, junction_c: Array) -> list[str]:
     """LEDs that are off and whose light would raise the CNR, the best first few."""
-    dark = [channel.id for channel in full.channels if channel.id not in lit]
-    if not dark:
+    own = np.array([full.leds.index(name) for name in found.rig.leds], dtype=int)
+    if own.size == len(full.leds):
         return []
-    state, choice = found.state, found.rig.choice
-    programs = programs_of(full, choice, junction_c)
-    order = {channel.id: index for index, channel in enumerate(full.channels)}
-    own = np.array([order[channel.id] for channel in found.rig.problem.channels])
+    state, programs = found.state, full.programs(junction_c)
     y = np.zeros(programs[0].segments + 1)
     y[np.append(np.isin(programs[0].led, own), True)] = state.point
     column = np.append(programs[0].width, 1.0) * programs[0].time_high[0]
-    rows = state.price[: programs[0].rows.shape[1]] / state.scale.row
-    gain = -(rows @ programs[0].rows[0])
+    gain = -(state.price[: programs[0].rows.shape[1]] / state.scale.row) @ programs[0].rows[0]
     for program, weight in zip(programs, state.weight, strict=True):
         noise = program.noise_rows[0]
         spread = program.floor[0] + program.shot[0] @ y + np.sum((noise @ y) ** 2)
         slope = program.shot[0] + 2 * (noise @ y) @ noise
         gain = gain + weight * (program.signal[0] / (program.signal[0] @ y) - slope / (2 * spread))
-    gain = (gain * column)[:-1]
-    worth = np.full(len(full.channels), -np.inf)
-    np.maximum.at(worth, programs[0].led, gain)
+    worth = np.full(len(full.leds), -np.inf)
+    np.maximum.at(worth, programs[0].led, (gain * column)[:-1])
     worth[own] = -np.inf
     best = np.argsort(-worth)[:3]
-    return [full.channels[i].id for i in best if worth[i] > WORTHLESS]
+    return [full.leds[i] for i in best if worth[i] > WORTHLESS]
 
 
 def _with_currents(design: Design, found: Optimum) -> Design:
@@ -174,7 +194,7 @@ class Tangent:
         return float(-self._weights[position] / state.scale.row[row])
 
     def _residual(self, problem: Problem) -> Array:
-        state, rig = self.optimum.state, Rig(problem, self.optimum.rig.choice)
+        state, rig = self.optimum.state, self.optimum.rig.at(problem)
         programs = rig.programs(state.junction_c)
         if programs[0].segments + 1 != state.u.size or programs[0].rows.shape[1] != state.scale.row.size:
             return np.zeros(0)
