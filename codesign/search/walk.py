@@ -213,8 +213,6 @@ class Walk:
             leader, value = self._leader(allowed)
             aim = self._aim(value)
             open_ = np.flatnonzero(allowed & (self.upper > max(aim * (1 + self.gap), 0.0)) & (self.tried > aim))
-            if leader is not None:
-                open_ = open_[open_ != leader]
             if self.progress is not None:
                 self.progress(value, float(self.upper[open_].max(initial=value)))
             if open_.size == 0 or self._done(leader, value):
