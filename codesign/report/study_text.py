@@ -38,7 +38,9 @@ def variation_text(found: Variation, width: int = 80) -> str:
     body = _map(found, letters, width) if len(found.axes) == 2 else _rows(found, letters, width)
     lines += ["", *body, "", *_configurations(found, letters, width), *_conflicts(found, width)]
     lines += ["", heading("how sure this is", width)]
-    sure = f"each point is certified on its own: no configuration has a CNR more than {100 * found.gap:g} % above it"
+    gaps = [point.bound / point.cnr - 1 for point in found.points if point.possible]
+    most = percent(max(gaps, default=0.0), 1e-6)
+    sure = f"each point is certified on its own: no configuration has a CNR more than {most} above the one shown"
     lines += bullet(f"{sure}; before rounding to setting steps", width)
     return "\n".join(line.rstrip() for line in lines) + "\n"
 
@@ -117,7 +119,7 @@ def _map(found: Variation, letters: dict[tuple[str, ...], str], width: int) -> l
     kept = range(0, columns, step)
     lines = [heading("CNR and what to use", width)]
     lines += labelled("down", _axis_words(first), width)
-    lines += labelled("across", _axis_words(second) + (f" (every {step}. column shown)" if step > 1 else ""), width)
+    lines += labelled("across", _axis_words(second) + (f" (one column in {step} shown)" if step > 1 else ""), width)
     header = ["", *(names[k] for k in kept)]
     body = [[shown_value(first.values[i]), *(cells[i * columns + k] for k in kept)] for i in range(rows)]
     return [*lines, *table(header, body, width, left=())]

@@ -24,8 +24,8 @@ from codesign.problem.choices import FilterChoices
 from codesign.program import Array
 from codesign.recipe import design_at, settable
 from codesign.search.frontier import Certified, Hint
-from codesign.search.walk import Configuration, Evidence, Walk
-from codesign.solve import Certificate, Solution
+from codesign.search.walk import FULLY, Configuration, Evidence, Walk
+from codesign.solve import Certificate, Solution, solve
 from codesign.solve_rounds import JUNCTION_TOLERANCE_K, LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP, search_rounds
 from codesign.study.multipliers import Multipliers
 
@@ -68,8 +68,8 @@ class Resolved:
         What the forward model says of it.
     certificate : Certificate
         As of `codesign.solve`.
-    known : Known
-        Where related problems may start.
+    known : Known or None
+        Where related problems may start; None for combined readings, which are solved afresh each time.
     multipliers : Multipliers
         What proved this one, to prove related ones.
     hint : Hint or None
@@ -79,7 +79,7 @@ class Resolved:
     problem: Problem = field(repr=False)
     optimum: Performance
     certificate: Certificate
-    known: Known
+    known: Known | None
     multipliers: Multipliers = field(repr=False)
     hint: Hint | None = field(repr=False)
     winner: int = field(repr=False)
@@ -156,7 +156,11 @@ def resolve(problem: Problem, near: Resolved | Known | Solution | None = None, *
     >>> abs(again.cnr / first.cnr - 1) < 1e-4
     True
     """
+    if problem.combined:
+        return _combined(problem, gap)
     gap = problem.spec.solver.gap if gap is None else gap
+    if isinstance(near, Solution) and near.problem.combined:
+        near = None
     known = known_of(near) if isinstance(near, Solution) else near.known if isinstance(near, Resolved) else near
     carried = near.multipliers if isinstance(near, Resolved) else Multipliers()
     if known is None:
@@ -225,6 +229,15 @@ def _cold(problem: Problem, gap: float, carried: Multipliers) -> Resolved:
     if search.best is None:
         raise nothing_seen(search.walk.assembly)
     return _finished(search.walk, search.best, gap, carried.learned(search.walk, search.walk.evidence))
+
+
+def _combined(problem: Problem, gap: float | None) -> Resolved:
+    """Solve a problem of combined readings."""
+    solution = solve(problem, gap=gap, alternatives=0)
+    names = ("problem", "optimum", "certificate", "winner", "point", "units", "evidence")
+    return Resolved(
+        known=None, multipliers=Multipliers(), hint=None, **{name: getattr(solution, name) for name in names}
+    )
 
 
 def _find(assembly: Assembly, known: Known) -> Configuration | None:
@@ -329,7 +342,7 @@ def _start(walk: Walk, first: Walk, number: int, carried: Multipliers) -> int:
     walk.tally.certified += first.tally.certified
     open_ = np.flatnonzero(walk.upper > value * (1 + walk.gap))
     if open_.size <= FEW:
-        walk.refined[open_] = True
+        walk.refined[open_] = FULLY
     return count
 
 

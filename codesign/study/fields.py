@@ -32,6 +32,15 @@ UNITS: Mapping[str, str] = {
     "lm": "lm", "lx": "lx", "deg": "deg", "percent": "%", "px": "pixel", "db": "dB", "dn": "DN", "v": "V", "w": "W",
     "c": "°C", "k": "K", "e": "e⁻",
 }  # fmt: skip
+#: Fields that say the same in another way: setting one takes the others away.
+ALTERNATIVES = (
+    ("radiant_flux_mw", "radiant_flux_w", "luminous_flux_lm"),
+    ("dark_current_e_per_s", "dark_current_na_per_cm2"),
+    ("distance_mm", "delivery_per_m2"),
+    ("delivery_per_m2", "measured_irradiance_w_per_m2"),
+    ("illuminance_lx", "irradiance_w_per_m2"),
+    ("illuminant", "curve"),
+)
 #: What in a part changes a value to "not given".
 NOT_GIVEN = "none"
 
@@ -184,7 +193,7 @@ def _with_changed_part(catalog: Catalog, key: str, steps: list[str | int], value
     _check_path(type(part), key, path, f"{kind}.{name}.")
     table = part.model_dump(exclude_unset=True)
     _assign(table, key, path, _wrapped(type(part), path, value))
-    changed = part.replaced(**{path[0]: table.get(path[0])})
+    changed = part.replaced(**{each: table.get(each) for each in {*part.model_fields_set, path[0]}})
     if changed.id != name:
         raise ProblemError(f"{key}: the id of a part is its name; add a part instead")
     return replace(catalog, **{f"{kind}s": {**parts, name: changed}})
@@ -267,6 +276,9 @@ def _assign(table: dict[str, Any], key: str, steps: list[str | int], value: Any)
     elif value is None:
         here.pop(last, None)
     else:
+        for group in ALTERNATIVES:
+            for other in group if last in group else ():
+                here.pop(other, None)
         here[last] = value
 
 

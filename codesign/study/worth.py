@@ -22,6 +22,10 @@ if TYPE_CHECKING:
     import pandas as pd
 
 
+#: Relative gain below which a part does not count as helping: what settings are worked out to.
+LEAST_GAIN = 2e-5
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class PartWorth:
     """What the optimum loses without a part it uses (or gains with one it could not use).
@@ -219,7 +223,7 @@ def _additions(whole, others, new, gap, done, progress) -> Iterator[PartWorth]:
             more = None  # does not fit this problem, e.g. light where the surfaces are not known
         if progress is not None:
             progress(count, done + len(new))
-        if more is None or (kind, name) not in set(parts_in_use(more)) or more.cnr <= whole.cnr:
+        if more is None or more.cnr <= whole.cnr * (1 + LEAST_GAIN):
             continue
         yield PartWorth(
             kind=kind,
