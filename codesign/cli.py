@@ -19,14 +19,16 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 from typer.core import TyperGroup
 
+from codesign.cli_sensitivity import sensitivity
 from codesign.cli_vary import vary, worth
-from codesign.errors import CodesignError, InfeasibleError
+from codesign.errors import CodesignError, InfeasibleError, ProblemError
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
     from codesign.least_cost import LeastCost
     from codesign.solve import Solution
+    from codesign.study.sensitivity import Sensitivities
 
 INTERRUPTED = 130
 
@@ -101,6 +103,9 @@ def solve(
     gap: Annotated[float | None, typer.Option(metavar="G", help="Relative gap to prove, 1e-8 to 0.5.")] = None,
     alternatives: Annotated[int | None, typer.Option(metavar="N", help="Runners-up to certify, 0 to 50.")] = None,
     verify: Annotated[bool, typer.Option("--verify", help="Check the whole proof again from the start.")] = False,
+    sensitivities: Annotated[
+        bool, typer.Option("--sensitivities", help="Add shadow prices and tolerances; see 'cnr sensitivity'.")
+    ] = False,
     time_limit: Annotated[
         float | None, typer.Option(metavar="SECONDS", min=0, help="Stop then with the best so far and its proven gap.")
     ] = None,
@@ -119,7 +124,8 @@ def solve(
     else:
         cost = _least(problem, least, cnr, gap, time_limit)
         solution = cost.solution
-    _show_solution(solution, _verified(solution) if verify else None, json=json, cost=cost)
+    found = _sensitivities(solution, least) if sensitivities else None
+    _show_solution(solution, _verified(solution) if verify else None, json=json, cost=cost, sensitivities=found)
     if recipe is not None:
         from codesign.report.recipe_file import write_recipe
 
@@ -241,11 +247,25 @@ def _verified(solution: Solution) -> Any:
     return verify(solution)
 
 
-def _show_solution(solution: Solution, verdict: Any, *, json: bool, cost: LeastCost | None = None) -> None:
+def _sensitivities(solution: Solution, least: str | None) -> Sensitivities:
+    from codesign.cli_sensitivity import found_at
+
+    if least is not None:
+        raise ProblemError("--sensitivities belongs to the greatest CNR, --least is given too; leave one out")
+    return found_at(solution)
+
+
+def _show_solution(
+    solution: Solution, verdict: Any, *, json: bool, cost: LeastCost | None, sensitivities: Sensitivities | None
+) -> None:
     from codesign.report import machine, text
 
+    if sensitivities is not None:
+        from codesign.report.sensitivity_text import sensitivity_dict, sensitivity_text
     if json:
         result = machine.solution_dict(solution, verdict)
+        if sensitivities is not None:
+            result["sensitivities"] = sensitivity_dict(sensitivities)
         if cost is not None:
             names = ("quantity", "unit", "value", "bound", "required_cnr", "status")
             result["least"] = {name: getattr(cost, name) for name in names}
@@ -259,6 +279,8 @@ def _show_solution(solution: Solution, verdict: Any, *, json: bool, cost: LeastC
         if solution.status == "stopped":
             _print(f"stopped early: the proven gap is {solution.certificate.gap:.3g}\n\n")
         _print(text.solution_text(solution, verdict=verdict))
+        if sensitivities is not None:
+            _print("\n" + sensitivity_text(sensitivities))
 
 
 def _print(text: str) -> None:
@@ -267,6 +289,7 @@ def _print(text: str) -> None:
     typer.echo(shown(text, sys.stdout.encoding), nl=False)
 
 
+app.command()(sensitivity)
 app.command()(vary)
 app.command()(worth)
 

@@ -1,0 +1,190 @@
+"""Sensitivities as plain text and as a dictionary for JSON.
+
+``sensitivity_dict`` (schema ``codesign.sensitivity/1``)
+
+======================== ===========================================================================================
+schema                   "codesign.sensitivity/1"
+problem                  {"title": text, "file": text}
+cnr                      of the optimum the sensitivities belong to, before rounding
+configuration            text: its camera, channel, gain, filter and f-number
+binding                  [what determines the optimum: limits at their bounds, LEDs lit, pairs that count]
+limits                   [{"name", "unit", "bound", "share": of the bound used, "binds", "price_cnr_per_unit": None where
+                         the limit moves in whole steps only or ends with a data sheet}]
+parameters               [{"parameter", "part": id or None, "unit": "1" for relative changes, "tolerance": standard
+                         deviation in that unit, "retuned_per_unit", "fixed_per_unit": relative change of CNR,
+                         "low", "high": the quantity moved by its whole tolerance down or up (below), or None}]
+======================== ===========================================================================================
+
+Each of low and high is {"amount", "cnr_retuned": proven over all configurations, None where the limits cannot be met,
+"cnr_fixed": of the unchanged recipe, "starts", "stops": [what begins or ends to bind], "at": about the amount from which
+on, or None, "other": configuration that wins instead, or None, "missed": [limits the unchanged recipe then misses],
+"note": text}.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import asdict
+from typing import Any
+
+from codesign.report.layout import NARROWEST, bullet, heading, labelled, number, table
+from codesign.report.output import plain
+from codesign.study.sensitivity import Elasticity, Sensitivities, Shifted
+
+SENSITIVITY_SCHEMA = "codesign.sensitivity/1"
+
+#: Changes of CNR below this are summed up in one line. [1]
+NEGLIGIBLE = 1e-4
+
+
+def sensitivity_dict(found: Sensitivities) -> dict[str, Any]:
+    """Return sensitivities as plain values; keys are described in the module's docstring."""
+    parameters = []
+    for x in found.parameters:
+        row = asdict(x)
+        row["retuned_per_unit"], row["fixed_per_unit"] = _finite(row.pop("retuned")), _finite(row.pop("fixed"))
+        parameters.append(row)
+    limits = []
+    for limit in found.limits:
+        row = asdict(limit)
+        row["price_cnr_per_unit"] = _finite(row.pop("price"))
+        row["share"] = _finite(row["share"])
+        limits.append(row)
+    return {
+        "schema": SENSITIVITY_SCHEMA,
+        "problem": {"title": found.problem.spec.title, "file": found.problem.where},
+        "cnr": found.cnr,
+        "configuration": found.configuration,
+        "binding": list(found.binding),
+        "limits": limits,
+        "parameters": parameters,
+    }
+
+
+def _finite(value: float | None) -> float | None:
+    return None if value is None or not math.isfinite(value) else float(value)
+
+
+def sensitivity_text(found: Sensitivities, width: int = 80) -> str:
+    """Return sensitivities as plain text.
+
+    Parameters
+    ----------
+    found : Sensitivities
+    width : int
+        Page width, at least 60. [characters]
+    """
+    width = max(width, NARROWEST)
+    title = labelled("title", plain(found.problem.spec.title), width)
+    title += labelled("optimum", f"CNR {number(found.cnr)}, {found.configuration}", width)
+    blocks = [title, _prices(found, width), _elasticities(found, width), _changes(found, width), _missed(found, width)]
+    return "\n\n".join("\n".join(block) for block in blocks if block) + "\n"
+
+
+def _prices(found: Sensitivities, width: int) -> list[str]:
+    rows, whole = [], []
+    for limit in found.limits:
+        if limit.price is None:
+            whole += [limit.name] if limit.binds else []
+        elif limit.binds:
+            share = limit.price * 0.01 * limit.bound / found.cnr
+            rows.append((limit.name, number(limit.bound), limit.unit, number(limit.price, 3), _signed(share)))
+    lines = [heading("shadow prices", width)]
+    if rows:
+        lines += table(("limit at its bound", "bound", "unit", "CNR per unit", "bound +1 %"), rows, width, left=(0, 2))
+    else:
+        lines += bullet("no limit with a price binds", width)
+    for name in whole:
+        lines += bullet(f"{name} binds too; it moves in whole steps and has no price", width)
+    return lines
+
+
+def _elasticities(found: Sensitivities, width: int) -> list[str]:
+    weighty = [x for x in found.parameters if _weight(x) >= NEGLIGIBLE]
+    small = list(dict.fromkeys(x.parameter for x in found.parameters if _weight(x) < NEGLIGIBLE))
+    rows = [
+        (
+            x.parameter if x.part is None else f"{x.parameter}, {x.part}",
+            _tolerance(x),
+            _slope(x.retuned, x.unit),
+            _slope(x.fixed, x.unit),
+            _worst(x, found.cnr, "cnr_retuned"),
+            _worst(x, found.cnr, "cnr_fixed"),
+        )
+        for x in sorted(weighty, key=_weight, reverse=True)
+    ]
+    lines = [heading("tolerances", width)]
+    header = ("quantity", "tolerance", "re-tuned", "fixed", "worst re-t.", "worst fixed")
+    lines += table(header, rows, width) if rows else []
+    lines += bullet("re-tuned, fixed: change of CNR in % per % (or per nm, deg, K) of the quantity", width)
+    if small:
+        lines += bullet(f"below {100 * NEGLIGIBLE:g} % of CNR each within tolerance: {', '.join(small)}", width)
+    return lines
+
+
+def _weight(x: Elasticity) -> float:
+    """Largest relative change of CNR within the tolerance, in either column."""
+    slopes = [abs(s) * x.tolerance for s in (x.retuned, x.fixed) if math.isfinite(s)]
+    return max(slopes, default=0.0)
+
+
+def _tolerance(x: Elasticity) -> str:
+    return f"±{100 * x.tolerance:g} %" if x.unit == "1" else f"±{x.tolerance:g} {x.unit}"
+
+
+def _slope(value: float, unit: str) -> str:
+    scale = 1.0 if unit == "1" else 100.0
+    return "one-sided" if not math.isfinite(value) else f"{scale * value:+.3f}"
+
+
+def _signed(share: float) -> str:
+    return "one-sided" if not math.isfinite(share) else f"{100 * share:+.3g} %"
+
+
+def _worst(x: Elasticity, cnr: float, key: str) -> str:
+    """The lower CNR of the two ends, against the optimum."""
+    ends = [getattr(end, key) for end in (x.low, x.high) if end is not None]
+    if not ends:
+        return ""
+    return "infeasible" if None in ends else f"{100 * (min(ends) / cnr - 1):+.2f} %"
+
+
+def _ends(found: Sensitivities) -> Iterator[tuple[Elasticity, Shifted]]:
+    for x in found.parameters:
+        for end in (x.low, x.high):
+            if end is not None:
+                yield x, end
+
+
+def _amount(x: Elasticity, amount: float) -> str:
+    return f"{100 * amount:+.3g} %" if x.unit == "1" else f"{amount:+.3g} {x.unit}"
+
+
+def _changes(found: Sensitivities, width: int) -> list[str]:
+    """What binds elsewhere within the tolerances; a derivative holds only up to there."""
+    lines = []
+    for x, end in _ends(found):
+        said = []
+        if end.other:
+            said.append(f"{end.other} wins")
+        if end.cnr_retuned is None or end.note:
+            said.append(plain(end.note))
+        said += [f"{name} from then on" if name.endswith(" lit") else f"{name} starts to bind" for name in end.starts]
+        said += [f"{name} no longer" if name.endswith(" lit") else f"{name} stops binding" for name in end.stops]
+        if said:
+            name = x.parameter if x.part is None else f"{x.parameter}, {x.part}"
+            where = f"about {_amount(x, end.at)}" if end.at is not None else f"at {_amount(x, end.amount)}"
+            lines += bullet(f"{name} {where}: {'; '.join(said)}", width)
+    return [heading("changes within the tolerances", width), *lines] if lines else []
+
+
+def _missed(found: Sensitivities, width: int) -> list[str]:
+    """Limits the recipe misses when a quantity strays and nothing is re-tuned."""
+    by_limit: dict[str, list[str]] = {}
+    for x, end in _ends(found):
+        for name in end.missed:
+            owner = x.parameter if x.part is None else f"{x.parameter} ({x.part})"
+            by_limit.setdefault(name, []).append(f"{owner} {_amount(x, end.amount)}")
+    lines = [line for name, why in by_limit.items() for line in bullet(f"{name}: {'; '.join(why)}", width)]
+    return [heading("limits the recipe misses if held fixed", width), *lines] if lines else []
