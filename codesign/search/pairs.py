@@ -220,7 +220,8 @@ def certify_pairs(
     if len(programs) == 1 or found.bound <= max(found.value, target, 0.0) * (1 + gap):
         return found
     search = _start(programs, found, 0.02 * gap)
-    search.improve(found.point, NO_LEVEL * found.bound)
+    if found.value >= target:  # else a relaxation may well show that improving is in vain
+        search.improve(found.point, NO_LEVEL * found.bound)
     if found.bound <= max(search.value, target) * (1 + gap):
         return replace(found, point=search.point, value=search.value)
     tree, cells = _branch(search, gap, target, found.bound)
