@@ -234,5 +234,7 @@ def _filter(kind: str, nm: float, width_nm: float) -> Filter | None:
     name = f"{NAME}-{kind}-{nm:.1f}-{width_nm:.1f}".replace(".", "-")
     common = {"id": name, "source": "ideal part, does not exist", **edge}
     if kind == "band-pass":
-        return None if width_nm >= nm else Filter(kind="bandpass", center_nm=nm, fwhm_nm=max(width_nm, EDGE_NM), **common)
+        return (
+            None if width_nm >= nm else Filter(kind="bandpass", center_nm=nm, fwhm_nm=max(width_nm, EDGE_NM), **common)
+        )
     return Filter(kind="longpass" if kind == "long-pass" else "shortpass", cut_nm=nm, **common)

@@ -287,7 +287,9 @@ LEVERS = (
     Lever(
         name="stray light",
         change=_nudge("ambient light"),
-        values=lambda problem, camera: {"ambient irradiance [W/m2]": float(np.trapezoid(problem.ambient, problem.grid))},
+        values=lambda problem, camera: {
+            "ambient irradiance [W/m2]": float(np.trapezoid(problem.ambient, problem.grid))
+        },
         reason=_when(lambda problem: bool(np.any(problem.ambient)), "no ambient light is stated"),
         most=lambda problem: NOTHING_LEFT,
         monotone=False,

@@ -268,9 +268,9 @@ class _Search:
         )
 
     def best_pair(self, levers: tuple[Lever, ...], singles: list[Route]) -> tuple[Route | None, float | None]:
-        """The two levers that reach the CNR with the smallest common factor, and the factor at which no other pair does.
+        """The two levers that need the smallest common factor, and the factor at which no other pair reaches the CNR.
 
-        Raises nothing; returns (None, None) when no two do.
+        (None, None) when no two levers reach it.
         """
         alone = {route.levers[0]: route.factor or np.inf for route in singles}
         ranked = sorted(levers, key=lambda lever: (alone[lever.name], -self.gain((lever,), lever.most(self.problem))))
