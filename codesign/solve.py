@@ -76,8 +76,11 @@ class Solution:
 
     @property
     def rounding_loss(self) -> float:
-        """How far the settable recipe may be below the best possible: 1 − CNR / proven bound."""
-        return 1 - self.recipe.cnr / self.certificate.bound
+        """How far the settable recipe may be below the best possible: 1 − CNR / proven bound, at least 0.
+
+        The recipe is at its own junction temperatures, the bound at those of the proof, which differ by the residual.
+        """
+        return max(1 - self.recipe.cnr / self.certificate.bound, 0.0)
 
     @property
     def binding(self) -> tuple[str, ...]:

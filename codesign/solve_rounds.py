@@ -23,7 +23,7 @@ from codesign.search.pairs import CertifiedPairs, polish_pairs
 from codesign.search.walk import Configuration, Walk
 
 #: Junction temperatures assumed and reached agree to this. [K]
-JUNCTION_TOLERANCE_K = 0.02
+JUNCTION_TOLERANCE_K = 0.002
 #: The winner itself is worked out to this gap, so that its settings do not depend on luck.
 POLISH_GAP = 1e-5
 #: Gap of the first round.
