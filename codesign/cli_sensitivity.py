@@ -39,9 +39,7 @@ def sensitivity(
     typer.echo(shown(text, sys.stdout.encoding), nl=False)
 
 
-def found_at(
-    solution: Solution, tolerances: dict[str, float] | None = None, *, changes: bool = True
-) -> Sensitivities:
+def found_at(solution: Solution, tolerances: dict[str, float] | None = None, *, changes: bool = True) -> Sensitivities:
     """Sensitivities at a solution."""
     from codesign.study.sensitivity import sensitivities
 

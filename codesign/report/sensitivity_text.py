@@ -8,17 +8,17 @@ problem                  {"title": text, "file": text}
 cnr                      of the optimum the sensitivities belong to, before rounding
 configuration            text: its camera, channel, gain, filter and f-number
 binding                  [what determines the optimum: limits at their bounds, LEDs lit, pairs that count]
-limits                   [{"name", "unit", "bound", "share": of the bound used, "binds", "price_cnr_per_unit": None where
-                         the limit moves in whole steps only or ends with a data sheet}]
+limits                   [{"name", "unit", "bound", "share": of the bound used, "binds", "price_cnr_per_unit": None
+                         where the limit moves in whole steps only or cannot move}]
 parameters               [{"parameter", "part": id or None, "unit": "1" for relative changes, "tolerance": standard
                          deviation in that unit, "retuned_per_unit", "fixed_per_unit": relative change of CNR,
                          "low", "high": the quantity moved by its whole tolerance down or up (below), or None}]
 ======================== ===========================================================================================
 
 Each of low and high is {"amount", "cnr_retuned": proven over all configurations, None where the limits cannot be met,
-"cnr_fixed": of the unchanged recipe, "starts", "stops": [what begins or ends to bind], "at": about the amount from which
-on, or None, "other": configuration that wins instead, or None, "missed": [limits the unchanged recipe then misses],
-"note": text}.
+"cnr_fixed": of the unchanged recipe, "starts", "stops": [what begins or ends to bind], "at": about the amount from
+which on, or None, "other": configuration that wins instead, or None, "missed": [limits the unchanged recipe then
+misses], "note": text}.
 """
 
 from __future__ import annotations
@@ -34,6 +34,8 @@ from codesign.study.sensitivity import Elasticity, Sensitivities, Shifted
 
 SENSITIVITY_SCHEMA = "codesign.sensitivity/1"
 
+#: From this page width on the table has room for the ends of the tolerances. [characters]
+WIDE = 78
 #: Changes of CNR below this are summed up in one line. [1]
 NEGLIGIBLE = 1e-4
 
@@ -116,7 +118,8 @@ def _elasticities(found: Sensitivities, width: int) -> list[str]:
     ]
     lines = [heading("tolerances", width)]
     header = ("quantity", "tolerance", "re-tuned", "fixed", "worst re-t.", "worst fixed")
-    lines += table(header, rows, width) if rows else []
+    columns = len(header) if width >= WIDE else len(header) - 2
+    lines += table(header[:columns], [row[:columns] for row in rows], width) if rows else []
     lines += bullet("re-tuned, fixed: change of CNR in % per % (or per nm, deg, K) of the quantity", width)
     if small:
         lines += bullet(f"below {100 * NEGLIGIBLE:g} % of CNR each within tolerance: {', '.join(small)}", width)

@@ -22,7 +22,7 @@ JOINT_CHANNELS = "+"
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Choice:
-    """One configuration: parts by name, exposure that picks the pulse level [s], contrast sign, share of each LED in use.
+    """One configuration: parts by name, exposure that picks the pulse level [s], contrast sign, share of LEDs in use.
 
     ``share`` holds the emitters in use over those there could be, by LED id, absent for all.
     """

@@ -132,9 +132,7 @@ MOVES: dict[str, Move] = {
     "pulse width": _pulse("max_width_us", lambda problem: 1.0),
     "pulse duty": _pulse("max_duty", lambda problem: 1e-6 * problem.spec.timing.frame_rate_hz),
     "dark signal in the well": _spec("limits", "dark_well_share", _saturation),
-    "dark shot noise": _spec(
-        "limits", "dark_noise_share", lambda problem, setting: setting.gain.read_noise_e**2
-    ),
+    "dark shot noise": _spec("limits", "dark_noise_share", lambda problem, setting: setting.gain.read_noise_e**2),
     "rig heat": _spec("limits", "rig_heat_w"),
     "supply power": _spec("limits", "supply_w"),
     "supply peak power": _spec("limits", "supply_peak_w"),

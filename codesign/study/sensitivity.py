@@ -20,16 +20,15 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from codesign.assemble import exposure_window
-from codesign.design import Design, evaluate
+from codesign.design import evaluate
 from codesign.errors import CatalogError, InfeasibleError, ProblemError, SolveError
-from codesign.limits import saturation_electrons
 from codesign.problem import Problem
 from codesign.problem.choices import JOINT
 from codesign.problem.nudge import NUDGES, Parameter, nudged
 from codesign.problem.tolerances import SPREADS
 from codesign.solve import Solution
-from codesign.study.choice import Choice, choice_of
+from codesign.study.binding import what_binds
+from codesign.study.choice import choice_of
 from codesign.study.common import Resolved, resolve
 from codesign.study.limit_moves import WELL_HEADROOM, WHOLE, moved
 from codesign.study.tangent import Optimum, Rig, Tangent, optimum_near, point_of_rig, settled
@@ -41,8 +40,6 @@ if TYPE_CHECKING:
 STEPS = {"1": 1e-4, "nm": 0.01, "deg": 0.01, "K": 0.01}
 #: Halvings that locate a change of what binds.
 HALVINGS = 5
-#: Charges below this share of what an LED could carry are dust.
-DUST = 1e-9
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -191,9 +188,7 @@ class _Study:
         self.solution, self.problem, self.tolerances = solution, solution.problem, tolerances
         self.choice = choice_of(self.problem, solution.optimum)
         self.gap = max(solution.certificate.gap, self.problem.spec.solver.gap)
-        self.optimum = optimum_near(
-            self.problem, self.choice, solution.optimum.design, solution.certificate.junction_c
-        )
+        self.optimum = optimum_near(self.problem, self.choice, solution.optimum.design, solution.certificate.junction_c)
         self.rig = self.optimum.rig
         #: Junction temperatures of all LEDs; those that are off as assumed. [deg C]
         self.junction_c = {
@@ -273,7 +268,7 @@ class _Study:
         """Both columns of one quantity, and what happens at the ends of its tolerance."""
         step, tolerance = STEPS[parameter.unit], self.tolerance(parameter.name)
         ends = [nudged(self.rig.problem, parameter.name, sign * step, part) for sign in (-1, 1)]
-        fixed = [self._fixed(end, self.solution.optimum.design).cnr for end in ends]
+        fixed = [evaluate(end, self.solution.optimum.design).cnr for end in ends]
         sides = (None, None)
         if changes and tolerance > 0:
             sides = tuple(self.shifted(parameter, part, sign * tolerance) for sign in (-1, 1))
@@ -288,14 +283,11 @@ class _Study:
             high=sides[1],
         )
 
-    def _fixed(self, problem: Problem, design: Design):
-        return evaluate(problem, design)
-
     def shifted(self, parameter: Parameter, part: str | None, amount: float) -> Shifted:
         """Solve again with a quantity moved by ``amount``."""
         own = nudged(self.rig.problem, parameter.name, amount, part)
-        held = self._fixed(own, self.solution.optimum.design)
-        missed = tuple(x.name for x in self._fixed(own, self.solution.recipe.design).violated)
+        held = evaluate(own, self.solution.optimum.design)
+        missed = tuple(x.name for x in evaluate(own, self.solution.recipe.design).violated)
         plain = Shifted(amount=amount, cnr_retuned=None, cnr_fixed=held.cnr, missed=missed)
         self.near = self.near or resolve(self.problem, self.solution)
         problem = nudged(self.problem, parameter.name, amount, part)
@@ -341,42 +333,3 @@ class _Study:
                 same = False
             low, high = (middle, high) if same else (low, middle)
         return (low + high) / 2 * amount
-
-
-def what_binds(optimum: Optimum) -> frozenset[str]:
-    """What determines an optimum: limits at their bounds, LEDs lit, and among several pairs those that count."""
-    state, rig = optimum.state, optimum.rig
-    program, setting = state.programs[0], rig.setting
-    rows, leds, n = program.rows.shape[1], program.heat_cap.size, program.segments
-    active = state.active
-    names = {name for name, at in zip(program.row_names, active[:rows], strict=True) if at}
-    if any(name.startswith("well, ") for name in names):
-        full = setting.gain.full_well_e <= saturation_electrons(setting.camera, setting.gain)
-        names.add("saturation by full well" if full else "saturation by top grey value")
-    names |= {f"junction, {rig.leds[led]}" for led in np.flatnonzero(active[rows : rows + leds])}
-    full = np.flatnonzero(active[rows + leds : rows + leds + n])
-    names |= {_end_of_drive(rig, program, setting, int(j)) for j in full} - {""}
-    window = exposure_window(rig.problem, setting)
-    if active[-2]:
-        by_clock = program.time_high[0] >= window.high.time * (1 - 1e-12)
-        names.add(window.high.name if by_clock else "ambient light in the wells")
-    if active[-1]:
-        names.add(window.low.name)
-    charge = np.bincount(program.led, state.u[:-1], minlength=leds)
-    names |= {f"LED {name} lit" for name, q in zip(rig.leds, charge, strict=True) if q > DUST}
-    if len(rig.problem.pairs) > 1:
-        surfaces = rig.problem.surfaces
-        counted = [pair for pair, counts in zip(rig.problem.pairs, state.pairs, strict=True) if counts]
-        names |= {f"pair {surfaces[i].id} on {surfaces[j].id}" for i, j in counted}
-    return frozenset(names)
-
-
-def _end_of_drive(rig: Rig, program, setting, segment: int) -> str:
-    """Limit at the upper end of a drive segment: none inside the droop curve."""
-    led = int(program.led[segment])
-    if segment + 1 < program.segments and program.led[segment + 1] == led:
-        return ""
-    share = rig.choice.share.get(rig.leds[led], 1.0)
-    reached = float(program.width[program.led == led].sum()) / share * 1e3
-    cut = reached < setting.level.current_ma[led] * (1 - 1e-9)
-    return f"junction, {rig.leds[led]}" if cut else f"current, {rig.leds[led]}"

@@ -25,6 +25,8 @@ from codesign.program import Array, Program, row_scale
 
 #: Limits closer than this (share of their bound) may be among those that bind at the start.
 NEAR = 1e-4
+#: Segments this close to empty or full (share of their range) stay so unless a multiplier says otherwise.
+AT_END = 1e-7
 #: Pairs whose log CNR is this close to the worst one's likewise.
 NEAR_PAIR = 1e-3
 #: Stationary to this, temperatures included. [1], [K]
@@ -257,6 +259,9 @@ def _first_guess(programs: Sequence[Program], point: Array, junction_c: Array) -
     weight, price = np.zeros(close.size), np.zeros(near.size)
     weight[close], price[near] = found[: close.sum()], found[close.sum() :]
     pairs, active = weight > 1e-6, price > 1e-9
+    # The segments of an LED give the same light: only their order of filling tells them apart, where heat has no price.
+    boxes = slice(near.size - 2 - 2 * programs[0].segments, near.size - 2)
+    active[boxes] |= (right - matrix @ u)[boxes] < AT_END
     weight[~pairs] = price[~active] = 0.0
     value = float(shape.value.min())
     return Stationary(programs, scale, u, value, weight / weight.sum(), price, pairs, active, junction_c)

@@ -17,6 +17,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from codesign.build import choosing
 from codesign.design import Design
 from codesign.errors import SolveError
 from codesign.limits import Setting, thermal_resistance
@@ -104,7 +105,8 @@ class Optimum:
 def optimum_near(problem: Problem, choice: Choice, design: Design, junction_c: Mapping[str, float]) -> Optimum:
     """The optimum of a configuration to the last digits, temperatures settled, from a recipe close to it.
 
-    LEDs are lit or put out as the multipliers ask; those that are off stay at ``junction_c``. [deg C]
+    LEDs are lit or put out as the multipliers ask, but under build limits those lit stay the ones chosen. LEDs that are
+    off stay at ``junction_c``. [deg C]
     """
     full = Rig.of(problem, choice)
     known = dict(junction_c)
@@ -114,7 +116,7 @@ def optimum_near(problem: Problem, choice: Choice, design: Design, junction_c: M
         junction = np.array([known[name] for name in rig.leds])
         found = settled(rig, point_of_rig(rig, design, junction), junction)
         known.update(zip(rig.leds, found.state.junction_c, strict=True))
-        joining = _joining(full, found, np.array([known[name] for name in full.leds]))
+        joining = [] if choosing(problem) else _joining(full, found, np.array([known[name] for name in full.leds]))
         if not joining:
             return found
         lit += joining
