@@ -120,6 +120,20 @@ def electrons_per_irradiance(problem: Problem, camera: Camera, channel: str, f_n
 
     ``rate = Σ_λ weight(λ)·E(λ)·ρ(λ)·T(λ)``. Returns (n,). [e⁻/s per W m⁻² nm⁻¹]
     """
+    if any(camera is own for own in problem.cameras):
+        return _weights_of(problem, camera.id, channel, f_number)
+    return _weights(problem, camera, channel, f_number)
+
+
+@lru_cache(maxsize=64)
+def _weights_of(problem: Problem, camera: str, channel: str, f_number: float) -> Array:
+    """The same of a candidate camera, kept for all junction temperatures."""
+    found = _weights(problem, problem.camera(camera), channel, f_number)
+    found.setflags(write=False)
+    return found
+
+
+def _weights(problem: Problem, camera: Camera, channel: str, f_number: float) -> Array:
     optics = problem.spec.optics
     at_sensor = image_irradiance(radiance_of_diffuse(1.0, 1.0), problem.lens, f_number, optics.magnification)
     photons = at_sensor * photons_per_joule(problem.grid) * camera.pixel_area

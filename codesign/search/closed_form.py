@@ -15,6 +15,8 @@ from codesign.search.parallel import side_by_side
 FILTERS_TOGETHER = 1024
 #: Most pairs of target and background whose bounds are worked out for every configuration.
 QUICK_PAIRS = 3
+#: Fewer signed configurations are bounded sooner than threads start.
+WORTH_THREADS = 20000
 
 
 def blocks(filters: int) -> list[slice]:
@@ -40,7 +42,12 @@ def closed_form(assembly: Assembly, pairs: list[int]) -> Array:
             program = assembly.program(settings[number], part, coarse=True, pair=pair)
             least[number, part] = np.minimum(least[number, part], both_bounds(program))
 
-    side_by_side(bound, list(itertools.product(channels.values(), blocks(least.shape[1]))))
+    tasks = list(itertools.product(channels.values(), blocks(least.shape[1])))
+    if least.size < WORTH_THREADS:
+        for task in tasks:
+            bound(task)
+    else:
+        side_by_side(bound, tasks)
     assembly.forget()
     return least
 

@@ -19,9 +19,11 @@ from codesign.build import choosing, require_buildable
 from codesign.certificate_build import check_recipe
 from codesign.design import Design, Performance, evaluate
 from codesign.errors import InfeasibleError
+from codesign.limits import sum_limits
 from codesign.problem import Problem
 from codesign.problem.choices import FilterChoices
 from codesign.program import Array
+from codesign.radiometry import reflectances
 from codesign.recipe import design_at, settable
 from codesign.search.frontier import Certified, Hint
 from codesign.search.walk import FULLY, Configuration, Evidence, Walk
@@ -73,7 +75,7 @@ class Resolved:
     multipliers : Multipliers
         What proved this one, to prove related ones.
     hint : Hint or None
-        Where a search of the same configuration may start.
+        Where a search of the same configuration may start, in problems of the same ``shape``.
     """
 
     problem: Problem = field(repr=False)
@@ -82,6 +84,7 @@ class Resolved:
     known: Known | None
     multipliers: Multipliers = field(repr=False)
     hint: Hint | None = field(repr=False)
+    shape: tuple = field(repr=False)
     winner: int = field(repr=False)
     point: Array = field(repr=False)
     units: np.ndarray | None = field(repr=False)
@@ -173,7 +176,8 @@ def resolve(problem: Problem, near: Resolved | Known | Solution | None = None, *
     if seed is None:
         return _cold(problem, gap, carried)
     units = _units(problem, known)
-    hint = near.hint if isinstance(near, Resolved) else None
+    shape = _shape(assembly)
+    hint = near.hint if isinstance(near, Resolved) and near.shape == shape else None
     for _ in range(LARGEST_NUMBER_OF_ROUNDS):
         first = _settled(assembly, seed, units, gap, hint)
         walk = Walk(first.assembly, gap)
@@ -236,7 +240,7 @@ def _combined(problem: Problem, gap: float | None) -> Resolved:
     solution = solve(problem, gap=gap, alternatives=0)
     names = ("problem", "optimum", "certificate", "winner", "point", "units", "evidence")
     return Resolved(
-        known=None, multipliers=Multipliers(), hint=None, **{name: getattr(solution, name) for name in names}
+        known=None, multipliers=Multipliers(), hint=None, shape=(), **{name: getattr(solution, name) for name in names}
     )
 
 
@@ -267,7 +271,7 @@ def _settled(assembly: Assembly, seed: Configuration, units: np.ndarray | None, 
         number = walk.number(seed)
         # With one pair and no choice of LEDs a small gap is cheap, and nothing is left to polish.
         walk.gap = gap if walk.pairs > 1 or choosing(assembly.problem) else min(gap, POLISH_GAP)
-        if hint is not None and (attempt or _fits(hint, walk, number)):
+        if hint is not None:
             walk.hints[number] = hint
         walk.seed(seed, SimpleNamespace(units=units))
         walk.polish(number, min(gap, POLISH_GAP))
@@ -308,16 +312,13 @@ def _settles(walk: Walk, number: int, *, indifferent: bool) -> tuple[bool, Array
     return residual <= JUNCTION_TOLERANCE_K / 2 or equal, reached
 
 
-def _fits(hint: Hint, walk: Walk, number: int) -> bool:
-    """Whether a hint from a related problem has the shape of the program at hand."""
-    program = walk.programs(np.array([number]), coarse=False)
-    ceiling = hint.ceiling
-    return (
-        ceiling.limit.shape == program.rows.shape[:2]
-        and ceiling.heat.shape[1] == program.heat_cap.size
-        and not ceiling.heat[:, ~np.isfinite(program.heat_cap)].any()
-        and hint.leds.max(initial=-1) < program.heat_cap.size
-    )
+def _shape(assembly: Assembly) -> tuple:
+    """What the multipliers of a configuration are made for: limits, LEDs, noise of the problem."""
+    problem = assembly.problem
+    spread = [rows.stop - rows.start for rows in reflectances(problem).rows_of]
+    capped = [np.isfinite(assembly.segments(setting).heat_cap).tobytes() for setting in assembly.settings[:1]]
+    names = [each.id for each in (*problem.surfaces, *problem.channels)]
+    return (*names, *spread, *capped, *(limit.name for limit in sum_limits(problem)), choosing(problem), problem.strobe)
 
 
 def _hint(walk: Walk, number: int) -> Hint | None:
@@ -380,6 +381,7 @@ def _finished(walk: Walk, best: int, gap: float, multipliers: Multipliers) -> Re
         known=_known(walk, best, optimum, units),
         multipliers=multipliers,
         hint=_hint(walk, best),
+        shape=_shape(walk.assembly),
         winner=best,
         point=result.point,
         units=units,

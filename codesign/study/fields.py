@@ -15,9 +15,10 @@ from dataclasses import dataclass, replace
 from typing import Annotated, Any, get_args, get_origin
 
 import numpy as np
-from pydantic import BaseModel
+from pydantic import BaseModel, ValidationError
 
 from codesign.catalog import Catalog
+from codesign.catalog.common import explain
 from codesign.catalog.loader import PART_TYPES
 from codesign.errors import ProblemError, nearest
 from codesign.problem import Problem, ProblemSpec, build_problem
@@ -41,6 +42,8 @@ ALTERNATIVES = (
     ("illuminance_lx", "irradiance_w_per_m2"),
     ("illuminant", "curve"),
 )
+#: Sections on which neither the choice of parts nor their light depends.
+RIG_SECTIONS = ("motion", "timing", "temperature", "limits", "averaging", "solver", "required_cnr")
 #: What in a part changes a value to "not given".
 NOT_GIVEN = "none"
 
@@ -158,6 +161,8 @@ def varied(problem: Problem, changes: Mapping[str, Any], *, catalog: Catalog | N
     ProblemError, CatalogError
         One line with the field, what is allowed and the nearest name.
     """
+    if catalog is None and all(key.split(".")[0] in RIG_SECTIONS for key in changes):
+        return _with_spec(problem, changes)
     catalog = problem.catalog if catalog is None else catalog
     table = problem.spec.model_dump(exclude_unset=True, exclude=set(PART_TYPES))
     for key, value in changes.items():
@@ -168,6 +173,19 @@ def varied(problem: Problem, changes: Mapping[str, Any], *, catalog: Catalog | N
             _check_path(ProblemSpec, key, steps, whole=value is None)
             _assign(table, key, steps, _wrapped(ProblemSpec, steps, value))
     return build_problem(table, folder=problem.folder, where=problem.where, catalog=catalog)
+
+
+def _with_spec(problem: Problem, changes: Mapping[str, Any]) -> Problem:
+    """The same parts, grid and light under another specification."""
+    table = problem.spec.model_dump(exclude_unset=True)
+    for key, value in changes.items():
+        steps = list(_steps(key))
+        _check_path(ProblemSpec, key, steps, whole=value is None)
+        _assign(table, key, steps, _wrapped(ProblemSpec, steps, value))
+    try:
+        return replace(problem, spec=ProblemSpec.model_validate(table))
+    except ValidationError as error:
+        raise ProblemError(explain(error, problem.where, ProblemSpec)) from None
 
 
 def _steps(key: str) -> Iterator[str | int]:
