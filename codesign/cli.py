@@ -19,6 +19,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 from typer.core import TyperGroup
 
+from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
 from codesign.cli_vary import vary, worth
 from codesign.errors import CodesignError, InfeasibleError, ProblemError
@@ -292,6 +293,8 @@ def _print(text: str) -> None:
 app.command()(sensitivity)
 app.command()(vary)
 app.command()(worth)
+app.command()(routes)
+app.command()(calibrate)
 
 
 def run() -> None:

@@ -23,6 +23,8 @@ from codesign.study.suspects import Suspect, suspects
 EXTRAS = ("offset", "gain")
 #: Standard error of a factor above which it is called hardly determined. [1]
 HARDLY = 0.3
+#: Correlation from which on two parameters are called the same.
+TWIN = 0.9
 #: Quantile of a 95 % interval of a normal variable.
 Z95 = 1.959964
 
@@ -145,7 +147,7 @@ def calibrate(problem: Problem, readings: Collection[Reading], fit: Collection[s
     factors, gain = _factors(problem, seen, best)
     offsets = tuple(_estimate(best, name, name.partition(" ")[2]) for name in best.names if name.startswith("offset"))
     freedom = best.right.size - int(np.linalg.matrix_rank(best.design))
-    sigma = np.sqrt(np.diag(best.whiten @ best.whiten.T))[: seen.grey.size]
+    sigma = np.sqrt(np.diag(best.root @ best.root.T))[: seen.grey.size]
     determined = {f.name: f for f in factors if f.determined}
     channels = {led: problem.channel(led) for led in determined}
     return Calibration(
@@ -237,12 +239,16 @@ def _checked(estimate: Estimate) -> Estimate:
 
 
 def _twins(best: Fit, led: str) -> str:
-    """Which other parameters a column cannot be told from."""
+    """Why a column tells nothing: hardly any light, or the same light as another's."""
     own = best.names.index(led)
-    rest = [k for k in range(len(best.names)) if best.open[k] and k != own and np.any(best.design[:, k])]
-    if not np.any(best.design[:, own]) or not rest:
+    error = np.sqrt(np.diag(best.covariance))
+    if not np.any(best.design[:, own]) or not error[own] > 0:
         return "brings no light to any reading"
-    return f"not told from {' and '.join(best.names[k] for k in rest)}: light it alone in one reading"
+    correlation = best.covariance[own] / np.maximum(error[own] * error, 1e-300)
+    twins = [name for k, name in enumerate(best.names) if k != own and abs(correlation[k]) > TWIN]
+    if twins:
+        return f"not told from {' and '.join(twins)}: light it alone in one reading"
+    return "brings too little light to be told: measure it brighter"
 
 
 def _correlation(seen: Observations, best: Fit, leds: list[str]) -> Array:

@@ -112,8 +112,11 @@ def contrast_limited_cnr(
 def ceilings(problem: Problem) -> tuple[Ceiling, ...]:
     """Ceiling of each candidate camera at its best gain, highest first.
 
-    Several targets or backgrounds: the worst pair, all with the same sign. Raises as `codesign.solve`.
+    Several targets or backgrounds: the worst pair, all with the same sign. Empty where several readings are combined
+    by weights, which no such formula bounds. Raises as `codesign.solve`.
     """
+    if problem.combined:
+        return ()
     settings = Assembly(problem, np.full(len(problem.channels), problem.spec.temperature.air_c)).settings
     found = {}
     for setting in settings:

@@ -28,7 +28,11 @@ NO_INFORMATION, OPEN = 1e-7, 1e-4
 
 @dataclass(frozen=True, slots=True)
 class Fit:
-    """One least-squares fit: parameters by name, whitened design and right side for further hypotheses."""
+    """One least-squares fit: parameters by name, and what further hypotheses need.
+
+    ``root`` is the lower square root of the covariance of the readings, ``whiten`` its inverse; ``design`` and
+    ``right`` are whitened.
+    """
 
     names: tuple[str, ...]
     theta: Array
@@ -36,6 +40,7 @@ class Fit:
     open: np.ndarray
     design: Array
     right: Array
+    root: Array
     whiten: Array
     fitted: Array
     chi_square: float
@@ -52,7 +57,7 @@ def fitted(seen: Observations, fit: Collection[str] = ()) -> Fit:
         gain = float(np.clip(theta.get("gain", 1.0), 0.05, 20.0))
         # Deliveries not determined stay as stated, so that their noise is not forgotten.
         before = factors
-        factors = np.array([theta[led] / gain if abs(theta[led]) > 1e-9 else 1.0 for led in seen.leds])
+        factors = np.where(found.open[: len(seen.leds)], 1.0, found.theta[: len(seen.leds)] / gain)
         black = seen.black + np.array([theta.get(f"offset {name}", 0.0) for name in seen.camera])
         if np.max(np.abs(factors - before)) <= SETTLED:
             break
@@ -105,7 +110,8 @@ def _right(
 
 def _solved(names: tuple[str, ...], design: Array, right: Array, whiten: Array, seen: Observations) -> Fit:
     """Least squares through the singular values of the whitened columns, each scaled to length 1."""
-    white, target = (solve_triangular(whiten, each, lower=True) for each in (design, right))
+    inverse = solve_triangular(whiten, np.eye(right.size), lower=True)
+    white, target = inverse @ design, inverse @ right
     length = np.linalg.norm(white, axis=0)
     scale = np.where(length > 0, length, 1.0)
     left, singular, rows = np.linalg.svd(white / scale, full_matrices=True)
@@ -114,6 +120,9 @@ def _solved(names: tuple[str, ...], design: Array, right: Array, whiten: Array, 
     theta = rows[:count].T @ ((left[:, :count].T @ target) / singular[:count]) / scale
     covariance = (rows[:count].T / singular[:count] ** 2) @ rows[:count] / np.outer(scale, scale)
     unknown = np.linalg.norm(rows[count:], axis=0) > OPEN
+    error = np.sqrt(np.diag(covariance))
+    # A delivery not known to better than itself, or than the one stated, is not known.
+    unknown[: len(seen.leds)] |= (error > np.maximum(np.abs(theta), 1.0))[: len(seen.leds)]
     model = (design @ theta)[: seen.grey.size]
     return Fit(
         names=names,
@@ -122,7 +131,8 @@ def _solved(names: tuple[str, ...], design: Array, right: Array, whiten: Array, 
         open=unknown | (length == 0),
         design=white,
         right=target,
-        whiten=whiten,
+        root=whiten,
+        whiten=inverse,
         fitted=seen.black + model + (0.0 if "gain" in names else seen.gain * (seen.ambient + seen.dark)),
         chi_square=float(np.sum((target - white @ theta) ** 2)),
     )

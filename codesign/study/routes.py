@@ -15,7 +15,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from codesign.design import Design
-from codesign.errors import InfeasibleError
+from codesign.errors import InfeasibleError, ProblemError
 from codesign.problem import Problem
 from codesign.study.ceiling import Ceiling, ceilings
 from codesign.study.common import Resolved, resolve
@@ -93,9 +93,9 @@ class Routes:
         return self.start.cnr >= self.required_cnr
 
     @property
-    def ceiling(self) -> float:
-        """CNR that no light reaches with these surfaces and any of the candidate cameras."""
-        return self.ceilings[0].any_light
+    def ceiling(self) -> float | None:
+        """CNR that no light reaches with these surfaces and any of the candidate cameras; None where not known."""
+        return self.ceilings[0].any_light if self.ceilings else None
 
     def table(self):
         """Routes as a pandas DataFrame, least change first."""
@@ -129,13 +129,24 @@ def routes(problem: Problem, cnr: float | None = None, *, progress: Callable[[st
 
     Raises
     ------
+    ProblemError
+        When the CNR is not above 0.
     InfeasibleError
         As `codesign.solve`.
+
+    Examples
+    --------
+    >>> from codesign import load_problem
+    >>> found = routes(load_problem("yellow-stain"), 4.0)
+    >>> found.met, found.start.cnr < found.ceiling
+    (True, True)
     """
     say = progress or (lambda text: None)
     say("optimum as it is")
     start = resolve(problem)
-    wanted = cnr or problem.spec.required_cnr or PROBE**2 * start.cnr
+    wanted = next(each for each in (cnr, problem.spec.required_cnr, 1.25 * start.cnr) if each is not None)
+    if not 0 < wanted < np.inf:
+        raise ProblemError(f"required CNR is {wanted:g}, must be > 0")
     levers, without = applicable(problem)
     search = _Search(problem, start, wanted)
     singles, pair, floor = [], None, None

@@ -14,7 +14,6 @@ from dataclasses import dataclass
 
 import numpy as np
 from scipy import stats
-from scipy.linalg import solve_triangular
 
 from codesign.problem import Problem
 from codesign.program import Array
@@ -50,17 +49,35 @@ def suspects(
     problem: Problem, readings: tuple[Reading, ...], seen: Observations, best: Fit, fit: Collection[str]
 ) -> tuple[Suspect, ...]:
     """Causes that explain the residuals better than noise does, most likely first."""
-    swaps = _swapped(problem, readings, seen, best, fit)
-    found = []
-    hypotheses = list(_hypotheses(seen, best))
-    for kind, text, leds, columns in hypotheses:
-        drop, count = _drop(best, columns)
-        probability = float(stats.chi2.sf(drop, count)) if count else 1.0
-        if probability * len(hypotheses) < SIGNIFICANT:
-            evidence = drop - count * np.log(best.right.size)
-            found.append((evidence, Suspect(kind=kind, text=text, probability=probability, leds=leds)))
-    found.sort(key=lambda item: -item[0])
-    return (*swaps, *(suspect for _, suspect in found))[:MOST]
+    found, hypotheses = [], list(_hypotheses(seen, best))
+    strongest = max((_tried(best, best.design, each, len(hypotheses))[0] for each in hypotheses), default=-np.inf)
+    swap = _swapped(problem, readings, seen, best, fit)
+    # Any wrong spectrum looks a little like another LED's: the swap has to explain more than that.
+    if swap is not None and swap[0] > strongest:
+        _, named, seen, best = swap
+        found, hypotheses = [named], list(_hypotheses(seen, best))
+    design = best.design
+    while hypotheses and len(found) < MOST:
+        tried = [_tried(best, design, each, len(hypotheses)) for each in hypotheses]
+        _, suspect, columns = max(tried, key=lambda item: item[0])
+        if suspect.probability * len(hypotheses) >= SIGNIFICANT:
+            break
+        # What the first cause explains is no evidence for a second.
+        found.append(suspect)
+        design = np.concatenate([design, columns], axis=1)
+        hypotheses = [each for each in hypotheses if each[1] != suspect.text]
+    return tuple(found)
+
+
+def _tried(best: Fit, design: Array, hypothesis: Hypothesis, count: int) -> tuple[float, Suspect, Array]:
+    """Evidence for a hypothesis beside the columns already there, and its whitened columns."""
+    kind, text, leds, columns = hypothesis
+    drop, new, white = _drop(best, design, columns)
+    probability = float(stats.chi2.sf(drop, new)) if new else 1.0
+    suspect = Suspect(kind=kind, text=text, probability=probability, leds=leds)
+    # Causes that explain nothing significantly come last, whatever their number of columns.
+    evidence = drop - new * np.log(best.right.size) if probability * count < SIGNIFICANT else -np.inf
+    return evidence, suspect, white
 
 
 def _hypotheses(seen: Observations, best: Fit) -> Iterator[Hypothesis]:
@@ -92,20 +109,20 @@ def _hypotheses(seen: Observations, best: Fit) -> Iterator[Hypothesis]:
             yield "black level", text, (), own
 
 
-def _drop(best: Fit, columns: Array) -> tuple[float, int]:
-    """By how much columns lower chi-square, and how many of them are new."""
+def _drop(best: Fit, design: Array, columns: Array) -> tuple[float, int, Array]:
+    """By how much columns lower chi-square beside those of a design, how many of them are new, and they whitened."""
     full = np.zeros((best.right.size, columns.shape[1]))
     full[: len(columns)] = columns
-    white = solve_triangular(best.whiten, full, lower=True)
+    white = best.whiten @ full
     length = np.linalg.norm(white, axis=0)
-    white = white[:, length > 0] / length[length > 0]
-    basis = _basis(best.design)
+    white = fresh = white[:, length > 0] / length[length > 0]
+    basis = _basis(design)
+    residual = best.right - basis @ (basis.T @ best.right)
     # Twice: what is left of nearly dependent columns must be free of the old ones.
     for _ in range(2):
-        white = white - basis @ (basis.T @ white)
-    new = _basis(white, least=1e-5)
-    residual = best.right - best.design @ best.theta
-    return float(np.sum((new.T @ residual) ** 2)), new.shape[1]
+        fresh = fresh - basis @ (basis.T @ fresh)
+    new = _basis(fresh, least=1e-5)
+    return float(np.sum((new.T @ residual) ** 2)), new.shape[1], white
 
 
 def _basis(columns: Array, least: float = 0.0) -> Array:
@@ -118,28 +135,29 @@ def _basis(columns: Array, least: float = 0.0) -> Array:
 
 def _swapped(
     problem: Problem, readings: tuple[Reading, ...], seen: Observations, best: Fit, fit: Collection[str]
-) -> tuple[Suspect, ...]:
+) -> tuple[float, Suspect, Observations, Fit] | None:
     """The pair of LEDs that explains the readings best in each other's place, if much better than as stated."""
     if _plausible(seen, best):
-        return ()
+        return None
     base, found = _misfit(seen, best), []
     for first, second in itertools.combinations(seen.leds, 2):
         other = observe(problem, readings, {first: second, second: first})
         swapped = fitted(other, fit)
-        found.append((_misfit(other, swapped) - base, first, second, swapped))
+        found.append((_misfit(other, swapped) - base, first, second, other, swapped))
     if not found:
-        return ()
-    change, first, second, swapped = min(found, key=lambda item: item[0])
+        return None
+    change, first, second, other, swapped = min(found, key=lambda item: item[0])
     probability = float(np.exp(min(change, 0.0) / 2))
     if not probability * len(found) < SIGNIFICANT:
-        return ()
+        return None
     theta = dict(zip(swapped.names, swapped.theta, strict=True))
     needed = " and ".join(f"{theta[led] / theta.get('gain', 1.0):.3g}" for led in (first, second))
     text = (
         f"{first} and {second} are swapped: with each in the other's place chi-square is {swapped.chi_square:.4g} "
         f"instead of {best.chi_square:.4g}, delivery factors {needed}"
     )
-    return (Suspect(kind="swapped LEDs", text=text, probability=probability, leds=(first, second)),)
+    suspect = Suspect(kind="swapped LEDs", text=text, probability=probability, leds=(first, second))
+    return -change, suspect, other, swapped
 
 
 def _plausible(seen: Observations, best: Fit) -> bool:
@@ -161,4 +179,4 @@ def _factors(seen: Observations, best: Fit) -> Array:
 def _misfit(seen: Observations, best: Fit) -> float:
     """Twice the negative logarithm of how likely readings and deliveries are together."""
     unusual = np.log(np.maximum(_factors(seen, best), LEAST_FACTOR)) / USUAL_SPREAD
-    return best.chi_square + 2 * float(np.sum(np.log(np.diag(best.whiten)))) + float(np.sum(unusual**2))
+    return best.chi_square + 2 * float(np.sum(np.log(np.diag(best.root)))) + float(np.sum(unusual**2))

@@ -1,0 +1,76 @@
+"""The commands ``cnr routes`` and ``cnr calibrate``."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+_Problem = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
+_Json = Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")]
+
+
+def routes(
+    problem: _Problem,
+    cnr: Annotated[
+        float | None, typer.Option(metavar="X", help="CNR to reach; by default the one the problem requires.")
+    ] = None,
+    json: _Json = False,
+) -> None:
+    """Find what would have to change for a CNR: each lever alone, the best pair, a new LED or filter.
+
+    Example: cnr routes fast-web --cnr 5
+    """
+    from codesign.problem import load_problem
+    from codesign.report.machine import as_json
+    from codesign.report.routes_text import routes_dict, routes_text
+    from codesign.study.routes import routes
+
+    found = routes(load_problem(problem), cnr, progress=_say)
+    _say("")
+    _print(as_json(routes_dict(found)) if json else routes_text(found))
+
+
+def calibrate(
+    problem: _Problem,
+    readings: Annotated[Path, typer.Argument(metavar="READINGS.csv", help="Grey values measured, a row per recipe.")],
+    fit: Annotated[str, typer.Option(metavar="LIST", help="'offset', 'gain' or 'offset,gain' to fit too.")] = "",
+    update: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Write the problem with the deliveries fitted here.")
+    ] = None,
+    json: _Json = False,
+) -> None:
+    """Fit the light each LED brings to grey values measured with known recipes, and name what does not fit.
+
+    Example: cnr calibrate problem.toml readings.csv --fit offset --update calibrated.toml
+    """
+    from codesign.problem import load_problem
+    from codesign.report.calibration_text import calibration_dict, calibration_text
+    from codesign.report.machine import as_json
+    from codesign.report.problem_file import write_calibrated
+    from codesign.study.calibrate import calibrate
+    from codesign.study.readings import load_readings
+
+    loaded = load_problem(problem)
+    found = calibrate(
+        loaded, load_readings(readings, loaded), [name.strip() for name in fit.split(",") if name.strip()]
+    )
+    _print(as_json(calibration_dict(found)) if json else calibration_text(found))
+    if update is not None:
+        changed = write_calibrated(found, problem, update)
+        typer.echo(f"wrote {update}: delivery of {', '.join(changed)}", err=True)
+
+
+def _say(text: str) -> None:
+    """One line on a terminal that tells what is being looked at; an empty one wipes it."""
+    if sys.stderr.isatty():
+        sys.stderr.write("\r" + (f"looking at {text}" if text else "").ljust(60) + ("" if text else "\r"))
+        sys.stderr.flush()
+
+
+def _print(text: str) -> None:
+    from codesign.report.output import shown
+
+    typer.echo(shown(text, sys.stdout.encoding), nl=False)
