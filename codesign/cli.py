@@ -21,6 +21,7 @@ from typer.core import TyperGroup
 
 from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
+from codesign.cli_tolerance import robust, tolerance
 from codesign.cli_vary import vary, worth
 from codesign.errors import CodesignError, InfeasibleError, ProblemError
 
@@ -293,6 +294,8 @@ def _print(text: str) -> None:
 app.command()(sensitivity)
 app.command()(vary)
 app.command()(worth)
+app.command()(tolerance)
+app.command()(robust)
 app.command()(routes)
 app.command()(calibrate)
 

@@ -16,7 +16,7 @@ def _percent(what: str) -> float | None:
 
 
 def _share(what: str, usual: float) -> float:
-    return Field(default=usual, ge=0, le=1, description=f"correlation of {what}; the rest of the spread is each one's own")
+    return Field(default=usual, ge=0, le=1, description=f"correlation of {what}; the rest is each one's own")
 
 
 class Tolerance(Record):

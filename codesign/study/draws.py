@@ -196,9 +196,7 @@ def _extras(problem: Problem, lit: bool) -> list[Spread]:
             Spread(quantity="LED flux", shape="uniform", size=half, middle=middle, causes=("LED ageing, all together",))
         )
     if tolerance.ambient_off_probability > 0 and np.any(problem.ambient > 0):
-        found.append(
-            Spread(quantity=SWITCH, shape="switch", size=tolerance.ambient_off_probability, causes=(SWITCH,))
-        )
+        found.append(Spread(quantity=SWITCH, shape="switch", size=tolerance.ambient_off_probability, causes=(SWITCH,)))
     return found
 
 
@@ -209,9 +207,7 @@ def cause_names(listed: Sequence[Spread]) -> tuple[str, ...]:
 
 def standard_normal(names: Sequence[str], count: int, seed: int) -> dict[str, Array]:
     """Values of each cause from its own stream. name → (count,)"""
-    return {
-        name: np.random.default_rng([seed, zlib.crc32(name.encode())]).standard_normal(count) for name in names
-    }
+    return {name: np.random.default_rng([seed, zlib.crc32(name.encode())]).standard_normal(count) for name in names}
 
 
 def draws_from(listed: Sequence[Spread], z: dict[str, Array], count: int) -> Draws:

@@ -19,7 +19,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from codesign.catalog import Filter
-from codesign.design import Design, Performance, evaluate, setting_of
+from codesign.design import JOINT, Design, Performance, evaluate, setting_of
+from codesign.errors import ProblemError
 from codesign.limits import junction_limit
 from codesign.noise import noise_model
 from codesign.physics.filters import cone_quadrature, tilt_factor
@@ -67,6 +68,10 @@ class Fleet:
     """
 
     def __init__(self, problem: Problem, design: Design, draws: Draws) -> None:
+        if design.shots or JOINT in design.channel:
+            raise ProblemError(
+                f"{design.where}: readings combined by weights have no tolerance study; give a recipe with one reading"
+            )
         self.problem, self.design = problem, design
         self.nominal: Performance = evaluate(problem, design)
         self.setting = setting_of(problem, design)
@@ -250,7 +255,8 @@ class Block:
         t = light.exposure_s[:, None]
         led, ambient, dark = light.led * t, light.ambient * t, self.rigs.dark_rate[:, None] * t
         variance = noise.linear[0] * led + noise.linear[1] * ambient + noise.linear[2] * dark
-        variance += np.asarray(noise.constant)[..., None] + (np.asarray(noise.relative)[..., None] * (led + ambient)) ** 2
+        relative = np.asarray(noise.relative)[..., None] * (led + ambient)
+        variance += np.asarray(noise.constant)[..., None] + relative**2
         for surface, rows in enumerate(self.fleet.scene.rows_of):
             variance[:, surface] += noise.clutter_share * np.sum((light.clutter[:, rows] * t) ** 2, axis=1)
         return variance

@@ -113,8 +113,8 @@ def longest_exposure(block: Block) -> Light:
         if done:
             return light
     light = block.light(exposure)
-    over = np.max([share for name, share in limit_shares(block, light).items() if _yields(name)], axis=0) > 1 + TOLERANCE
-    shorter = np.where(over, np.maximum(exposure - step, shortest), exposure)
+    used = np.max([share for name, share in limit_shares(block, light).items() if _yields(name)], axis=0)
+    shorter = np.where(used > 1 + TOLERANCE, np.maximum(exposure - step, shortest), exposure)
     return block.light(shorter) if np.any(shorter < exposure) else light
 
 

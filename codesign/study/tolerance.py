@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from codesign.design import Design, Performance
 from codesign.errors import ProblemError
 from codesign.problem import Problem
-from codesign.study.draws import Draws, Spread, cause_names, draws_from, filters_in, spreads, standard_normal
+from codesign.study.draws import Spread, cause_names, draws_from, filters_in, spreads, standard_normal
 from codesign.study.fleet import Fleet
 from codesign.study.fleet_limits import broken, limit_shares, longest_exposure
 from codesign.study.indices import CauseShare, variance_shares
@@ -215,8 +215,6 @@ def run(fleet: Fleet, *, retune: bool = False, limits: bool = True) -> Outcome:
     return Outcome(
         cnr=cnr, exposure_s=exposure, missed={name: np.concatenate([each[name] for each in missed]) for name in names}
     )
-
-
 
 
 def _check(problem: Problem, draws: int, seed: int, required: float | None) -> None:

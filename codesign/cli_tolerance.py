@@ -1,0 +1,81 @@
+"""The commands ``cnr tolerance`` and ``cnr robust``."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+_Problem = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
+_Json = Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")]
+_Seed = Annotated[int, typer.Option(metavar="S", help="The same seed gives the same draws.")]
+
+
+def tolerance(
+    problem: _Problem,
+    recipe: Annotated[Path | None, typer.Argument(metavar="[RECIPE]", help="Recipe file; the best by default.")] = None,
+    draws: Annotated[int, typer.Option(metavar="N", help="Rigs to draw.")] = 10_000,
+    seed: _Seed = 1,
+    required: Annotated[float | None, typer.Option(metavar="CNR", help="CNR a rig must reach.")] = None,
+    retune_exposure: Annotated[
+        bool, typer.Option("--retune-exposure", help="Set the exposure anew on each rig.")
+    ] = False,
+    json: _Json = False,
+) -> None:
+    """Predict the yield over rigs built from real parts, and what makes them differ.
+
+    Spreads are under [tolerance] in the problem file. Example: cnr tolerance bruise --retune-exposure
+    """
+    from codesign.problem import load_problem
+    from codesign.report import machine, tolerance_dict, tolerance_text
+    from codesign.study.tolerance import tolerance
+
+    loaded = load_problem(problem)
+    design = _design(loaded, recipe)
+    found = tolerance(loaded, design, draws=draws, seed=seed, required=required, retune=retune_exposure)
+    table = machine.as_json(tolerance_dict.tolerance_dict(found)) if json else None
+    _print(table or tolerance_text.tolerance_text(found))
+
+
+def robust(
+    problem: _Problem,
+    quantile: Annotated[
+        float, typer.Option(metavar="Q", help="Share of scenarios that may fall short; 0 is the worst case.")
+    ] = 0.05,
+    worst: Annotated[bool, typer.Option("--worst", help="No scenario may fall short, as --quantile 0.")] = False,
+    scenarios: Annotated[int, typer.Option(metavar="N", help="Scenarios to draw.")] = 20,
+    seed: _Seed = 1,
+    recipe: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the recipe here.")] = None,
+    json: _Json = False,
+) -> None:
+    """Find the recipe that holds up best when parts and surroundings stray; all limits hold in every scenario.
+
+    Example: cnr robust bruise --worst
+    """
+    from codesign.problem import load_problem
+    from codesign.report import machine, tolerance_dict, tolerance_text
+    from codesign.study.robust import robust
+
+    found = robust(load_problem(problem), scenarios=scenarios, seed=seed, quantile=0.0 if worst else quantile)
+    table = machine.as_json(tolerance_dict.robust_dict(found)) if json else None
+    _print(table or tolerance_text.robust_text(found))
+    if recipe is not None:
+        from codesign.report.output import write_file
+        from codesign.report.recipe_file import recipe_toml
+
+        write_file(recipe, recipe_toml(found.robust.design, f"Robust recipe for {found.problem.where}"))
+
+
+def _design(problem, recipe: Path | None):
+    from codesign.report.recipe_file import load_recipe
+    from codesign.solve import solve
+
+    return solve(problem, alternatives=0).recipe.design if recipe is None else load_recipe(recipe)
+
+
+def _print(text: str) -> None:
+    from codesign.report.output import shown
+
+    typer.echo(shown(text, sys.stdout.encoding), nl=False)
