@@ -22,6 +22,7 @@ _PUBLIC = {
     "load_catalog": "codesign.catalog",
     "load_problem": "codesign.problem",
     "load_recipe": "codesign.report.recipe_file",
+    "sensitivities": "codesign.study.sensitivity",
     "solution_dict": "codesign.report.machine",
     "solution_text": "codesign.report.text",
     "solve": "codesign.solve",
