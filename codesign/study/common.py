@@ -9,36 +9,35 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from types import SimpleNamespace
 
 import numpy as np
 
 from codesign.assemble import Assembly
 from codesign.assemble_conflicts import nothing_seen, require_usable_leds
-from codesign.build import choosing, require_buildable
+from codesign.build import require_buildable
 from codesign.certificate_build import check_recipe
-from codesign.design import Design, Performance, evaluate
+from codesign.design import Performance, evaluate
 from codesign.errors import InfeasibleError
-from codesign.limits import sum_limits
 from codesign.problem import Problem
 from codesign.problem.choices import FilterChoices
 from codesign.program import Array
-from codesign.radiometry import reflectances
-from codesign.recipe import design_at, settable
-from codesign.search.frontier import Certified, Hint
-from codesign.search.walk import FULLY, Configuration, Evidence, Walk
+from codesign.recipe import settable
+from codesign.search.frontier import Hint
+from codesign.search.walk import Evidence, Walk
 from codesign.solve import Certificate, Solution, solve
-from codesign.solve_rounds import JUNCTION_TOLERANCE_K, LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP, search_rounds
+from codesign.solve_rounds import LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP, search_rounds
 from codesign.study.multipliers import Multipliers
-
-#: So few configurations left open go to the last rung at once: cheaper than a batch.
-FEW = 12
-#: Relative change of the CNR below which junction temperatures that toggle between equal recipes are left as they are.
-INDIFFERENT = 1e-6
-#: Junction temperatures may be off by this much where it makes no difference. [K]
-LARGEST_RESIDUAL_K = 2.0
-#: Rounds over junction temperatures before it is asked whether they make a difference.
-PATIENCE = 3
+from codesign.study.warm import (
+    design_of,
+    hint_of,
+    matching,
+    settled_certificate,
+    settles,
+    shape_of,
+    take_over,
+    units_of,
+    warmed,
+)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -172,24 +171,26 @@ def resolve(problem: Problem, near: Resolved | Known | Solution | None = None, *
     require_buildable(problem)
     air = problem.spec.temperature.air_c
     assembly = Assembly(problem, np.array([known.junction_c.get(c.id, air) for c in problem.channels]))
-    seed = _find(assembly, known)
+    seed = matching(assembly, known)
     if seed is None:
         return _cold(problem, gap, carried)
-    units = _units(problem, known)
-    shape = _shape(assembly)
+    units = units_of(problem, known)
+    shape = shape_of(assembly)
     hint = near.hint if isinstance(near, Resolved) and near.shape == shape else None
+    if isinstance(near, Resolved):
+        assembly = assembly.at(warmed(problem, near, assembly.junction_c))
     for _ in range(LARGEST_NUMBER_OF_ROUNDS):
-        first = _settled(assembly, seed, units, gap, hint)
+        first = settled_certificate(assembly, seed, units, gap, hint)
         walk = Walk(first.assembly, gap)
-        start = _start(walk, first, walk.number(seed), carried)
+        start = take_over(walk, first, walk.number(seed), carried)
         best = walk.best()
         if best is None:
             raise nothing_seen(walk.assembly)
         carried = carried.learned(walk, walk.evidence[start:])
         walk.polish(best, min(gap, POLISH_GAP))
-        if walk.configuration(best) == seed or _settles(walk, best, indifferent=True)[0]:
+        if walk.configuration(best) == seed or settles(walk, best, indifferent=True)[0]:
             break
-        seed, units, hint = walk.configuration(best), getattr(walk.found[best], "units", None), _hint(walk, best)
+        seed, units, hint = walk.configuration(best), getattr(walk.found[best], "units", None), hint_of(walk, best)
         assembly = walk.assembly
     return _finished(walk, best, gap, carried)
 
@@ -244,121 +245,12 @@ def _combined(problem: Problem, gap: float | None) -> Resolved:
     )
 
 
-def _find(assembly: Assembly, known: Known) -> Configuration | None:
-    """The configuration of those names among those of the problem, at the pulse level that allows the exposure."""
-    part = next((i for i, each in enumerate(assembly.problem.filters) if each.id == known.filter), None)
-    wanted = (known.camera, known.channel, known.gain_db, known.f_number)
-    settings = [
-        setting
-        for setting in assembly.settings
-        if (setting.camera.id, setting.channel, setting.gain.gain_db, setting.f_number) == wanted
-    ]
-    if part is None or not settings:
-        return None
-    long_enough = [s for s in settings if s.level.longest_s * 1e6 >= known.exposure_us * (1 - 1e-9)]
-    return Configuration(long_enough[0] if long_enough else settings[-1], part, known.sign)
-
-
-def _units(problem: Problem, known: Known) -> np.ndarray | None:
-    return None if known.units is None else np.array([known.units.get(c.id, 0) for c in problem.channels])
-
-
-def _settled(assembly: Assembly, seed: Configuration, units: np.ndarray | None, gap: float, hint: Hint | None) -> Walk:
-    """Certify one configuration at junction temperatures that agree with its own recipe: a walk of that one alone."""
-    before: tuple[Array, Array] | None = None
-    for attempt in range(LARGEST_NUMBER_OF_ROUNDS):
-        walk = Walk.blank(assembly)
-        number = walk.number(seed)
-        # With one pair and no choice of LEDs a small gap is cheap, and nothing is left to polish.
-        walk.gap = gap if walk.pairs > 1 or choosing(assembly.problem) else min(gap, POLISH_GAP)
-        if hint is not None:
-            walk.hints[number] = hint
-        walk.seed(seed, SimpleNamespace(units=units))
-        walk.polish(number, min(gap, POLISH_GAP))
-        done, reached = _settles(walk, number, indifferent=attempt >= PATIENCE)
-        if done or attempt == LARGEST_NUMBER_OF_ROUNDS - 1:
-            break
-        hint, units = _hint(walk, number), getattr(walk.found[number], "units", None)
-        assumed = assembly.junction_c
-        assembly = assembly.at(_extrapolated(before, assumed, reached))
-        before = assumed, reached
-    return walk
-
-
-def _extrapolated(before: tuple[Array, Array] | None, assumed: Array, reached: Array) -> Array:
-    """Junction temperatures to try next: what was reached, carried on where two rounds show how it depends. (L,)"""
-    if before is None:
-        return reached
-    step = assumed - before[0]
-    slope = np.divide(reached - before[1], step, out=np.zeros_like(step), where=np.abs(step) > 1e-6)
-    slope = np.where(np.abs(slope) < 0.5, slope, 0.0)
-    return assumed + (reached - assumed) / (1 - slope)
-
-
-def _settles(walk: Walk, number: int, *, indifferent: bool) -> tuple[bool, Array]:
-    """Whether the junction temperatures assumed agree with the recipe's; and those reached. (L,)
-
-    ``indifferent`` also takes those that disagree without effect: recipes of equal CNR may toggle for ever.
-    """
-    problem, found = walk.assembly.problem, walk.found[number]
-    if found.value <= 0:
-        return True, walk.assembly.junction_c
-    performance = evaluate(problem, _design(walk, number))
-    states = {state.id: state.junction_c for state in performance.leds}
-    assumed = walk.assembly.junction_c
-    reached = np.array([states.get(c.id, t) for c, t in zip(problem.channels, assumed, strict=True)])
-    residual = float(np.max(np.abs(reached - assumed), initial=0.0))
-    equal = indifferent and abs(performance.cnr / found.value - 1) <= INDIFFERENT and residual <= LARGEST_RESIDUAL_K
-    return residual <= JUNCTION_TOLERANCE_K / 2 or equal, reached
-
-
-def _shape(assembly: Assembly) -> tuple:
-    """What the multipliers of a configuration are made for: limits, LEDs, noise of the problem."""
-    problem = assembly.problem
-    spread = [rows.stop - rows.start for rows in reflectances(problem).rows_of]
-    capped = [np.isfinite(assembly.segments(setting).heat_cap).tobytes() for setting in assembly.settings[:1]]
-    names = [each.id for each in (*problem.surfaces, *problem.channels)]
-    return (*names, *spread, *capped, *(limit.name for limit in sum_limits(problem)), choosing(problem), problem.strobe)
-
-
-def _hint(walk: Walk, number: int) -> Hint | None:
-    """What a related search of the same configuration should start from."""
-    result = walk.found[number]
-    if not isinstance(result, Certified) or result.value <= 0:
-        return None
-    segments = walk.assembly.segments(walk.configuration(number).setting)
-    lit = np.unique(segments.led[result.point[:-1] > 1e-6 * segments.width * result.point[-1]])
-    return Hint(result.proof.ceiling, lit, result.value)
-
-
-def _start(walk: Walk, first: Walk, number: int, carried: Multipliers) -> int:
-    """Take over a certified configuration, drop others by multipliers known; return how much evidence these are."""
-    value = first.found[number].value
-    carried.apply(walk, value)
-    count = len(walk.evidence)
-    walk.found[number] = first.found[number]
-    walk.tried[number] = first.tried[number]
-    walk.upper[number] = min(walk.upper[number], first.upper[number])
-    walk.evidence.extend(first.evidence)
-    walk.tally.certified += first.tally.certified
-    open_ = np.flatnonzero(walk.upper > value * (1 + walk.gap))
-    if open_.size <= FEW:
-        walk.refined[open_] = FULLY
-    return count
-
-
-def _design(walk: Walk, best: int) -> Design:
-    """What to dial in for a configuration as certified."""
-    chosen, result = walk.configuration(best), walk.found[best]
-    return design_at(walk.assembly, chosen.setting, chosen.filter, result.point, getattr(result, "units", None))
-
-
 def _finished(walk: Walk, best: int, gap: float, multipliers: Multipliers) -> Resolved:
     """Check the winner with code that knows no solver, and put the result together."""
     problem = walk.assembly.problem
     result = walk.polish(best, min(gap, POLISH_GAP))
     units = getattr(result, "units", None)
-    design = _design(walk, best)
+    design = design_of(walk, best)
     optimum = evaluate(problem, design)
     check_recipe(walk.every_pair(best), result.point, result.value, walk.space(best), units)
     assumed = {c.id: float(t) for c, t in zip(problem.channels, walk.assembly.junction_c, strict=True)}
@@ -380,8 +272,8 @@ def _finished(walk: Walk, best: int, gap: float, multipliers: Multipliers) -> Re
         certificate=certificate,
         known=_known(walk, best, optimum, units),
         multipliers=multipliers,
-        hint=_hint(walk, best),
-        shape=_shape(walk.assembly),
+        hint=hint_of(walk, best),
+        shape=shape_of(walk.assembly),
         winner=best,
         point=result.point,
         units=units,
