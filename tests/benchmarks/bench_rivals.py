@@ -74,7 +74,9 @@ def local_ascent_in_a_loop(folder: Path, *, sample, starts, **size) -> list[Figu
     return contest.loop(lambda program: local_ascent(program, starts, rng), f"SLSQP, {starts} starts")
 
 
-@benchmark(tiny={**TINY, "generations": 3, "population": 2}, full={**FULL, "generations": 100, "population": 5})
+@benchmark(
+    tiny={**TINY, "generations": 3, "population": 2}, full={**FULL, "sample": 1, "generations": 100, "population": 5}
+)
 def evolution_over_everything(folder: Path, *, sample, generations, population, **size) -> list[Figure]:
     """Differential evolution of scipy with discrete choices as integer genes: one run, nothing proven."""
     contest = Contest(folder, 1, **size)
