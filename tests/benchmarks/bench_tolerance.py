@@ -44,7 +44,7 @@ def robust_recipes(folder: Path, *, demos: tuple[str, ...], scenarios: int) -> l
         figures += [
             Figure(what=f"{name}, {scenarios} scenarios", value=seconds, unit="s"),
             Figure(what=f"{name}, gap", value=found.gap, unit="1", at_most=0.02),
-            Figure(what=f"{name}, nominal minus robust CNR in the worst case", value=worse, unit="1", at_most=0.0),
+            Figure(what=f"{name}, nominal - robust worst CNR", value=worse, unit="1", at_most=0.0),
             Figure(what=f"{name}, price of robustness", value=found.price, unit="1"),
         ]
     return figures
