@@ -11,8 +11,9 @@ levers                   [route], least change first: {"levers": [name], "factor
                          "factor" is None the most that is to be had), "cnr", "cnr_bound": at "factor", "before",
                          "after": {what: value}, "certain": whether more of it provably never hurts, "settings": the
                          recipe at "factor"}
-pair                     None, or the route of two levers changed by the smallest common factor
-pair_floor               factor at which no other pair reaches it
+pair                     None where none needs noticeably less than one lever, or the route of two levers changed by the
+                         smallest common factor
+pair_floor               factor at which no other pair reaches it; None where no two do however far
 not_levers               {lever: why the problem has none}
 ideal                    [{"kind", "wavelength_nm", "width_nm": None where none helps, "cnr", "cnr_bound", "gain",
                          "scan": [[wavelength_nm, cnr]], "like": LED whose current and heat it shares}]
@@ -137,7 +138,9 @@ def _pair(found: Routes, width: int) -> list[str]:
         return []
     lines = [heading("two levers by one factor", width)]
     if found.pair is None:
-        return [*lines, *bullet("no two levers reach the CNR wanted", width)]
+        none = found.pair_floor is None
+        text = "no two levers reach the CNR wanted" if none else "no two need noticeably less than the first one alone"
+        return [*lines, *bullet(text, width)]
     pair = found.pair
     lines += labelled(
         "levers", f"{' and '.join(pair.levers)}, each by {_times(pair.factor)}: CNR {pair.cnr:.4g}", width

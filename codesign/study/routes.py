@@ -24,6 +24,8 @@ from codesign.study.levers import Lever, applicable, pulled
 
 #: A least factor f is found to this share of ln f, at least to this factor's excess over 1.
 SHARE, EXCESS = 0.01, 5e-4
+#: A pair counts when it needs less than this share of what one lever needs, in logarithms.
+NOTICEABLE = 0.98
 #: First factor tried between two.
 PROBE = 1.2
 #: Turns of narrowing a factor.
@@ -71,8 +73,8 @@ class Route:
 class Routes:
     """Everything that could be done about a CNR.
 
-    ``pair`` is None where none reaches it; ``pair_floor`` is the factor at which no other pair does. ``without`` says
-    why levers are not in the list.
+    ``pair`` is None where none reaches it with noticeably less than a single lever; ``pair_floor`` is the factor at
+    which no (other) pair does, None where none does at all. ``without`` says why levers are not in the list.
     """
 
     problem: Problem = field(repr=False)
@@ -281,7 +283,7 @@ class _Search:
     def best_pair(self, levers: tuple[Lever, ...], singles: list[Route]) -> tuple[Route | None, float | None]:
         """The two levers that need the smallest common factor, and the factor at which no other pair reaches the CNR.
 
-        (None, None) when no two levers reach it.
+        (None, None) when no two levers reach it; no route when they need as much as one alone.
         """
         alone = {route.levers[0]: route.factor or np.inf for route in singles}
         ranked = sorted(levers, key=lambda lever: (alone[lever.name], -self.gain((lever,), lever.most(self.problem))))
@@ -303,7 +305,11 @@ class _Search:
                     continue
                 best = (lever, group[0])
                 bracket = self._between(best, 1.0, test)
-        return (self._route(best, *bracket), bracket[0]) if best else (None, None)
+        if best is None:
+            return None, None
+        # Where one of the two has no part in it, the other alone is the route.
+        helps = np.log(bracket[1]) < NOTICEABLE * np.log(min(alone.values()))
+        return self._route(best, *bracket) if helps else None, bracket[0]
 
 
 def _values(levers: tuple[Lever, ...], problem: Problem, camera: str) -> dict[str, float]:
