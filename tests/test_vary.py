@@ -186,3 +186,9 @@ def test_a_section_can_be_taken_away_and_put_back():
     assert still.spec.motion is None
     moving = varied(still, {"motion.speed_mm_per_s": 100, "motion.max_blur_px": 1})
     assert moving.spec.motion.max_blur_px == 1
+
+
+def test_results_do_not_depend_on_processes(stain):
+    axes = [Axis("averaging.frames", tuple(range(1, 9)))]
+    one, two = vary(stain, axes=axes), vary(stain, axes=axes, workers=2)
+    assert [(p.cnr, p.drive_ma) for p in one.points] == [(p.cnr, p.drive_ma) for p in two.points]

@@ -232,7 +232,18 @@ def _chain(
     gap: float,
     tick: Callable[[], None] | None = None,
 ) -> list[tuple[tuple[int, ...], Point]]:
-    """Solve the points of one chain, each from the one before."""
+    """Solve the points of one chain, each from the one before.
+
+    The matrix library keeps to one thread: its threads wait actively, which costs more than they bring on small arrays
+    and takes the core from the other chain.
+    """
+    from threadpoolctl import threadpool_limits
+
+    with threadpool_limits(limits=1, user_api="blas"):
+        return _walked(problem, settings, axes, places, start, gap, tick)
+
+
+def _walked(problem, settings, axes, places, start, gap, tick) -> list[tuple[tuple[int, ...], Point]]:
     found, near = [], start
     for place in places:
         values = tuple(axis.values[k] for axis, k in zip(axes, place, strict=True))
@@ -278,19 +289,16 @@ def _without_file(text: str, problem: Problem) -> str:
 
 
 def _in_processes(jobs, workers: int, progress, total: int) -> list:
-    """One chain per process at a time."""
-    from concurrent.futures import ProcessPoolExecutor, as_completed
+    """The first chain here, the others in further processes."""
+    from concurrent.futures import ProcessPoolExecutor
     from multiprocessing import get_context
 
     # Forking a process that has threads may lock up.
-    with ProcessPoolExecutor(min(workers, len(jobs)), mp_context=get_context("spawn")) as pool:
-        running = [pool.submit(_chain, *job) for job in jobs]
-        done = 0
-        for future in as_completed(running):
-            done += len(future.result())
-            if progress is not None:
-                progress(done, total)
-        return [future.result() for future in running]
+    with ProcessPoolExecutor(min(workers, len(jobs)) - 1, mp_context=get_context("spawn")) as pool:
+        running = [pool.submit(_chain, *job) for job in jobs[1:]]
+        done = itertools.count(1)
+        tick = None if progress is None else lambda: progress(next(done), total)
+        return [_chain(*jobs[0], tick), *(future.result() for future in running)]
 
 
 def _plain(value: Any) -> Any:
