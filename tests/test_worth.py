@@ -1,6 +1,7 @@
 """Worth of parts: the CNR lost without each, and gained with others."""
 
 import math
+from dataclasses import replace
 
 import pytest
 
@@ -52,7 +53,7 @@ def test_additions_that_help_are_found(stain):
     poor = varied(stain, {"candidates.leds": ["blue-470-a", "blue-450-a"]})
     strong = violet.replaced(id="violet-x", radiant_flux_w=1.2)
     useless = violet.replaced(id="violet-y", radiant_flux_w=1e-9)
-    others = load_catalog("demo").with_parts({"led": {led.id: led for led in (strong, useless)}})
+    others = replace(load_catalog("demo"), leds={led.id: led for led in (strong, useless)}, filters={}, cameras={})
     found = worth(poor, others=others)
     assert found.tried == 2
     assert [(part.kind, part.id) for part in found.additions] == [("led", "violet-x")]

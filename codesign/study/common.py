@@ -102,8 +102,8 @@ class Resolved:
 
     @property
     def bound(self) -> float:
-        """No configuration has a CNR above this."""
-        return self.certificate.bound
+        """No configuration has a CNR above this, but for what the residual of the junction temperatures changes."""
+        return max(self.certificate.bound, self.cnr)
 
     @property
     def binding(self) -> tuple[str, ...]:

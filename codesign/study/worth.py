@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 from codesign.catalog import Catalog
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.problem import Problem
-from codesign.problem.choices import JOINT
+from codesign.problem.choices import JOINT, FilterChoices
 from codesign.study.common import Resolved, resolve, without_part
 from codesign.study.fields import varied
 from codesign.study.stock import KINDS, PartName, extended
@@ -120,7 +120,7 @@ def worth(
     ----------
     problem : Problem
     others : Catalog, optional
-        Parts to try as additions, each alone; those whose id is known already are passed over.
+        Parts to try as additions, each alone; those that are candidates already, or must not be used, are passed over.
     near : Resolved, optional
         The problem's own result, where it is known.
     gap : float, optional
@@ -140,8 +140,8 @@ def worth(
     Examples
     --------
     >>> from codesign import load_problem
-    >>> [(part.kind, part.id) for part in worth(load_problem("yellow-stain")).parts][0]
-    ('led', 'violet-405-a')
+    >>> worth(load_problem("yellow-stain")).parts[0].id
+    'mono-5mp'
     """
     whole = resolve(problem, near, gap=gap)
     used = list(parts_in_use(whole))
@@ -207,10 +207,15 @@ def _newcomers(old: Resolved, new: Resolved) -> tuple[str, ...]:
 
 
 def _new_parts(problem: Problem, others: Catalog) -> Iterator[PartName]:
-    """Parts of another catalogue that the problem's own does not have."""
+    """Parts of a catalogue that are no candidates yet."""
+    known = {
+        "led": {channel.id for channel in problem.channels},
+        "filter": {part.id for part in FilterChoices.of(problem.filters).base},
+        "camera": {camera.id for camera in problem.cameras},
+    }
     for kind in KINDS:
         for name in others.parts(kind):
-            if name not in problem.catalog.parts(kind):
+            if name not in known[kind] and name not in problem.spec.build.must_not:
                 yield kind, name
 
 
