@@ -114,13 +114,16 @@ def solve(
     least: Annotated[
         str | None, typer.Option(metavar="WHAT", help="Least price, heat or exposure for the CNR required instead.")
     ] = None,
-    cnr: Annotated[float | None, typer.Option(metavar="CNR", help="CNR required with --least.")] = None,
+    cnr: Annotated[float | None, typer.Option(metavar="CNR", help="CNR required with --least; by default required_cnr.")] = None,
 ) -> None:
     """Find the recipe of greatest CNR, with its proof.
 
-    Example: cnr solve yellow-stain --recipe recipe.toml
+    Example: cnr solve yellow-stain --recipe recipe.toml, or the coolest light that is enough:
+    cnr solve yellow-stain --least heat --cnr 4
     """
     cost = None
+    if least is None and cnr is not None:
+        raise ProblemError(f"--cnr {cnr:g} belongs to --least; for the greatest CNR set required_cnr in the problem")
     if least is None:
         solution = _solved(problem, gap, alternatives, time_limit)
     else:
@@ -275,11 +278,14 @@ def _show_solution(
     else:
         if cost is not None:
             _print(
-                f"least {cost.quantity}  {cost.value:.6g} {cost.unit}\n"
-                f"  reaches CNR {cost.required_cnr:g}; none does with {cost.bound:.6g} {cost.unit} ({cost.status})\n\n"
+                f"least {cost.quantity}  {cost.value:.6g} {cost.unit}".rstrip()
+                + f"\n  reaches CNR {cost.required_cnr:g}; none does with "
+                + f"{cost.bound:.6g} {cost.unit}".rstrip()
+                + f" or less ({cost.status})\n  below: the recipe of most CNR at about that {cost.quantity}, "
+                "which is then among the limits\n\n"
             )
         if solution.status == "stopped":
-            _print(f"stopped early: the proven gap is {solution.certificate.gap:.3g}\n\n")
+            _print(f"stopped before the gap asked for: {100 * solution.certificate.gap:.3g} % is proven\n\n")
         _print(text.solution_text(solution, verdict=verdict))
         if sensitivities is not None:
             _print("\n" + sensitivity_text(sensitivities))

@@ -33,7 +33,8 @@ def test_report_names_every_setting_surface_limit_and_noise_term(name, solved):
     for led, ma in recipe.design.drive_ma.items():
         assert led in text
         assert f"{ma:.10g} mA" in text
-    for word in (recipe.design.camera, *(s.id for s in recipe.surfaces), *(limit.name for limit in recipe.limits)):
+    used = [limit.name for limit in recipe.limits if limit.share >= 0.01]
+    for word in (recipe.design.camera, *(s.id for s in recipe.surfaces), *used):
         assert word in text
     for term, pair in recipe.noise.items():
         assert (term in text) == (sum(pair) > 0)

@@ -108,7 +108,7 @@ def _stand(found: Routes, width: int) -> list[str]:
 
 def _limits(found: Routes) -> str:
     names = found.start.binding
-    return f"held by {', '.join(names)}" if names else "no limit is reached"
+    return f"held by {'; '.join(names)}" if names else "no limit is reached"
 
 
 def _single(found: Routes, width: int) -> list[str]:

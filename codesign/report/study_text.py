@@ -96,7 +96,7 @@ def _rows(found: Variation, letters: dict[tuple[str, ...], str], width: int) -> 
             _cnr(point.cnr) if point.possible else "none",
             _cnr(point.bound, 5) if point.possible else "",
             letters.get(point.configuration, NOTHING),
-            ", ".join(point.binding if point.possible else point.limits) or ("" if point.possible else point.reason),
+            "; ".join(point.binding if point.possible else point.limits) or ("" if point.possible else point.reason),
         )
         for point in found.points
     ]

@@ -20,6 +20,10 @@ CNR_DEFINITION = "|target mean - background mean| / √(mean of their two varian
 
 #: From this share on a limit counts as reached. [1]
 REACHED = 0.999
+#: Limits met that are used less are counted in one line; the JSON result lists all. [1]
+HARDLY_USED = 0.01
+#: Units as set in text; error messages and JSON keep to ASCII.
+UNITS = {"us": "µs", "e-": "e⁻", "deg C": "°C"}
 #: Length of the bars. [characters]
 BAR = 12
 #: Parts left out that are listed; the JSON result lists all.
@@ -173,15 +177,20 @@ def _compared(cnr: float, required: float) -> str:
 def _rate(rate: float) -> str:
     if rate < 1e-12:
         return "fewer than one in 10^12"
-    return percent(rate) if rate >= 0.001 else f"1 in {number(1 / rate, 3)}"
+    return percent(rate) if rate >= 0.01 else f"1 in {number(1 / rate, 3)}"
 
 
 def _limits(performance: Performance, width: int, binding: tuple[str, ...] | None = None) -> list[str]:
     """All limits, the most used first; ``binding`` are those the optimum touches before rounding."""
     ordered = sorted(performance.limits, key=lambda limit: -limit.share)
-    rows = [_limit_row(limit, binding) for limit in ordered]
+    shown = [limit for limit in ordered if limit.share >= HARDLY_USED or not limit.met or _bound(limit, binding)]
+    if len(ordered) - len(shown) < 2:  # a line that counts one is no shorter
+        shown = ordered
+    rows = [_limit_row(limit, binding) for limit in shown]
     lines = [heading("what limits it", width)]
-    lines += _with_bars(table(("  limit", "value", "allowed", "used"), rows, width - BAR - 3), ordered, width)
+    lines += _with_bars(table(("  limit", "value", "allowed", "used"), rows, width - BAR - 3), shown, width)
+    if len(shown) < len(ordered):
+        lines.append(f"   and {len(ordered) - len(shown)} more below {percent(HARDLY_USED)} (--json lists all)")
     if any(_bound(limit, binding) and limit.met for limit in ordered):
         lines.append(" ► binds: loosening this limit can raise the CNR")
     return lines if performance.feasible else [*lines, " ! exceeded"]
@@ -204,7 +213,7 @@ def _bound(limit: LimitUse, binding: tuple[str, ...] | None) -> bool:
 def _limit_row(limit: LimitUse, binding: tuple[str, ...] | None) -> tuple[str, str, str, str]:
     mark = "!" if not limit.met else "►" if _bound(limit, binding) else " "
     sign = "≥" if limit.floor else "≤"
-    allowed = f"{sign} {number(limit.bound)} {limit.unit}"
+    allowed = f"{sign} {number(limit.bound)} {UNITS.get(limit.unit, limit.unit)}"
     return f"{mark} {limit.name}", number(limit.value), allowed, percent(limit.share, least=0.001)
 
 

@@ -87,7 +87,7 @@ def _causes(found: Tolerance, width: int) -> list[str]:
     ]
     header, *body = table(("cause", "alone", "with others"), rows, width - BAR - 3)
     drawn = [f"{row.ljust(width - BAR - 1)} {bar(c.total, BAR)}" for row, c in zip(body, shown, strict=True)]
-    main = ", ".join(c.cause for c in shown[:MAIN])
+    main = "; ".join(c.cause for c in shown[:MAIN])
     lines = [heading("what makes the CNR vary", width), header, *drawn]
     return lines + labelled("main causes", main, width) + labelled("", "shares of the variance (Sobol' indices)", width)
 
@@ -128,6 +128,9 @@ def _compared(found: Robust, width: int) -> list[str]:
     trials = [("nominal", found.nominal), ("nominal, less light", found.cautious), ("robust", found.robust)]
     rows = [_row(name, trial, found.quantile, found.scenarios) for name, trial in trials if trial is not None]
     lines += table(("recipe", "CNR as stated", what, "limits missed in"), rows, width)
+    if found.cautious is not None:
+        text = "nominal, less light: the nominal recipe dimmed until it keeps the limits; no search"
+        lines += labelled("", text, width)
     price = percent(max(found.price, 0.0))
     lines += labelled("price", f"{price} of the nominal CNR is given up for it", width)
     return lines + labelled("", "a scenario in which a limit is missed counts as CNR 0", width)
