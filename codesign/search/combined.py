@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import heapq
 import itertools
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -116,12 +117,24 @@ class _Corners:
         return self.bounds[corner]
 
 
+def _never() -> bool:
+    return False
+
+
 def bound_over_weights(
-    readings: Readings, gap: float, value: float, exchangeable: bool, most: int = LARGEST_NUMBER_OF_CORNERS
+    readings: Readings,
+    gap: float,
+    value: float,
+    exchangeable: bool,
+    most: int = LARGEST_NUMBER_OF_CORNERS,
+    stop: Callable[[], bool] = _never,
 ) -> tuple[float, CombinedProof]:
-    """Bound on the CNR over all recipes and weights of one sign, to the gap above ``value`` where that works."""
+    """Bound on the CNR over all recipes and weights of one sign, to the gap above ``value`` where that works.
+
+    The boxes kept cover all weights at any time, so a bound stopped early is loose, never wrong.
+    """
     if readings.separate():
-        return _bound_by_boxes(readings, gap, value, exchangeable)
+        return _bound_by_boxes(readings, gap, value, exchangeable, stop=stop)
     spread_, corners = spread(readings), _Corners(readings, CORNER_SHARE * gap)
     aim, ticket = value * (1 + gap), itertools.count()
 
@@ -131,7 +144,7 @@ def bound_over_weights(
 
     open_ = [entry(box) for box in faces(readings.count, exchangeable)]
     heapq.heapify(open_)
-    while -open_[0][0] > aim and len(corners.bounds) < most:
+    while -open_[0][0] > aim and len(corners.bounds) < most and not stop():
         _, _, box = heapq.heappop(open_)
         for part in _halves(box, spread_):
             heapq.heappush(open_, entry(part))
@@ -141,7 +154,12 @@ def bound_over_weights(
 
 
 def _bound_by_boxes(
-    readings: Readings, gap: float, value: float, exchangeable: bool, most: int = LARGEST_NUMBER_OF_BOXES
+    readings: Readings,
+    gap: float,
+    value: float,
+    exchangeable: bool,
+    most: int = LARGEST_NUMBER_OF_BOXES,
+    stop: Callable[[], bool] = _never,
 ) -> tuple[float, CombinedProof]:
     """As `bound_over_weights` for readings with columns of their own: one program for each box of one sign."""
     aim, ticket, whole = value * (1 + gap), itertools.count(), {}
@@ -156,7 +174,7 @@ def _bound_by_boxes(
 
     open_ = [entry(box) for box in faces(readings.count, exchangeable)]
     heapq.heapify(open_)
-    while -open_[0][0] > aim and (len(whole) < most or not np.isfinite(open_[0][0])):
+    while -open_[0][0] > aim and ((len(whole) < most and not stop()) or not np.isfinite(open_[0][0])):
         _, _, box = heapq.heappop(open_)
         whole.pop(box, None)
         low, high = np.array(box.low), np.array(box.high)
@@ -193,6 +211,7 @@ def certify_combined(
     *,
     known: tuple[Array, Array, float] | None = None,
     exchangeable: bool = False,
+    stop: Callable[[], bool] = _never,
 ) -> Combined:
     """Best recipe and weights of one configuration, with a bound over all of them for both contrast signs.
 
@@ -201,7 +220,7 @@ def certify_combined(
     """
     point, weights, value = best_alternation(readings, gap) if known is None else known
     found = [
-        bound_over_weights(turned(readings, sign), gap, max(value, target), exchangeable) for sign in SIGNS
+        bound_over_weights(turned(readings, sign), gap, max(value, target), exchangeable, stop=stop) for sign in SIGNS
     ]
     most = max(limit for limit, _ in found)
     return Combined(

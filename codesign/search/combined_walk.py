@@ -169,6 +169,7 @@ class CombinedWalk:
             target,
             known=(known.point, known.weights, known.value),
             exchangeable=self.shots > 1,
+            stop=self.stop,
         )
         self.evidence.append(CombinedEvidence(index, result.proof))
         self.upper[index] = min(self.upper[index], result.bound)
