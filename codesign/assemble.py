@@ -217,7 +217,8 @@ class Assembly:
         low, high = window.low, window.high
         return InfeasibleError(
             f"{where}: limits in conflict: {low.name} asks for {low.time * 1e6:.5g} us or more, {high.name} "
-            f"({high.bound:.5g} {high.unit}) allows {high.time * 1e6:.5g} us at most (camera {setting.camera.id!r}); loosen one",
+            f"({high.bound:.5g} {high.unit}) allows {high.time * 1e6:.5g} us at most "
+            f"(camera {setting.camera.id!r}); loosen one",
             [low.name, high.name],
         )
 

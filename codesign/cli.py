@@ -114,7 +114,9 @@ def solve(
     least: Annotated[
         str | None, typer.Option(metavar="WHAT", help="Least price, heat or exposure for the CNR required instead.")
     ] = None,
-    cnr: Annotated[float | None, typer.Option(metavar="CNR", help="CNR required with --least; by default required_cnr.")] = None,
+    cnr: Annotated[
+        float | None, typer.Option(metavar="CNR", help="CNR required with --least; by default required_cnr.")
+    ] = None,
 ) -> None:
     """Find the recipe of greatest CNR, with its proof.
 

@@ -97,7 +97,7 @@ def least_cost(
     """
     started = time.perf_counter()
     if minimise not in QUANTITIES:
-        raise ProblemError(f"minimise is {minimise!r}, must be one of {', '.join(QUANTITIES)}")
+        raise ProblemError(f"least cost: {minimise!r} cannot be minimised, must be one of {', '.join(QUANTITIES)}")
     required = problem.spec.required_cnr if required_cnr is None else required_cnr
     if required is None or not required > 0:
         raise ProblemError(f"{problem.where}: required_cnr is {required}, must be above 0; say which CNR is needed")

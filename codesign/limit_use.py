@@ -36,7 +36,11 @@ class LimitUse:
     def shortfall(self) -> str:
         """Say by how much the limit is missed."""
         word = "below" if self.floor else "above"
-        return f"{self.name} {self.value:.5g} {self.unit} is {abs(self.value - self.bound):.3g} {self.unit} {word} the limit {self.bound:.5g} {self.unit}"
+        missing = abs(self.value - self.bound)
+        return (
+            f"{self.name} {self.value:.5g} {self.unit} is {missing:.3g} {self.unit} {word} "
+            f"the limit {self.bound:.5g} {self.unit}"
+        )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -18,6 +18,9 @@ from codesign.recipe import design_at, settable
 from codesign.search.walk import Evidence, Tally, Walk
 from codesign.solve_rounds import POLISH_GAP, Clock, Search, search_rounds
 
+#: Default time limit where channels or shots are combined. [s]
+COMBINED_SECONDS = 60.0
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Certificate:
@@ -109,7 +112,7 @@ def solve(
         Called with (best CNR so far, bound so far).
     time_limit : float, optional
         Stop about then with the best so far; its certificate states the gap that is proven. An interrupt does the
-        same. [s]
+        same. None by default, but `COMBINED_SECONDS` where readings are combined, whose bounds close slowly. [s]
 
     Returns
     -------
@@ -132,7 +135,7 @@ def solve(
     if problem.combined:
         from codesign.solve_combined import solve_combined
 
-        return solve_combined(problem, gap, Clock.lasting(time_limit))
+        return solve_combined(problem, gap, Clock.lasting(COMBINED_SECONDS if time_limit is None else time_limit))
     gap = problem.spec.solver.gap if gap is None else gap
     wanted = problem.spec.solver.alternatives if alternatives is None else alternatives
     clock = Clock.lasting(time_limit)

@@ -27,9 +27,7 @@ COMBINED_GAP = 2e-2
 LARGEST_NUMBER_OF_ROUNDS, JUNCTION_TOLERANCE_K = 8, 0.02
 
 
-def solve_combined(
-    problem: Problem, gap: float | None = None, stop: Callable[[], bool] = lambda: False
-) -> Solution:
+def solve_combined(problem: Problem, gap: float | None = None, stop: Callable[[], bool] = lambda: False) -> Solution:
     """As `codesign.solve` for combined readings, without runners-up; the gap may stay above the one asked for."""
     started = time.perf_counter()
     _refuse_build_limits(problem)

@@ -96,9 +96,8 @@ def search_rounds(
         scout = attempt == 0 and seed is None
         walk = None
         try:
-            walk = Walk(
-                Assembly(_singles(problem) if scout else problem, junction), max(gap, SCOUT_GAP) if scout else gap, progress, clock, enough,
-            )  # fmt: skip
+            assembly = Assembly(_singles(problem) if scout else problem, junction)
+            walk = Walk(assembly, max(gap, SCOUT_GAP) if scout else gap, progress, clock, enough)
             if seed is not None:
                 walk.seed(*seed)
             best = walk.best()
@@ -143,7 +142,7 @@ def settle(
     junction: Array,
     gap: float,
 ) -> tuple[float, Array]:
-    """Iterate one configuration's junction temperatures to self-consistency, from its optimum ``found`` at ``junction``.
+    """Iterate one configuration's junction temperatures to self-consistency, from its optimum at ``junction``.
 
     Returns how far ``junction`` is from what its own optimum leads to [K], and the settled temperatures (L,). LEDs
     that are off keep the temperature they last had when lit, so that none looks cooler than it would be in use.

@@ -72,7 +72,8 @@ def test_imports_point_down_only(path: Path) -> None:
 
 @pytest.mark.parametrize("path", _modules(), ids=lambda p: str(p.relative_to(PACKAGE)))
 def test_heavy_libraries_are_imported_where_used(path: Path) -> None:
-    top_level = [n for n in ast.parse(path.read_text(encoding="utf-8")).body if isinstance(n, ast.Import | ast.ImportFrom)]
+    body = ast.parse(path.read_text(encoding="utf-8")).body
+    top_level = [node for node in body if isinstance(node, ast.Import | ast.ImportFrom)]
     names = {alias.name.split(".")[0] for node in top_level for alias in node.names if isinstance(node, ast.Import)}
     names |= {node.module.split(".")[0] for node in top_level if isinstance(node, ast.ImportFrom) and node.module}
     assert not names & set(LAZY), f"{path.name} imports {names & set(LAZY)} at module level"

@@ -299,7 +299,6 @@ class ProblemSpec(Record):
             raise ValueError(f"grid.from_nm is {self.grid.from_nm:g}, must be below to_nm {self.grid.to_nm:g}")
         return self
 
-
     def _check_detection(self) -> None:
         detection, scene = self.detection, self.scene
         if not detection.combine_channels and detection.shots == 1:

@@ -124,7 +124,8 @@ class _Walk:
         touched = len(self.touch)
         exact = self.priced(None, slack=0.0)
         del self.touch[touched:]
-        for ceiling in (exact, no_prices(self.program)):  # without light of the wanted sign no price at all is exactly right
+        # Without light of the wanted sign no price at all is exactly right.
+        for ceiling in (exact, no_prices(self.program)):
             limit = float(signal_ceiling(self.program, ceiling)[0])
             if limit < self.limit:
                 self.ceiling, self.limit = ceiling, limit
@@ -136,7 +137,7 @@ class _Walk:
         return float(value[0]), float(v[0])
 
     def next_slope(self, v: float) -> float | None:
-        """Slope that tests the stretch around ``v`` between the nearest points already touched, None when there is none.
+        """Slope that tests the stretch around ``v`` between the nearest points already touched; None: no such slope.
 
         Best is the slope of the chord of the level curve ``v²/CNR²`` over the stretch, as long as it lies between the
         slopes that touched its ends; the chord of the frontier itself always does.

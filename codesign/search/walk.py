@@ -261,7 +261,7 @@ class Walk:
                     target = self._tighten(part, pair, target, coarse)
 
     def _tighten(self, part: np.ndarray, pair: int, target: float, coarse: bool) -> float:
-        """Tighten the bounds of one pair until they are below the target or a few rounds are over; return the target."""
+        """Tighten the bounds of one pair until below the target or a few rounds are over; return the target."""
         state = Tightening.start(self.programs(part, coarse=coarse, pair=pair), target)
         if not self.found:
             self._suggest(part, state)
