@@ -178,7 +178,7 @@ def _draw_map(figure: Figure, axes: Axes, found: Variation) -> None:
     axes.set_ylim(edges_y[0], edges_y[-1])
     taken = _contours(axes, x, y, cnr, found.required_cnr)
     _borders(axes, edges_x, edges_y, kind)
-    _letters(axes, x, y, kind, list(letters.values()), taken)
+    _letters(axes, _middles(edges_x, across.log), _middles(edges_y, down.log), kind, list(letters.values()), taken)
     _list_configurations(figure, found, letters, bool(np.isnan(cnr).any()))
 
 
@@ -188,8 +188,14 @@ def _edges(centres: np.ndarray, log: bool) -> np.ndarray:
         return np.array([centres[0] - 0.5, centres[0] + 0.5])
     c = np.log(centres) if log else centres
     inner = (c[1:] + c[:-1]) / 2
-    edges = np.concatenate([[2 * c[0] - inner[0]], inner, [2 * c[-1] - inner[-1]]])
+    # Half cells at the border: nothing is drawn beyond the points swept, where a field may have no meaning.
+    edges = np.concatenate([[c[0]], inner, [c[-1]]])
     return np.exp(edges) if log else edges
+
+
+def _middles(edges: np.ndarray, log: bool) -> np.ndarray:
+    """Middles of cells between their edges."""
+    return np.sqrt(edges[1:] * edges[:-1]) if log else (edges[1:] + edges[:-1]) / 2
 
 
 def _hatch_lost(axes: Axes, edges_x: np.ndarray, edges_y: np.ndarray, lost: np.ndarray) -> None:
