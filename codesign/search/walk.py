@@ -281,7 +281,7 @@ class Walk:
         """Keep the bounds of some configurations by one pair and what proves them."""
         if part.size:
             self.evidence.append(Evidence(part, state.proof(), coarse=coarse, pair=pair))
-            self.upper[part] = np.minimum(self.upper[part], state.bound)
+            self.upper[part] = np.fmin(self.upper[part], state.bound)  # a bound that is no number proves nothing
             self._suggest(part, state)
 
     def _suggest(self, part: np.ndarray, state: Tightening) -> None:
