@@ -125,6 +125,11 @@ class Performance:
         """Whether all limits hold."""
         return all(limit.met for limit in self.limits)
 
+    def junctions(self, problem: Problem, assumed: Array) -> Array:
+        """Junction temperatures by channel, (L,): those reached where lit, those assumed where off. [deg C]"""
+        reached = {state.id: state.junction_c for state in self.leds}
+        return np.array([reached.get(c.id, t) for c, t in zip(problem.channels, assumed, strict=True)])
+
     @property
     def violated(self) -> tuple[LimitUse, ...]:
         """Limits that do not hold."""

@@ -13,7 +13,7 @@ from functools import lru_cache
 import numpy as np
 
 from codesign.catalog import Camera, GainSetting
-from codesign.physics.optics import depth_of_field
+from codesign.physics.optics import depth_of_field, motion_blur_pixels
 from codesign.problem import LedChannel, Problem
 
 
@@ -106,8 +106,9 @@ def _motion_blur(problem: Problem, setting: Setting) -> list[TimeLimit]:
     motion = problem.spec.motion
     if motion is None:
         return []
-    pixels_per_second = motion.speed_mm_per_s * 1e3 * problem.spec.optics.magnification / setting.camera.pixel_pitch_um
-    return [TimeLimit(name="motion blur", unit="pixel", rate=pixels_per_second, bound=motion.max_blur_px)]
+    speed, pitch = motion.speed_mm_per_s * 1e-3, setting.camera.pixel_pitch_um * 1e-6
+    per_second = float(motion_blur_pixels(speed, 1.0, problem.spec.optics.magnification, pitch))
+    return [TimeLimit(name="motion blur", unit="pixel", rate=per_second, bound=motion.max_blur_px)]
 
 
 def _frame_period(problem: Problem, setting: Setting) -> list[TimeLimit]:

@@ -16,18 +16,18 @@ from codesign.errors import CertificateError, ProblemError
 from codesign.problem import Problem
 from codesign.program import Array
 from codesign.recipe import DIMMINGS, design_at, settable
+from codesign.search import never
 from codesign.search.combined import combined_bounds, turned
 from codesign.search.combined_walk import CombinedWalk, Recipe
 from codesign.search.readings import shot_points, single
 from codesign.solve import Certificate, Solution
+from codesign.solve_rounds import JUNCTION_TOLERANCE_K, LARGEST_NUMBER_OF_ROUNDS
 
 #: Gap unless the problem states one: proofs over weights are dear.
 COMBINED_GAP = 2e-2
-#: Rounds over junction temperatures.
-LARGEST_NUMBER_OF_ROUNDS, JUNCTION_TOLERANCE_K = 8, 0.02
 
 
-def solve_combined(problem: Problem, gap: float | None = None, stop: Callable[[], bool] = lambda: False) -> Solution:
+def solve_combined(problem: Problem, gap: float | None = None, stop: Callable[[], bool] = never) -> Solution:
     """As `codesign.solve` for combined readings, without runners-up; the gap may stay above the one asked for."""
     started = time.perf_counter()
     _refuse_build_limits(problem)
@@ -65,15 +65,12 @@ def _settled(walk: CombinedWalk, index: int, junction: Array) -> Array:
     problem, recipe = walk.assembly.problem, walk.found[index]
     for _ in range(LARGEST_NUMBER_OF_ROUNDS):
         recipe = walk.polish(index, replace(recipe, value=0.0))
-        states = {state.id: state.junction_c for state in evaluate(problem, design_of(walk, index, recipe)).leds}
-        reached = np.array([states.get(c.id, t) for c, t in zip(problem.channels, junction, strict=True)])
+        reached = evaluate(problem, design_of(walk, index, recipe)).junctions(problem, junction)
         residual = float(np.max(np.abs(reached - junction)))
         junction = reached
         if residual <= 0.1 * JUNCTION_TOLERANCE_K:
             break
-        blank = CombinedWalk.__new__(CombinedWalk)
-        blank.assembly, blank.gap = Assembly(problem, junction), walk.gap
-        walk = blank
+        walk = CombinedWalk.blank(Assembly(problem, junction), walk.gap)
     return junction
 
 

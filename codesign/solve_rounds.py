@@ -12,7 +12,7 @@ from codesign.assemble import Assembly, flipped
 from codesign.assemble_conflicts import require_usable_leds
 from codesign.build import require_buildable
 from codesign.certificate_build import build_space
-from codesign.design import Performance, evaluate
+from codesign.design import evaluate
 from codesign.problem import Problem
 from codesign.problem.choices import FilterChoices
 from codesign.program import Array
@@ -160,7 +160,7 @@ def settle(
             found = certify(programs[0], gap) if len(programs) == 1 else polish_pairs(programs, found)
         units = getattr(found, "units", None)
         design = design_at(assembly, setting, configuration.filter, found.point, units)
-        reached = _reached(problem, evaluate(problem, design), junction)
+        reached = evaluate(problem, design).junctions(problem, junction)
         residual = float(np.max(np.abs(reached - junction), initial=0.0))
         first = residual if first is None else first
         if residual <= 0.1 * JUNCTION_TOLERANCE_K:
@@ -168,9 +168,3 @@ def settle(
         # Where two recipes are equally good each may heat the other's way; half-way they agree best.
         junction = reached if attempt < PLAIN_ROUNDS else (junction + reached) / 2
     return first, junction
-
-
-def _reached(problem: Problem, performance: Performance, junction: Array) -> Array:
-    """Junction temperatures of a recipe; LEDs that are off keep those assumed."""
-    states = {state.id: state.junction_c for state in performance.leds}
-    return np.array([states.get(c.id, t) for c, t in zip(problem.channels, junction, strict=True)])

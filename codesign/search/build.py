@@ -19,6 +19,7 @@ from codesign.certificate import Line, Proof
 from codesign.certificate_build import BuildLeaf, BuildSpace, BuildSplit, restricted
 from codesign.certificate_pairs import PairProof
 from codesign.program import Array, Program
+from codesign.search import never
 from codesign.search.frontier import Certified, Hint, certify
 from codesign.search.pairs import CertifiedPairs, certify_pairs
 
@@ -201,7 +202,7 @@ def certify_build(
     target: float = 0.0,
     hint: Hint | None = None,
     *,
-    stop: Callable[[], bool] = lambda: False,
+    stop: Callable[[], bool] = never,
     known: Units | None = None,
 ) -> Built:
     """Best recipe of one configuration over all whole choices, with a proven bound.

@@ -24,6 +24,7 @@ from codesign.certificate_combined import (
 from codesign.errors import CertificateError
 from codesign.physics.detection import hotelling
 from codesign.program import Array
+from codesign.search import never
 from codesign.search.frontier import certify
 
 #: Contrast signs, in the order of the proofs.
@@ -117,17 +118,13 @@ class _Corners:
         return self.bounds[corner]
 
 
-def _never() -> bool:
-    return False
-
-
 def bound_over_weights(
     readings: Readings,
     gap: float,
     value: float,
     exchangeable: bool,
     most: int = LARGEST_NUMBER_OF_CORNERS,
-    stop: Callable[[], bool] = _never,
+    stop: Callable[[], bool] = never,
 ) -> tuple[float, CombinedProof]:
     """Bound on the CNR over all recipes and weights of one sign, to the gap above ``value`` where that works.
 
@@ -159,7 +156,7 @@ def _bound_by_boxes(
     value: float,
     exchangeable: bool,
     most: int = LARGEST_NUMBER_OF_BOXES,
-    stop: Callable[[], bool] = _never,
+    stop: Callable[[], bool] = never,
 ) -> tuple[float, CombinedProof]:
     """As `bound_over_weights` for readings with columns of their own: one program for each box of one sign."""
     aim, ticket, whole = value * (1 + gap), itertools.count(), {}
@@ -211,7 +208,7 @@ def certify_combined(
     *,
     known: tuple[Array, Array, float] | None = None,
     exchangeable: bool = False,
-    stop: Callable[[], bool] = _never,
+    stop: Callable[[], bool] = never,
 ) -> Combined:
     """Best recipe and weights of one configuration, with a bound over all of them for both contrast signs.
 

@@ -17,6 +17,7 @@ from codesign.certificate_combined import CombinedProof, Readings
 from codesign.design import JOINT
 from codesign.limits import Setting
 from codesign.program import Array
+from codesign.search import never
 from codesign.search.bounds import both_bounds
 from codesign.search.combined import Combined, alternate, best_alternation, certify_combined
 from codesign.search.readings import channel_readings, frame_time, shot_readings, single
@@ -47,25 +48,30 @@ class Recipe:
     exposures: Array | None
 
 
-def _never() -> bool:
-    return False
-
-
 @dataclass(slots=True)
 class CombinedWalk:
     """Bounds of all configurations, numbered ``setting · F + filter``, and what was found."""
 
     assembly: Assembly
     gap: float
-    stop: Callable[[], bool] = _never
+    stop: Callable[[], bool] = never
     #: Recipes of a walk at other temperatures, to start from.
     start: Mapping[int, Recipe] = field(default_factory=dict)
     upper: Array = field(init=False)
     found: dict[int, Recipe] = field(init=False, default_factory=dict)
     evidence: list[CombinedEvidence] = field(init=False, default_factory=list)
 
+    closed_form: bool = True
+
     def __post_init__(self) -> None:
-        self.upper = np.concatenate([self.independent(setting) for setting in self.assembly.settings])
+        self.upper = np.full(self.filters * len(self.assembly.settings), np.inf)
+        if self.closed_form:
+            self.upper = np.concatenate([self.independent(setting) for setting in self.assembly.settings])
+
+    @classmethod
+    def blank(cls, assembly: Assembly, gap: float) -> CombinedWalk:
+        """A walk that knows no bound yet, for its numbering of configurations."""
+        return cls(assembly, gap, closed_form=False)
 
     @property
     def filters(self) -> int:

@@ -19,7 +19,7 @@ import numpy as np
 
 from codesign.certificate_pairs import Leaf
 from codesign.program import Array, Program, row_scale, variance
-from codesign.search.relaxation import Columns, feasible
+from codesign.search.relaxation import Columns, feasible, solver_settings
 
 #: Rounds of bringing in columns for one cone program.
 LARGEST_NUMBER_OF_PRICINGS = 20
@@ -32,15 +32,6 @@ class Step:
     gain: float
     point: Array
     leaf: Leaf
-
-
-def _settings() -> clarabel.DefaultSettings:
-    settings = clarabel.DefaultSettings()
-    settings.verbose = False
-    settings.tol_gap_abs = settings.tol_gap_rel = settings.tol_feas = 1e-8
-    settings.max_iter = 60
-    settings.presolve_enable = False
-    return settings
 
 
 class ConeProgram:
@@ -157,7 +148,9 @@ class ConeProgram:
             cones.append(clarabel.SecondOrderConeT(len(cone)))
         cost = np.append(np.zeros(keep.size), -1.0)
         nothing, whole = Columns(np.zeros((cost.size, cost.size))), Columns(np.concatenate(blocks))
-        found = clarabel.DefaultSolver(nothing, cost, whole, np.concatenate(rights), cones, _settings()).solve()
+        found = clarabel.DefaultSolver(
+            nothing, cost, whole, np.concatenate(rights), cones, solver_settings(1e-8)
+        ).solve()
         leaf = self._leaf(np.nan_to_num(np.asarray(found.z)), right.size, level, units, pairs, sides, ends)
         y, u = np.zeros(self.column.size), np.nan_to_num(np.asarray(found.x))
         y[keep] = u[:-1] * self.column[keep]

@@ -40,11 +40,11 @@ class Columns:
 
 
 @cache
-def _settings() -> clarabel.DefaultSettings:
+def solver_settings(accuracy: float) -> clarabel.DefaultSettings:
+    """Settings of the interior-point library: quiet, no presolve, gaps and residuals to ``accuracy``."""
     settings = clarabel.DefaultSettings()
     settings.verbose = False
-    settings.tol_gap_abs = settings.tol_gap_rel = 1e-10
-    settings.tol_feas = 1e-10
+    settings.tol_gap_abs = settings.tol_gap_rel = settings.tol_feas = accuracy
     settings.max_iter = 60
     settings.presolve_enable = False
     return settings
@@ -114,7 +114,9 @@ class ConvexSlice:
         weight = 0.0 if theta is None else self.noise_unit / unit
         cones = [clarabel.ZeroConeT(rank), clarabel.NonnegativeConeT(right.size - rank)]
         linear = np.append(cost / unit, np.zeros(rank))
-        solution = clarabel.DefaultSolver(quadratic.scaled(weight), linear, matrix, right, cones, _settings()).solve()
+        solution = clarabel.DefaultSolver(
+            quadratic.scaled(weight), linear, matrix, right, cones, solver_settings(1e-10)
+        ).solve()
         point = self._point(np.asarray(solution.x))
         return self._line(theta, _finite(np.asarray(solution.z)), unit, point), point
 

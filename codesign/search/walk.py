@@ -20,6 +20,7 @@ from codesign.certificate_build import BuildLeaf, BuildSpace, BuildSplit, build_
 from codesign.certificate_pairs import PairProof, pair_contrasts
 from codesign.limits import Setting
 from codesign.program import Array, Program, stack
+from codesign.search import never
 from codesign.search.build import Built, certify_build, polish_build
 from codesign.search.closed_form import closed_form, limiting_pairs
 from codesign.search.frontier import Certified, Hint, certify
@@ -74,10 +75,6 @@ def _largest(index: np.ndarray, value: Array, count: int) -> np.ndarray:
     return index if index.size <= count else np.sort(index[np.argpartition(-value, count)[:count]])
 
 
-def _never() -> bool:
-    return False
-
-
 @dataclass(slots=True)
 class Walk:
     """State of the search: the best bound known for each configuration, and what proves it.
@@ -88,7 +85,7 @@ class Walk:
     assembly: Assembly
     gap: float = 1e-3
     progress: Callable[[float, float], None] | None = None
-    stop: Callable[[], bool] = _never
+    stop: Callable[[], bool] = never
     #: CNR at which the search may end; configurations that stay below it are of no interest.
     enough: float | None = None
     upper: Array = field(init=False)

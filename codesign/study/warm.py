@@ -62,8 +62,7 @@ def warmed(problem: Problem, near: Resolved, junction: Array) -> Array:
     design = near.optimum.design
     if not known.issuperset(design.drive_ma) or problem.spec.build != near.problem.spec.build:
         return junction
-    reached = {state.id: state.junction_c for state in evaluate(problem, design).leds}
-    guess = np.array([reached.get(c.id, t) for c, t in zip(problem.channels, junction, strict=True)])
+    guess = evaluate(problem, design).junctions(problem, junction)
     top = np.array([junction_limit(problem, channel) for channel in problem.channels])
     return np.where(np.isfinite(guess) & (guess <= top), guess, junction)
 
@@ -111,9 +110,8 @@ def settles(walk: Walk, number: int, *, indifferent: bool) -> tuple[bool, Array]
     if found.value <= 0:
         return True, walk.assembly.junction_c
     performance = evaluate(problem, design_of(walk, number))
-    states = {state.id: state.junction_c for state in performance.leds}
     assumed = walk.assembly.junction_c
-    reached = np.array([states.get(c.id, t) for c, t in zip(problem.channels, assumed, strict=True)])
+    reached = performance.junctions(problem, assumed)
     residual = float(np.max(np.abs(reached - assumed), initial=0.0))
     equal = indifferent and abs(performance.cnr / found.value - 1) <= INDIFFERENT and residual <= LARGEST_RESIDUAL_K
     return residual <= JUNCTION_TOLERANCE_K / 2 or equal, reached
