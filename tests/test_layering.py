@@ -12,6 +12,7 @@ PACKAGE = Path(__file__).parents[1] / "codesign"
 #: Lowest first. A name covers the module or the whole sub-package.
 LAYERS = (
     "errors",
+    "display",
     "spectra",
     "physics",
     "catalog",
@@ -31,12 +32,13 @@ LAYERS = (
     "least_cost",
     "verify",
     "study",
+    "family",
     "report",
     "cli",
     "__main__",
 )
 #: Heavy libraries and the only places that may import them at module level.
-LAZY = {"cvxpy": (), "pandas": (), "matplotlib": ()}
+LAZY = {"cvxpy": (), "pandas": (), "matplotlib": (), "distributed": ()}
 
 
 def _modules() -> list[Path]:
