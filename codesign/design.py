@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from codesign.catalog import Camera, GainSetting
+from codesign.catalog.camera import JOINT
 from codesign.design_checks import candidate, check_values
 from codesign.errors import ProblemError, nearest
 from codesign.limit_use import LedState, LimitUse, build_uses, limit_uses
@@ -30,9 +31,6 @@ from codesign.radiometry import (
 )
 
 Array = NDArray[np.float64]
-
-#: Joins the names of channels that are read together.
-JOINT = "+"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -61,7 +61,9 @@ def toml_value(value):
         return "{ " + ", ".join(f"{key} = {toml_value(item)}" for key, item in value.items()) + " }"
     if isinstance(value, list):
         return "[" + ", ".join(map(toml_value, value)) + "]"
-    return json.dumps(value) if isinstance(value, str) else repr(value)
+    if not isinstance(value, str):
+        return repr(value)
+    return json.dumps(value, ensure_ascii=False).replace("\x7f", "\\u007f")  # TOML knows no surrogate pairs
 
 
 def write_part(root, kind, table):

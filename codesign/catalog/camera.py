@@ -18,6 +18,9 @@ from codesign.spectra import Spectrum, Table
 
 FloatArray = NDArray[np.float64]
 
+#: Joins the names of channels that are read together, so no single channel may hold it in its name.
+JOINT = "+"
+
 
 class Silicon(Record):
     """The physical silicon model of a channel, instead of a measured curve."""
@@ -57,6 +60,10 @@ class Channel(Record):
 
     @model_validator(mode="after")
     def _check(self) -> Self:
+        if JOINT in self.name:
+            raise ValueError(
+                f"channel {self.name!r}: name must not hold {JOINT!r}, which joins channels read together; write 'and'"
+            )
         if (self.curve is None) == (self.silicon is None):
             raise ValueError(f"channel {self.name!r} must have either curve or silicon, one of the two")
         if self.silicon is not None and (self.quantity or self.unit or self.column):
