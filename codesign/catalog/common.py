@@ -80,9 +80,17 @@ class Part(Record):
 
     _base_dir: Path = PrivateAttr(default=Path())
     _where: str = PrivateAttr(default="")
+    _tables: Mapping[str, Table] = PrivateAttr(default_factory=dict)  # curve files it carries with it
 
     @classmethod
-    def from_table(cls, table: Mapping[str, Any], *, base_dir: str | Path = ".", where: str = "") -> Self:
+    def from_table(
+        cls,
+        table: Mapping[str, Any],
+        *,
+        base_dir: str | Path = ".",
+        where: str = "",
+        tables: Mapping[str, Table] | None = None,
+    ) -> Self:
         """Build the part from a TOML table or a CSV row.
 
         Parameters
@@ -93,6 +101,8 @@ class Part(Record):
             Folder to which curve paths are relative.
         where : str
             File named in messages.
+        tables : mapping, optional
+            Curve files by name, as read already; those not in it are read from their files.
 
         Raises
         ------
@@ -105,10 +115,10 @@ class Part(Record):
             part = cls.model_validate(dict(table))
         except ValidationError as error:
             raise CatalogError(explain(error, label, cls)) from None
-        part._base_dir, part._where = Path(base_dir), where
+        part._base_dir, part._where, part._tables = Path(base_dir), where, dict(tables or {})
         curves = part.curve_files()
         for key, file in curves.items():
-            if not (part._base_dir / file).is_file():
+            if file not in part._tables and not (part._base_dir / file).is_file():
                 raise part.error(f"{key} is {file!r}, no such file; paths are relative to {where or 'the folder'}")
         return part
 
@@ -116,7 +126,7 @@ class Part(Record):
         """Return the part with some fields changed, validated anew; ``None`` removes a field."""
         table = {**self.model_dump(exclude_unset=True), **changes}
         kept = {key: value for key, value in table.items() if value is not None}
-        return type(self).from_table(kept, base_dir=self._base_dir, where=self._where)
+        return type(self).from_table(kept, base_dir=self._base_dir, where=self._where, tables=self._tables)
 
     def model_copy(self, *, update: Mapping[str, Any] | None = None, deep: bool = False) -> Self:
         """Copy; changes are validated, so that nothing computed from the old values survives."""
@@ -145,12 +155,22 @@ class Part(Record):
     def check(self) -> None:
         """Read and check all curve files of the part now instead of on first use."""
 
+    def sealed(self) -> Self:
+        """Return the part with its curve files read and carried along: it works where the files are not."""
+        columns = getattr(self, "columns", None)
+        tables = {file: self.read_curve(file) for file in self.curve_files().values()}
+        part = self.model_copy()
+        part._tables = {file: table.keep(columns) if columns else table for file, table in tables.items()}
+        return part
+
     def selectable(self) -> dict[str, Any]:
         """Return what a selection expression may ask of the part; subclasses add derived values."""
         return {name: getattr(self, name) for name in type(self).model_fields}
 
     def read_curve(self, file: str, column: str | None = None) -> Table:
         """Read a curve file of the part, keeping one named column or, without a name, all."""
+        if file in self._tables:
+            return self._tables[file] if column is None else self._tables[file].keep((column,))
         path = (self._base_dir / file).resolve()
         try:
             status = path.stat()

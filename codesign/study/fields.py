@@ -18,7 +18,7 @@ import numpy as np
 from pydantic import BaseModel, ValidationError
 
 from codesign.catalog import Catalog
-from codesign.catalog.common import explain
+from codesign.catalog.common import Part, explain
 from codesign.catalog.loader import PART_TYPES
 from codesign.errors import ProblemError, nearest
 from codesign.problem import Problem, ProblemSpec, build_problem
@@ -175,6 +175,21 @@ def varied(problem: Problem, changes: Mapping[str, Any], *, catalog: Catalog | N
     return build_problem(table, folder=problem.folder, where=problem.where, catalog=catalog)
 
 
+def check_field(key: str, catalog: Catalog) -> None:
+    """Raise ProblemError unless a dotted name is a field of a problem or of a part; names the nearest."""
+    steps = list(_steps(key))
+    if steps[0] not in PART_TYPES:
+        _check_path(ProblemSpec, key, steps)
+        return
+    part = _part_of(catalog, key, steps)
+    _check_path(type(part), key, steps[2:], f"{steps[0]}.{steps[1]}.")
+
+
+def parse_value(text: str) -> Any:
+    """Read a value as in a problem file; text also without quotes, ``none`` (None) for not given."""
+    return _value(text)
+
+
 def _with_spec(problem: Problem, changes: Mapping[str, Any]) -> Problem:
     """The same parts, grid and light under another specification."""
     table = problem.spec.model_dump(exclude_unset=True)
@@ -200,14 +215,22 @@ def _steps(key: str) -> Iterator[str | int]:
         yield from (int(number) for number in re.findall(r"\d+", found[2]))
 
 
-def _with_changed_part(catalog: Catalog, key: str, steps: list[str | int], value: Any) -> Catalog:
-    kind, name, *path = steps
-    parts = catalog.parts(kind)
-    if not isinstance(name, str) or name not in parts:
-        raise ProblemError(f"{key}: no {kind} {str(name)!r}, {nearest(str(name), parts)}")
-    if not path:
+def _part_of(catalog: Catalog, key: str, steps: list[str | int]) -> Part:
+    """The part a dotted name leads into."""
+    kind, *rest = steps
+    parts = catalog.parts(str(kind))
+    name = str(rest[0]) if rest else ""
+    if name not in parts:
+        raise ProblemError(f"{key}: no {kind} {name!r}, {nearest(name, parts)}")
+    if len(rest) == 1:
         raise ProblemError(f"{key}: name a field of the part too, e.g. {key}.price")
-    part = parts[name]
+    return parts[name]
+
+
+def _with_changed_part(catalog: Catalog, key: str, steps: list[str | int], value: Any) -> Catalog:
+    part = _part_of(catalog, key, steps)
+    kind, name, *path = steps
+    parts = catalog.parts(str(kind))
     _check_path(type(part), key, path, f"{kind}.{name}.")
     table = part.model_dump(exclude_unset=True)
     _assign(table, key, path, _wrapped(type(part), path, value))
