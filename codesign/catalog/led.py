@@ -143,6 +143,11 @@ class Led(Part):
         grid = np.linspace(max(self.peak_nm - reach, 1.0), self.peak_nm + reach, points)
         return Spectrum(grid, ohno_led(grid, self.peak_nm, self.fwhm_nm), self.label)
 
+    @property
+    def shape(self) -> Spectrum:
+        """Spectrum of unit area on the LED's own support. [1/nm]"""
+        return self._shape
+
     def flux_w(self) -> float:
         """Return the radiant flux at rated current and reference junction temperature. [W]"""
         if self.radiant_flux_w is not None:

@@ -1,0 +1,172 @@
+// Pictures of the page: spectra as SVG, and what the camera sees as grey dots.
+(() => {
+  "use strict";
+  const live = globalThis.codesignLive;
+  const NS = "http://www.w3.org/2000/svg";
+
+  function svg(name, attributes, parent) {
+    const element = document.createElementNS(NS, name);
+    for (const [key, value] of Object.entries(attributes)) element.setAttribute(key, value);
+    parent?.append(element);
+    return element;
+  }
+
+  /** A round step that cuts a span into about so many parts. */
+  function roundStep(span, count) {
+    const raw = span / count, power = 10 ** Math.floor(Math.log10(raw));
+    return power * [1, 2, 5, 10].find((k) => k * power >= raw);
+  }
+
+  // --- spectra -----------------------------------------------------------------------------------------------------
+
+  const LEFT = 34, RIGHT = 10, TOP = 8, MAIN = 190, GAP = 34, STRIP = 64, BOTTOM = 36;
+  const HEIGHT = TOP + MAIN + GAP + STRIP + BOTTOM, LARGEST_NUMBER_OF_POINTS = 900;
+  const CURVES = ["light", "ambient", "seen", "background", "target"];
+
+  /** Curves over wavelength above, and the difference of electrons by wavelength below. */
+  class Spectra {
+    constructor(box, model) {
+      this.box = box;
+      this.model = model;
+      this.low = model.grid[0];
+      this.high = model.grid.at(-1);
+      this.stride = Math.max(1, Math.ceil(model.grid.length / LARGEST_NUMBER_OF_POINTS));
+      this.svg = svg("svg", { role: "img", height: HEIGHT });
+      box.prepend(this.svg);
+      this.frame = svg("g", {}, this.svg);
+      const paths = [...CURVES, "above", "below"];
+      this.path = Object.fromEntries(paths.map((name) => [name, svg("path", { class: `live-${name}` }, this.svg)]));
+      this.largest = Math.max(1, ...model.surfaces.map((s) => s.mean.reduce((a, b) => Math.max(a, b), 0)));
+      this.width = 0;
+    }
+
+    x(nm) {
+      return LEFT + ((nm - this.low) / (this.high - this.low)) * (this.width - LEFT - RIGHT);
+    }
+
+    /** Lay the axes out anew where the width has changed. */
+    fit() {
+      const width = Math.max(Math.floor(this.box.clientWidth), 260);
+      if (width === this.width) return;
+      this.width = width;
+      this.svg.setAttribute("viewBox", `0 0 ${width} ${HEIGHT}`);
+      this.svg.setAttribute("width", width);
+      this.frame.replaceChildren();
+      const bottom = TOP + MAIN, zero = bottom + GAP + STRIP / 2, end = bottom + GAP + STRIP;
+      const step = roundStep(this.high - this.low, width / 90);
+      for (let nm = Math.ceil(this.low / step) * step; nm <= this.high; nm += step) {
+        svg("line", { class: "live-grid", x1: this.x(nm), x2: this.x(nm), y1: TOP, y2: end }, this.frame);
+        this.text(nm, this.x(nm), end + 15, "middle");
+      }
+      for (const share of [0, 0.5, 1]) {
+        const y = bottom - share * MAIN;
+        svg("line", { class: "live-grid", x1: LEFT, x2: width - RIGHT, y1: y, y2: y }, this.frame);
+        this.text(live.number(share * this.largest, 2), LEFT - 5, y + 4, "end");
+      }
+      svg("line", { class: "live-zero", x1: LEFT, x2: width - RIGHT, y1: zero, y2: zero }, this.frame);
+      this.text("wavelength [nm]", (LEFT + width - RIGHT) / 2, end + 31, "middle");
+      this.text("Where the difference comes from: electrons per nm", LEFT, bottom + GAP - 8, "start");
+    }
+
+    text(content, x, y, anchor) {
+      svg("text", { x, y, "text-anchor": anchor, class: "live-text" }, this.frame).textContent = content;
+    }
+
+    /** Points of a curve of values 0 to `top`, between two heights. */
+    line(value, top, base, height) {
+      const { grid } = this.model, points = [], scale = top > 0 ? height / top : 0;
+      for (let i = 0; i < grid.length; i += this.stride)
+        points.push(`${this.x(grid[i]).toFixed(1)} ${(base - value(i) * scale).toFixed(1)}`);
+      return `M${points.join("L")}`;
+    }
+
+    closed(value, top, base, height) {
+      const ends = `L${this.x(this.high).toFixed(1)} ${base}L${this.x(this.low).toFixed(1)} ${base}Z`;
+      return this.line(value, top, base, height) + ends;
+    }
+
+    draw(result, setting) {
+      this.fit();
+      const { model, path } = this, base = TOP + MAIN, { diffuse, all, seen } = result.light;
+      const target = model.surfaces[result.pair.i].mean, background = model.surfaces[result.pair.j].mean;
+      const around = (i) => model.ambient[i] * setting.ambient_factor;
+      let brightest = 0, largest = 0;
+      for (let i = 0; i < diffuse.length; i++) {
+        brightest = Math.max(brightest, diffuse[i], around(i));
+        largest = Math.max(largest, Math.abs(all[i] * (target[i] - background[i])));
+      }
+      path.light.setAttribute("d", this.closed((i) => diffuse[i], brightest, base, MAIN));
+      path.ambient.setAttribute("d", this.line(around, brightest, base, MAIN));
+      path.seen.setAttribute("d", this.line((i) => seen[i], this.largest, base, MAIN));
+      path.target.setAttribute("d", this.line((i) => target[i], this.largest, base, MAIN));
+      path.background.setAttribute("d", this.line((i) => background[i], this.largest, base, MAIN));
+      const zero = base + GAP + STRIP / 2, difference = (i) => all[i] * (target[i] - background[i]);
+      const above = (i) => Math.max(difference(i), 0), below = (i) => Math.min(difference(i), 0);
+      path.above.setAttribute("d", this.closed(above, largest, zero, STRIP / 2));
+      path.below.setAttribute("d", this.closed(below, largest, zero, STRIP / 2));
+    }
+  }
+
+  // --- what the camera sees ----------------------------------------------------------------------------------------
+
+  const SEED = 20240229; // the same dots every time, so that nothing flickers while a slider is dragged
+
+  /** Standard normal numbers, the same at every call. */
+  function normals(count) {
+    let state = SEED;
+    const uniform = () => {
+      state = (state + 0x6d2b79f5) | 0;
+      let t = Math.imul(state ^ (state >>> 15), 1 | state);
+      t = (t + Math.imul(t ^ (t >>> 7), 61 | t)) ^ t;
+      return ((t ^ (t >>> 14)) >>> 0) / 4294967296;
+    };
+    const found = new Float32Array(count);
+    for (let k = 0; k < count; k += 2) {
+      const radius = Math.sqrt(-2 * Math.log(1 - uniform())), angle = 2 * Math.PI * uniform();
+      found[k] = radius * Math.cos(angle);
+      if (k + 1 < count) found[k + 1] = radius * Math.sin(angle);
+    }
+    return found;
+  }
+
+  /** A patch of uneven outline in the middle: 1 inside, 0 outside. */
+  function patch(width, height) {
+    const inside = new Uint8Array(width * height);
+    for (let y = 0; y < height; y++)
+      for (let x = 0; x < width; x++) {
+        const u = (x - width / 2) / (0.3 * width), v = (y - height / 2) / (0.3 * height), angle = Math.atan2(v, u);
+        const edge = 1 + 0.12 * Math.sin(3 * angle + 0.7) + 0.07 * Math.sin(5 * angle + 2);
+        inside[y * width + x] = Math.hypot(u, v) < edge ? 1 : 0;
+      }
+    return inside;
+  }
+
+  /** One picture: target patch on background, at the mean electrons and noise predicted. */
+  class View {
+    constructor(canvas) {
+      this.canvas = canvas;
+      this.context = canvas.getContext("2d");
+      this.image = this.context.createImageData(canvas.width, canvas.height);
+      this.noise = normals(canvas.width * canvas.height);
+      this.inside = patch(canvas.width, canvas.height);
+    }
+
+    draw(result, stretched) {
+      const { i, j } = result.pair, mean = [result.surfaces[j].total_e, result.surfaces[i].total_e];
+      const spread = ["background", "target"].map((side) => Math.sqrt(result.noise.reduce((a, n) => a + n[side], 0)));
+      const top = result.saturation, reach = 4 * Math.max(...spread);
+      const low = stretched ? Math.min(...mean) - reach : 0, high = stretched ? Math.max(...mean) + reach : top;
+      const scale = 255 / Math.max(high - low, 1e-12), data = this.image.data;
+      for (let k = 0; k < this.inside.length; k++) {
+        const side = this.inside[k], electrons = Math.min(mean[side] + spread[side] * this.noise[k], top);
+        data[4 * k] = data[4 * k + 1] = data[4 * k + 2] = (electrons - low) * scale; // clamped to 0 .. 255
+        data[4 * k + 3] = 255;
+      }
+      this.context.putImageData(this.image, 0, 0);
+      const shown = stretched ? "stretched contrast" : "black to saturation";
+      this.canvas.setAttribute("aria-label", `Target patch on background, CNR ${live.number(result.cnr)}, ${shown}`);
+    }
+  }
+
+  Object.assign(live, { Spectra, View });
+})();
