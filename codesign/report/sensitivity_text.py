@@ -91,7 +91,7 @@ def _prices(found: Sensitivities, width: int) -> list[str]:
             whole += [limit.name] if limit.binds else []
         elif limit.binds:
             share = limit.price * 0.01 * limit.bound / found.cnr
-            rows.append((limit.name, number(limit.bound), limit.unit, number(limit.price, 3), _signed(share)))
+            rows.append((limit.name, number(limit.bound), limit.unit, number(limit.price, 3), bound_gain(share)))
     lines = [heading("shadow prices", width)]
     if rows:
         lines += table(("limit at its bound", "bound", "unit", "CNR per unit", "bound +1 %"), rows, width, left=(0, 2))
@@ -103,18 +103,18 @@ def _prices(found: Sensitivities, width: int) -> list[str]:
 
 
 def _elasticities(found: Sensitivities, width: int) -> list[str]:
-    weighty = [x for x in found.parameters if _weight(x) >= NEGLIGIBLE]
-    small = list(dict.fromkeys(x.parameter for x in found.parameters if _weight(x) < NEGLIGIBLE))
+    weighty = [x for x in found.parameters if weight(x) >= NEGLIGIBLE]
+    small = list(dict.fromkeys(x.parameter for x in found.parameters if weight(x) < NEGLIGIBLE))
     rows = [
         (
             x.parameter if x.part is None else f"{x.parameter}, {x.part}",
-            _tolerance(x),
-            _slope(x.retuned, x.unit),
-            _slope(x.fixed, x.unit),
-            _worst(x, found.cnr, "cnr_retuned"),
-            _worst(x, found.cnr, "cnr_fixed"),
+            tolerance(x),
+            slope(x.retuned, x.unit),
+            slope(x.fixed, x.unit),
+            worst_end(x, found.cnr, "cnr_retuned"),
+            worst_end(x, found.cnr, "cnr_fixed"),
         )
-        for x in sorted(weighty, key=_weight, reverse=True)
+        for x in sorted(weighty, key=weight, reverse=True)
     ]
     lines = [heading("tolerances", width)]
     header = ("quantity", "tolerance", "re-tuned", "fixed", "worst re-t.", "worst fixed")
@@ -126,26 +126,29 @@ def _elasticities(found: Sensitivities, width: int) -> list[str]:
     return lines
 
 
-def _weight(x: Elasticity) -> float:
+def weight(x: Elasticity) -> float:
     """Largest relative change of CNR within the tolerance, in either column."""
     slopes = [abs(s) * x.tolerance for s in (x.retuned, x.fixed) if math.isfinite(s)]
     return max(slopes, default=0.0)
 
 
-def _tolerance(x: Elasticity) -> str:
+def tolerance(x: Elasticity) -> str:
+    """Standard deviation of a quantity with its unit."""
     return f"±{100 * x.tolerance:g} %" if x.unit == "1" else f"±{x.tolerance:g} {x.unit}"
 
 
-def _slope(value: float, unit: str) -> str:
+def slope(value: float, unit: str) -> str:
+    """Change of CNR in % per % (or per nm, degree, kelvin)."""
     scale = 1.0 if unit == "1" else 100.0
     return "one-sided" if not math.isfinite(value) else f"{scale * value:+.3f}"
 
 
-def _signed(share: float) -> str:
+def bound_gain(share: float) -> str:
+    """Change of CNR for a bound one per cent further out."""
     return "one-sided" if not math.isfinite(share) else f"{100 * share:+.3g} %"
 
 
-def _worst(x: Elasticity, cnr: float, key: str) -> str:
+def worst_end(x: Elasticity, cnr: float, key: str) -> str:
     """The lower CNR of the two ends, against the optimum."""
     ends = [getattr(end, key) for end in (x.low, x.high) if end is not None]
     if not ends:
@@ -160,13 +163,14 @@ def _ends(found: Sensitivities) -> Iterator[tuple[Elasticity, Shifted]]:
                 yield x, end
 
 
-def _amount(x: Elasticity, amount: float) -> str:
+def amount_text(x: Elasticity, amount: float) -> str:
+    """How far a quantity is moved."""
     return f"{100 * amount:+.3g} %" if x.unit == "1" else f"{amount:+.3g} {x.unit}"
 
 
-def _changes(found: Sensitivities, width: int) -> list[str]:
-    """What binds elsewhere within the tolerances; a derivative holds only up to there."""
-    lines = []
+def changes(found: Sensitivities) -> list[str]:
+    """What binds elsewhere within the tolerances, one sentence each; a derivative holds only up to there."""
+    told = []
     for x, end in _ends(found):
         said = []
         if end.other:
@@ -177,17 +181,26 @@ def _changes(found: Sensitivities, width: int) -> list[str]:
         said += [f"{name} no longer" if name.endswith(" lit") else f"{name} stops binding" for name in end.stops]
         if said:
             name = x.parameter if x.part is None else f"{x.parameter}, {x.part}"
-            where = f"about {_amount(x, end.at)}" if end.at is not None else f"at {_amount(x, end.amount)}"
-            lines += bullet(f"{name} {where}: {'; '.join(said)}", width)
-    return [heading("changes within the tolerances", width), *lines] if lines else []
+            where = f"about {amount_text(x, end.at)}" if end.at is not None else f"at {amount_text(x, end.amount)}"
+            told.append(f"{name} {where}: {'; '.join(said)}")
+    return told
 
 
-def _missed(found: Sensitivities, width: int) -> list[str]:
-    """Limits the recipe misses when a quantity strays and nothing is re-tuned."""
+def missed(found: Sensitivities) -> dict[str, list[str]]:
+    """Limits the recipe misses when a quantity strays and nothing is re-tuned, and the quantities, by limit."""
     by_limit: dict[str, list[str]] = {}
     for x, end in _ends(found):
         for name in end.missed:
             owner = x.parameter if x.part is None else f"{x.parameter} ({x.part})"
-            by_limit.setdefault(name, []).append(f"{owner} {_amount(x, end.amount)}")
-    lines = [line for name, why in by_limit.items() for line in bullet(f"{name}: {'; '.join(why)}", width)]
+            by_limit.setdefault(name, []).append(f"{owner} {amount_text(x, end.amount)}")
+    return by_limit
+
+
+def _changes(found: Sensitivities, width: int) -> list[str]:
+    lines = [line for text in changes(found) for line in bullet(text, width)]
+    return [heading("changes within the tolerances", width), *lines] if lines else []
+
+
+def _missed(found: Sensitivities, width: int) -> list[str]:
+    lines = [line for name, why in missed(found).items() for line in bullet(f"{name}: {'; '.join(why)}", width)]
     return [heading("limits the recipe misses if held fixed", width), *lines] if lines else []

@@ -14,7 +14,7 @@ LEDs join or leave, whether other parts win, and from about which change on.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
@@ -135,7 +135,7 @@ class Sensitivities:
 
 def sensitivities(
     solution: Solution, *, tolerances: Mapping[str, float] | None = None, parameters: Sequence[str] | None = None,
-    changes: bool = True,
+    changes: bool = True, progress: Callable[[int, int], None] | None = None,
 ) -> Sensitivities:  # fmt: skip
     """Shadow prices of all limits and elasticities of all quantities with a tolerance, at a solution.
 
@@ -149,6 +149,8 @@ def sensitivities(
         Names of `codesign.problem.nudge.NUDGES`; all by default.
     changes : bool
         Whether to solve again at either end of each tolerance.
+    progress : callable, optional
+        Called with (quantities done, quantities in all).
 
     Returns
     -------
@@ -170,7 +172,12 @@ def sensitivities(
         nudged(solution.problem, name, 0.0)  # raises for unknown names
     study = _Study(solution, dict(tolerances or {}))
     wanted = [NUDGES[name] for name in parameters or NUDGES]
-    rows = [study.elasticity(x, part, changes=changes) for x in wanted for part in study.parts(x)]
+    pieces = [(x, part) for x in wanted for part in study.parts(x)]
+    rows = []
+    for done, (x, part) in enumerate(pieces):
+        if progress is not None:
+            progress(done, len(pieces))
+        rows.append(study.elasticity(x, part, changes=changes))
     return Sensitivities(
         problem=solution.problem,
         cnr=study.optimum.cnr,
