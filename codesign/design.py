@@ -304,8 +304,16 @@ class Light:
     clutter: tuple[Array, ...]
 
 
+def led_irradiance(problem: Problem, state: LedState) -> Array:
+    """Spectral irradiance at the object by one lit LED channel, at its drive and junction. (n,) [W m⁻² nm⁻¹]"""
+    channel = problem.channel(state.id)
+    current, flux, _ = channel.led.operating_points()
+    share = float(np.interp(state.drive_ma * 1e-3, current, flux))
+    return channel_irradiance(problem, channel, state.junction_c) * (share * state.emitters / channel.emitters)
+
+
 @lru_cache(maxsize=64)
-def _sensitivity(problem: Problem, camera: str, channel: str, filter_id: str, f_number: float) -> Array:
+def sensitivity(problem: Problem, camera: str, channel: str, filter_id: str, f_number: float) -> Array:
     """Electron rate per unit of light leaving the object, filter included; the same for all drives of a recipe."""
     weight = electrons_per_irradiance(problem, problem.camera(camera), channel, f_number)
     return weight * filter_transmittance(problem, problem.filter(filter_id), f_number)
@@ -314,15 +322,12 @@ def _sensitivity(problem: Problem, camera: str, channel: str, filter_id: str, f_
 def electrons(problem: Problem, setting: Setting, design: Design, states: tuple[LedState, ...], t: float) -> Light:
     """Integrate the light of the recipe over wavelength for each surface."""
     scene = reflectances(problem)
-    weight = _sensitivity(problem, design.camera, design.channel, design.filter, design.f_number)
+    weight = sensitivity(problem, design.camera, design.channel, design.filter, design.f_number)
     diffuse, gloss = np.zeros(problem.grid.size), np.zeros(problem.grid.size)
     for state in states:
-        channel = problem.channel(state.id)
-        current, flux, _ = channel.led.operating_points()
-        share = float(np.interp(state.drive_ma * 1e-3, current, flux))
-        light = channel_irradiance(problem, channel, state.junction_c) * (share * state.emitters / channel.emitters)
+        light = led_irradiance(problem, state)
         diffuse += light
-        gloss += light * channel.specular_weight
+        gloss += light * problem.channel(state.id).specular_weight
     led = (scene.mean @ (weight * diffuse) + scene.specular * float(weight @ gloss)) * t
     ambient = scene.mean @ (weight * problem.ambient) * t
     dark = np.full(len(led), dark_rate(problem, setting) * t)
