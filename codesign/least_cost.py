@@ -1,4 +1,4 @@
-"""Least price, rig heat or exposure that still reaches a required CNR, with a proven lower bound.
+"""Least price, rig heat, exposure or number of LEDs that still reaches a required CNR, with a proven lower bound.
 
 The best CNR never falls when the limit on the quantity is loosened, so bisection finds where it crosses what is
 required: at the upper end a settable recipe reaches it, at the lower end no recipe can.
@@ -12,7 +12,7 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from codesign.build import part_price
+from codesign.build import part_price, units_in_use
 from codesign.design import Performance
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.limit_use import recipe_price
@@ -21,7 +21,19 @@ from codesign.solve import Solution, solution_of
 from codesign.solve_rounds import Clock, Search, search_rounds
 
 #: What can be made least, and its unit.
-QUANTITIES = {"price": "", "heat": "W", "exposure": "us"}
+QUANTITIES = {"price": "", "heat": "W", "exposure": "us", "leds": ""}
+#: Where the problem keeps its limit on each, and how that limit is called.
+FIELDS = {
+    "price": ("build", "price_budget"),
+    "heat": ("limits", "rig_heat_w"),
+    "exposure": ("timing", "exposure_max_us"),
+    "leds": ("build", "max_led_channels"),
+}
+LIMIT_NAMES = {
+    "price": "price", "heat": "rig heat", "exposure": "wanted longest exposure", "leds": "LED channels",
+}  # fmt: skip
+#: Those that come in whole numbers.
+WHOLE = frozenset({"leds"})
 #: Bisection ends when value and proven bound agree to this share.
 DEFAULT_GAP = 1e-2
 #: Gap of the CNR in each step: a small one, so that few limits are left undecided.
@@ -67,14 +79,14 @@ def least_cost(
     time_limit: float | None = None,
     progress: Callable[[float, float], None] | None = None,
 ) -> LeastCost:
-    """Find the least price, rig heat or exposure that still reaches a CNR.
+    """Find the least price, rig heat, exposure or number of LED channels that still reaches a CNR.
 
     Parameters
     ----------
     problem : Problem
         Its own limits stay.
-    minimise : {"price", "heat", "exposure"}
-        Price of camera, filters and emitters; mean heat of all LEDs [W]; exposure [us].
+    minimise : {"price", "heat", "exposure", "leds"}
+        Price of camera, filters and emitters; mean heat of all LEDs [W]; exposure [us]; number of LED channels.
     required_cnr : float, optional
         The problem's own ``required_cnr`` by default.
     gap : float
@@ -101,7 +113,7 @@ def least_cost(
     required = problem.spec.required_cnr if required_cnr is None else required_cnr
     if required is None or not required > 0:
         raise ProblemError(f"{problem.where}: required_cnr is {required}, must be above 0; say which CNR is needed")
-    problem = _priced(problem) if minimise == "price" else problem
+    problem = priced(problem) if minimise == "price" else problem
     return _Bisection(problem, minimise, required, Clock.lasting(time_limit)).run(gap, started, progress)
 
 
@@ -147,7 +159,11 @@ class _Bisection:
                 if high <= low * (1 + gap) or high < NEXT_TO_NOTHING * self.value:
                     break
                 limit = float(np.sqrt(low * high)) if low > 0 else high / 4
-                reached, proven = self._step(limit)
+                if self.quantity in WHOLE:
+                    if high - low <= 1:
+                        break
+                    limit = min(max(float(round(limit)), low + 1), high - 1)
+                reached, proven = self._step(limit, 0.0 if from_below else self.margin)
                 if proven:
                     self.bound = max(self.bound, limit)
                 elif not reached:  # an optimum may reach it, its settable recipe does not
@@ -159,7 +175,7 @@ class _Bisection:
 
     def _open(self) -> None:
         """Reach the CNR without a limit on the quantity, or say the greatest CNR there is."""
-        reached, _ = self._step(np.inf)
+        reached, _ = self._step(np.inf, self.margin)
         if reached:
             return
         search = search_rounds(self.problem, CNR_GAP, clock=self.clock, start=self.near)
@@ -176,14 +192,17 @@ class _Bisection:
             list(best.binding) if best is not None else ["candidates"],
         )
 
-    def _step(self, limit: float) -> tuple[bool, bool]:
-        """Search under a limit: whether a settable recipe reaches the CNR, and whether it is proven that none can."""
+    def _step(self, limit: float, margin: float) -> tuple[bool, bool]:
+        """Search under a limit: whether a settable recipe reaches the CNR, and whether it is proven that none can.
+
+        ``margin`` raises the CNR looked for, to leave room for setting steps; what stays below it is looked at no
+        further, so a proof wants none.
+        """
         self.steps += 1
         try:
             limited = limited_to(self.problem, self.quantity, limit)
-            search = search_rounds(
-                limited, CNR_GAP, clock=self.clock, enough=self.required * (1 + self.margin), start=self.near
-            )
+            aim = self.required * (1 + margin)
+            search = search_rounds(limited, CNR_GAP, clock=self.clock, enough=aim, start=self.near)
         except InfeasibleError:
             return False, True
         if search.best is None:
@@ -215,6 +234,8 @@ def used(problem: Problem, quantity: str, recipe: Performance) -> float:
         return recipe.design.exposure_us
     if quantity == "heat":
         return sum(s.emitters * (s.electrical_w - s.optical_w) for s in recipe.leds) * recipe.duty
+    if quantity == "leds":
+        return float(np.count_nonzero(units_in_use(problem, recipe.design.drive_ma, recipe.design.emitters)))
     return recipe_price(problem, recipe.design)
 
 
@@ -222,19 +243,20 @@ def limited_to(problem: Problem, quantity: str, limit: float) -> Problem:
     """The problem with a (tighter) limit on a quantity; ``inf`` leaves it as it is."""
     if not np.isfinite(limit):
         return problem
-    spec = problem.spec
-    section, key = {
-        "price": ("build", "price_budget"),
-        "heat": ("limits", "rig_heat_w"),
-        "exposure": ("timing", "exposure_max_us"),
-    }[quantity]
-    own = getattr(getattr(spec, section), key)
-    value = limit if own is None else min(own, limit)
+    section, key = FIELDS[quantity]
+    own = getattr(getattr(problem.spec, section), key)
+    return with_limit(problem, quantity, limit if own is None else min(own, limit))
+
+
+def with_limit(problem: Problem, quantity: str, limit: float | None) -> Problem:
+    """The problem with that limit on a quantity in place of its own; None for none."""
+    spec, (section, key) = problem.spec, FIELDS[quantity]
+    value = int(limit) if quantity in WHOLE and limit is not None else limit
     changed = getattr(spec, section).model_copy(update={key: value})
     return replace(problem, spec=spec.model_copy(update={section: changed}))
 
 
-def _priced(problem: Problem) -> Problem:
+def priced(problem: Problem) -> Problem:
     """The problem without parts of unknown price."""
     cameras = tuple(camera for camera in problem.cameras if not np.isnan(part_price(problem, camera)))
     channels = tuple(channel for channel in problem.channels if not np.isnan(part_price(problem, channel.led)))

@@ -2,9 +2,9 @@
 
 import pytest
 
-from codesign import load_problem, verify
+from codesign import load_problem, solve, verify
 from codesign.errors import InfeasibleError, ProblemError
-from codesign.least_cost import least_cost, used
+from codesign.least_cost import least_cost, limited_to, used
 
 
 @pytest.mark.parametrize("quantity", ["price", "exposure"])
@@ -23,5 +23,24 @@ def test_greatest_cnr_is_said_when_it_cannot_be_reached():
 
 
 def test_unknown_quantity_is_refused():
-    with pytest.raises(ProblemError, match="must be one of price, heat, exposure"):
+    with pytest.raises(ProblemError, match="must be one of price, heat, exposure, leds"):
         least_cost(load_problem("bruise"), "weight", 4)
+
+
+def test_fewest_led_channels_agree_with_counting():
+    # fast-web lights five channels at best; how many are enough is found here one by one.
+    problem = load_problem("fast-web")
+    found = least_cost(problem, "leds", 3.9)
+    reached = [solve(limited_to(problem, "leds", n), alternatives=0) for n in (1, 2, 3)]
+    enough = [solution.recipe.cnr >= 3.9 for solution in reached]
+    assert found.value == 1 + enough.index(True) == 3
+    assert found.bound == 2 and reached[1].certificate.bound < 3.9
+    assert len(found.solution.recipe.leds) == 3
+
+
+def test_what_setting_steps_cost_does_not_keep_the_bound_away():
+    # In steps of 10 mA the recipe misses what the optimum reaches; the proof does not look at steps.
+    found = least_cost(load_problem("cap-colour"), "heat")
+    below = solve(limited_to(load_problem("cap-colour"), "heat", found.bound), alternatives=0)
+    assert below.certificate.bound < found.required_cnr
+    assert found.gap < 0.02
