@@ -23,8 +23,10 @@ from codesign.report.output import plain, write_file
 if TYPE_CHECKING:
     from matplotlib.artist import Artist
     from matplotlib.axes import Axes
-    from matplotlib.figure import Figure
+    from matplotlib.figure import Figure, SubFigure
     from matplotlib.text import Text
+
+    Panel = Figure | SubFigure
 
 #: File formats by ending.
 FORMATS = ("svg", "png", "pdf")
@@ -147,17 +149,23 @@ def write(axes: Axes, x: float, y: float, text: str, **keywords: Any) -> Text:
     return found
 
 
-def text_width(figure: Figure, text: str, size: float = SMALL, weight: str = "normal") -> float:
+def width_mm(panel: Panel) -> float:
+    """Width of a figure, or of a part of one, in print. [mm]"""
+    return float(panel.bbox.width) / panel.dpi * INCH
+
+
+def text_width(figure: Panel, text: str, size: float = SMALL, weight: str = "normal") -> float:
     """Width of a line of text in print. [mm]"""
     from matplotlib.text import Text
 
     with house_style():
-        measured = Text(0, 0, plain(text), fontsize=size, fontweight=weight, figure=figure)
+        measured = Text(0, 0, plain(text), fontsize=size, fontweight=weight)
+        measured.set_figure(figure)
         extent = measured.get_window_extent(figure.canvas.get_renderer())  # type: ignore[attr-defined]
     return float(extent.width) / figure.dpi * INCH
 
 
-def shortened(figure: Figure, text: str, width_mm: float, size: float = SMALL, weight: str = "normal") -> str:
+def shortened(figure: Panel, text: str, width_mm: float, size: float = SMALL, weight: str = "normal") -> str:
     """Return the text on one line, its middle left out where it is wider than ``width_mm``: ends tell names apart."""
     text = plain(text)
     if text_width(figure, text, size, weight) <= width_mm:
@@ -176,7 +184,7 @@ def _without_middle(text: str, kept: int) -> str:
     return text[: kept - tail].rstrip() + "…" + (text[-tail:].lstrip() if tail else "")
 
 
-def wrapped(figure: Figure, text: str, width_mm: float, size: float = SMALL, lines: int = 99) -> str:
+def wrapped(figure: Panel, text: str, width_mm: float, size: float = SMALL, lines: int = 99) -> str:
     """Return the text in lines no wider than ``width_mm``; the last one is shortened where ``lines`` are too few."""
     found: list[str] = []
     for word in plain(text).split():
@@ -189,43 +197,73 @@ def wrapped(figure: Figure, text: str, width_mm: float, size: float = SMALL, lin
     return "\n".join(shortened(figure, line, width_mm, size) for line in kept)
 
 
-def legend_below(figure: Figure, entries: Sequence[tuple[Artist, str]], *, size: float = SMALL) -> None:
+def legend_below(figure: Panel, entries: Sequence[tuple[Artist, str]], *, size: float = SMALL) -> None:
     """Put a legend under everything, in as many columns as fit; entries too wide for half the page are shortened.
 
     Parameters
     ----------
-    figure : Figure
+    figure : Figure or SubFigure
         With ``layout="constrained"``, which makes the room.
     entries : sequence of (artist, str)
         What is shown and its name, in reading order.
     """
-    if not entries:
-        return
-    room = figure.get_figwidth() * INCH - 6.0
+    if entries:
+        artists, names, columns = _columns(figure, entries, width_mm(figure) - 6.0, size)
+        _named(figure.legend(artists, _numbers(names), loc="outside lower left", ncols=columns, fontsize=size), names)
+
+
+def legend_above(axes: Axes, title: str, entries: Sequence[tuple[Artist, str]], *, aside: float = 20.0) -> None:
+    """Put a title and under it a legend above axes, in as many columns as fit.
+
+    Parameters
+    ----------
+    axes : Axes
+        Of a figure with ``layout="constrained"``, which makes the room.
+    title : str
+    entries : sequence of (artist, str)
+    aside : float
+        Width of the figure or part of it that the axes do not have. [mm]
+    """
+    panel = axes.get_figure(root=False)
+    room = width_mm(panel) - aside
+    artists, names, columns = _columns(panel, entries, room, SMALL)
+    title = shortened(panel, title, room, BODY, "bold")
+    legend = axes.legend(
+        artists, _numbers(names), loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=columns, fontsize=SMALL,
+        title="title", title_fontproperties={"size": BODY, "weight": "bold"}, alignment="left", borderpad=0.1,
+    )  # fmt: skip
+    legend.get_title().set_text(title)
+    legend.get_title().set_parse_math(False)
+    _named(legend, names)
+
+
+def _columns(
+    panel: Panel, entries: Sequence[tuple[Artist, str]], room: float, size: float
+) -> tuple[list[Artist], list[str], int]:
+    """Artists and names that fit, in the order in which matplotlib sets them row by row, and the number of columns."""
     sign, gap = 3.2 * size / POINTS, 2.2 * size / POINTS  # handle with its pad, space between columns
     longest = room - sign if len(entries) == 1 else (room - gap) / 2 - sign
-    names = [shortened(figure, name, longest, size) for _, name in entries]
-    widths = [text_width(figure, name, size) + sign for name in names]
-    columns = next(n for n in range(len(names), 0, -1) if n == 1 or _table_width(widths, n, gap) <= room)
-    order = _row_by_row(len(names), columns)
-    # Names that begin with "_" would be dropped by matplotlib, so they are written afterwards.
-    legend = figure.legend(
-        [entries[k][0] for k in order], [f"entry {k}" for k in order], loc="outside lower left", ncols=columns,
-        fontsize=size,
-    )  # fmt: skip
-    for text, k in zip(legend.get_texts(), order, strict=True):
+    names = [shortened(panel, name, longest, size) for _, name in entries]
+    widths = [text_width(panel, name, size) + sign for name in names]
+    columns = next((n for n in range(len(names), 0, -1) if n == 1 or _table_width(widths, n, gap) <= room), 1)
+    order = [k for column in range(columns) for k in range(column, len(names), columns)]
+    return [entries[k][0] for k in order], [names[k] for k in order], columns
+
+
+def _numbers(names: Sequence[str]) -> list[str]:
+    """Stand-ins: names that begin with "_" would be dropped by matplotlib, so all are written afterwards."""
+    return [f"entry {k}" for k in range(len(names))]
+
+
+def _named(legend: Any, names: Sequence[str]) -> None:
+    for text, name in zip(legend.get_texts(), names, strict=True):
         text.set_parse_math(False)
-        text.set_text(names[k])
+        text.set_text(name)
 
 
 def _table_width(widths: Sequence[float], columns: int, gap: float) -> float:
     """Width of entries set row by row in columns. [mm]"""
     return sum(max(widths[k::columns]) for k in range(columns)) + gap * (columns - 1)
-
-
-def _row_by_row(count: int, columns: int) -> list[int]:
-    """Order in which matplotlib, which fills column by column, shows entries row by row."""
-    return [k for column in range(columns) for k in range(column, count, columns)]
 
 
 def _read_no_formulas(figure: Figure) -> None:
