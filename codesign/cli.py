@@ -19,6 +19,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 from typer.core import TyperGroup
 
+from codesign.cli_radiation import radiation
 from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
 from codesign.cli_tolerance import robust, tolerance
@@ -306,6 +307,7 @@ app.command()(tolerance)
 app.command()(robust)
 app.command()(routes)
 app.command()(calibrate)
+app.command()(radiation)
 
 
 def run() -> None:

@@ -109,13 +109,14 @@ def _states(problem: Problem, design: Design, shot: Shot, junctions: Mapping[str
         if ma > 0:
             channel = problem.channel(led)
             state = led_state(problem, channel, ma, problem.duty(shot.exposure_us * 1e-6))
-            flux = _optical(channel, ma, junctions[led])
+            flux = optical_power(channel, ma, junctions[led])
             emitters = design.emitters.get(led, state.emitters)
             states.append(replace(state, junction_c=junctions[led], optical_w=flux, emitters=emitters))
     return tuple(states)
 
 
-def _optical(channel: LedChannel, drive_ma: float, junction_c: float) -> float:
+def optical_power(channel: LedChannel, drive_ma: float, junction_c: float) -> float:
+    """Light of one emitter at a current and junction temperature. [W]"""
     led = channel.led
     current, flux, _ = led.operating_points()
     factor = 1 + led.flux_temperature_coefficient_per_k * (junction_c - led.reference_junction_c)

@@ -9,7 +9,9 @@ import numpy as np
 from codesign.catalog import Led
 from codesign.design import Performance
 from codesign.problem import Problem
+from codesign.report.layout import duration
 from codesign.spectra import trapezoid_weights
+from codesign.study.radiation import screening
 
 #: An LED is named when this share of its light lies in a band. [1]
 NOTICEABLE = 0.01
@@ -62,6 +64,18 @@ def _light(problem: Problem, performance: Performance) -> list[str]:
     return found
 
 
+def _published_limits(problem: Problem, performance: Performance) -> list[str]:
+    """Published exposure limits that are reached within 8 h when somebody looks into the emitters from near."""
+    found = screening(problem, performance)
+    said = [f"of {name} after {duration(seconds)}" for name, seconds in found.reached.items()]
+    if not said:
+        return []
+    return [
+        f"Looked into from {found.distance_mm:g} mm, the bare emitters reach the published limit {', '.join(said)} "
+        "(a warning aid; 'cnr radiation' has the assumptions)."
+    ]
+
+
 def _flashing(problem: Problem, performance: Performance) -> list[str]:
     rate = problem.spec.timing.frame_rate_hz
     if not problem.strobe or rate is None or not FLASHING_HZ[0] <= rate <= FLASHING_HZ[1]:
@@ -95,4 +109,4 @@ def _supply(problem: Problem, performance: Performance) -> list[str]:
     ]
 
 
-CHECKS: tuple[Callable[[Problem, Performance], list[str]], ...] = (_light, _flashing, _heat, _supply)
+CHECKS: tuple[Callable[[Problem, Performance], list[str]], ...] = (_light, _published_limits, _flashing, _heat, _supply)

@@ -76,3 +76,11 @@ def percent(share: float, least: float = 0.0) -> str:
     if value >= 0.1 or value == 0:
         return f"{value:.0f} %" if value >= 999.5 else f"{value:.1f} %"
     return f"{value:.1g} %"
+
+
+def duration(seconds: float) -> str:
+    """Return a time in the unit people would say it in."""
+    for unit, size, top in (("µs", 1e-6, 1e-3), ("ms", 1e-3, 1.0), ("s", 1.0, 120.0), ("min", 60.0, 7200.0)):
+        if seconds < top:
+            return f"{number(seconds / size, 2 if seconds / size < 100 else 3)} {unit}"
+    return f"{number(seconds / 3600, 2)} h"
