@@ -1,0 +1,141 @@
+"""What happens when something strays or is changed: sensitivities and trade-offs."""
+
+from __future__ import annotations
+
+from codesign.report.layout import number
+from codesign.report.page.content import Section, Subject, quantity
+from codesign.report.page.figures import drawn
+from codesign.report.page.html import Content, Html, element, joined, listed, name, paragraph, table
+from codesign.report.sensitivity_text import (
+    NEGLIGIBLE,
+    bound_gain,
+    changes,
+    missed,
+    slope,
+    tolerance,
+    weight,
+    worst_end,
+)
+from codesign.study.sensitivity import LimitPrice, Sensitivities
+
+
+def sensitivities(subject: Subject) -> Section | None:
+    """Shadow prices, tolerances, and what changes within them."""
+    found = subject.sensitivities
+    if found is None:
+        return _absent(subject, "sensitivities", "Sensitivities")
+    body = (
+        paragraph(
+            "How the best CNR answers when a limit is moved or a data-sheet value strays. ",
+            element("em", "Re-tuned"),
+            " means currents and exposure are set anew for the changed value, ",
+            element("em", "fixed"),
+            " that the recipe stays as it is.",
+        ),
+        drawn(subject, "sensitivities"),
+        element("h3", "What loosening a limit brings"),
+        _prices(found),
+        element("h3", "What the tolerances of the parts do"),
+        _tolerances(found),
+        _changed(found),
+        _missed(found),
+    )
+    return Section(id="sensitivities", title="Sensitivities", short="Sensitivities", body=joined(body))
+
+
+def _prices(found: Sensitivities) -> Html:
+    priced = [limit for limit in found.limits if limit.binds and limit.price is not None]
+    whole = [limit.name for limit in found.limits if limit.binds and limit.price is None]
+    said = [paragraph(name(each), " binds too; it moves in whole steps and has no price.") for each in whole]
+    if not priced:
+        return joined((paragraph("No limit with a price binds: moving one a little changes nothing."), said))
+    rows = [
+        (
+            name(limit.name),
+            quantity(limit.bound, limit.unit),
+            f"{number(limit.price, 3)} {_per(limit.unit)}",
+            _one_per_cent(limit, found.cnr),
+        )
+        for limit in priced
+    ]
+    header = ("limit", "bound", "CNR gained", "bound +1 %")
+    return joined((table("Limits at their bounds, and their shadow prices", header, rows, numbers=(1, 2, 3)), said))
+
+
+def _per(unit: str) -> str:
+    return f"per {quantity(1, unit).removeprefix('1 ')}" if unit else "per unit"
+
+
+def _one_per_cent(limit: LimitPrice, cnr: float) -> str:
+    return bound_gain((limit.price or 0.0) * 0.01 * limit.bound / cnr)
+
+
+def _tolerances(found: Sensitivities) -> Html:
+    weighty = sorted((x for x in found.parameters if weight(x) >= NEGLIGIBLE), key=weight, reverse=True)
+    small = list(dict.fromkeys(x.parameter for x in found.parameters if weight(x) < NEGLIGIBLE))
+    with_ends = any(x.low is not None or x.high is not None for x in weighty)
+    rows = [
+        (
+            (x.parameter, ", ", name(x.part)) if x.part else x.parameter,
+            tolerance(x),
+            slope(x.retuned, x.unit),
+            slope(x.fixed, x.unit),
+            *((worst_end(x, found.cnr, "cnr_retuned"), worst_end(x, found.cnr, "cnr_fixed")) if with_ends else ()),
+        )
+        for x in weighty
+    ]
+    header: tuple[Content, ...] = ("quantity", "tolerance (σ)", "re-tuned", "fixed")
+    header += ("worst, re-tuned", "worst, fixed") if with_ends else ()
+    note = "Re-tuned, fixed: change of the CNR in % for 1 % (or 1 nm, degree, kelvin) more of the quantity. "
+    if with_ends:
+        note += "Worst: the lower CNR at either end of the tolerance, each end solved again with proof. "
+    if small:
+        note += f"Below {100 * NEGLIGIBLE:g} % of the CNR within tolerance, and not listed: {', '.join(small)}."
+    return joined(
+        (
+            table(
+                "Data-sheet values that stray, the weightiest first", header, rows, numbers=(1, 2, 3, 4, 5), wide=True
+            )
+            if rows
+            else paragraph("No tolerance moves the CNR noticeably."),
+            paragraph(note, class_="more"),
+        )
+    )
+
+
+def _changed(found: Sensitivities) -> Html | None:
+    told = changes(found)
+    if not told:
+        return None
+    return joined((element("h3", "What changes within the tolerances"), listed(name(text) for text in told)))
+
+
+def _missed(found: Sensitivities) -> Html | None:
+    by_limit = missed(found)
+    if not by_limit:
+        return None
+    items = [(name(limit), ": ", name("; ".join(why))) for limit, why in by_limit.items()]
+    return joined(
+        (
+            element("h3", "Limits the recipe misses if it is held fixed"),
+            paragraph("At the end of a tolerance, with nothing tuned again; leave room, or tune each rig."),
+            listed(items),
+        )
+    )
+
+
+def trade(subject: Subject) -> Section | None:
+    """Best CNR against what it costs."""
+    if subject.trade is None:
+        return _absent(subject, "trade", "Trade-offs")
+    from codesign.report.page.trade import trade_body
+
+    return Section(id="trade", title="Trade-offs", short="Trade-offs", body=trade_body(subject))
+
+
+def _absent(subject: Subject, key: str, title: str) -> Section | None:
+    """A section that only says why it is empty; none where nobody asked for it."""
+    why = subject.notes.get(key)
+    if why is None:
+        return None
+    return Section(id=key, title=title, short=title, body=paragraph("Not in this report: ", name(why), "."))
