@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING, Any
 from codesign.errors import ProblemError
 from codesign.report.figures.inline import inline_svg
 from codesign.report.house import CARD, INK, MUTED, RULE
+from codesign.report.layout import number
 from codesign.report.output import plain, write_file
 
 if TYPE_CHECKING:
@@ -37,6 +38,8 @@ TEXT_WIDTH = 170.0
 A4 = (210.0, 297.0)
 #: Sizes of letters in print; none is smaller than the last. [pt]
 TITLE, BODY, SMALL = 9.5, 8.0, 7.0
+#: Width that axis labels and margins take beside axes, rather too much. [mm]
+ROOM_BESIDE = 22.0
 #: Dots per inch of a PNG.
 DPI = 200
 
@@ -47,6 +50,7 @@ STYLE: dict[str, Any] = {
     "axes.labelsize": BODY, "axes.labelcolor": INK, "axes.edgecolor": MUTED, "axes.linewidth": 0.7,
     "axes.spines.top": False, "axes.spines.right": False, "axes.axisbelow": True, "axes.facecolor": "none",
     "axes.unicode_minus": True, "axes.formatter.use_mathtext": False, "axes.formatter.useoffset": False,
+    "axes.formatter.limits": (-9, 9),
     "xtick.labelsize": SMALL, "ytick.labelsize": SMALL, "xtick.color": MUTED, "ytick.color": MUTED,
     "xtick.labelcolor": INK, "ytick.labelcolor": INK, "xtick.major.width": 0.7, "ytick.major.width": 0.7,
     "xtick.major.size": 3, "ytick.major.size": 3, "grid.color": RULE, "grid.linewidth": 0.6,
@@ -154,6 +158,24 @@ def width_mm(panel: Panel) -> float:
     return float(panel.bbox.width) / panel.dpi * INCH
 
 
+def height_mm(panel: Panel) -> float:
+    """Height of a figure, or of a part of one, in print. [mm]"""
+    return float(panel.bbox.height) / panel.dpi * INCH
+
+
+def signed(value: float, digits: int = 4, *, plus: bool = False) -> str:
+    """Return a number in few digits with a minus sign as set in print, on wish with a plus sign."""
+    return ("−" if value < 0 else "+" if plus else "") + number(abs(value), digits)
+
+
+def scale_of(largest: float) -> tuple[float, str]:
+    """Return what to divide values by so that few digits say them, and the power of ten to put before the unit."""
+    for power, sign in ((9, "10⁹ "), (6, "10⁶ "), (3, "10³ "), (0, ""), (-3, "10⁻³ "), (-6, "10⁻⁶ ")):
+        if largest >= 2 * 10.0**power or (power == 0 and largest >= 0.02):
+            return 10.0**power, sign
+    return 1.0, ""
+
+
 def text_width(figure: Panel, text: str, size: float = SMALL, weight: str = "normal") -> float:
     """Width of a line of text in print. [mm]"""
     from matplotlib.text import Text
@@ -212,7 +234,7 @@ def legend_below(figure: Panel, entries: Sequence[tuple[Artist, str]], *, size: 
         _named(figure.legend(artists, _numbers(names), loc="outside lower left", ncols=columns, fontsize=size), names)
 
 
-def legend_above(axes: Axes, title: str, entries: Sequence[tuple[Artist, str]], *, aside: float = 20.0) -> None:
+def legend_above(axes: Axes, title: str, entries: Sequence[tuple[Artist, str]], *, aside: float = ROOM_BESIDE) -> None:
     """Put a title and under it a legend above axes, in as many columns as fit.
 
     Parameters
@@ -235,6 +257,13 @@ def legend_above(axes: Axes, title: str, entries: Sequence[tuple[Artist, str]], 
     legend.get_title().set_text(title)
     legend.get_title().set_parse_math(False)
     _named(legend, names)
+
+
+def blank() -> Artist:
+    """Nothing to see, for entries of a legend that are words only."""
+    from matplotlib.lines import Line2D
+
+    return Line2D([], [], linestyle="none")
 
 
 def _columns(

@@ -1,4 +1,8 @@
-"""An SVG file turned into an element that lives in a page with others: own ids, no style sheet, words for readers."""
+"""An SVG file turned into an element that lives in a page with others: own ids, no style sheet, words for readers.
+
+What matplotlib says in style attributes is said in attributes of SVG instead, so that pages whose policy allows no
+inline styles show it too.
+"""
 
 from __future__ import annotations
 
@@ -8,7 +12,9 @@ from xml.etree import ElementTree
 
 SVG, XLINK = "{http://www.w3.org/2000/svg}", "{http://www.w3.org/1999/xlink}"
 #: What matplotlib's style sheet says of every element; as properties of the root they are inherited.
-INHERITED = "stroke-linejoin:round;stroke-linecap:butt"
+INHERITED = {"stroke-linejoin": "round", "stroke-linecap": "butt"}
+#: Fonts of letters kept as text: the one the figure was laid out with, else any without serifs.
+FONTS = "'DejaVu Sans', sans-serif"
 
 
 def inline_svg(content: bytes, title: str, description: str, prefix: str | None = None) -> str:
@@ -37,8 +43,12 @@ def inline_svg(content: bytes, title: str, description: str, prefix: str | None 
 
 
 def _rename(element: ElementTree.Element, prefix: str) -> None:
-    """Tags without name space (HTML needs none), ids and what refers to them with the prefix."""
+    """Tags without name space (HTML needs none), styles as attributes, ids and what refers to them with the prefix."""
     element.tag = element.tag.removeprefix(SVG)
+    for declared in element.attrib.pop("style", "").split(";"):
+        name, _, value = declared.partition(":")
+        if value:
+            element.set(name.strip(), FONTS if name.strip() == "font-family" else value.strip())
     for key, value in list(element.attrib.items()):
         if key == "id":
             element.set(key, prefix + value)
@@ -47,15 +57,13 @@ def _rename(element: ElementTree.Element, prefix: str) -> None:
             element.set("href", f"#{prefix}{value[1:]}" if value.startswith("#") else value)
         elif "url(#" in value:
             element.set(key, re.sub(r"url\(#", f"url(#{prefix}", value))
-        elif "font-family" in value:
-            element.set(key, value.replace("'DejaVu Sans'", "'DejaVu Sans', sans-serif"))
 
 
 def _size(root: ElementTree.Element) -> None:
     """Width and height in CSS pixels, so that the figure has its size in print where nothing else is said."""
     for key in ("width", "height"):
         root.set(key, f"{float(root.get(key, '0').removesuffix('pt')) * 96 / 72:.0f}")
-    root.set("style", INHERITED)
+    root.attrib.update(INHERITED)
     root.attrib.pop("version", None)
 
 

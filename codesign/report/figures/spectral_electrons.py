@@ -1,0 +1,130 @@
+"""Where electrons, contrast and noise come from by wavelength: the lower panels of the spectral story."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from codesign.design import Performance
+from codesign.design_spectra import Spectra
+from codesign.problem import Problem
+from codesign.report.figures.base import blank, dress, legend_above, scale_of, signed
+from codesign.report.house import AMBIENT, BACKGROUND, DASHES, FILTER, INK, MUTED, TARGET
+from codesign.report.layout import percent
+
+if TYPE_CHECKING:
+    from matplotlib.artist import Artist
+    from matplotlib.axes import Axes
+
+    from codesign.design_spectra import Array
+
+    Entries = list[tuple[Artist, str]]
+
+#: Share of the electrons and of the LEDs' light that may lie beyond the wavelengths shown. [1]
+BEYOND = 2e-3
+#: Noise terms that take less of the variance have no line. [1]
+LEAST_NOISE = 1e-3
+#: Colours of the noise terms that grow with light, wherever they are shown.
+NOISE_COLORS = {
+    "light shot noise": INK, "ambient shot noise": AMBIENT, "photo-response fixed pattern": FILTER,
+    "surface clutter": TARGET,
+}  # fmt: skip
+
+
+def surface_lines(problem: Problem, pair: tuple[int, int]) -> list[tuple[int, object, str, float]]:
+    """Position, dash, colour and width of each target and background; the pair that counts is drawn boldest."""
+    found = []
+    for index in range(len(problem.targets) + len(problem.backgrounds)):
+        is_target = index < len(problem.targets)
+        rank = index if is_target else index - len(problem.targets)
+        dash = (DASHES[0], DASHES[4], DASHES[6])[rank % 3] if is_target else (DASHES[1], DASHES[5], DASHES[7])[rank % 3]
+        found.append((index, dash, TARGET if is_target else BACKGROUND, 1.8 if index in pair else 1.0))
+    return found
+
+
+def draw_electrons(axes: Axes, problem: Problem, found: Spectra) -> None:
+    """Electrons of targets and backgrounds, and what of them ambient light brings."""
+    grid, entries, many = found.wavelength_nm, [], len(found.readings) > 1
+    lines = [line for line in surface_lines(problem, found.pair) if not many or line[0] in found.pair]
+    curves = [
+        (reading.led_e[index] + reading.ambient_e[index], index, k, dash, color, width)
+        for k, reading in enumerate(found.readings)
+        for index, dash, color, width in lines
+    ]
+    unit, sign = scale_of(max(float(curve.max()) for curve, *_ in curves))
+    for curve, index, k, dash, color, width in curves:
+        style = DASHES[k % len(DASHES)] if many else dash
+        (line,) = axes.plot(grid, curve / unit, color=color, linestyle=style, linewidth=width)
+        which = f", {found.readings[k].name}" if many else ""
+        entries.append((line, problem.surfaces[index].id + which))
+    ambient = sum(reading.ambient_e[found.pair[1]] for reading in found.readings)
+    if np.any(ambient):
+        area = axes.fill_between(grid, ambient / unit, facecolor=AMBIENT, edgecolor=AMBIENT, alpha=0.6, linewidth=0.5)
+        share = float(found.integral(ambient) / found.integral(_background_e(found)))
+        entries.append((area, f"of these by ambient light, {percent(share, 1e-4)}"))
+    dress(axes, y=f"{sign}e⁻ per nm")
+    axes.set_ylim(bottom=0)
+    legend_above(axes, f"Electrons in one pixel{_beyond_words(axes, found)}", entries)
+
+
+def _background_e(found: Spectra) -> Array:
+    """Electrons of the background that counts, in all readings. (n,) [e⁻/nm]"""
+    return np.asarray(sum(r.led_e[found.pair[1]] + r.ambient_e[found.pair[1]] for r in found.readings))
+
+
+def _beyond_words(axes: Axes, found: Spectra) -> str:
+    """Say which share of the electrons the range shown does not hold, where it is worth saying."""
+    low, high = axes.get_xlim()
+    outside = (found.wavelength_nm < low) | (found.wavelength_nm > high)
+    total = _background_e(found)
+    share = float(found.integral(total * outside) / max(float(found.integral(total)), 1e-300))
+    return f" ({percent(share)} of them beyond the range shown)" if share > 2 * BEYOND else ""
+
+
+def draw_contrast(axes: Axes, problem: Problem, found: Spectra, performance: Performance) -> None:
+    """Target minus background with its sign."""
+    grid = found.wavelength_nm
+    unit, sign = scale_of(float(np.abs(found.signal_e).max()))
+    signal = found.signal_e / unit
+    axes.fill_between(grid, np.maximum(signal, 0), color=TARGET, alpha=0.45, linewidth=0)
+    axes.fill_between(grid, np.minimum(signal, 0), color=BACKGROUND, alpha=0.45, linewidth=0)
+    axes.plot(grid, signal, color=INK, linewidth=1.0)
+    axes.axhline(0, color=MUTED, linewidth=0.7)
+    dress(axes, y=f"{sign}e⁻ per nm")
+    top, bottom = max(float(signal.max()), 0.0), min(float(signal.min()), 0.0)
+    reach = max(top - bottom, 1e-12)
+    axes.set_ylim(bottom - 0.08 * reach, top + 0.08 * reach)
+    target, background = (problem.surfaces[index].id for index in found.pair)
+    weighted = ", weighted" if len(found.readings) > 1 else ""
+    legend_above(axes, f"Contrast: {target} minus {background}{weighted}, {_sum_words(found, performance)}", [])
+
+
+def _sum_words(found: Spectra, performance: Performance) -> str:
+    """What the contrast adds up to, and how much of it has the other sign."""
+    whole = max(float(found.integral(np.abs(found.signal_e))), 1e-300)
+    against = (whole - abs(float(found.integral(found.signal_e)))) / 2 / whole
+    words = f"in all {signed(performance.signal_e)} e⁻"
+    return words + (f"; {percent(against)} of it works against the rest" if against > 1e-3 else "")
+
+
+def draw_noise(axes: Axes, found: Spectra) -> None:
+    """Variance of the terms that grow with light; the others in words."""
+    mean = {name: density.mean(axis=0) for name, density in found.noise.items()}
+    steady = sum(float(value.mean()) for value in found.steady.values())
+    whole = max(sum(float(found.integral(each)) for each in mean.values()) + steady, 1e-300)
+    unit, sign = scale_of(max(float(each.max()) for each in mean.values()))
+    entries, small = [], []
+    for index, (name, density) in enumerate(mean.items()):
+        share = float(found.integral(density)) / whole
+        if share < LEAST_NOISE:
+            small += [name] if share > 0 else []
+            continue
+        color = NOISE_COLORS.get(name, MUTED)
+        (line,) = axes.plot(found.wavelength_nm, density / unit, color=color, linestyle=DASHES[index % len(DASHES)])
+        entries.append((line, f"{name}, {percent(share)}"))
+    if small:
+        entries.append((blank(), f"below {percent(LEAST_NOISE)} each: {', '.join(small)}"))
+    entries.append((blank(), f"without wavelength (dark, read, rounding): {percent(steady / whole, 1e-5)}"))
+    dress(axes, y=f"{sign}e⁻² per nm")
+    legend_above(axes, "Noise: variance, mean of target and background", entries)
