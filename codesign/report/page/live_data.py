@@ -49,20 +49,21 @@ def live_data(solution: Solution, kept: Kept) -> dict[str, Any]:
     dict
         Plain values without infinities: None stands for "no limit".
     """
-    problem = solution.problem
-    spec = problem.spec
+    problem, seen = solution.problem, kept.span
+    spec, grid = problem.spec, problem.grid
+    chain = problem.lens * photons_per_joule(grid) * trapezoid_weights(grid)
     return {
         "schema": SCHEMA,
         "title": spec.title,
         "file": problem.where,
         "required_cnr": spec.required_cnr,
-        "grid_nm": packed(problem.grid),
-        "chain": packed(problem.lens * photons_per_joule(problem.grid) * trapezoid_weights(problem.grid)),
-        "ambient": packed(problem.ambient) if problem.ambient.any() else None,
-        "surfaces": _surfaces(problem, kept.kind),
+        "grid_nm": packed(grid[seen]),
+        "chain": packed(chain[seen]),
+        "ambient": packed(problem.ambient[seen]) if problem.ambient.any() else None,
+        "surfaces": _surfaces(problem, kept),
         "leds": [_led(problem, channel) for channel in kept.leds],
-        "cameras": [_camera(problem, camera, kept.kind) for camera in kept.cameras],
-        "filters": [_filter(problem, part, kept.kind) for part in kept.filters],
+        "cameras": [_camera(problem, camera, kept) for camera in kept.cameras],
+        "filters": [_filter(problem, part, kept) for part in kept.filters],
         "filter_choices": _filter_choices(problem, kept.filters),
         "pulse_levels": _pulse_levels(problem, kept),
         "strobe": problem.strobe,
@@ -106,15 +107,15 @@ def _finite(value: float) -> float | None:
     return float(value) if np.isfinite(value) else None
 
 
-def _surfaces(problem: Problem, kind: str) -> list[dict[str, Any]]:
+def _surfaces(problem: Problem, kept: Kept) -> list[dict[str, Any]]:
     scene = reflectances(problem)
     return [
         {
             "id": surface.id,
             "role": problem.role(index),
             "specular": float(scene.specular[index]),
-            "mean": packed(scene.mean[index]),
-            "clutter": packed(scene.clutter[rows], kind) if rows.stop > rows.start else None,
+            "mean": packed(scene.mean[index, kept.span]),
+            "clutter": packed(scene.clutter[rows, kept.span], kept.kind) if rows.stop > rows.start else None,
         }
         for index, (surface, rows) in enumerate(zip(problem.surfaces, scene.rows_of, strict=True))
     ]
@@ -155,7 +156,7 @@ def _spectrum(channel: LedChannel) -> dict[str, Any]:
     return {"model": {"peak_nm": led.peak_nm, "width_nm": led.fwhm_nm / OHNO_FWHM_FACTOR, "density": density}}
 
 
-def _camera(problem: Problem, camera: Camera, kind: str) -> dict[str, Any]:
+def _camera(problem: Problem, camera: Camera, kept: Kept) -> dict[str, Any]:
     names = (
         "id", "pixel_pitch_um", "bits", "black_level_dn", "dark_reference_c", "dark_doubling_k", "dsnu_e",
         "exposure_min_us", "exposure_max_us", "exposure_step_us", "readout_ms",
@@ -171,7 +172,7 @@ def _camera(problem: Problem, camera: Camera, kind: str) -> dict[str, Any]:
         "price": _finite(part_price(problem, camera)),
         "gains": [{name: getattr(gain, name) for name in fields} for gain in offered],
         "channels": [
-            {"name": name, "qe": packed(camera.quantum_efficiency(name, problem.grid), kind)}
+            {"name": name, "qe": packed(camera.quantum_efficiency(name, problem.grid)[kept.span], kept.kind)}
             for name in camera.channel_names
             if wanted.channels == "all" or name in _listed(wanted.channels)
         ],
@@ -182,14 +183,14 @@ def _listed(choice: str | tuple[str, ...]) -> tuple[str, ...]:
     return (choice,) if isinstance(choice, str) else choice
 
 
-def _filter(problem: Problem, part: Filter, kind: str) -> dict[str, Any]:
+def _filter(problem: Problem, part: Filter, kept: Kept) -> dict[str, Any]:
     """One curve for all f-numbers in front of the lens, one for each at the sensor."""
     optics = problem.spec.optics
     stops = optics.f_numbers[:1] if optics.filter_position == "front" else optics.f_numbers
     return {
         "id": part.id,
         "price": _finite(part_price(problem, part)),
-        "curves": [packed(filter_transmittance(problem, part, stop), kind) for stop in stops],
+        "curves": [packed(filter_transmittance(problem, part, stop)[kept.span], kept.kind) for stop in stops],
     }
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -31,8 +31,12 @@ CAMERA_SHARE = 0.3
 
 @dataclass(frozen=True, slots=True)
 class Kept:
-    """Parts of the page; ``kind`` is the number type of their curves, ``left_out`` how many of a kind are not in."""
+    """Parts of the page, and the grid points that any of the cameras sees.
 
+    ``kind`` is the number type of their curves, ``left_out`` how many of a kind are not in.
+    """
+
+    span: slice
     leds: tuple[LedChannel, ...]
     filters: tuple[Filter, ...]
     cameras: tuple[Camera, ...]
@@ -48,12 +52,22 @@ def kept_parts(solution: Solution) -> Kept | None:
     problem = solution.problem
     filters, cameras = FilterChoices.of(problem.filters).base, problem.cameras
     leds = _leds(solution)
-    everything = Kept(leds, filters, cameras, "f8", {"LEDs": len(problem.channels) - len(leds)})
+    span = seen_span(problem)
+    everything = Kept(span, leds, filters, cameras, "f8", {"LEDs": len(problem.channels) - len(leds)})
     for kind in ("f8", "f4"):
-        room = LARGEST / BASE64 / int(kind[1]) / problem.grid.size - _surface_rows(problem)
+        room = LARGEST / BASE64 / int(kind[1]) / (span.stop - span.start) - _surface_rows(problem)
         if len(filters) * _filter_rows(problem) + _camera_rows(cameras) <= room:
-            return Kept(leds, filters, cameras, kind, everything.left_out)
+            return replace(everything, kind=kind)
     return _best(solution, everything, room) if room > 0 else None
+
+
+def seen_span(problem: Problem) -> slice:
+    """Return the grid points between the first and the last at which any camera responds: all others count nothing."""
+    curves = [
+        camera.quantum_efficiency(name, problem.grid) for camera in problem.cameras for name in camera.channel_names
+    ]
+    seen = np.flatnonzero(np.any(curves, axis=0))
+    return slice(int(seen[0]), int(seen[-1]) + 1) if seen.size > 1 else slice(0, problem.grid.size)
 
 
 def _surface_rows(problem: Problem) -> int:
@@ -72,8 +86,7 @@ def _camera_rows(cameras: Sequence[Camera]) -> int:
 
 
 def _designs(solution: Solution) -> list:
-    found = [solution.recipe.design, solution.optimum.design, *(a.design for a in solution.alternatives)]
-    return found
+    return [solution.recipe.design, solution.optimum.design, *(a.design for a in solution.alternatives)]
 
 
 def _best(solution: Solution, everything: Kept, room: float) -> Kept | None:
@@ -143,8 +156,6 @@ def _leds(solution: Solution) -> tuple[LedChannel, ...]:
 
 def _alone(solution: Solution) -> Array:
     """CNR with each LED alone at its largest current, behind the recipe's parts at its exposure. (L,)"""
-    from dataclasses import replace
-
     from codesign.design import evaluate
 
     problem, design = solution.problem, solution.recipe.design

@@ -4,6 +4,7 @@
   const live = globalThis.codesignLive;
   const { $, element, fill, number, percent, unit } = live;
   const LOWEST_SHOWN = 0.01; // limits met that are used less are folded away
+  const MOST_LIMITS = 14; // limits met that are listed before the rest is folded away
   const REACHED = 0.999; // from this share on a limit counts as reached
   const FAITHFUL = 1e-6; // the page's CNR of the recipe must agree with the program's to this
   const SPOKEN_AFTER = 900; // ms of rest before the summary is read out
@@ -64,7 +65,7 @@
 
     setDrive(id, ma, count) {
       const drive_ma = { ...this.setting.drive_ma }, emitters = { ...this.setting.emitters };
-      if (ma !== undefined && ma !== null) {
+      if (ma !== null) {
         if (ma > 0) drive_ma[id] = ma;
         else delete drive_ma[id];
       }
@@ -80,9 +81,10 @@
     }
 
     /** Go to a design of the file, surroundings kept. */
-    go(design) {
+    go(design, other = "") {
       this.setting = this.settingOf(design, this.surroundings());
       this.leds.reset([]);
+      $("other").value = other;
       this.render();
     }
 
@@ -102,7 +104,10 @@
       $("to-recipe").addEventListener("click", () => this.go(data.recipe));
       $("to-optimum").addEventListener("click", () => this.go(data.optimum));
       $("own-surroundings").addEventListener("click", () => this.change(this.ownSurroundings()));
-      $("other").addEventListener("change", () => this.go(this.known[Number($("other").value)]));
+      $("other").addEventListener("change", () => {
+        const { value } = $("other");
+        if (value) this.go(this.known[Number(value)], value);
+      });
       $("camera").addEventListener("change", () => this.setCamera($("camera").value));
       $("channel").addEventListener("change", () => this.change({ channel: $("channel").value }));
       $("gain").addEventListener("change", () => this.change({ gain_db: Number($("gain").value) }));
@@ -121,7 +126,6 @@
     }
 
     wireNumbers() {
-      const camera = () => this.model.cameraOf.get(this.setting.camera);
       const quantity = (name, key, range) =>
         live.pair($(`${name}-slider`), $(name), {
           range: () => range,
@@ -133,12 +137,26 @@
       live.pair($("exposure-slider"), $("exposure"), {
         range: () => ({ low: 0, high: 1e12, open: true }),
         set: (value) => this.change(value === null ? {} : { exposure_us: value }),
-        fromSlider: (value) => {
-          const { exposure_min_us: low, exposure_max_us: high, exposure_step_us: step } = camera();
-          const wanted = low * (high / low) ** (Number(value) / 1000);
-          return Math.max(live.inSteps(wanted, step), Math.min(step, low));
-        },
+        fromSlider: (value) => this.exposureAt(value),
       });
+    }
+
+    /** Exposure at a place of the slider, whose ends are the camera's shortest and longest. [us] */
+    exposureAt(place) {
+      const { exposure_min_us: low, exposure_max_us: high, exposure_step_us: step } = this.camera();
+      return Math.max(live.inSteps(low * (high / low) ** (Number(place) / 1000), step), Math.min(step, low));
+    }
+
+    /** Place of the slider for an exposure; null where it stands right already. */
+    placeOf(exposure) {
+      if (this.exposureAt($("exposure-slider").value) === exposure) return null;
+      const { exposure_min_us: low, exposure_max_us: high } = this.camera();
+      const place = Math.round((1000 * Math.log(exposure / low)) / Math.log(high / low));
+      return Math.min(Math.max(place || 0, 0), 1000);
+    }
+
+    camera() {
+      return this.model.cameraOf.get(this.setting.camera);
     }
 
     setFilter(first, second) {
@@ -177,7 +195,7 @@
     }
 
     showControls(setting, result) {
-      const { data, model } = this, camera = model.cameraOf.get(setting.camera);
+      const { data, model } = this, camera = this.camera();
       this.leds.show(setting, result.leds);
       fill($("camera"), model.cameras.map((c) => [c.id, c.id]), setting.camera);
       fill($("channel"), [...camera.channels.keys()].map((name) => [name, name]), setting.channel);
@@ -188,9 +206,7 @@
       const stack = [...(model.single(first) ? [["", "nothing"]] : []), ...partners.map((name) => [name, name])];
       fill($("second"), stack, second);
       $("second").hidden = $("second-label").hidden = !model.stackable;
-      const { exposure_min_us: low, exposure_max_us: high } = camera;
-      const place = Math.round((1000 * Math.log(setting.exposure_us / low)) / Math.log(high / low) || 0);
-      live.show($("exposure-slider"), $("exposure"), Math.min(Math.max(place, 0), 1000), setting.exposure_us);
+      live.show($("exposure-slider"), $("exposure"), this.placeOf(setting.exposure_us), setting.exposure_us);
       $("exposure-slider").setAttribute("aria-valuetext", `${number(setting.exposure_us, 6)} microseconds`);
       for (const [name, key] of [["air", "air_c"], ["sensor", "sensor_c"], ["ambient", "ambient_factor"]])
         live.show($(`${name}-slider`), $(name), setting[key], setting[key]);
@@ -203,9 +219,10 @@
       const share = bound > 0 ? result.cnr / bound : 0;
       const words = data.bound.proven ? "the proven best" : "the bound proven so far";
       const best = `${words}, CNR ${number(bound, 5)}`;
-      let text = `${percent(share)} of ${best}`;
+      const reached = share < 1 ? `${Math.floor(share * 1e4) / 100} %` : percent(share); // never rounded up to all of it
+      let text = `${reached} of ${best}`;
       if (!home) text = `The bound, CNR ${number(bound, 5)}, holds for the problem's own surroundings, not for these`;
-      else if (share > 1 && missed.length) text = `${percent(share)} of ${best}: only with limits missed`;
+      else if (share > 1 && missed.length) text = `${reached} of ${best}: only with limits missed`;
       put("share", text);
       put("required", data.required_cnr === null ? "" : this.requirement(result.cnr, data.required_cnr));
       put("errors", `${live.missed(result.error_rate)}, as many false alarms`);
@@ -217,7 +234,7 @@
           missed.length > 3 ? " …" : ""}`;
       put("verdict", verdict);
       $("verdict").classList.toggle("live-bad", missed.length > 0);
-      this.speak(`CNR ${number(result.cnr, 3)}. ${home ? `${percent(share)} of ${words}. ` : ""}${verdict.slice(2)}.`);
+      this.speak(`CNR ${number(result.cnr, 3)}. ${home ? `${reached} of ${words}. ` : ""}${verdict.slice(2)}.`);
     }
 
     requirement(cnr, required) {
@@ -241,30 +258,31 @@
     }
 
     showGreys(result) {
-      const { data } = this, camera = this.model.cameraOf.get(this.setting.camera), full = 2 ** camera.bits - 1;
-      const rows = result.surfaces.map((s) => ({
-        cells: [`${s.id}, ${s.role}`, s.grey_dn.toFixed(1), percent(s.saturation_share)],
-        share: s.saturation_share, kind: s.role, bad: s.saturation_share >= 1, mark: data.limits.well_headroom,
+      const { data } = this, camera = this.camera(), full = 2 ** camera.bits - 1;
+      const mark = data.limits.well_headroom;
+      meters($("greys"), result.surfaces.map((s) => {
+        const clipped = s.saturation_share >= 1;
+        const name = `${clipped ? "✗ saturated: " : ""}${s.id}, ${s.role}`;
+        const kind = clipped ? "live-bad" : `live-of-${s.role}`;
+        return { name, more: `grey value ${s.grey_dn.toFixed(1)}`, share: s.saturation_share, kind, mark };
       }));
-      table($("greys"), rows);
-      const clipped = result.surfaces.some((s) => s.saturation_share >= 1);
-      const limit = `The line in the bar is the allowed ${percent(data.limits.well_headroom)}`;
-      put("greys-note", `${clipped ? "✗ A surface saturates. " : ""}Of ${full} grey values. ${limit}.`);
+      put("greys-note", `Grey values to ${full}; percent of saturation, the stroke marks the ${percent(mark)} allowed.`);
     }
 
     showLimits(result) {
       const order = result.limits.map((limit, k) => [limit, k]);
       order.sort(([a, i], [b, j]) => Number(a.met) - Number(b.met) || b.share - a.share || i - j);
-      const shown = order.map(([limit]) => limit).filter((l) => this.allLimits || !l.met || l.share >= LOWEST_SHOWN);
-      table($("limits"), shown.map((limit) => {
-        const word = !limit.met ? "✗ missed: " : limit.share >= REACHED ? "► reached: " : "";
-        const allowed = `${limit.floor ? "≥" : "≤"} ${number(limit.bound)} ${unit(limit.unit)}`;
-        const cells = [word + limit.name, number(limit.value), allowed, percent(limit.share, 0.001)];
-        return { cells, share: limit.share, bad: !limit.met, near: limit.met && limit.share >= REACHED };
+      const worth = (limit, k) => !limit.met || (k < MOST_LIMITS && limit.share >= LOWEST_SHOWN);
+      const shown = order.map(([limit]) => limit).filter((limit, k) => this.allLimits || worth(limit, k));
+      meters($("limits"), shown.map((limit) => {
+        const reached = limit.met && limit.share >= REACHED, word = !limit.met ? "✗ missed: " : reached ? "► reached: " : "";
+        const allowed = `${limit.floor ? "≥" : "≤"} ${number(limit.bound)} ${unit(limit.unit)}`.trim();
+        const kind = !limit.met ? "live-bad" : reached ? "live-near" : "";
+        return { name: word + limit.name, more: `${number(limit.value)} (${allowed})`, share: limit.share, kind };
       }));
       const folded = result.limits.length - shown.length;
       $("more").hidden = folded === 0 && !this.allLimits;
-      put("more", this.allLimits ? "Fold the limits hardly used" : `Show ${folded} more, used below ${percent(LOWEST_SHOWN)}`);
+      put("more", this.allLimits ? "Fold the limits used less" : `Show the ${folded} limits used less`);
       $("more").setAttribute("aria-expanded", String(this.allLimits));
     }
 
@@ -272,28 +290,38 @@
       const sum = result.noise.reduce((total, term) => total + term.target + term.background, 0);
       const terms = result.noise.filter((term) => term.target + term.background > 0);
       terms.sort((a, b) => b.target + b.background - a.target - a.background);
-      table($("noise"), terms.map((term) => {
-        const share = (term.target + term.background) / sum;
-        const sigma = [term.target, term.background].map((variance) => number(Math.sqrt(variance), 3));
-        return { cells: [term.name, ...sigma, percent(share, 0.001)], share };
+      meters($("noise"), terms.map((term) => {
+        const [target, background] = [term.target, term.background].map((v) => number(Math.sqrt(v), 3));
+        const more = `σ ${target} and ${background} e⁻`;
+        return { name: term.name, more, share: (term.target + term.background) / sum };
       }));
-      const { target, background } = result.pair;
-      put("noise-note", result.pairs.length > 1 ? `, of the worst pair: ${target} against ${background}` : "");
+      const { target, background } = result.pair, worst = result.pairs.length > 1 ? "of the worst pair, " : "";
+      put("noise-note", `Percent of the variance; σ, the standard deviation, ${worst}at ${target} and ${background}.`);
     }
 
     showViews(result) {
       const stretched = $("stretch").checked;
-      this.before.draw(this.atStart, stretched);
+      if (this.stretched !== stretched) this.before.draw(this.atStart, stretched);
+      this.stretched = stretched;
       this.now.draw(result, stretched);
       put("view-start-text", `the recipe, CNR ${number(this.atStart.cnr)}`);
       put("view-now-text", `now, CNR ${number(result.cnr)}`);
       const { pixels, frames } = this.data.averaging, many = pixels * frames > 1;
-      const dot = many ? `${pixels} pixels of ${frames} frames averaged` : "one pixel";
+      const parts = [[pixels, "pixels"], [frames, "frames"]].filter(([count]) => count > 1);
+      const dot = many ? `${parts.map((part) => part.join(" ")).join(" × ")} averaged` : "one pixel";
       put("view-note", `Simulated, with all terms of the noise budget. One dot is one reading: ${dot}.`);
     }
 
     showSpectra(result, setting) {
       this.spectra.draw(result, setting);
+      const { grid } = this.model, { diffuse, all, seen } = result.light;
+      const [one, other] = [result.pair.i, result.pair.j].map((k) => this.model.surfaces[k].mean);
+      const most = (values) => `${grid[values.reduce((best, v, i) => (v > values[best] ? i : best), 0)].toFixed(0)} nm`;
+      const difference = all.map((v, i) => Math.abs(v * (one[i] - other[i])));
+      const words = [["LED light is strongest at", diffuse], ["filter and camera respond most at", seen]];
+      words.push(["most of the difference comes from", difference]);
+      const label = words.map(([text, values]) => `${text} ${most(values)}`).join("; ");
+      if (this.spectra.svg.getAttribute("aria-label") !== label) this.spectra.svg.setAttribute("aria-label", label);
       put("target-name", result.pair.target);
       put("background-name", result.pair.background);
       $("ambient-key").hidden = this.data.ambient === null;
@@ -322,34 +350,28 @@
     if (place.textContent !== text) place.textContent = text;
   }
 
-  /** Rows of cells with a bar; rows are kept, only what differs is written. */
-  function table(body, rows) {
-    while (body.children.length > rows.length) body.lastChild.remove();
-    rows.forEach((row, k) => fillRow(body.children[k] ?? newRow(body, row.cells.length), row));
+  /** Lines with a bar each; lines are kept, only what differs is written. */
+  function meters(list, rows) {
+    while (list.children.length > rows.length) list.lastChild.remove();
+    rows.forEach((row, k) => fillLine(list.children[k] ?? newLine(list), row));
   }
 
-  function newRow(body, count) {
-    const row = element("tr");
-    row.append(element("th", { scope: "row" }));
-    for (let k = 1; k < count; k++) row.append(element("td", { class: "n" }));
-    const bar = element("td", { class: "live-bars", "aria-hidden": "true" }), rail = element("span", { class: "live-bar" });
-    rail.append(element("i"), element("b"));
-    bar.append(rail);
-    row.append(bar);
-    body.append(row);
-    return row;
+  function newLine(list) {
+    const line = element("li"), bar = element("span", { class: "live-bar", "aria-hidden": "true" });
+    bar.append(element("i"), element("b"));
+    line.append(...["name", "more", "much"].map((part) => element("span", { class: `live-${part}` })), bar);
+    list.append(line);
+    return line;
   }
 
-  function fillRow(row, { cells, share, bad = false, near = false, kind = "", mark = 0 }) {
-    cells.forEach((text, k) => {
-      if (row.children[k].textContent !== text) row.children[k].textContent = text;
-    });
-    const name = ["live-tr", bad && "live-bad", near && "live-near", kind && `live-of-${kind}`].filter(Boolean).join(" ");
-    if (row.className !== name) row.className = name;
-    const [fillBar, line] = row.lastChild.firstChild.children;
+  function fillLine(line, { name, more, share, much = percent(share, 0.001), kind = "", mark = 0 }) {
+    const [first, second, third, bar] = line.children, [fillBar, limit] = bar.children;
+    for (const [place, text] of [[first, name], [second, more], [third, much]])
+      if (place.textContent !== text) place.textContent = text;
+    if (line.className !== kind) line.className = kind;
     fillBar.style.width = `${(100 * Math.min(Math.max(share, 0), 1)).toFixed(1)}%`;
-    line.hidden = !mark;
-    if (mark) line.style.left = `${100 * mark}%`;
+    limit.hidden = !mark;
+    if (mark) limit.style.left = `${100 * mark}%`;
   }
 
   function begin() {
@@ -359,6 +381,10 @@
     $("other-label").hidden = page.known.length === 0;
     const left = Object.entries(page.data.left_out).filter(([, count]) => count > 0);
     if (left.length) put("parts-note", `To keep this file small, ${left.map(([kind, n]) => `${n} ${kind}`).join(", ")} of the catalogue are not in this list: those of the lowest bounds.`);
+    if (page.data.ambient === null) {
+      $("ambient").disabled = $("ambient-slider").disabled = true;
+      $("dark-note").hidden = false;
+    }
     $("bench").hidden = false;
     page.render();
     const off = Math.abs(page.atStart.cnr / page.data.recipe.cnr - 1);

@@ -45,9 +45,9 @@
     return good ? value : null;
   }
 
-  /** Show a value in a slider and a number field, but not in the field somebody is typing in. */
+  /** Show a value in a slider (null: it stands right) and a number field, but not in a field somebody is typing in. */
   function show(slider, input, position, value) {
-    if (slider.value !== String(position)) slider.value = position;
+    if (position !== null && slider.value !== String(position)) slider.value = position;
     if (document.activeElement !== input || input.validity.valid) {
       const text = String(Number(value.toPrecision(12)));
       if (Number(input.value) !== Number(text)) input.value = text;
@@ -99,21 +99,22 @@
       const box = element("div", { class: "live-line live-led" }), name = `live-led-${led.id}`;
       const label = element("label", { for: name }, led.id);
       const peak = element("span", { class: "live-peak" }, `${live.number(led.peak_nm)} nm`);
-      const step = this.model.data.drive_step_ma;
+      const step = this.model.data.drive_step_ma, index = this.model.leds.indexOf(led);
+      const top = Math.max(...this.model.data.pulse_levels.map((level) => level.current_ma[index]));
       const slider = element("input", {
-        type: "range", min: 0, max: led.largest_ma, step, "aria-label": `Current of ${led.id}, slider`,
+        type: "range", min: 0, max: top, step, "aria-label": `Current of ${led.id}, slider`,
       });
       const input = element("input", { type: "number", id: name, min: 0, step: "any", inputmode: "decimal" });
       const off = element("button", { type: "button", class: "live-off", "aria-label": `Take ${led.id} out` }, "×");
       const note = element("span", { class: "live-note" });
       label.append(" ", peak);
       box.append(label, slider, input, element("span", { class: "live-unit" }, "mA"), off, note);
-      const made = { box, slider, input, note, led };
+      const made = { box, slider, input, note, led, index };
       if (this.model.data.build.free) box.append(this.count(led, made));
       pair(slider, input, {
         range: () => ({ low: 0, high: led.largest_ma }),
         set: (value) => this.change(led.id, value),
-        fromSlider: (value) => Math.min(inSteps(Number(value), step), led.largest_ma),
+        fromSlider: (value) => Math.min(inSteps(Number(value), step), top),
       });
       off.addEventListener("click", () => {
         this.shown.delete(led.id);
@@ -129,8 +130,10 @@
       made.count = element("input", { type: "number", id: name, min: 1, max: led.emitters, step: 1 });
       made.count.addEventListener("input", () => {
         const value = typed(made.count, 1, led.emitters);
-        if (value !== null && Number.isInteger(value)) this.change(led.id, undefined, value);
+        if (value !== null && Number.isInteger(value)) this.change(led.id, null, value);
+        else if (value !== null) complain(made.count, "must be a whole number");
       });
+      made.count.addEventListener("blur", () => this.change(led.id, null));
       box.append(element("label", { for: name }, "emitters"), " ", made.count);
       return box;
     }
@@ -160,10 +163,14 @@
       const ma = setting.drive_ma[line.led.id] ?? 0;
       show(line.slider, line.input, ma, ma);
       line.slider.setAttribute("aria-valuetext", `${live.number(ma)} mA`);
-      if (line.count && document.activeElement !== line.count)
+      if (line.count && document.activeElement !== line.count) {
         line.count.value = setting.emitters[line.led.id] ?? line.led.emitters;
+        complain(line.count, "");
+      }
       const emitters = line.count ? "" : `× ${line.led.emitters}, `;
-      const text = state ? `${emitters}junction ${state.junction_c.toFixed(1)} °C` : "off";
+      const top = live.pulseLevel(this.model, setting.exposure_us * 1e-6).current_ma[line.index];
+      const heat = state ? `junction ${state.junction_c.toFixed(1)} °C` : "off";
+      const text = `${emitters}${heat}, up to ${live.number(top)} mA at this exposure`;
       if (line.note.textContent !== text) line.note.textContent = text;
     }
   }

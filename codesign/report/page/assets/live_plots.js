@@ -19,18 +19,32 @@
 
   // --- spectra -----------------------------------------------------------------------------------------------------
 
-  const LEFT = 34, RIGHT = 10, TOP = 8, MAIN = 190, GAP = 34, STRIP = 64, BOTTOM = 36;
+  const LEFT = 34, RIGHT = 18, TOP = 8, MAIN = 190, GAP = 34, STRIP = 64, BOTTOM = 36;
   const HEIGHT = TOP + MAIN + GAP + STRIP + BOTTOM, LARGEST_NUMBER_OF_POINTS = 900;
+  const BLIND = 0.005; // share of its peak below which a camera's response is not worth drawing
   const CURVES = ["light", "ambient", "seen", "background", "target"];
+
+  /** First and last grid point at which any camera responds to speak of. */
+  function reach(model) {
+    let first = model.grid.length - 1, last = 0;
+    for (const camera of model.cameras)
+      for (const qe of camera.channels.values()) {
+        const least = BLIND * qe.reduce((a, b) => Math.max(a, b), 0), seen = (value) => value > least;
+        first = Math.min(first, Math.max(qe.findIndex(seen), 0));
+        last = Math.max(last, qe.findLastIndex(seen));
+      }
+    return first < last ? [first, last] : [0, model.grid.length - 1];
+  }
 
   /** Curves over wavelength above, and the difference of electrons by wavelength below. */
   class Spectra {
     constructor(box, model) {
       this.box = box;
       this.model = model;
-      this.low = model.grid[0];
-      this.high = model.grid.at(-1);
-      this.stride = Math.max(1, Math.ceil(model.grid.length / LARGEST_NUMBER_OF_POINTS));
+      [this.first, this.last] = reach(model);
+      this.low = model.grid[this.first];
+      this.high = model.grid[this.last];
+      this.stride = Math.max(1, Math.ceil((this.last - this.first) / LARGEST_NUMBER_OF_POINTS));
       this.svg = svg("svg", { role: "img", height: HEIGHT });
       box.prepend(this.svg);
       this.frame = svg("g", {}, this.svg);
@@ -51,6 +65,10 @@
       this.width = width;
       this.svg.setAttribute("viewBox", `0 0 ${width} ${HEIGHT}`);
       this.svg.setAttribute("width", width);
+      this.drawn = {};
+      this.places = [];
+      for (let i = this.first; i <= this.last; i += this.stride)
+        this.places.push(`L${Math.round(this.x(this.model.grid[i]) * 10) / 10} `);
       this.frame.replaceChildren();
       const bottom = TOP + MAIN, zero = bottom + GAP + STRIP / 2, end = bottom + GAP + STRIP;
       const step = roundStep(this.high - this.low, width / 90);
@@ -65,7 +83,7 @@
       }
       svg("line", { class: "live-zero", x1: LEFT, x2: width - RIGHT, y1: zero, y2: zero }, this.frame);
       this.text("wavelength [nm]", (LEFT + width - RIGHT) / 2, end + 31, "middle");
-      this.text("Where the difference comes from: electrons per nm", LEFT, bottom + GAP - 8, "start");
+      this.text("difference by wavelength, up: target brighter", LEFT, bottom + GAP - 8, "start");
     }
 
     text(content, x, y, anchor) {
@@ -74,10 +92,11 @@
 
     /** Points of a curve of values 0 to `top`, between two heights. */
     line(value, top, base, height) {
-      const { grid } = this.model, points = [], scale = top > 0 ? height / top : 0;
-      for (let i = 0; i < grid.length; i += this.stride)
-        points.push(`${this.x(grid[i]).toFixed(1)} ${(base - value(i) * scale).toFixed(1)}`);
-      return `M${points.join("L")}`;
+      const scale = top > 0 ? height / top : 0, { places } = this;
+      let text = "";
+      for (let i = this.first, k = 0; i <= this.last; i += this.stride, k++)
+        text += places[k] + Math.round((base - value(i) * scale) * 10) / 10;
+      return `M${text.slice(1)}`;
     }
 
     closed(value, top, base, height) {
@@ -85,25 +104,33 @@
       return this.line(value, top, base, height) + ends;
     }
 
+    /** Draw a path anew where what it shows, named by `key`, has changed. */
+    put(name, key, points) {
+      if (key !== null && this.drawn[name] === key) return;
+      this.drawn[name] = key;
+      this.path[name].setAttribute("d", points());
+    }
+
     draw(result, setting) {
       this.fit();
-      const { model, path } = this, base = TOP + MAIN, { diffuse, all, seen } = result.light;
-      const target = model.surfaces[result.pair.i].mean, background = model.surfaces[result.pair.j].mean;
+      const { model, largest: top } = this, base = TOP + MAIN, { diffuse, all, seen } = result.light;
+      const { i: one, j: other } = result.pair, target = model.surfaces[one].mean, back = model.surfaces[other].mean;
       const around = (i) => model.ambient[i] * setting.ambient_factor;
+      const difference = (i) => all[i] * (target[i] - back[i]);
       let brightest = 0, largest = 0;
-      for (let i = 0; i < diffuse.length; i++) {
+      for (let i = this.first; i <= this.last; i++) {
         brightest = Math.max(brightest, diffuse[i], around(i));
-        largest = Math.max(largest, Math.abs(all[i] * (target[i] - background[i])));
+        largest = Math.max(largest, Math.abs(difference(i)));
       }
-      path.light.setAttribute("d", this.closed((i) => diffuse[i], brightest, base, MAIN));
-      path.ambient.setAttribute("d", this.line(around, brightest, base, MAIN));
-      path.seen.setAttribute("d", this.line((i) => seen[i], this.largest, base, MAIN));
-      path.target.setAttribute("d", this.line((i) => target[i], this.largest, base, MAIN));
-      path.background.setAttribute("d", this.line((i) => background[i], this.largest, base, MAIN));
-      const zero = base + GAP + STRIP / 2, difference = (i) => all[i] * (target[i] - background[i]);
-      const above = (i) => Math.max(difference(i), 0), below = (i) => Math.min(difference(i), 0);
-      path.above.setAttribute("d", this.closed(above, largest, zero, STRIP / 2));
-      path.below.setAttribute("d", this.closed(below, largest, zero, STRIP / 2));
+      const { camera, channel, filter, f_number, ambient_factor } = setting;
+      const parts = JSON.stringify([camera, channel, filter, f_number]), zero = base + GAP + STRIP / 2;
+      this.put("light", null, () => this.closed((i) => diffuse[i], brightest, base, MAIN));
+      this.put("ambient", `${brightest} ${ambient_factor}`, () => this.line(around, brightest, base, MAIN));
+      this.put("seen", parts, () => this.line((i) => seen[i], top, base, MAIN));
+      this.put("target", one, () => this.line((i) => target[i], top, base, MAIN));
+      this.put("background", other, () => this.line((i) => back[i], top, base, MAIN));
+      this.put("above", null, () => this.closed((i) => Math.max(difference(i), 0), largest, zero, STRIP / 2));
+      this.put("below", null, () => this.closed((i) => Math.min(difference(i), 0), largest, zero, STRIP / 2));
     }
   }
 

@@ -58,8 +58,8 @@
     for (let i = 0; i < grid.length; i++) {
       const x = (grid[i] - shift - peak) / width, square = x * x;
       if (square >= 700) { out[i] = 0; continue; }
-      const g = Math.exp(-square);
-      out[i] = (density * (g + 2 * Math.pow(g, 5))) / 3;
+      const g = Math.exp(-square), g2 = g * g;
+      out[i] = (density * (g + 2 * g2 * g2 * g)) / 3;
     }
     return out;
   }

@@ -1,0 +1,128 @@
+"""For tests of the live page: a bare document around it, random settings, and what page and library make of them."""
+
+from __future__ import annotations
+
+import json
+import math
+from collections.abc import Iterator
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from codesign import evaluate
+from codesign.design import Design, Performance
+from codesign.problem import Problem
+from codesign.problem.schema import Temperature
+from codesign.report.house import css_properties
+from codesign.report.page.live import LiveFragment
+
+#: Escaped in the data, as the document does it.
+ESCAPED = {ord(c): f"\\u{ord(c):04x}" for c in "<>&\u2028\u2029"}
+
+
+def document(fragment: LiveFragment) -> str:
+    """A page that holds the live part and nothing else."""
+    data = json.dumps(fragment.data, ensure_ascii=False, allow_nan=False).translate(ESCAPED)
+    ground = "body{background:var(--paper);font:16px/1.45 sans-serif;margin:0 auto;max-width:76rem;padding:1rem}"
+    scripts = "".join(f"<script>{script}</script>" for script in fragment.scripts)
+    return (
+        '<!doctype html><html lang="en"><head><meta charset="utf-8"><title>Live page</title>'
+        '<meta name="viewport" content="width=device-width,initial-scale=1">'
+        f"<style>{css_properties()}{ground}{fragment.css}</style></head><body>{fragment.html}"
+        f'<script type="application/json" id="live-data">{data}</script>{scripts}</body></html>'
+    )
+
+
+def written(fragment: LiveFragment, folder: Path) -> Path:
+    """The same as a file."""
+    path = folder / "live.html"
+    path.write_text(document(fragment), encoding="utf-8")
+    return path
+
+
+def random_settings(problem: Problem, count: int, rng: np.random.Generator) -> Iterator[dict[str, Any]]:
+    """Settings of the page, most of them far from any limit's good side: any part, any drive, any surroundings."""
+    for _ in range(count):
+        camera = problem.cameras[rng.integers(len(problem.cameras))]
+        chosen = rng.choice(len(problem.channels), size=min(int(rng.integers(1, 7)), len(problem.channels)), replace=False)
+        leds = [problem.channels[k].led for k in chosen]
+        low, high = np.log(camera.exposure_min_us / 2), np.log(min(camera.exposure_max_us, 1e6) * 1.5)
+        home = rng.random() < 0.25
+        own = problem.spec.temperature
+        yield {
+            "camera": camera.id,
+            "channel": str(rng.choice(camera.channel_names)),
+            "gain_db": float(rng.choice([gain.gain_db for gain in offered_gains(problem, camera)])),
+            "filter": problem.filters[int(rng.integers(len(problem.filters)))].id,
+            "f_number": float(rng.choice(problem.spec.optics.f_numbers)),
+            "exposure_us": float(np.exp(rng.uniform(low, high))),
+            "drive_ma": {led.id: float(rng.uniform(0.0, led.largest_current_ma)) for led in leds},
+            "emitters": {},
+            "air_c": own.air_c if home else float(rng.uniform(-20, 80)),
+            "sensor_c": own.sensor_c if home else float(rng.uniform(-20, 90)),
+            "ambient_factor": 1.0 if home else float(rng.uniform(0, 4)),
+        }
+
+
+def offered_gains(problem: Problem, camera) -> list:
+    """Gains of a camera among the candidates."""
+    wanted = problem.spec.candidates.gains_db
+    return [gain for gain in camera.gain_settings() if wanted is None or gain.gain_db in wanted]
+
+
+def by_library(problem: Problem, setting: dict[str, Any]) -> Performance:
+    """What the library says of a setting of the page."""
+    temperature = Temperature(air_c=setting["air_c"], sensor_c=setting["sensor_c"])
+    spec = problem.spec.model_copy(update={"temperature": temperature})
+    there = replace(problem, spec=spec, ambient=problem.ambient * setting["ambient_factor"])
+    names = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "drive_ma", "emitters")
+    return evaluate(there, Design(**{name: setting[name] for name in names}))
+
+
+#: Evaluates settings in the page; infinities travel as text, and settings too: the driver would sort their keys.
+_EVALUATE = """
+const keep = (name, value) => name === 'light' || name === 'led' ? undefined
+  : typeof value === 'number' && !Number.isFinite(value) ? String(value) : value;
+return JSON.parse(arguments[0]).map((setting) => JSON.stringify(codesignLive.page.model.evaluate(setting), keep));
+"""
+
+
+def by_page(browser, settings: list[dict[str, Any]]) -> list[dict[str, Any]]:
+    """What the page that is open says of settings."""
+    return [json.loads(text) for text in browser.run(_EVALUATE, json.dumps(settings))]
+
+
+def differences(page: dict[str, Any], library: Performance) -> dict[str, float]:
+    """Relative differences of everything shown, the largest of each kind; names and order must agree."""
+    found = {"cnr": relative(page["cnr"], library.cnr), "error rate": relative(page["error_rate"], library.error_rate)}
+    assert page["sign"] == library.sign and len(page["pairs"]) == len(library.pairs)
+    kinds = {
+        "surfaces": (page["surfaces"], library.surfaces, ("led_e", "ambient_e", "dark_e", "grey_dn", "saturation_share")),
+        "limits": (page["limits"], library.limits, ("value", "bound", "share")),
+        "LEDs": (page["leds"], library.leds, ("drive_ma", "electrical_w", "optical_w", "junction_c", "emitters")),
+        "pairs": (page["pairs"], library.pairs, ("signal_e", "cnr")),
+    }
+    for kind, (own, others, fields) in kinds.items():
+        assert len(own) == len(others)
+        for mine, other in zip(own, others, strict=True):
+            same = ("id", "role", "name", "unit", "floor", "met", "target", "background")
+            assert all(mine[name] == getattr(other, name) for name in same if hasattr(other, name)), (mine, other)
+            for field in fields:
+                found[f"{kind} {field}"] = max(
+                    found.get(f"{kind} {field}", 0.0), relative(mine[field], getattr(other, field))
+                )
+    assert [term["name"] for term in page["noise"]] == list(library.noise)
+    for term in page["noise"]:
+        for side, value in zip(("target", "background"), library.noise[term["name"]], strict=True):
+            found["noise"] = max(found.get("noise", 0.0), relative(term[side], value))
+    return found
+
+
+def relative(own: float | str, other: float) -> float:
+    """Difference relative to the other."""
+    own = float(own.replace("Infinity", "inf")) if isinstance(own, str) else own
+    if own == other or (math.isinf(own) and math.isinf(other)):
+        return 0.0
+    return abs(own - other) / max(abs(other), 1e-300)
