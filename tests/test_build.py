@@ -115,3 +115,12 @@ def test_conflicts_and_unknown_names_are_said():
         solve(bruise(max_led_channels=1, must_have=leds))
     with pytest.raises(InfeasibleError, match="price"):
         solve(bruise(price_budget=10))
+
+
+@pytest.mark.parametrize(("demo", "price"), [("yellow-stain", 100.0), ("fast-web", 1460.0)])
+def test_money_for_the_camera_alone_leaves_ambient_light(demo, price):
+    problem = load_problem(demo)
+    build = problem.spec.build.model_copy(update={"price_budget": price})
+    solution = solve(replace(problem, spec=problem.spec.model_copy(update={"build": build})), alternatives=0)
+    assert not solution.recipe.leds and solution.recipe.cnr > 0
+    verify(solution)

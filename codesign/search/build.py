@@ -18,7 +18,7 @@ from codesign.build import Box, Units, tightened
 from codesign.certificate import Line, Proof
 from codesign.certificate_build import BuildLeaf, BuildSpace, BuildSplit, restricted
 from codesign.certificate_pairs import PairProof
-from codesign.program import Array, Program
+from codesign.program import Array, Program, contrast_to_noise
 from codesign.search import never
 from codesign.search.frontier import Certified, Hint, certify
 from codesign.search.pairs import CertifiedPairs, certify_pairs
@@ -163,12 +163,14 @@ class _Search:
         hint = None if node is None else _fitted(node.hint, node.names, small[0])
         own = self.gap * OWN_SHARE
         found = self.solve(small, own, max(self.value, self.target), hint)
-        if found.value > self.value:
-            self.value, self.units = found.value, units
-            self.point = np.zeros(self.programs[0].segments + 1)
-            if units.any():
-                self.point[keep[0]] = found.point[:-1]
-            self.point[-1] = found.point[-1]
+        point, value = np.zeros(self.programs[0].segments + 1), found.value
+        point[-1] = found.point[-1]
+        if units.any():
+            point[keep[0]] = found.point[:-1]
+        else:  # one column was kept for want of any; the dust of light in it is not there
+            value = min(float(contrast_to_noise(program, point[None])[0]) for program in self.programs)
+        if value > self.value:
+            self.value, self.units, self.point = value, units, point
 
     def branch(self, node: _Node) -> None:
         """Split a box at the LED that matters most."""
