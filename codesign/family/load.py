@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
@@ -59,6 +59,11 @@ class Family:
         if found is None:
             raise ProblemError(f"{self.where}: no variant {name!r}; {nearest(name, self.names)}")
         return found
+
+    def only(self, names: Iterable[str]) -> Family:
+        """Return the family with these variants alone. Raises ProblemError for a name that is none of them."""
+        wanted = {self.variant(name).name for name in names}
+        return replace(self, variants=tuple(variant for variant in self.variants if variant.name in wanted))
 
     def problem(self, variant: Variant | str) -> Problem:
         """Build the problem of one variant.

@@ -1,0 +1,101 @@
+"""Variants on an existing cluster of Dask workers, through its executor interface."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable
+from concurrent.futures import CancelledError, Future
+from typing import Any
+
+from codesign.errors import CodesignError
+from codesign.family.worker import run_task, run_task_elsewhere
+
+#: How to get the engine.
+INSTALL = "pip install 'codesign[cluster]'"
+#: A scheduler must answer within this time, and a cluster not be without workers for longer. [s]
+PATIENCE_SECONDS = 10.0
+DESERTED_SECONDS = 60.0
+
+
+class ClusterEngine:
+    """Workers of a scheduler at an address such as ``tcp://10.0.0.5:8786``."""
+
+    one_fate = False
+
+    def __init__(self, address: str) -> None:
+        self.address = address
+        self._client = _connected(address)
+        self.workers = max(sum(self._threads().values()), 1)
+        if not self._threads():
+            self._client.close()
+            raise CodesignError(
+                f"--scheduler {address}: no worker has joined it; start one with 'dask worker {address}'"
+            )
+        self._executor = self._client.get_executor(pure=False)
+        self._last_seen = time.monotonic()
+
+    def submit(self, function: Callable[[Any], Any], task: Any) -> Future:
+        """Send a task."""
+        return self._executor.submit(run_task_elsewhere if function is run_task else function, task)
+
+    def lost(self, error: BaseException) -> bool:
+        """The scheduler gives a task up after it ended several workers."""
+        return type(error).__name__ == "KilledWorker"
+
+    def renew(self) -> None:
+        """The scheduler sees to its workers."""
+
+    def check(self) -> None:
+        """Raise CodesignError when the scheduler is gone, or has been without workers for long."""
+        if self._client.status not in ("running", "connecting"):
+            raise self._gone()
+        if self._threads():
+            self._last_seen = time.monotonic()
+        elif time.monotonic() - self._last_seen > DESERTED_SECONDS:
+            raise CodesignError(
+                f"--scheduler {self.address}: has had no worker for {DESERTED_SECONDS:.0f} s; what is done is kept, "
+                "start workers and run the same command again"
+            )
+
+    def failed(self, error: BaseException) -> CodesignError | None:
+        """What the error of a task says about the cluster as a whole; None where nothing."""
+        if isinstance(error, CancelledError):
+            return self._gone()
+        if isinstance(error, ImportError):
+            return CodesignError(
+                f"--scheduler {self.address}: its workers cannot load codesign ({error}); install it there too"
+            )
+        return None
+
+    def close(self, *, now: bool = False) -> None:
+        """Leave the cluster; ``now`` takes back what it has not done."""
+        try:
+            self._executor.shutdown(wait=not now, cancel_futures=now)
+        finally:
+            self._client.close()
+
+    def _threads(self) -> dict[str, int]:
+        """Worker → threads."""
+        workers = self._client.scheduler_info(n_workers=-1).get("workers", {})
+        return {name: worker["nthreads"] for name, worker in workers.items()}
+
+    def _gone(self) -> CodesignError:
+        return CodesignError(
+            f"--scheduler {self.address}: the scheduler is gone; what is done is kept, run the same command again"
+        )
+
+
+def _connected(address: str):
+    """A client of the scheduler."""
+    try:
+        from distributed import Client
+    except ImportError:
+        raise CodesignError(f"--scheduler needs the package distributed; {INSTALL}") from None
+    try:
+        return Client(address, timeout=PATIENCE_SECONDS, set_as_default=False)
+    except (OSError, TimeoutError, ValueError) as error:
+        said = " ".join(str(error).split())[:120]
+        raise CodesignError(
+            f"--scheduler {address}: cannot be reached ({said}); give the address 'dask scheduler' shows, "
+            "e.g. tcp://10.0.0.5:8786"
+        ) from None
