@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field
 from typing import Any, Literal, Self
 
-from codesign.design import SurfaceReading
+from codesign.design import Performance, SurfaceReading
 from codesign.solve import Solution
 
 #: "solved"; "impossible": the limits cannot be met; "bad": its data or its run failed.
@@ -121,15 +121,27 @@ class Outcome:
 
 def outcome_of(solution: Solution, gap: float) -> Outcome:
     """Return what is kept of a solution found to a relative gap."""
-    recipe, design, certificate = solution.recipe, solution.recipe.design, solution.certificate
-    best = float(solution.optimum.cnr)
-    bound = max(float(certificate.bound), best)
+    certificate, best = solution.certificate, float(solution.optimum.cnr)
+    return outcome_with(
+        solution.recipe,
+        best_cnr=best,
+        bound=max(float(certificate.bound), best),
+        proven=solution.status == "proven" and certificate.gap <= gap,
+        binding=solution.binding,
+    )
+
+
+def outcome_with(
+    recipe: Performance, *, best_cnr: float, bound: float, proven: bool, binding: tuple[str, ...]
+) -> Outcome:
+    """Return the outcome that holds a recipe."""
+    design = recipe.design
     return Outcome(
         status="solved",
         cnr=float(recipe.cnr),
-        best_cnr=best,
+        best_cnr=best_cnr,
         bound=bound,
-        proven=solution.status == "proven" and certificate.gap <= gap,
+        proven=proven,
         camera=design.camera,
         channel=design.channel,
         gain_db=float(design.gain_db),
@@ -145,7 +157,7 @@ def outcome_of(solution: Solution, gap: float) -> Outcome:
         sign=recipe.sign,
         error_rate=float(recipe.error_rate),
         readings=tuple(Reading.of(reading) for reading in recipe.surfaces),
-        binding=solution.binding,
+        binding=binding,
     )
 
 

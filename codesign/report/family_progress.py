@@ -1,0 +1,65 @@
+"""How far a family is, on a terminal that somebody watches."""
+
+from __future__ import annotations
+
+import time
+
+from codesign.report.layout import bar
+from codesign.report.output import QUIET_SECONDS, Progress
+
+#: Cells of the bar.
+SIZE = 24
+#: Seconds between two lines, so that quick variants do not flood the terminal. [s]
+PACE_SECONDS = 0.1
+
+
+class FamilyProgress(Progress):
+    """A bar with the time that is left, estimated from the variants run so far."""
+
+    def __init__(self, stream=None) -> None:
+        super().__init__(stream)
+        self.last = 0.0
+
+    def __call__(self, done: int, total: int, failed: int, run: int) -> None:
+        """Show variants done of all, those that failed, and the time left.
+
+        ``run`` counts the variants run in this call of the program; the others were in the store.
+        """
+        now = time.monotonic()
+        seconds = now - self.started
+        if not self.watched or seconds < QUIET_SECONDS or (now - self.last < PACE_SECONDS and done < total):
+            return
+        self.last = now
+        line = family_line(done, total, failed, run, seconds)
+        self.stream.write("\r" + line.ljust(self.width))
+        self.stream.flush()
+        self.width = len(line)
+
+
+def family_line(done: int, total: int, failed: int, run: int, seconds: float) -> str:
+    """Return the line in words.
+
+    Examples
+    --------
+    >>> family_line(50, 200, 1, 40, 60.0)
+    '██████░░░░░░░░░░░░░░░░░░ 50 of 200 variants, 1 failed, 3:45 left'
+    """
+    parts = [f"{bar(done / max(total, 1), SIZE)} {done} of {total} variants"]
+    if failed:
+        parts.append(f"{failed} failed")
+    if run and done < total:
+        parts.append(f"{clock_time(seconds / run * (total - done))} left")
+    return ", ".join(parts)
+
+
+def clock_time(seconds: float) -> str:
+    """Return a duration as minutes and seconds, or hours, minutes and seconds.
+
+    Examples
+    --------
+    >>> clock_time(225.2), clock_time(3725)
+    ('3:46', '1:02:05')
+    """
+    whole = int(-(-seconds // 1))
+    hours, rest = divmod(whole, 3600)
+    return f"{hours}:{rest // 60:02d}:{rest % 60:02d}" if hours else f"{rest // 60}:{rest % 60:02d}"
