@@ -19,6 +19,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 from typer.core import TyperGroup
 
+from codesign.cli_family import family
 from codesign.cli_radiation import radiation
 from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
@@ -87,6 +88,7 @@ class SchemaKind(StrEnum):
 
     PROBLEM = "problem"
     RECIPE = "recipe"
+    FAMILY = "family"
 
 
 @app.callback(invoke_without_command=True)
@@ -204,24 +206,28 @@ def schema(kind: Annotated[SchemaKind, typer.Argument(help="Which file.")] = Sch
 
     Example: cnr schema > problem.schema.json
     """
+    from codesign.family.schema import json_schema as family_schema
     from codesign.problem import json_schema
     from codesign.report.machine import as_json
     from codesign.report.recipe_file import recipe_schema
 
-    _print(as_json(json_schema() if kind is SchemaKind.PROBLEM else recipe_schema()))
+    schemas = {SchemaKind.PROBLEM: json_schema, SchemaKind.RECIPE: recipe_schema, SchemaKind.FAMILY: family_schema}
+    _print(as_json(schemas[kind]()))
 
 
 @app.command()
 def demos() -> None:
-    """List the embedded demo problems.
+    """List the embedded demo problems and families.
 
     Example: cnr demos
     """
+    from codesign.family.files import demo_families
     from codesign.problem import demo_problems
     from codesign.report.layout import table
 
-    rows = [(demo.name, demo.title) for demo in demo_problems()]
-    _print("\n".join(table(("demo", "what it finds"), rows, 80, left=(0, 1))) + "\n")
+    lists = {("demo", "what it finds"): demo_problems(), ("family", "for 'cnr family'"): demo_families()}
+    tables = [table(head, [(d.name, d.title) for d in found], 80, left=(0, 1)) for head, found in lists.items()]
+    _print("\n\n".join("\n".join(lines) for lines in tables) + "\n")
 
 
 def _least(name: str, quantity: str, cnr: float | None, gap: float | None, time_limit: float | None) -> LeastCost:
@@ -307,6 +313,7 @@ app.command()(tolerance)
 app.command()(robust)
 app.command()(routes)
 app.command()(calibrate)
+app.command()(family)
 app.command()(radiation)
 
 
