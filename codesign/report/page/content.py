@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from codesign.design import Performance
 from codesign.limit_use import LimitUse
@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from codesign.least_cost import LeastCost
     from codesign.solve import Solution
     from codesign.study.sensitivity import Sensitivities
+    from codesign.study.trade import Trade
     from codesign.verify import Verdict
 
 
@@ -34,8 +35,8 @@ class Subject:
         The search that found it.
     verdict : Verdict, optional
     sensitivities : Sensitivities, optional
-    trade : object, optional
-        Trade-off curves of `codesign.study.trade`.
+    trade : tuple of Trade
+        Trade-off curves.
     cost : LeastCost, optional
         Where something else than the CNR was to be best.
     notes : mapping
@@ -53,7 +54,7 @@ class Subject:
     solution: Solution | None = None
     verdict: Verdict | None = None
     sensitivities: Sensitivities | None = None
-    trade: Any = None
+    trade: tuple[Trade, ...] = ()
     cost: LeastCost | None = None
     notes: dict[str, str]
     command: str = ""

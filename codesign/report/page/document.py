@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from functools import cache
 from importlib import resources
 from pathlib import Path
@@ -34,6 +34,7 @@ if TYPE_CHECKING:
     from codesign.report.page.live import LiveFragment
     from codesign.solve import Solution
     from codesign.study.sensitivity import Sensitivities
+    from codesign.study.trade import Trade
     from codesign.verify import Verdict
 
 #: In the order in which people ask; the live page follows those marked by its place.
@@ -41,8 +42,9 @@ BEFORE_LIVE: tuple[Callable[[Subject], Section | None], ...] = (
     sections_result.recipe,
     sections_result.result,
     sections_result.limits,
-    sections_result.noise,
     sections_proof.proof,
+    sections_result.noise,
+    sections_result.story,
 )
 AFTER_LIVE: tuple[Callable[[Subject], Section | None], ...] = (
     sections_study.sensitivities,
@@ -63,7 +65,7 @@ def report_html(
     *,
     verdict: Verdict | None = None,
     sensitivities: Sensitivities | None = None,
-    trade: Any = None,
+    trade: Sequence[Trade] = (),
     cost: LeastCost | None = None,
     notes: Mapping[str, str] | None = None,
     command: str = "",
@@ -79,12 +81,12 @@ def report_html(
         What `codesign.verify` returned, where it was run.
     sensitivities : Sensitivities, optional
         Of `codesign.sensitivities`.
-    trade : optional
+    trade : sequence of Trade
         Trade-off curves of `codesign.study.trade`.
     cost : LeastCost, optional
         Where the solution is that of `codesign.least_cost`.
     notes : mapping, optional
-        Why a section ("sensitivities", "trade") is not there.
+        Why a part ("sensitivities", "trade-off heat") is not there.
     command : str
         Command line that makes the report again.
     source : str
@@ -110,7 +112,7 @@ def report_html(
             solution=solution,
             verdict=verdict,
             sensitivities=sensitivities,
-            trade=trade,
+            trade=tuple(trade),
             cost=cost,
             notes=dict(notes or {}),
             command=command,

@@ -8,6 +8,8 @@ from codesign.report.page.content import Subject, misses, state
 from codesign.report.page.html import Content, Html, element, joined, name, paragraph, settings
 from codesign.report.page.sections_result import compared, currents, exposure, sign
 
+#: Losses below this are told as this. [1]
+LEAST_LOSS = 1e-6
 #: LEDs and limits named on the first screen; all are in their sections.
 AT_A_GLANCE = 4
 
@@ -110,7 +112,7 @@ def _sure_in_short(subject: Subject) -> Html:
         (
             paragraph(
                 state(*lead),
-                f": no other setting of the candidates gains more than {percent(loss)}."
+                f": no other setting of the candidates gains more than {percent(max(loss, LEAST_LOSS))}."
                 if loss > 0
                 else ": no other setting of the candidates is better.",
             ),

@@ -54,8 +54,9 @@ def assumptions(subject: Subject) -> Section:
     groups = [(title, list(_rows(getattr(spec, key), key))) for key, title in SECTIONS.items()]
     body = (
         paragraph(
-            "A figure in this report is as good as what stands here. ",
-            element("em", "Stated"),
+            "Every figure of this report is as good as what stands here. ",
+            "From ",
+            element("em", "file"),
             " means written in the problem file, ",
             element("em", "default"),
             " taken because the file says nothing.",
@@ -66,7 +67,7 @@ def assumptions(subject: Subject) -> Section:
         element("h3", "Light that reaches the object"),
         _delivery(subject),
         element("h3", "Stated in the problem, or taken by default"),
-        grouped_table("Every field that has a value", ("field", "value", "", "meaning"), groups, class_="fields"),
+        grouped_table("Every field that has a value", ("field", "value", "from", "meaning"), groups, class_="fields"),
     )
     return Section(id="assumptions", title="Assumptions", short="Assumptions", body=joined(body))
 
@@ -87,7 +88,7 @@ def _rows(record: BaseModel | None, prefix: str) -> Iterator[tuple[Content, ...]
             if isinstance(inner, BaseModel):
                 yield from _rows(inner, label)
             else:
-                origin = "stated" if stated else "default"
+                origin = "file" if stated else "default"
                 yield element("code", label), name(_shown(inner)), origin, _typeset(field.description or "")
 
 

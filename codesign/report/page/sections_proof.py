@@ -44,7 +44,7 @@ def _of_a_search(subject: Subject) -> list[Html]:
         ("recipe", f"CNR {number(solution.recipe.cnr, 6)} in settable steps, {below}"),
         (
             "before rounding",
-            f"CNR {number(certificate.value, 6)}; bound and value are {percent(certificate.gap)} apart",
+            f"CNR {number(certificate.value, 6)}; bound and value are {percent(certificate.gap, least=1e-6)} apart",
         ),
         (
             "searched",

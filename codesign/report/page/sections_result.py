@@ -60,7 +60,7 @@ def recipe(subject: Subject) -> Section:
         if leds
         else paragraph("All LEDs are off."),
         paragraph(download("Save as recipe file", text, "recipe.toml"), class_="actions"),
-        element("pre", lines(text.rstrip("\n")), class_="file"),
+        element("pre", lines(text.rstrip("\n")), class_="file whole"),
     )
     return Section(id="recipe", title="What to set", short="What to set", body=joined(body))
 
@@ -191,8 +191,8 @@ def limits(subject: Subject) -> Section:
     missed = [limit for limit in subject.performance.limits if not limit.met]
     body = (
         [paragraph(state("Not met", "missed"), ": ", name(limit.shortfall())) for limit in missed],
-        table("All limits, the most used first", header, rows, numbers=(1, 2, 3), class_="with-bars", wide=True),
         paragraph(note, class_="more") if subject.binding else None,
+        table("All limits, the most used first", header, rows, numbers=(1, 2, 3), class_="with-bars", wide=True),
         drawn(subject, "limits"),
     )
     return Section(id="limits", title="What limits it", short="Limits", body=joined(body))
@@ -243,6 +243,16 @@ def noise(subject: Subject) -> Section:
         drawn(subject, "noise"),
     )
     return Section(id="noise", title="Noise budget", short="Noise", body=joined(body))
+
+
+def story(subject: Subject) -> Section | None:
+    """Where contrast and noise come from, by wavelength; nothing without light."""
+    if not subject.performance.leds:
+        return None
+    body = drawn(subject, "story")
+    if body is None:
+        return None
+    return Section(id="story", title="Where the contrast comes from", short="By wavelength", body=body)
 
 
 #: What a practitioner can do about each source of noise.

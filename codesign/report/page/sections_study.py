@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING
+
 from codesign.report.layout import number
 from codesign.report.page.content import Section, Subject, quantity
 from codesign.report.page.figures import drawn
@@ -17,6 +19,12 @@ from codesign.report.sensitivity_text import (
     worst_end,
 )
 from codesign.study.sensitivity import LimitPrice, Sensitivities
+
+if TYPE_CHECKING:
+    from codesign.study.trade import Enough, Trade, TradePoint
+
+#: What a marked point of a trade-off curve is.
+MARKS = {"own": " (limit of the problem)", "enough": " (enough for the CNR required)"}
 
 
 def sensitivities(subject: Subject) -> Section | None:
@@ -125,12 +133,57 @@ def _missed(found: Sensitivities) -> Html | None:
 
 
 def trade(subject: Subject) -> Section | None:
-    """Best CNR against what it costs."""
-    if subject.trade is None:
-        return _absent(subject, "trade", "Trade-offs")
-    from codesign.report.page.trade import trade_body
+    """Best CNR against what it costs, one curve after another; nothing where no curve was asked for."""
+    failed = [
+        (key.removeprefix("trade-off "), why) for key, why in subject.notes.items() if key.startswith("trade-off")
+    ]
+    if not subject.trade and not failed:
+        return None
+    body = (
+        paragraph(
+            "Each point is the best recipe there is when the quantity is held to what the point uses, found and proven "
+            "like the one above; the limit the problem itself sets on it is put aside."
+        ),
+        drawn(subject, "trade") if subject.trade else None,
+        (_curve(curve) for curve in subject.trade),
+        (paragraph(f"No curve against {name_}: ", name(why), ".") for name_, why in failed),
+    )
+    return Section(id="trade", title="Trade-offs", short="Trade-offs", body=joined(body))
 
-    return Section(id="trade", title="Trade-offs", short="Trade-offs", body=trade_body(subject))
+
+def _curve(curve: Trade) -> Html:
+    label, unit = curve.quantity.label, curve.quantity.unit
+    header = (label, "CNR", "proven: none above", "recipe in steps", "parts", "LEDs lit")
+    rows = [
+        (
+            (quantity(point.used, unit), MARKS.get(point.mark)),
+            number(point.optimum.cnr),
+            number(point.optimum.bound),
+            number(point.recipe_cnr),
+            (name(point.optimum.camera), ", ", name(point.optimum.filter), f", f/{point.optimum.f_number:g}"),
+            _lit(point),
+        )
+        for point in curve.possible
+    ]
+    return joined(
+        (
+            element("h3", f"CNR against {label}"),
+            listed(_enough(curve, wanted) for wanted in (curve.enough, curve.most) if wanted is not None),
+            table(f"Best CNR for each {label}", header, rows, numbers=(1, 2, 3), wide=True),
+        )
+    )
+
+
+def _lit(point: TradePoint) -> Content:
+    return [(", " if k else "", name(led)) for k, led in enumerate(point.optimum.drive_ma)]
+
+
+def _enough(curve: Trade, wanted: Enough) -> str:
+    label, unit = curve.quantity.label, curve.quantity.unit
+    if not wanted.reached:
+        return f"CNR {number(wanted.cnr)} is out of reach, whatever the {label}."
+    said = f"CNR {number(wanted.cnr)} is reached with {label} {quantity(wanted.value, unit)}"
+    return said + (f"; none does with {quantity(wanted.bound, unit)} or less." if wanted.bound > 0 else ".")
 
 
 def _absent(subject: Subject, key: str, title: str) -> Section | None:
