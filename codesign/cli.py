@@ -21,6 +21,7 @@ from typer.core import TyperGroup
 
 from codesign.cli_family import family
 from codesign.cli_radiation import radiation
+from codesign.cli_report import Quick, Report, TradeOff, require_page, write_check_page, write_solution_page
 from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
 from codesign.cli_tolerance import robust, tolerance
@@ -102,6 +103,7 @@ def main(version: Annotated[bool, typer.Option("--version", help="Show the versi
 
 @app.command()
 def solve(
+    context: typer.Context,
     problem: ProblemFile,
     json: AsJson = False,
     recipe: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the recipe here, for 'cnr check'.")] = None,
@@ -120,6 +122,9 @@ def solve(
     cnr: Annotated[
         float | None, typer.Option(metavar="CNR", help="CNR required with --least; by default required_cnr.")
     ] = None,
+    report: Report = None,
+    quick: Quick = False,
+    trade_off: TradeOff = None,
 ) -> None:
     """Find the recipe of greatest CNR, with its proof.
 
@@ -127,6 +132,7 @@ def solve(
     cnr solve yellow-stain --least heat --cnr 4
     """
     cost = None
+    require_page(report, quick=quick, trade_off=trade_off)
     if least is None and cnr is not None:
         raise ProblemError(f"--cnr {cnr:g} belongs to --least; for the greatest CNR set required_cnr in the problem")
     if least is None:
@@ -135,18 +141,25 @@ def solve(
         cost = _least(problem, least, cnr, gap, time_limit)
         solution = cost.solution
     found = _sensitivities(solution, least) if sensitivities else None
-    _show_solution(solution, _verified(solution) if verify else None, json=json, cost=cost, sensitivities=found)
+    verdict = _verified(solution) if verify else None
+    _show_solution(solution, verdict, json=json, cost=cost, sensitivities=found)
     if recipe is not None:
         from codesign.report.recipe_file import write_recipe
 
         write_recipe(solution, recipe)
+    if report is not None:
+        write_solution_page(
+            context, report, solution, verdict=verdict, found=found, cost=cost, quick=quick, trade_off=trade_off
+        )
 
 
 @app.command()
 def check(
+    context: typer.Context,
     problem: ProblemFile,
     recipe: Annotated[Path, typer.Argument(metavar="RECIPE", help="Recipe file; 'cnr solve --recipe' writes one.")],
     json: AsJson = False,
+    report: Report = None,
 ) -> None:
     """Predict what a recipe does and which limits it misses.
 
@@ -157,10 +170,13 @@ def check(
     from codesign.report import machine, text
     from codesign.report.recipe_file import load_recipe
 
+    require_page(report)
     loaded = load_problem(problem)
     result = evaluate(loaded, load_recipe(recipe))
     table = machine.as_json(machine.performance_dict(loaded, result)) if json else None
     _print(table or text.performance_text(loaded, result))
+    if report is not None:
+        write_check_page(context, report, loaded, result)
     if not result.feasible:
         raise InfeasibleError(f"{recipe}: {'; '.join(limit.shortfall() for limit in result.violated)}")
 
