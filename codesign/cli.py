@@ -41,6 +41,10 @@ INTERRUPTED = 130
 class _Commands(TyperGroup):
     """All commands, with errors translated in this one place; bugs keep their traceback."""
 
+    def make_context(self, info_name: str | None, args: list[str], parent: Any = None, **extra: Any) -> Any:
+        with _translated():
+            return super().make_context(info_name, args, parent, **extra)
+
     def invoke(self, ctx: Any) -> Any:
         with _translated():
             return super().invoke(ctx)
@@ -52,7 +56,9 @@ def _translated() -> Iterator[None]:
         yield
         sys.stdout.flush()
     except CodesignError as error:
-        typer.echo(f"cnr: {' '.join(str(error).split())}", err=True)
+        from codesign.report.output import plain
+
+        typer.echo(f"cnr: {plain(str(error))}", err=True)
         raise typer.Exit(error.exit_code) from None
     except KeyboardInterrupt:
         typer.echo("cnr: interrupted", err=True)
@@ -60,6 +66,16 @@ def _translated() -> Iterator[None]:
     except BrokenPipeError:
         # The reader has seen enough; keep the interpreter from flushing into nowhere on its way out.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    except Exception as error:
+        from codesign.cli_usage import usage_line
+
+        line = usage_line(error)
+        if line is None:
+            raise
+        from codesign.report.output import plain
+
+        typer.echo(plain(line), err=True)
+        raise typer.Exit(2) from None
 
 
 app = typer.Typer(
@@ -210,10 +226,10 @@ def new(
     """
     from importlib.resources import files
 
-    from codesign.report.output import write_file
+    from codesign.report.output import plain, write_file
 
     write_file(file, (files("codesign") / "data" / "new_problem.toml").read_bytes(), overwrite=force)
-    _print(f"wrote {file}; next: cnr solve {file}\n")
+    _print(f"wrote {plain(str(file))}; next: cnr solve {plain(str(file))}\n")
 
 
 @app.command()

@@ -11,7 +11,7 @@ import typer
 
 def radiation(
     problem: Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")],
-    recipe: Annotated[Path | None, typer.Argument(metavar="[RECIPE]", help="Recipe file; the best by default.")] = None,
+    recipe: Annotated[Path | None, typer.Argument(metavar="RECIPE", help="Recipe file; the best by default.")] = None,
     distance_mm: Annotated[float, typer.Option(metavar="MM", help="From the emitters to the eye.")] = 200.0,
     json: Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")] = False,
 ) -> None:

@@ -60,7 +60,9 @@ def calibrate(
     _print(as_json(calibration_dict(found)) if json else calibration_text(found))
     if update is not None:
         changed = write_calibrated(found, problem, update)
-        typer.echo(f"wrote {update}: delivery of {', '.join(changed)}", err=True)
+        from codesign.report.output import plain
+
+        typer.echo(f"wrote {plain(str(update))}: delivery of {', '.join(changed)}", err=True)
 
 
 def _say(text: str) -> None:

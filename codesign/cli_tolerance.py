@@ -15,7 +15,7 @@ _Seed = Annotated[int, typer.Option(metavar="S", help="The same seed gives the s
 
 def tolerance(
     problem: _Problem,
-    recipe: Annotated[Path | None, typer.Argument(metavar="[RECIPE]", help="Recipe file; the best by default.")] = None,
+    recipe: Annotated[Path | None, typer.Argument(metavar="RECIPE", help="Recipe file; the best by default.")] = None,
     draws: Annotated[int, typer.Option(metavar="N", help="Rigs to draw.")] = 10_000,
     seed: _Seed = 1,
     required: Annotated[float | None, typer.Option(metavar="CNR", help="CNR a rig must reach.")] = None,

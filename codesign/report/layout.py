@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import textwrap
+import unicodedata
 from collections.abc import Container, Sequence
 
 #: Narrowest page a report is laid out for. [characters]
@@ -11,22 +12,70 @@ NARROWEST = 60
 LABEL = 12
 
 
+def visible(text: str) -> str:
+    """Return the text with every control or direction character turned into a space: it cannot leave its place."""
+    return text if text.isprintable() else "".join(c if c.isprintable() else " " for c in text)
+
+
+def columns(text: str) -> int:
+    """Return the columns of a terminal that a text takes: wide letters take two, accents set on others none."""
+    return len(text) if text.isascii() else sum(map(_columns_of, text))
+
+
+def _columns_of(character: str) -> int:
+    if unicodedata.category(character) in ("Mn", "Me"):
+        return 0
+    return 2 if unicodedata.east_asian_width(character) in "WF" else 1
+
+
+def cut(text: str, size: int) -> str:
+    """Return the text, cut with an ellipsis where it takes more than ``size`` columns."""
+    if columns(text) <= size:
+        return text
+    kept, used = [], 0
+    for character in text:
+        used += _columns_of(character)
+        if used > size - 1:
+            break
+        kept.append(character)
+    return "".join(kept).rstrip() + "…"
+
+
+def wrap(text: str, size: int) -> list[str]:
+    """Return the text in lines of at most ``size`` columns, broken at spaces, else inside a word."""
+    text = visible(text)
+    if columns(text) == len(text):
+        return textwrap.wrap(text, size, break_on_hyphens=False)
+    lines = [""]
+    for word in text.split():
+        joined = f"{lines[-1]} {word}" if lines[-1] else word
+        if columns(joined) <= size:
+            lines[-1] = joined
+            continue
+        lines += [""] if lines[-1] else []
+        for character in word:
+            if columns(lines[-1] + character) > size:
+                lines.append("")
+            lines[-1] += character
+    return lines if any(lines) else []
+
+
 def heading(title: str, width: int) -> str:
     """Return a section title with a rule to the right edge."""
-    return f"─ {title.upper()} ".ljust(width, "─")
+    text = f"─ {cut(visible(title).upper(), width - 4)} "
+    return text + "─" * (width - columns(text))
 
 
 def labelled(label: str, text: str, width: int) -> list[str]:
     """Return a label and its text, wrapped with a hanging indent."""
-    lines = textwrap.wrap(text, width - LABEL - 1, break_on_hyphens=False) or [""]
+    lines = wrap(text, width - LABEL - 1) or [""]
     first, *rest = lines
     return [f" {label:<{LABEL - 1}} {first}".rstrip(), *(" " * (LABEL + 1) + line for line in rest)]
 
 
 def bullet(text: str, width: int) -> list[str]:
     """Return a wrapped list entry."""
-    lines = textwrap.wrap(text, width - 3, break_on_hyphens=False)
-    return [f" - {line}" if index == 0 else f"   {line}" for index, line in enumerate(lines)]
+    return [f" - {line}" if index == 0 else f"   {line}" for index, line in enumerate(wrap(text, width - 3))]
 
 
 def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left: Container[int] = (0,)) -> list[str]:
@@ -34,8 +83,8 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left
 
     A cell that would push the line over the edge is cut with an ellipsis, the widest column first.
     """
-    cells = [list(header), *(list(row) for row in rows)]
-    sizes = [max(len(row[k]) for row in cells) for k in range(len(header))]
+    cells = [[visible(cell) for cell in row] for row in (header, *rows)]
+    sizes = [max(columns(row[k]) for row in cells) for k in range(len(header))]
     while sum(sizes) + 2 * len(sizes) > width and max(sizes) > 8:
         sizes[sizes.index(max(sizes))] -= 1
     lines = []
@@ -46,9 +95,9 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left
 
 
 def _fit(cell: str, size: int, *, flush_left: bool) -> str:
-    if len(cell) > size:
-        cell = cell[: size - 1] + "…"
-    return cell.ljust(size) if flush_left else cell.rjust(size)
+    cell = cut(cell, size)
+    room = " " * (size - columns(cell))
+    return cell + room if flush_left else room + cell
 
 
 def bar(share: float, size: int) -> str:

@@ -62,6 +62,7 @@ from __future__ import annotations
 
 import json
 import math
+import re
 from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
@@ -77,6 +78,7 @@ if TYPE_CHECKING:
 SOLUTION_SCHEMA = "codesign.solution/1"
 PERFORMANCE_SCHEMA = "codesign.performance/1"
 
+_BEYOND_ASCII = re.compile(r"[^\x00-\x7f]+")
 _PROOF = ("gap", "configurations", "refined", "certified", "junction_residual_k", "cnr_residual", "forward_residual")
 
 
@@ -120,8 +122,16 @@ def performance_dict(problem: Problem, performance: Performance) -> dict[str, An
 
 
 def as_json(table: Any) -> str:
-    """Return indented JSON text with a final line end; refuses numbers JSON does not have."""
-    return json.dumps(table, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+    """Return indented JSON text with a final line end; refuses numbers JSON does not have.
+
+    Characters that do not show (control, direction) are escaped, so that the text is safe to print as well.
+    """
+    text = json.dumps(table, indent=2, ensure_ascii=False, allow_nan=False)
+    return _BEYOND_ASCII.sub(_escaped, text).replace("\x7f", "\\u007f") + "\n"
+
+
+def _escaped(found: re.Match[str]) -> str:
+    return "".join(c if c.isprintable() else json.dumps(c)[1:-1] for c in found.group())
 
 
 def _problem(problem: Problem) -> dict[str, Any]:

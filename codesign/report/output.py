@@ -7,9 +7,13 @@ import sys
 import tempfile
 import time
 from pathlib import Path
-from typing import TextIO
+from typing import TYPE_CHECKING, TextIO
 
 from codesign.errors import CodesignError
+from codesign.report.layout import visible
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 #: How special characters of a report read where only ASCII can be shown.
 ASCII = str.maketrans(
@@ -19,6 +23,9 @@ ASCII = str.maketrans(
         "√": "sqrt", "¼": "(1/4)", "¾": "(3/4)", "³": "3",
     }
 )  # fmt: skip
+
+#: What makes a spreadsheet take a cell for a formula.
+FORMULA_STARTS = ("=", "+", "-", "@")
 
 #: A search shorter than this shows no progress. [s]
 QUIET_SECONDS = 0.5
@@ -30,7 +37,11 @@ def as_ascii(text: str) -> str:
 
 
 def shown(text: str, encoding: str | None) -> str:
-    """Return the text as it is where the encoding can show it, else in ASCII."""
+    """Return the text as it is where the encoding can show it, else in ASCII; never with control characters.
+
+    Whatever a name holds, nothing but characters that show and line ends reaches a terminal.
+    """
+    text = "\n".join(map(visible, text.split("\n")))
     try:
         text.encode(encoding or "ascii")
     except (UnicodeEncodeError, LookupError):
@@ -40,7 +51,22 @@ def shown(text: str, encoding: str | None) -> str:
 
 def plain(text: str) -> str:
     """Return words typed by someone else on one line, without control or direction characters."""
-    return " ".join("".join(c if c.isprintable() else " " for c in text).split())
+    return " ".join(visible(text).split())
+
+
+def csv_text(table: pd.DataFrame) -> str:
+    """Return a table as CSV text that a spreadsheet shows and never computes.
+
+    A cell or column name in words that starts with one of `FORMULA_STARTS` gets an apostrophe in front; numbers stay as
+    they are. Words are on one line, without control or direction characters.
+    """
+    words = table.rename(columns=lambda name: _cell(str(name))).map(lambda v: _cell(v) if isinstance(v, str) else v)
+    return words.to_csv(index=False, lineterminator="\n")
+
+
+def _cell(text: str) -> str:
+    text = plain(text)
+    return f"'{text}" if text.startswith(FORMULA_STARTS) else text
 
 
 def write_file(path: str | Path, content: str | bytes, *, overwrite: bool = True) -> None:

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Callable, Iterable, Mapping
 from typing import Any
 
 from codesign.catalog import Camera, Catalog, Filter, Led, Part, Surface, select
 from codesign.errors import CatalogError, nearest
-from codesign.report.layout import NARROWEST, bullet, labelled, number, table
+from codesign.report.layout import NARROWEST, bullet, labelled, number, table, wrap
 from codesign.report.machine import as_json
 from codesign.report.output import plain
 
@@ -96,7 +95,7 @@ def _key_lines(key: str, value: Any, width: int) -> list[str]:
         entries = [plain(", ".join(f"{inner} = {text}" for inner, text in _flat(record).items())) for record in value]
         return [f"   {key}", *("  " + line for entry in entries for line in bullet(entry, width - 2))]
     head = f"   {key:<{KEY}} "
-    first, *rest = textwrap.wrap(plain(str(value)), width - len(head), break_on_hyphens=False) or [""]
+    first, *rest = wrap(plain(str(value)), width - len(head)) or [""]
     return [head + first, *(" " * len(head) + line for line in rest)]
 
 

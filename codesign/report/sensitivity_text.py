@@ -79,7 +79,7 @@ def sensitivity_text(found: Sensitivities, width: int = 80) -> str:
     """
     width = max(width, NARROWEST)
     title = labelled("title", plain(found.problem.spec.title), width)
-    title += labelled("optimum", f"CNR {number(found.cnr)}, {found.configuration}", width)
+    title += labelled("optimum", f"CNR {number(found.cnr)}, {plain(found.configuration)}", width)
     blocks = [title, _prices(found, width), _elasticities(found, width), _changes(found, width), _missed(found, width)]
     return "\n\n".join("\n".join(block) for block in blocks if block) + "\n"
 

@@ -6,7 +6,7 @@ from pathlib import Path
 
 from codesign.errors import CodesignError
 from codesign.report.machine import as_json
-from codesign.report.output import write_file
+from codesign.report.output import csv_text, write_file
 from codesign.report.study_dict import variation_dict, worth_dict
 from codesign.report.study_text import variation_text, worth_text
 from codesign.report.vary_figure import figure_format, variation_figure
@@ -35,6 +35,6 @@ def check_targets(csv: Path | None, figure: Path | None = None) -> None:
 def save(found: Variation | Worths, csv: Path | None, figure: Path | None = None) -> None:
     """Write table and figure where asked for."""
     if csv is not None:
-        write_file(csv, found.table().to_csv(index=False))
+        write_file(csv, csv_text(found.table()))
     if figure is not None:
         write_file(figure, variation_figure(found, figure_format(figure)))

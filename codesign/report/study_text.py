@@ -32,7 +32,7 @@ def variation_text(found: Variation, width: int = 80) -> str:
     lines = [heading(plain(found.title), width)]
     lines += labelled("as it is", _sentence(found.base), width)
     for key, value in found.settings.items():
-        lines += labelled("set", f"{key} = {shown_value(value)}", width)
+        lines += labelled("set", f"{plain(key)} = {shown_value(value)}", width)
     if found.required_cnr is not None:
         lines += labelled("required", f"CNR {found.required_cnr:g}", width)
     body = _map(found, letters, width) if len(found.axes) == 2 else _rows(found, letters, width)
@@ -64,12 +64,12 @@ def shown_value(value: Any) -> str:
         return str(value).lower()
     if isinstance(value, int | float):
         return number(value, 5)
-    return ", ".join(map(str, value)) if isinstance(value, list | tuple) else plain(str(value))
+    return plain(", ".join(map(str, value)) if isinstance(value, list | tuple) else str(value))
 
 
 def configuration_words(point: Point) -> str:
     """Camera, filter and LEDs of a point in words."""
-    channel = "" if point.channel == "mono" else f" ({point.channel})"
+    channel = "" if point.channel == "mono" else f" ({plain(point.channel)})"
     part = "no filter" if point.filter == "none" else point.filter
     return f"{point.camera}{channel}, {part}, {' + '.join(point.leds) or 'no LED'}"
 

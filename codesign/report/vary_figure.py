@@ -6,6 +6,7 @@ by colour alone; the map's colours run evenly in lightness.
 
 from __future__ import annotations
 
+import warnings
 from io import BytesIO
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -13,6 +14,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from codesign.errors import ProblemError
+from codesign.report.layout import cut
+from codesign.report.output import plain
 from codesign.report.study_text import configuration_letters, configuration_words, shown_value
 from codesign.study.fields import Axis
 from codesign.study.vary import Variation
@@ -29,8 +32,11 @@ STYLE = {
     "font.family": "DejaVu Sans", "font.size": 9, "axes.spines.top": False, "axes.spines.right": False,
     "axes.linewidth": 0.8, "axes.titlesize": 10, "axes.titlelocation": "left", "legend.frameon": False,
     "legend.fontsize": 8, "svg.hashsalt": "codesign", "svg.fonttype": "none", "savefig.dpi": 200,
+    "text.parse_math": False,
 }  # fmt: skip
 INK, PALE = "#1a1a1a", "#8c8c8c"
+#: Longest title. [characters]
+TITLE = 64
 #: Configurations listed beside a figure.
 LISTED = 10
 
@@ -54,12 +60,14 @@ def variation_figure(found: Variation, form: str = "svg") -> bytes:
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.figure import Figure
 
-    with mpl.rc_context(STYLE):
+    with mpl.rc_context(STYLE), warnings.catch_warnings():
+        # A problem may be named in any script; what the font lacks is a box in print and right in SVG text.
+        warnings.filterwarnings("ignore", message=r"Glyph .* missing from font", category=UserWarning)
         figure = Figure(figsize=(6.4, 4.4), layout="constrained")
         FigureCanvasAgg(figure)  # draws without a display
         axes = figure.add_subplot()
         (_draw_map if len(found.axes) == 2 else _draw_line)(figure, axes, found)
-        axes.set_title(found.title, color=INK)
+        axes.set_title(cut(plain(found.title), TITLE), color=INK)
         content = BytesIO()
         metadata = {"svg": {"Date": None}, "pdf": {"CreationDate": None}}.get(form)
         figure.savefig(content, format=form, metadata=metadata)
