@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 
 from codesign import evaluate
-from codesign.design import Design, Performance
+from codesign.design import Design, Performance, Shot
 from codesign.problem import Problem
 from codesign.problem.schema import Temperature
 from codesign.report.house import css_properties
@@ -44,30 +44,54 @@ def written(fragment: LiveFragment, folder: Path) -> Path:
 
 def random_settings(problem: Problem, count: int, rng: np.random.Generator) -> Iterator[dict[str, Any]]:
     """Settings of the page, most of them far from any limit's good side: any part, any drive, any surroundings."""
+    shots, own = problem.spec.detection.shots, problem.spec.temperature
     for _ in range(count):
         camera = problem.cameras[rng.integers(len(problem.cameras))]
-        chosen = rng.choice(len(problem.channels), size=min(int(rng.integers(1, 7)), len(problem.channels)), replace=False)
-        leds = [problem.channels[k].led for k in chosen]
-        low, high = np.log(camera.exposure_min_us / 2), np.log(min(camera.exposure_max_us, 1e6) * 1.5)
+        names = _channels(problem, camera)
+        parts = [(_exposure(camera, rng), _drives(problem, rng)) for _ in range(shots)]
         home = rng.random() < 0.25
-        own = problem.spec.temperature
         yield {
             "camera": camera.id,
-            "channel": str(rng.choice(camera.channel_names)),
-            "gain_db": float(rng.choice([gain.gain_db for gain in offered_gains(problem, camera)])),
+            "channel": "+".join(names) if problem.spec.detection.combine_channels else str(rng.choice(names)),
+            "gain_db": float(rng.choice([gain.gain_db for gain in _gains(problem, camera)])),
             "filter": problem.filters[int(rng.integers(len(problem.filters)))].id,
             "f_number": float(rng.choice(problem.spec.optics.f_numbers)),
-            "exposure_us": float(np.exp(rng.uniform(low, high))),
-            "drive_ma": {led.id: float(rng.uniform(0.0, led.largest_current_ma)) for led in leds},
-            "emitters": {},
+            "exposure_us": sum(exposure for exposure, _ in parts),
+            "drive_ma": parts[0][1] if shots == 1 else {},
+            "emitters": _emitters(problem, parts, rng),
+            "shots": [{"exposure_us": e, "drive_ma": drives} for e, drives in parts] if shots > 1 else [],
             "air_c": own.air_c if home else float(rng.uniform(-20, 80)),
             "sensor_c": own.sensor_c if home else float(rng.uniform(-20, 90)),
             "ambient_factor": 1.0 if home else float(rng.uniform(0, 4)),
         }
 
 
-def offered_gains(problem: Problem, camera) -> list:
-    """Gains of a camera among the candidates."""
+def _exposure(camera, rng: np.random.Generator) -> float:
+    """From below the camera's shortest to beyond its longest. [us]"""
+    low, high = camera.exposure_min_us / 2, min(camera.exposure_max_us, 1e6) * 1.5
+    return float(np.exp(rng.uniform(np.log(low), np.log(high))))
+
+
+def _drives(problem: Problem, rng: np.random.Generator) -> dict[str, float]:
+    """One to six LEDs at any current. [mA]"""
+    count = min(int(rng.integers(1, 7)), len(problem.channels))
+    leds = [problem.channels[k].led for k in rng.choice(len(problem.channels), size=count, replace=False)]
+    return {led.id: float(rng.uniform(0.0, led.largest_current_ma)) for led in leds}
+
+
+def _emitters(problem: Problem, parts: list, rng: np.random.Generator) -> dict[str, int]:
+    if problem.spec.build.emitters == "fixed":
+        return {}
+    lit = {led for _, drives in parts for led in drives}
+    return {led: int(rng.integers(1, problem.channel(led).emitters + 1)) for led in lit if rng.random() < 0.7}
+
+
+def _channels(problem: Problem, camera) -> list[str]:
+    wanted = problem.spec.candidates.channels
+    return [name for name in camera.channel_names if wanted == "all" or name in wanted]
+
+
+def _gains(problem: Problem, camera) -> list:
     wanted = problem.spec.candidates.gains_db
     return [gain for gain in camera.gain_settings() if wanted is None or gain.gain_db in wanted]
 
@@ -78,12 +102,13 @@ def by_library(problem: Problem, setting: dict[str, Any]) -> Performance:
     spec = problem.spec.model_copy(update={"temperature": temperature})
     there = replace(problem, spec=spec, ambient=problem.ambient * setting["ambient_factor"])
     names = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "drive_ma", "emitters")
-    return evaluate(there, Design(**{name: setting[name] for name in names}))
+    shots = tuple(Shot(**shot) for shot in setting["shots"])
+    return evaluate(there, Design(**{name: setting[name] for name in names}, shots=shots))
 
 
 #: Evaluates settings in the page; infinities travel as text, and settings too: the driver would sort their keys.
 _EVALUATE = """
-const keep = (name, value) => name === 'light' || name === 'led' ? undefined
+const keep = (name, value) => ['light', 'led', 'level', 'picture'].includes(name) ? undefined
   : typeof value === 'number' && !Number.isFinite(value) ? String(value) : value;
 return JSON.parse(arguments[0]).map((setting) => JSON.stringify(codesignLive.page.model.evaluate(setting), keep));
 """
@@ -98,8 +123,9 @@ def differences(page: dict[str, Any], library: Performance) -> dict[str, float]:
     """Relative differences of everything shown, the largest of each kind; names and order must agree."""
     found = {"cnr": relative(page["cnr"], library.cnr), "error rate": relative(page["error_rate"], library.error_rate)}
     assert page["sign"] == library.sign and len(page["pairs"]) == len(library.pairs)
+    electrons = ("led_e", "ambient_e", "dark_e", "grey_dn", "saturation_share")
     kinds = {
-        "surfaces": (page["surfaces"], library.surfaces, ("led_e", "ambient_e", "dark_e", "grey_dn", "saturation_share")),
+        "surfaces": (page["surfaces"], library.surfaces, electrons),
         "limits": (page["limits"], library.limits, ("value", "bound", "share")),
         "LEDs": (page["leds"], library.leds, ("drive_ma", "electrical_w", "optical_w", "junction_c", "emitters")),
         "pairs": (page["pairs"], library.pairs, ("signal_e", "cnr")),
@@ -114,6 +140,9 @@ def differences(page: dict[str, Any], library: Performance) -> dict[str, float]:
                     found.get(f"{kind} {field}", 0.0), relative(mine[field], getattr(other, field))
                 )
     assert [term["name"] for term in page["noise"]] == list(library.noise)
+    assert list(page["weights"]) == list(library.weights)
+    for name, weight in library.weights.items():
+        found["weights"] = max(found.get("weights", 0.0), abs(page["weights"][name] - weight))
     for term in page["noise"]:
         for side, value in zip(("target", "background"), library.noise[term["name"]], strict=True):
             found["noise"] = max(found.get("noise", 0.0), relative(term[side], value))

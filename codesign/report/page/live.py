@@ -18,16 +18,15 @@ if TYPE_CHECKING:
     from codesign.solve import Solution
 
 #: In the order in which they run.
-SCRIPTS = ("model.js", "model_limits.js", "live_text.js", "live_plots.js", "live_controls.js", "live.js")
+SCRIPTS = (
+    "model_light.js", "model.js", "model_limits.js", "model_combined.js",
+    "live_text.js", "live_plots.js", "live_controls.js", "live_show.js", "live.js",
+)  # fmt: skip
 
-_LEFT_OUT = '<section class="live" id="live"><h2>Try it</h2><p class="live-none">{}</p></section>'
-_COMBINED = (
-    "The page to play with shows single readings. This problem combines several with weights, so it is left out here; "
-    "<code>cnr check</code> tells what any recipe does."
-)
-_TOO_LARGE = (
-    "The page to play with is left out here: the measured samples of the surfaces take more room than a file to be "
-    "mailed can have. <code>cnr check</code> tells what any recipe does."
+_LEFT_OUT = (
+    '<section class="live" id="live"><h2>Try it</h2><p class="live-none">The page to play with is left out here: its '
+    "data would take more room than a file to be mailed can have. <code>cnr check</code> tells what a recipe does.</p>"
+    "</section>"
 )
 
 
@@ -51,15 +50,13 @@ def live_fragment(solution: Solution) -> LiveFragment:
     Returns
     -------
     LiveFragment
-        Colours are the custom properties of `codesign.report.house.css_properties`. Where readings are combined, or the
-        data would not fit, one line says so and there are no scripts.
+        Colours are the custom properties of `codesign.report.house.css_properties`. Where the data would not fit, one
+        line says so and there are no scripts.
     """
     css = _asset("live.css")
-    if solution.problem.combined:
-        return LiveFragment(html=_LEFT_OUT.format(_COMBINED), css=css)
     kept = kept_parts(solution)
     if kept is None:
-        return LiveFragment(html=_LEFT_OUT.format(_TOO_LARGE), css=css)
+        return LiveFragment(html=_LEFT_OUT, css=css)
     scripts = tuple(_asset(name) for name in SCRIPTS)
     return LiveFragment(html=_asset("live.html"), css=css, scripts=scripts, data=live_data(solution, kept))
 

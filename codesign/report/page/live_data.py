@@ -40,7 +40,6 @@ def live_data(solution: Solution, kept: Kept) -> dict[str, Any]:
     Parameters
     ----------
     solution : Solution
-        Of a problem whose decisions rest on single readings.
     kept : Kept
         The parts that the page takes.
 
@@ -79,7 +78,8 @@ def live_data(solution: Solution, kept: Kept) -> dict[str, Any]:
         "optimum": _result(solution.optimum),
         "alternatives": [{**settings(a.design), "cnr": a.cnr} for a in solution.alternatives],
         "bound": {"cnr": solution.certificate.bound, "proven": solution.status == "proven"},
-        "left_out": dict(kept.left_out),
+        "joined_channels": spec.detection.combine_channels,
+        "left_out": kept.note,
     }
 
 
@@ -95,6 +95,7 @@ def settings(design: Design) -> dict[str, Any]:
         **{name: getattr(design, name) for name in names},
         "drive_ma": dict(design.drive_ma),
         "emitters": dict(design.emitters),
+        "shots": [{"exposure_us": shot.exposure_us, "drive_ma": dict(shot.drive_ma)} for shot in design.shots],
     }
 
 

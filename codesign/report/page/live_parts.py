@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -21,6 +21,8 @@ Array = NDArray[np.float64]
 
 #: Text the curves of parts and surfaces may take in the page. [characters]
 LARGEST = 1_500_000
+#: Types of the numbers of curves; the first that fits is taken.
+KINDS = ("f8", "f4")
 #: LEDs at most: each is a line in a list.
 LARGEST_NUMBER_OF_LEDS = 200
 #: Characters per byte of base64.
@@ -33,7 +35,7 @@ CAMERA_SHARE = 0.3
 class Kept:
     """Parts of the page, and the grid points that any of the cameras sees.
 
-    ``kind`` is the number type of their curves, ``left_out`` how many of a kind are not in.
+    ``kind`` is the number type of their curves, ``note`` says in words what is left out.
     """
 
     span: slice
@@ -41,24 +43,27 @@ class Kept:
     filters: tuple[Filter, ...]
     cameras: tuple[Camera, ...]
     kind: str = "f8"
-    left_out: Mapping[str, int] = field(default_factory=dict)
+    note: str = ""
 
 
 def kept_parts(solution: Solution) -> Kept | None:
-    """Choose the parts; None where the surfaces alone take too much room.
+    """Choose the parts; None where too little room is left for those in use.
 
     All where they fit. Else those of recipe and runners-up, then the best by their proven bounds.
     """
     problem = solution.problem
-    filters, cameras = FilterChoices.of(problem.filters).base, problem.cameras
-    leds = _leds(solution)
     span = seen_span(problem)
-    everything = Kept(span, leds, filters, cameras, "f8", {"LEDs": len(problem.channels) - len(leds)})
-    for kind in ("f8", "f4"):
+    everything = Kept(span, problem.channels, FilterChoices.of(problem.filters).base, problem.cameras)
+    few = len(problem.channels) <= LARGEST_NUMBER_OF_LEDS
+    for kind in KINDS:
         room = LARGEST / BASE64 / int(kind[1]) / (span.stop - span.start) - _surface_rows(problem)
-        if len(filters) * _filter_rows(problem) + _camera_rows(cameras) <= room:
+        needed = len(everything.filters) * _filter_rows(problem) + _camera_rows(problem.cameras)
+        if few and needed <= room:
             return replace(everything, kind=kind)
-    return _best(solution, everything, room) if room > 0 else None
+    if problem.combined:
+        return None
+    kept = replace(everything, kind="f4") if needed <= room else _best(solution, everything, room)
+    return kept if few or kept is None else _with_fewer_leds(solution, kept)
 
 
 def seen_span(problem: Problem) -> slice:
@@ -90,28 +95,26 @@ def _designs(solution: Solution) -> list:
 
 
 def _best(solution: Solution, everything: Kept, room: float) -> Kept | None:
-    """Parts in use, then those of the configurations with the highest bounds, while there is room."""
+    """Filters and cameras in use, then those of the configurations with the highest bounds, while there is room."""
     designs = _designs(solution)
     used_filters = {name for design in designs for name in design.filter.split(JOINT)}
     used_cameras = {design.camera for design in designs}
     of_filter, of_camera = _bounds(solution)
-    cameras = _ranked(everything.cameras, used_cameras, of_camera)
     chosen: list[Camera] = []
-    for camera in cameras:
+    for camera in _ranked(everything.cameras, used_cameras, of_camera):
         if camera.id in used_cameras or _camera_rows([*chosen, camera]) <= CAMERA_SHARE * room:
             chosen.append(camera)
     count = int((room - _camera_rows(chosen)) / _filter_rows(solution.problem))
     if count < len(used_filters):
         return None
-    filters = _ranked(everything.filters, used_filters, of_filter)[:count]
-    left = {
-        **everything.left_out,
-        "filters": len(everything.filters) - len(filters),
-        "cameras": len(everything.cameras) - len(chosen),
-    }
-    return Kept(
-        everything.leds, _in_order(everything.filters, filters), _in_order(everything.cameras, chosen), "f4", left
+    filters = _in_order(everything.filters, _ranked(everything.filters, used_filters, of_filter)[:count])
+    cameras = _in_order(everything.cameras, chosen)
+    note = (
+        f"So that this file can be mailed, the lists hold {len(filters)} of {len(everything.filters)} filters and "
+        f"{len(cameras)} of {len(everything.cameras)} cameras: those of the recipe and the runners-up, then those with "
+        "the highest proven bounds."
     )
+    return replace(everything, filters=filters, cameras=cameras, kind="f4", note=note)
 
 
 def _ranked(parts: Sequence, used: set[str], bounds: Array) -> list:
@@ -144,14 +147,18 @@ def _bounds(solution: Solution) -> tuple[Array, Array]:
     return of_filter, of_camera
 
 
-def _leds(solution: Solution) -> tuple[LedChannel, ...]:
-    """All, or those in use and those of most contrast alone behind the recipe's parts."""
-    problem = solution.problem
-    if len(problem.channels) <= LARGEST_NUMBER_OF_LEDS:
-        return problem.channels
-    used = {led for design in _designs(solution) for led in design.drive_ma} | set(problem.spec.build.must_have)
-    order = _ranked(problem.channels, used, _alone(solution))
-    return _in_order(problem.channels, order[: max(LARGEST_NUMBER_OF_LEDS, len(used))])
+def _with_fewer_leds(solution: Solution, kept: Kept) -> Kept:
+    """LEDs in use, then those of most contrast alone behind the recipe's parts."""
+    used = {led for design in _designs(solution) for led in design.drive_ma} | set(
+        solution.problem.spec.build.must_have
+    )
+    order = _ranked(kept.leds, used, _alone(solution))
+    leds = _in_order(kept.leds, order[: max(LARGEST_NUMBER_OF_LEDS, len(used))])
+    note = (
+        f"Of {len(kept.leds)} LEDs the list holds {len(leds)}: those of the recipe and the runners-up, then those that "
+        "alone give most contrast behind the recipe's filter."
+    )
+    return replace(kept, leds=leds, note=f"{kept.note} {note}".strip())
 
 
 def _alone(solution: Solution) -> Array:

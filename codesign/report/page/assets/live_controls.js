@@ -138,8 +138,8 @@
       return box;
     }
 
-    /** Bring lines, values and the list of others up to date. */
-    show(setting, states) {
+    /** Bring lines, values and the list of others up to date; `level` is the pulse rating that holds. */
+    show(setting, states, level) {
       const { leds } = this.model;
       for (const [id, ma] of Object.entries(setting.drive_ma)) if (ma > 0) this.shown.add(id);
       const wanted = leds.filter((led) => this.shown.has(led.id)).sort((a, b) => a.peak_nm - b.peak_nm);
@@ -151,7 +151,7 @@
       if (place.children.length !== boxes.length || boxes.some((box, k) => place.children[k] !== box))
         place.replaceChildren(...boxes);
       const reached = new Map(states.map((state) => [state.id, state]));
-      for (const line of lines) this.showLine(line, setting, reached.get(line.led.id));
+      for (const line of lines) this.showLine(line, setting, reached.get(line.led.id), level.current_ma[line.index]);
       const others = leds.filter((led) => !this.shown.has(led.id)).sort((a, b) => a.peak_nm - b.peak_nm);
       const entries = others.map((led) => [led.id, `${led.id} (${live.number(led.peak_nm)} nm)`]);
       const chosen = others.some((led) => led.id === $("add-led").value) ? $("add-led").value : (others[0]?.id ?? "");
@@ -159,7 +159,7 @@
       $("add-led").disabled = $("add").disabled = others.length === 0;
     }
 
-    showLine(line, setting, state) {
+    showLine(line, setting, state, top) {
       const ma = setting.drive_ma[line.led.id] ?? 0;
       show(line.slider, line.input, ma, ma);
       line.slider.setAttribute("aria-valuetext", `${live.number(ma)} mA`);
@@ -168,7 +168,6 @@
         complain(line.count, "");
       }
       const emitters = line.count ? "" : `× ${line.led.emitters}, `;
-      const top = live.pulseLevel(this.model, setting.exposure_us * 1e-6).current_ma[line.index];
       const heat = state ? `junction ${state.junction_c.toFixed(1)} °C` : "off";
       const text = `${emitters}${heat}, up to ${live.number(top)} mA at this exposure`;
       if (line.note.textContent !== text) line.note.textContent = text;

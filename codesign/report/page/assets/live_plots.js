@@ -111,9 +111,11 @@
       this.path[name].setAttribute("d", points());
     }
 
-    draw(result, setting) {
+    /** Draw a result; of several shots the light of one. */
+    draw(result, setting, shot) {
       this.fit();
-      const { model, largest: top } = this, base = TOP + MAIN, { diffuse, all, seen } = result.light;
+      const { model, largest: top } = this, base = TOP + MAIN, { all, seen } = result.light;
+      const diffuse = result.light.diffuse[shot];
       const { i: one, j: other } = result.pair, target = model.surfaces[one].mean, back = model.surfaces[other].mean;
       const around = (i) => model.ambient[i] * setting.ambient_factor;
       const difference = (i) => all[i] * (target[i] - back[i]);
@@ -126,7 +128,7 @@
       const parts = JSON.stringify([camera, channel, filter, f_number]), zero = base + GAP + STRIP / 2;
       this.put("light", null, () => this.closed((i) => diffuse[i], brightest, base, MAIN));
       this.put("ambient", `${brightest} ${ambient_factor}`, () => this.line(around, brightest, base, MAIN));
-      this.put("seen", parts, () => this.line((i) => seen[i], top, base, MAIN));
+      this.put("seen", parts, () => seen.map((curve) => this.line((i) => curve[i], top, base, MAIN)).join(""));
       this.put("target", one, () => this.line((i) => target[i], top, base, MAIN));
       this.put("background", other, () => this.line((i) => back[i], top, base, MAIN));
       this.put("above", null, () => this.closed((i) => Math.max(difference(i), 0), largest, zero, STRIP / 2));
@@ -179,9 +181,7 @@
     }
 
     draw(result, stretched) {
-      const { i, j } = result.pair, mean = [result.surfaces[j].total_e, result.surfaces[i].total_e];
-      const spread = ["background", "target"].map((side) => Math.sqrt(result.noise.reduce((a, n) => a + n[side], 0)));
-      const top = result.saturation, reach = 4 * Math.max(...spread);
+      const { mean, spread, top } = result.picture, reach = 4 * Math.max(...spread);
       const low = stretched ? Math.min(...mean) - reach : 0, high = stretched ? Math.max(...mean) + reach : top;
       const scale = 255 / Math.max(high - low, 1e-12), data = this.image.data;
       for (let k = 0; k < this.inside.length; k++) {

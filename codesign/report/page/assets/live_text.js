@@ -39,17 +39,21 @@
   /** One line of a comment: no control or direction characters. */
   const comment = (text) => `# ${text.replace(/[\p{C}\p{Zl}\p{Zp}]+/gu, " ")}`;
 
+  const value = (item) => (typeof item === "string" ? quoted(item) : float(item));
+  const drives = (title, shot) => [
+    title, ...Object.entries(shot.drive_ma).filter(([, ma]) => ma > 0).map(([id, ma]) => `${key(id)} = ${float(ma)}`),
+  ];
+
   /** A setting as the text of a recipe file, headed by comment lines; numbers keep all their digits. */
   function recipe(setting, comments) {
-    const words = ["camera", "channel", "gain_db", "filter", "f_number", "exposure_us"];
-    const value = (item) => (typeof item === "string" ? quoted(item) : float(item));
-    const drives = Object.entries(setting.drive_ma).filter(([, ma]) => ma > 0);
-    const counts = Object.entries(setting.emitters ?? {});
+    const shots = setting.shots ?? [], counts = Object.entries(setting.emitters ?? {});
+    const words = ["camera", "channel", "gain_db", "filter", "f_number", ...(shots.length ? [] : ["exposure_us"])];
     return [
       ...comments.map(comment),
       ...words.map((word) => `${word} = ${value(setting[word])}`),
-      "", "[drive_ma]", ...drives.map(([id, ma]) => `${key(id)} = ${float(ma)}`),
+      ...(shots.length ? [] : ["", ...drives("[drive_ma]", setting)]),
       ...(counts.length ? ["", "[emitters]", ...counts.map(([id, count]) => `${key(id)} = ${count}`)] : []),
+      ...shots.flatMap((shot) => ["", "[[shot]]", `exposure_us = ${value(shot.exposure_us)}`, ...drives("[shot.drive_ma]", shot)]),
       "",
     ].join("\n");
   }

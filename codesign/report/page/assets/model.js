@@ -1,11 +1,14 @@
 // The forward model of the page: what any setting does, in the equations of `codesign.design.evaluate`.
 // Light is integrated over wavelength directly. A setting is
 // {camera, channel, gain_db, filter, f_number, exposure_us, drive_ma: {id: mA}, emitters: {id: count},
-//  air_c, sensor_c, ambient_factor}.
+//  shots: [{exposure_us, drive_ma}], air_c, sensor_c, ambient_factor}; channels joined by + are read together.
 (() => {
   "use strict";
-  const live = (globalThis.codesignLive ??= {});
+  const live = globalThis.codesignLive;
+  const { interpolate, shape, balance } = live;
   const JOINED = " + "; // between the ids of two stacked filters
+  const JOINT = "+"; // between the names of channels read together
+  const KEPT = 8; // combinations of camera, channel, filter and f-number whose sensitivity is kept
   const TOLERANCE = 1e-6; // a limit counts as met up to this share over its bound
 
   /** Numbers packed as base64 of little-endian binary: {f8: text} or {f4: text}; a plain list stays as it is. */
@@ -17,16 +20,6 @@
   }
 
   const byId = (parts) => new Map(parts.map((part) => [part.id, part]));
-
-  /** Piecewise linear, ends held. */
-  function interpolate(x, xs, ys) {
-    const last = xs.length - 1;
-    if (x <= xs[0]) return ys[0];
-    if (x >= xs[last]) return ys[last];
-    let k = 1;
-    while (xs[k] <= x) k++;
-    return ys[k - 1] + ((ys[k] - ys[k - 1]) * (x - xs[k - 1])) / (xs[k] - xs[k - 1]);
-  }
 
   /** Complementary error function for x >= 0: power series, then continued fraction from below. */
   function erfc(x) {
@@ -48,47 +41,6 @@
     for (let i = 0; i < a.length; i++) sum += a[i] * b[i];
     return sum;
   };
-
-  // --- light -----------------------------------------------------------------------------------------------------
-
-  /** Relative spectrum of unit area on the grid, shifted [1/nm]: Ohno's model, or a measured curve, 0 outside. */
-  function shape(led, grid, shift, out) {
-    if (led.curve) return measured(led.curve, grid, shift, out);
-    const { peak_nm: peak, width_nm: width, density } = led.model;
-    for (let i = 0; i < grid.length; i++) {
-      const x = (grid[i] - shift - peak) / width, square = x * x;
-      if (square >= 700) { out[i] = 0; continue; }
-      const g = Math.exp(-square), g2 = g * g;
-      out[i] = (density * (g + 2 * g2 * g2 * g)) / 3;
-    }
-    return out;
-  }
-
-  function measured(curve, grid, shift, out) {
-    const { nm, values } = curve, last = nm.length - 1;
-    let k = 1;
-    for (let i = 0; i < grid.length; i++) {
-      const x = grid[i] - shift;
-      if (x < nm[0] - 1e-6 || x > nm[last] + 1e-6) { out[i] = 0; continue; }
-      while (k < last && nm[k] <= x) k++;
-      const share = Math.min(Math.max((x - nm[k - 1]) / (nm[k] - nm[k - 1]), 0), 1);
-      out[i] = values[k - 1] * (1 - share) + values[k] * share;
-    }
-    return out;
-  }
-
-  /** Temperature at which heat and flux agree, and flux there relative to the reference. */
-  function balance(led, air, duty, electrical, reference) {
-    const resistance = led.resistance_k_per_w * duty;
-    const c = led.flux_coefficient_per_k, ref = led.reference_c;
-    const stiffness = 1 + resistance * reference * c;
-    if (stiffness > 0) {
-      const junction = (air + resistance * (electrical - reference * (1 - c * ref))) / stiffness;
-      const factor = Math.max(0, 1 + c * (junction - ref));
-      if (factor > 0) return [junction, factor];
-    }
-    return [air + resistance * electrical, 0];
-  }
 
   class Model {
     constructor(data) {
@@ -113,8 +65,7 @@
       const { pairs } = data.filter_choices;
       this.pairBits = pairs ? Uint8Array.from(atob(pairs), (c) => c.charCodeAt(0)) : null;
       this.kept = new Map(); // light of each LED at its last junction temperature
-      const blank = () => new Float64Array(this.grid.length);
-      this.behind = { key: null, weight: blank(), seen: blank() };
+      this.behind = new Map(); // what cameras see behind filters, the last few combinations asked for
     }
 
     rows(packed) {
@@ -162,23 +113,23 @@
 
     // --- the chain -------------------------------------------------------------------------------------------------
 
-    /** Electron rate per unit of spectral irradiance times reflectance, and filter times QE; kept until parts change. */
-    sensitivity(setting) {
-      const { camera, channel, filter, f_number: stop } = setting;
-      const key = JSON.stringify([camera, channel, filter, stop]);
-      if (this.behind.key === key) return this.behind;
-      const part = this.cameraOf.get(camera), qe = part.channels.get(channel), { weight, seen } = this.behind;
-      const working = stop * (1 + this.data.optics.magnification);
-      const scale = part.pixel_area_m2 / (4 * working * working);
-      const curves = filter.split(JOINED).map((name) => this.transmittance(this.filterOf.get(name), stop));
-      for (let i = 0; i < seen.length; i++) {
-        let value = qe[i];
-        for (const curve of curves) value *= curve[i];
-        seen[i] = value;
-        weight[i] = scale * this.chain[i] * value;
+    /** Electron rate per unit of spectral irradiance times reflectance, and filter times QE; the last few are kept. */
+    sensitivity(setting, channel) {
+      const { camera, filter, f_number: stop } = setting, key = JSON.stringify([camera, channel, filter, stop]);
+      if (!this.behind.has(key)) {
+        if (this.behind.size >= KEPT) this.behind.delete(this.behind.keys().next().value);
+        this.behind.set(key, this.newSensitivity(this.cameraOf.get(camera), channel, filter, stop));
       }
-      this.behind.key = key;
-      return this.behind;
+      return this.behind.get(key);
+    }
+
+    newSensitivity(camera, channel, filter, stop) {
+      const working = stop * (1 + this.data.optics.magnification);
+      const scale = camera.pixel_area_m2 / (4 * working * working);
+      const curves = filter.split(JOINED).map((name) => this.transmittance(this.filterOf.get(name), stop));
+      const seen = Float64Array.from(camera.channels.get(channel));
+      for (const curve of curves) for (let i = 0; i < seen.length; i++) seen[i] *= curve[i];
+      return { seen, weight: seen.map((value, i) => scale * this.chain[i] * value) };
     }
 
     transmittance(filter, stop) {
@@ -186,15 +137,22 @@
       return filter.curves[this.data.optics.f_numbers.indexOf(stop)];
     }
 
-    /** Power, light and junction temperature of one emitter of each lit LED. */
-    ledStates(setting, duty) {
+    /** Power and light [W] of one emitter of an LED at a current [mA], at its reference temperature. */
+    operating(led, ma) {
+      const amps = ma * 1e-3, share = interpolate(amps, led.current_a, led.relative_flux);
+      return { electrical: interpolate(amps, led.current_a, led.power_w), share, reference: led.flux_w * share };
+    }
+
+    /** Power, light and junction temperature of one emitter of each lit LED; `junctions` holds those known already. */
+    ledStates(setting, duty, junctions = null) {
       const lit = Object.entries(setting.drive_ma).filter(([, ma]) => ma > 0);
       return lit.map(([id, ma]) => {
-        const led = this.ledOf.get(id), amps = ma * 1e-3;
-        const electrical = interpolate(amps, led.current_a, led.power_w);
-        const share = interpolate(amps, led.current_a, led.relative_flux);
-        const reference = led.flux_w * share;
-        const [junction, factor] = balance(led, setting.air_c, duty, electrical, reference);
+        const led = this.ledOf.get(id), { electrical, share, reference } = this.operating(led, ma);
+        let [junction, factor] = balance(led, setting.air_c, duty, electrical, reference);
+        if (junctions) {
+          junction = junctions.get(id);
+          factor = Math.max(0, 1 + led.flux_coefficient_per_k * (junction - led.reference_c));
+        }
         const emitters = setting.emitters?.[id] ?? led.emitters;
         return {
           id, led, share, emitters, drive_ma: ma, electrical_w: electrical, optical_w: reference * factor,
@@ -231,8 +189,8 @@
     }
 
     /** Electrons of every surface by origin, and its clutter amplitudes. */
-    electrons(setting, states, t, dark) {
-      const { weight, seen } = this.sensitivity(setting), n = weight.length;
+    electrons(setting, channel, states, t, dark) {
+      const { weight, seen } = this.sensitivity(setting, channel), n = weight.length;
       const { diffuse, gloss } = this.mixture(states);
       const rig = new Float64Array(n), around = new Float64Array(n), all = new Float64Array(n);
       let mirrored = 0;
@@ -271,26 +229,41 @@
 
     // --- everything ------------------------------------------------------------------------------------------------
 
+    /** What the parts and the exposure of a setting mean for every reading. */
+    context(setting) {
+      const camera = this.cameraOf.get(setting.camera), t = setting.exposure_us * 1e-6;
+      const gain = camera.gains.find((g) => Math.abs(g.gain_db - setting.gain_db) < 1e-9);
+      const top = (2 ** camera.bits - 1 - camera.black_level_dn) / gain.conversion_gain_dn_per_e;
+      return {
+        setting, camera, gain, t,
+        duty: this.data.strobe ? t * this.data.timing.frame_rate_hz : 1,
+        dark: camera.dark_e_per_s * 2 ** ((setting.sensor_c - camera.dark_reference_c) / camera.dark_doubling_k),
+        saturation: Math.min(gain.full_well_e, top),
+        level: live.pulseLevel(this, t),
+      };
+    }
+
     /** What a setting does: CNR, surfaces, noise, pairs, use of every limit, LEDs. */
     evaluate(setting) {
-      const camera = this.cameraOf.get(setting.camera);
-      const gain = camera.gains.find((g) => Math.abs(g.gain_db - setting.gain_db) < 1e-9);
-      const t = setting.exposure_us * 1e-6;
-      const duty = this.data.strobe ? t * this.data.timing.frame_rate_hz : 1;
-      const states = this.ledStates(setting, duty);
-      const dark = camera.dark_e_per_s * 2 ** ((setting.sensor_c - camera.dark_reference_c) / camera.dark_doubling_k);
-      const light = this.electrons(setting, states, t, dark);
-      const top = (2 ** camera.bits - 1 - camera.black_level_dn) / gain.conversion_gain_dn_per_e;
-      const saturation = Math.min(gain.full_well_e, top);
-      const surfaces = this.surfaces.map((surface, i) => reading(surface, light.surfaces[i], camera, gain, saturation));
-      const budgets = light.surfaces.map((e) => this.noise(camera, gain, e));
-      const contrast = this.contrast(surfaces, budgets);
-      const context = { setting, camera, gain, t, duty, dark, saturation, states, surfaces };
+      if (setting.shots?.length || setting.channel.includes(JOINT)) return live.evaluateCombined(this, setting);
+      const context = this.context(setting), states = this.ledStates(setting, context.duty);
+      const light = this.electrons(setting, setting.channel, states, context.t, context.dark);
+      const surfaces = this.readings(light.surfaces, context);
+      const budgets = light.surfaces.map((e) => this.noise(context.camera, context.gain, e));
+      const contrast = this.contrast(surfaces, budgets), { i, j } = contrast.pair;
+      const spread = [j, i].map((k) => Math.sqrt(total(budgets[k])));
       return {
-        ...contrast, surfaces, duty, saturation, light, leds: states,
-        error_rate: erfc(contrast.cnr / Math.sqrt(8)) / 2,
-        limits: live.limitUses(this, context),
+        ...contrast, surfaces, duty: context.duty, level: context.level, leds: states, weights: {},
+        error_rate: errorRate(contrast.cnr),
+        limits: [...live.limitUses(this, { ...context, states, surfaces }), ...live.buildLimits(this, context)],
+        light: { diffuse: [light.diffuse], seen: [light.seen], all: light.all },
+        picture: { mean: [j, i].map((k) => surfaces[k].total_e), spread, top: context.saturation },
       };
+    }
+
+    /** What the camera reads on each surface. */
+    readings(electrons, context) {
+      return this.surfaces.map((surface, i) => reading(surface, electrons[i], context));
     }
 
     /** All pairs of target and background; the worst under the common sign that serves best. */
@@ -320,7 +293,10 @@
 
   const total = (budget) => Object.values(budget).reduce((sum, value) => sum + value, 0);
 
-  function reading(surface, e, camera, gain, saturation) {
+  /** Share of misses, equal to that of false alarms, with the threshold midway. */
+  const errorRate = (cnr) => erfc(cnr / Math.sqrt(8)) / 2;
+
+  function reading(surface, e, { camera, gain, saturation }) {
     const sum = e.led_e + e.ambient_e + e.dark_e;
     const level = camera.black_level_dn + gain.conversion_gain_dn_per_e * sum;
     return {
@@ -329,5 +305,5 @@
     };
   }
 
-  Object.assign(live, { Model, JOINED, TOLERANCE, unpack, erfc });
+  Object.assign(live, { Model, JOINED, JOINT, TOLERANCE, errorRate });
 })();

@@ -3,6 +3,7 @@
   "use strict";
   const live = globalThis.codesignLive;
 
+  /** What every limit tells: {name, unit, value, bound, share: 1 at the limit, floor: met from above, met}. */
   const finish = (limit) => ({ floor: false, ...limit, met: limit.share <= 1 + live.TOLERANCE });
 
   function use(name, unit, value, bound) {
@@ -17,7 +18,7 @@
 
   // --- the exposure alone ------------------------------------------------------------------------------------------
 
-  function timeLimits(model, { setting, camera, gain, t, dark, saturation }) {
+  function timeLimits(model, { setting, camera, gain, t, dark, saturation, level }) {
     const { timing, motion, limits, optics } = model.data, us = setting.exposure_us * 1e-6 * 1e6, found = [];
     const below = (name, unit, value, bound) => found.push({ name, unit, value, bound, share: value / bound });
     const above = (name, unit, value, bound) =>
@@ -32,7 +33,6 @@
     }
     if (timing.frame_rate_hz !== null)
       below("frame period", "ms", 1e3 * t + camera.readout_ms, 1e3 / timing.frame_rate_hz);
-    const level = pulseLevel(model, t);
     if (level.longest_s !== null) below(level.cause, "us", us, level.longest_s * 1e6);
     if (limits.dark_well_share !== null)
       below("dark signal in the well", "e-", dark * t, limits.dark_well_share * saturation);
@@ -54,8 +54,8 @@
     return found;
   }
 
-  function ledLimits(model, { setting, states, t }) {
-    const level = pulseLevel(model, t), air = setting.air_c;
+  function ledLimits(model, { setting, states, level }) {
+    const air = setting.air_c;
     return states.flatMap((state) => {
       const index = model.leds.indexOf(state.led), top = state.led.junction_limit_c;
       const share = top > air ? (state.junction_c - air) / (top - air) : Infinity;
@@ -97,10 +97,10 @@
       const parts = camera.price + glass.reduce((total, price) => total + price, 0);
       found.push(use("price", "", parts + sum((led, count) => emitters(led, count) * led.price), build.price_budget));
     }
-    return found;
+    return found.map(finish);
   }
 
-  /** Every limit: {name, unit, value, bound, share: 1 at the limit, floor: met from above, met}. */
+  /** Every limit but those on what may be built. */
   function limitUses(model, context) {
     const bound = model.data.limits.well_headroom * context.saturation;
     return [
@@ -109,9 +109,8 @@
       ...powerLimits(model, context),
       ...ledLimits(model, context),
       ...depthLimit(model, context),
-      ...buildLimits(model, context),
     ].map(finish);
   }
 
-  Object.assign(live, { limitUses, pulseLevel });
+  Object.assign(live, { limitUses, buildLimits, timeLimits, finish, pulseLevel });
 })();
