@@ -156,7 +156,7 @@ def _results(problem: Problem, performance: Performance, width: int) -> list[str
     if required is not None:
         lines += labelled("required", f"CNR {required:g}: {_compared(performance.cnr, required)}", width)
     rate = performance.error_rate
-    text = f"{_rate(rate)} missed, as many false alarms, threshold midway"
+    text = f"{rate_words(rate)} missed, as many false alarms, threshold midway"
     lines += labelled("errors", text, width)
     rows = [(r.id, r.role, f"{r.grey_dn:.1f}", percent(r.saturation_share)) for r in performance.surfaces]
     return [*lines, *table(("surface", "role", "grey value [DN]", "of saturation"), rows, width, left=(0, 1))]
@@ -174,7 +174,8 @@ def _compared(cnr: float, required: float) -> str:
     return f"met, {cnr / required:.2f} times" if cnr >= required else f"NOT met, {percent(1 - cnr / required)} short"
 
 
-def _rate(rate: float) -> str:
+def rate_words(rate: float) -> str:
+    """Say how often a decision is wrong."""
     if rate < 1e-12:
         return "fewer than one in 10^12"
     return percent(rate) if rate >= 0.01 else f"1 in {number(1 / rate, 3)}"
