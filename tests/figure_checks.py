@@ -72,13 +72,13 @@ def _boxes(figure: Figure) -> Iterator[tuple[Text, Bbox]]:
 
 
 def _undrawn(figure: Figure) -> Iterator[Text]:
-    """Labels of ticks beyond the limits of an axis, which are kept but not drawn."""
+    """Labels of ticks that are kept but not drawn: beyond the limits of an axis, or of an axis that is off."""
     for axes in figure.findobj(Axes):
         for axis in (axes.xaxis, axes.yaxis):
             low, high = sorted(axis.get_view_interval())
             slack = 1e-6 * (high - low)
             for tick in (*axis.majorTicks, *axis.minorTicks):
-                if not low - slack <= tick.get_loc() <= high + slack:
+                if not axes.axison or not low - slack <= tick.get_loc() <= high + slack:
                     yield from (tick.label1, tick.label2)
 
 

@@ -37,7 +37,7 @@ INCH, POINTS = 25.4, 72 / 25.4
 TEXT_WIDTH = 170.0
 A4 = (210.0, 297.0)
 #: Sizes of letters in print; none is smaller than the last. [pt]
-TITLE, BODY, SMALL = 9.5, 8.0, 7.0
+TITLE, BODY, SMALL = 8.5, 8.0, 7.0
 #: Width that axis labels and margins take beside axes, rather too much. [mm]
 ROOM_BESIDE = 22.0
 #: Dots per inch of a PNG.
@@ -249,10 +249,10 @@ def legend_above(axes: Axes, title: str, entries: Sequence[tuple[Artist, str]], 
     panel = axes.get_figure(root=False)
     room = width_mm(panel) - aside
     artists, names, columns = _columns(panel, entries, room, SMALL)
-    title = shortened(panel, title, room, BODY, "bold")
+    title = shortened(panel, title, room, TITLE, "bold")
     legend = axes.legend(
         artists, _numbers(names), loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=columns, fontsize=SMALL,
-        title="title", title_fontproperties={"size": BODY, "weight": "bold"}, alignment="left", borderpad=0.1,
+        title="title", title_fontproperties={"size": TITLE, "weight": "bold"}, alignment="left", borderpad=0.1,
     )  # fmt: skip
     legend.get_title().set_text(title)
     legend.get_title().set_parse_math(False)
