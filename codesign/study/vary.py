@@ -11,6 +11,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
+from codesign.display import Displayed
 from codesign.errors import CatalogError, InfeasibleError, ProblemError
 from codesign.problem import Problem
 from codesign.study.common import Resolved, resolve
@@ -62,8 +63,8 @@ class Point:
         return (self.camera, self.channel, self.filter, *sorted(self.leds))
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Variation:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Variation(Displayed):
     """Points of a what-if in row-major order of the axes, and the problem as it is.
 
     Attributes
@@ -267,8 +268,13 @@ def _solve(
         found = resolve(problem, near, gap=gap)
     except InfeasibleError as error:
         return Point(values=values, reason=_without_file(str(error), problem), limits=error.limits), None
+    return point_of(found, values), found
+
+
+def point_of(found: Resolved, values: tuple[Any, ...]) -> Point:
+    """Point of a re-solved problem at the values given."""
     design = found.optimum.design
-    point = Point(
+    return Point(
         values=values,
         cnr=found.cnr,
         bound=max(found.bound, found.cnr),
@@ -281,7 +287,6 @@ def _solve(
         drive_ma=found.drive_ma,
         binding=found.binding,
     )
-    return point, found
 
 
 def _without_file(text: str, problem: Problem) -> str:
