@@ -24,6 +24,7 @@ from codesign.cli_radiation import radiation
 from codesign.cli_report import Quick, Report, TradeOff, require_page, write_check_page, write_solution_page
 from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
+from codesign.cli_terminal import interrupts, page_width, put, searching
 from codesign.cli_tolerance import robust, tolerance
 from codesign.cli_vary import vary, worth
 from codesign.errors import CodesignError, InfeasibleError, ProblemError
@@ -32,6 +33,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterator
 
     from codesign.least_cost import LeastCost
+    from codesign.report.progress import Progress
     from codesign.solve import Solution
     from codesign.study.sensitivity import Sensitivities
 
@@ -41,10 +43,6 @@ INTERRUPTED = 130
 class _Commands(TyperGroup):
     """All commands, with errors translated in this one place; bugs keep their traceback."""
 
-    def make_context(self, info_name: str | None, args: list[str], parent: Any = None, **extra: Any) -> Any:
-        with _translated():
-            return super().make_context(info_name, args, parent, **extra)
-
     def invoke(self, ctx: Any) -> Any:
         with _translated():
             return super().invoke(ctx)
@@ -52,30 +50,38 @@ class _Commands(TyperGroup):
 
 @contextmanager
 def _translated() -> Iterator[None]:
-    try:
-        yield
-        sys.stdout.flush()
-    except CodesignError as error:
-        from codesign.report.output import plain
+    with interrupts() as noted:
+        try:
+            yield
+            sys.stdout.flush()
+        except typer.Exit:
+            raise
+        except BaseException as error:
+            _end(error, interrupted=noted.seen or isinstance(error, KeyboardInterrupt))
+    if noted.seen:
+        typer.echo("cnr: interrupted; this is the best found until then", err=True)
+        raise typer.Exit(INTERRUPTED)
 
-        typer.echo(f"cnr: {plain(str(error))}", err=True)
-        raise typer.Exit(error.exit_code) from None
-    except KeyboardInterrupt:
+
+def _end(error: BaseException, *, interrupted: bool) -> None:
+    """Turn what ended a command into one line and an exit code; raise it again where that is a bug."""
+    if interrupted:  # whatever was interrupted may have failed with an error of its own
         typer.echo("cnr: interrupted", err=True)
         raise typer.Exit(INTERRUPTED) from None
-    except BrokenPipeError:
+    if isinstance(error, BrokenPipeError):
         # The reader has seen enough; keep the interpreter from flushing into nowhere on its way out.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-    except Exception as error:
-        from codesign.cli_usage import usage_line
+        return
+    from codesign.cli_usage import usage_line
+    from codesign.report.output import plain
 
-        line = usage_line(error)
-        if line is None:
-            raise
-        from codesign.report.output import plain
-
-        typer.echo(plain(line), err=True)
-        raise typer.Exit(2) from None
+    line, code = usage_line(error), 2
+    if isinstance(error, CodesignError):
+        line, code = f"cnr: {error}", error.exit_code
+    if line is None:
+        raise error
+    typer.echo(plain(line), err=True)
+    raise typer.Exit(code) from None
 
 
 app = typer.Typer(
@@ -113,7 +119,7 @@ def main(version: Annotated[bool, typer.Option("--version", help="Show the versi
     if version:
         import codesign
 
-        _print(f"cnr {codesign.__version__}\n")
+        put(f"cnr {codesign.__version__}\n")
         raise typer.Exit
 
 
@@ -151,13 +157,14 @@ def solve(
     require_page(report, quick=quick, trade_off=trade_off)
     if least is None and cnr is not None:
         raise ProblemError(f"--cnr {cnr:g} belongs to --least; for the greatest CNR set required_cnr in the problem")
-    if least is None:
-        solution = _solved(problem, gap, alternatives, time_limit)
-    else:
-        cost = _least(problem, least, cnr, gap, time_limit)
-        solution = cost.solution
-    found = _sensitivities(solution, least) if sensitivities else None
-    verdict = _verified(solution) if verify else None
+    with searching() as line:
+        if least is None:
+            solution = _solved(problem, gap, alternatives, time_limit, line)
+        else:
+            cost = _least(problem, least, cnr, gap, time_limit, line)
+            solution = cost.solution
+        found = _sensitivities(solution, least, line) if sensitivities else None
+        verdict = _verified(solution, line) if verify else None
     _show_solution(solution, verdict, json=json, cost=cost, sensitivities=found)
     if recipe is not None:
         from codesign.report.recipe_file import write_recipe
@@ -190,7 +197,7 @@ def check(
     loaded = load_problem(problem)
     result = evaluate(loaded, load_recipe(recipe))
     table = machine.as_json(machine.performance_dict(loaded, result)) if json else None
-    _print(table or text.performance_text(loaded, result))
+    put(table or text.performance_text(loaded, result, page_width()))
     if report is not None:
         write_check_page(context, report, loaded, result)
     if not result.feasible:
@@ -212,7 +219,7 @@ def parts(
     from codesign.catalog import load_catalog
     from codesign.report.parts import listing
 
-    _print(listing(load_catalog(catalog), kind and kind.value, expression, id, json=json))
+    put(listing(load_catalog(catalog), kind and kind.value, expression, id, json=json))
 
 
 @app.command()
@@ -229,7 +236,7 @@ def new(
     from codesign.report.output import plain, write_file
 
     write_file(file, (files("codesign") / "data" / "new_problem.toml").read_bytes(), overwrite=force)
-    _print(f"wrote {plain(str(file))}; next: cnr solve {plain(str(file))}\n")
+    put(f"wrote {plain(str(file))}; next: cnr solve {plain(str(file))}\n")
 
 
 @app.command()
@@ -244,7 +251,7 @@ def schema(kind: Annotated[SchemaKind, typer.Argument(help="Which file.")] = Sch
     from codesign.report.recipe_file import recipe_schema
 
     schemas = {SchemaKind.PROBLEM: json_schema, SchemaKind.RECIPE: recipe_schema, SchemaKind.FAMILY: family_schema}
-    _print(as_json(schemas[kind]()))
+    put(as_json(schemas[kind]()))
 
 
 @app.command()
@@ -258,47 +265,47 @@ def demos() -> None:
     from codesign.report.layout import table
 
     lists = {("demo", "what it finds"): demo_problems(), ("family", "for 'cnr family'"): demo_families()}
-    tables = [table(head, [(d.name, d.title) for d in found], 80, left=(0, 1)) for head, found in lists.items()]
-    _print("\n\n".join("\n".join(lines) for lines in tables) + "\n")
+    tables = [
+        table(head, [(d.name, d.title) for d in found], page_width(), left=(0, 1)) for head, found in lists.items()
+    ]
+    put("\n\n".join("\n".join(lines) for lines in tables) + "\n")
 
 
-def _least(name: str, quantity: str, cnr: float | None, gap: float | None, time_limit: float | None) -> LeastCost:
+def _least(
+    name: str, quantity: str, cnr: float | None, gap: float | None, time_limit: float | None, line: Progress
+) -> LeastCost:
     from codesign.least_cost import DEFAULT_GAP, least_cost
     from codesign.problem import load_problem, solver_settings
 
     problem = load_problem(name)
     wanted = solver_settings(problem, gap=gap).gap if gap is not None else DEFAULT_GAP
-    return least_cost(problem, quantity, cnr, gap=wanted, time_limit=time_limit)
+    return least_cost(problem, quantity, cnr, gap=wanted, time_limit=time_limit, progress=line.narrowing)
 
 
-def _solved(name: str, gap: float | None, alternatives: int | None, time_limit: float | None = None) -> Solution:
+def _solved(
+    name: str, gap: float | None, alternatives: int | None, time_limit: float | None, line: Progress
+) -> Solution:
     from codesign.problem import load_problem, solver_settings
-    from codesign.report.output import Progress
     from codesign.solve import solve
 
     problem = load_problem(name)
     wanted = solver_settings(problem, gap=gap, alternatives=alternatives)
-    progress = Progress()
-    try:
-        return solve(
-            problem, gap=wanted.gap, alternatives=wanted.alternatives, progress=progress, time_limit=time_limit
-        )
-    finally:
-        progress.clear()
+    return solve(problem, gap=wanted.gap, alternatives=wanted.alternatives, progress=line, time_limit=time_limit)
 
 
-def _verified(solution: Solution) -> Any:
+def _verified(solution: Solution, line: Progress) -> Any:
     from codesign.verify import verify
 
-    return verify(solution)
+    line.begin("checking the proof")
+    return verify(solution, progress=line.count)
 
 
-def _sensitivities(solution: Solution, least: str | None) -> Sensitivities:
+def _sensitivities(solution: Solution, least: str | None, line: Progress) -> Sensitivities:
     from codesign.cli_sensitivity import found_at
 
     if least is not None:
         raise ProblemError("--sensitivities belongs to the greatest CNR, --least is given too; leave one out")
-    return found_at(solution)
+    return found_at(solution, line)
 
 
 def _show_solution(
@@ -315,27 +322,12 @@ def _show_solution(
         if cost is not None:
             names = ("quantity", "unit", "value", "bound", "required_cnr", "status")
             result["least"] = {name: getattr(cost, name) for name in names}
-        _print(machine.as_json(result))
+        put(machine.as_json(result))
     else:
-        if cost is not None:
-            _print(
-                f"least {cost.quantity}  {cost.value:.6g} {cost.unit}".rstrip()
-                + f"\n  reaches CNR {cost.required_cnr:g}; none does with "
-                + f"{cost.bound:.6g} {cost.unit}".rstrip()
-                + f" or less ({cost.status})\n  below: the recipe of most CNR at about that {cost.quantity}, "
-                "which is then among the limits\n\n"
-            )
-        if solution.status == "stopped":
-            _print(f"stopped before the gap asked for: {100 * solution.certificate.gap:.3g} % is proven\n\n")
-        _print(text.solution_text(solution, verdict=verdict))
+        width = page_width()
+        put(text.solution_text(solution, width, verdict, cost))
         if sensitivities is not None:
-            _print("\n" + sensitivity_text(sensitivities))
-
-
-def _print(text: str) -> None:
-    from codesign.report.output import shown
-
-    typer.echo(shown(text, sys.stdout.encoding), nl=False)
+            put("\n" + sensitivity_text(sensitivities, width))
 
 
 app.command()(sensitivity)

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-import sys
 from pathlib import Path
 from typing import Annotated
 
 import typer
+
+from codesign.cli_terminal import page_width, put, searching
 
 
 def radiation(
@@ -22,7 +23,6 @@ def radiation(
     from codesign.design import evaluate
     from codesign.problem import load_problem
     from codesign.report.machine import as_json
-    from codesign.report.output import shown
     from codesign.report.radiation_text import radiation_dict, radiation_text
     from codesign.report.recipe_file import load_recipe
     from codesign.solve import solve
@@ -30,7 +30,10 @@ def radiation(
 
     require_distance(distance_mm)
     loaded = load_problem(problem)
-    performance = solve(loaded, alternatives=0).recipe if recipe is None else evaluate(loaded, load_recipe(recipe))
+    with searching() as line:
+        if recipe is None:
+            performance = solve(loaded, alternatives=0, progress=line).recipe
+        else:
+            performance = evaluate(loaded, load_recipe(recipe))
     found = screening(loaded, performance, distance_mm)
-    text = as_json(radiation_dict(loaded, found)) if json else radiation_text(loaded, found)
-    typer.echo(shown(text, sys.stdout.encoding), nl=False)
+    put(as_json(radiation_dict(loaded, found)) if json else radiation_text(loaded, found, page_width()))

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-import sys
 from pathlib import Path
 from typing import Annotated
 
 import typer
+
+from codesign.cli_terminal import counting, page_width, put
 
 _Problem = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
 _Json = Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")]
@@ -28,9 +29,9 @@ def routes(
     from codesign.report.routes_text import routes_dict, routes_text
     from codesign.study.routes import routes
 
-    found = routes(load_problem(problem), cnr, progress=_say)
-    _say("")
-    _print(as_json(routes_dict(found)) if json else routes_text(found))
+    with counting("solving") as line:
+        found = routes(load_problem(problem), cnr, progress=line.step)
+    put(as_json(routes_dict(found)) if json else routes_text(found, page_width()))
 
 
 def calibrate(
@@ -54,25 +55,12 @@ def calibrate(
     from codesign.study.readings import load_readings
 
     loaded = load_problem(problem)
-    found = calibrate(
-        loaded, load_readings(readings, loaded), [name.strip() for name in fit.split(",") if name.strip()]
-    )
-    _print(as_json(calibration_dict(found)) if json else calibration_text(found))
+    extras = [name.strip() for name in fit.split(",") if name.strip()]
+    with counting("fitting"):
+        found = calibrate(loaded, load_readings(readings, loaded), extras)
+    put(as_json(calibration_dict(found)) if json else calibration_text(found, page_width()))
     if update is not None:
         changed = write_calibrated(found, problem, update)
         from codesign.report.output import plain
 
         typer.echo(f"wrote {plain(str(update))}: delivery of {', '.join(changed)}", err=True)
-
-
-def _say(text: str) -> None:
-    """One line on a terminal that tells what is being looked at; an empty one wipes it."""
-    if sys.stderr.isatty():
-        sys.stderr.write("\r" + (f"looking at {text}" if text else "").ljust(60) + ("" if text else "\r"))
-        sys.stderr.flush()
-
-
-def _print(text: str) -> None:
-    from codesign.report.output import shown
-
-    typer.echo(shown(text, sys.stdout.encoding), nl=False)

@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-import sys
 from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from codesign.cli_terminal import page_width, put, searching
 from codesign.errors import ProblemError
 
 if TYPE_CHECKING:
+    from codesign.report.progress import Status
     from codesign.solve import Solution
     from codesign.study.sensitivity import Sensitivities
 
@@ -29,21 +30,24 @@ def sensitivity(
     """
     from codesign.problem import load_problem
     from codesign.report.machine import as_json
-    from codesign.report.output import shown
     from codesign.report.sensitivity_text import sensitivity_dict, sensitivity_text
     from codesign.solve import solve
 
     wanted = dict(_spread(text) for text in tolerance or ())
-    found = found_at(solve(load_problem(problem), alternatives=0), wanted, changes=not quick)
-    text = as_json(sensitivity_dict(found)) if json else sensitivity_text(found)
-    typer.echo(shown(text, sys.stdout.encoding), nl=False)
+    with searching() as line:
+        solution = solve(load_problem(problem), alternatives=0, progress=line)
+        found = found_at(solution, line, wanted, changes=not quick)
+    put(as_json(sensitivity_dict(found)) if json else sensitivity_text(found, page_width()))
 
 
-def found_at(solution: Solution, tolerances: dict[str, float] | None = None, *, changes: bool = True) -> Sensitivities:
-    """Sensitivities at a solution."""
+def found_at(
+    solution: Solution, line: Status, tolerances: dict[str, float] | None = None, *, changes: bool = True
+) -> Sensitivities:
+    """Sensitivities at a solution, with what is done told on a progress line."""
     from codesign.study.sensitivity import sensitivities
 
-    return sensitivities(solution, tolerances=tolerances, changes=changes)
+    line.begin("tolerances")
+    return sensitivities(solution, tolerances=tolerances, changes=changes, progress=line.count)
 
 
 def _spread(text: str) -> tuple[str, float]:

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-import sys
 from pathlib import Path
 from typing import Annotated
 
 import typer
+
+from codesign.cli_terminal import counting, page_width, put, searching
 
 _Problem = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
 _Json = Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")]
@@ -33,10 +34,14 @@ def tolerance(
     from codesign.study.tolerance import tolerance
 
     loaded = load_problem(problem)
-    design = _design(loaded, recipe)
-    found = tolerance(loaded, design, draws=draws, seed=seed, required=required, retune=retune_exposure)
+    with searching() as line:
+        design = _design(loaded, recipe, line)
+        line.begin("drawing rigs")
+        found = tolerance(
+            loaded, design, draws=draws, seed=seed, required=required, retune=retune_exposure, progress=line.count
+        )
     table = machine.as_json(tolerance_dict.tolerance_dict(found)) if json else None
-    _print(table or tolerance_text.tolerance_text(found))
+    put(table or tolerance_text.tolerance_text(found, page_width()))
 
 
 def robust(
@@ -58,9 +63,11 @@ def robust(
     from codesign.report import machine, tolerance_dict, tolerance_text
     from codesign.study.robust import robust
 
-    found = robust(load_problem(problem), scenarios=scenarios, seed=seed, quantile=0.0 if worst else quantile)
+    share = 0.0 if worst else quantile
+    with counting() as line:
+        found = robust(load_problem(problem), scenarios=scenarios, seed=seed, quantile=share, progress=line.step)
     table = machine.as_json(tolerance_dict.robust_dict(found)) if json else None
-    _print(table or tolerance_text.robust_text(found))
+    put(table or tolerance_text.robust_text(found, page_width()))
     if recipe is not None:
         from codesign.report.output import write_file
         from codesign.report.recipe_file import recipe_toml
@@ -68,14 +75,8 @@ def robust(
         write_file(recipe, recipe_toml(found.robust.design, f"Robust recipe for {found.problem.where}"))
 
 
-def _design(problem, recipe: Path | None):
+def _design(problem, recipe: Path | None, line):
     from codesign.report.recipe_file import load_recipe
     from codesign.solve import solve
 
-    return solve(problem, alternatives=0).recipe.design if recipe is None else load_recipe(recipe)
-
-
-def _print(text: str) -> None:
-    from codesign.report.output import shown
-
-    typer.echo(shown(text, sys.stdout.encoding), nl=False)
+    return solve(problem, alternatives=0, progress=line).recipe.design if recipe is None else load_recipe(recipe)

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-import sys
 from pathlib import Path
 from typing import Annotated
 
 import typer
+
+from codesign.cli_terminal import counting, page_width, put
 
 _Problem = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
 _Json = Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")]
@@ -43,10 +44,10 @@ def vary(
     check_targets(csv, figure)
     stock = {"without": without or (), "added": with_ or (), "catalog": catalog}
     request = Request(settings=set_ or (), sweep=sweep, sweep2=sweep2, gap=gap, **stock)
-    with _progress() as progress:
+    with counting() as progress:
         found = requested(load_problem(problem), request, progress)
     save(found, csv, figure)
-    _print(show(found, json=json))
+    put(show(found, json=json, width=page_width()))
 
 
 def worth(
@@ -70,21 +71,7 @@ def worth(
     check_targets(csv)
     loaded = load_problem(problem)
     more = None if others is None else load_catalog(str(others))
-    with _progress() as progress:
+    with counting() as progress:
         found = worth(loaded, others=more, gap=solver_settings(loaded, gap=gap).gap, progress=progress)
     save(found, csv)
-    _print(show(found, json=json))
-
-
-def _progress():
-    from contextlib import closing
-
-    from codesign.report.output import PointProgress
-
-    return closing(PointProgress())
-
-
-def _print(text: str) -> None:
-    from codesign.report.output import shown
-
-    typer.echo(shown(text, sys.stdout.encoding), nl=False)
+    put(show(found, json=json, width=page_width()))

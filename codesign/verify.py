@@ -6,6 +6,8 @@ the bound of every configuration from its multipliers, and that the configuratio
 
 from __future__ import annotations
 
+import itertools
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -41,8 +43,14 @@ class Verdict:
     value: float
 
 
-def verify(solution: Solution) -> Verdict:
+def verify(solution: Solution, progress: Callable[[int, int], None] | None = None) -> Verdict:
     """Re-derive the proof of a solution.
+
+    Parameters
+    ----------
+    solution : Solution
+    progress : callable, optional
+        Called with (pieces of the proof checked, pieces in all).
 
     Raises
     ------
@@ -58,9 +66,12 @@ def verify(solution: Solution) -> Verdict:
         raise CertificateError(
             f"certificate: {certificate.configurations} configurations were searched, the problem has {walk.upper.size}"
         )
-    kept = _by_evidence(walk, solution.evidence)
+    pieces = len(solution.evidence) + len(walk.assembly.settings)
+    done = itertools.count(1)
+    tick = (lambda: None) if progress is None else (lambda: progress(next(done), pieces))
+    kept = _by_evidence(walk, solution.evidence, tick)
     open_ = kept > certificate.bound * (1 + ROUND_OFF)
-    closed = _by_closed_form(walk, open_)
+    closed = _by_closed_form(walk, open_, tick)
     bounds = np.minimum(kept, closed)
     if not np.max(bounds) <= certificate.bound * (1 + ROUND_OFF):
         worst = int(np.argmax(bounds))
@@ -89,11 +100,12 @@ def _verdict_of_combined(solution: Solution) -> Verdict:
     )
 
 
-def _by_evidence(walk: Walk, evidence: tuple[Evidence, ...]) -> Array:
+def _by_evidence(walk: Walk, evidence: tuple[Evidence, ...], tick: Callable[[], None]) -> Array:
     """Bounds from the multipliers kept, ``inf`` where there are none."""
     bounds = np.full(walk.upper.size, np.inf)
     for item in evidence:
         bounds[item.index] = np.minimum(bounds[item.index], _bounds_of(walk, item))
+        tick()
     return bounds
 
 
@@ -106,7 +118,7 @@ def _bounds_of(walk: Walk, item: Evidence) -> Array:
     return check_bound(walk.programs(item.index, coarse=item.coarse, pair=item.pair), item.proof, np.inf)
 
 
-def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
+def _by_closed_form(walk: Walk, wanted: np.ndarray, tick: Callable[[], None]) -> Array:
     """Bounds of the configurations that were dropped by the closed form, derived anew."""
     bounds = np.full(walk.upper.size, np.inf)
     per_setting = 2 * walk.filters
@@ -114,6 +126,7 @@ def _by_closed_form(walk: Walk, wanted: np.ndarray) -> Array:
         part = slice(number * per_setting, (number + 1) * per_setting)
         if wanted[part].any():
             bounds[part] = _of_setting(walk, setting)
+        tick()
     return bounds
 
 

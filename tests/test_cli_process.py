@@ -92,7 +92,7 @@ def test_terminal_without_unicode_gets_ascii(tmp_path):
     out, error = process.communicate(timeout=20)
     assert (process.returncode, error) == (0, b"")
     text = out.decode("ascii")
-    assert "Blau-K?ppchen ?" in text
+    assert "Blau-Kappchen ?" in text
     assert " us, LEDs on" in text
 
 

@@ -1,13 +1,14 @@
 """Files are written whole or not at all; text reaches terminals of any encoding."""
 
-import io
+import json
 import os
 import stat
 
 import pytest
 
 from codesign.errors import CodesignError
-from codesign.report.output import Progress, as_ascii, plain, shown, write_file
+from codesign.report.layout import bullet, columns, cut, labelled, table
+from codesign.report.output import as_ascii, plain, shown, write_file
 
 
 def test_file_is_replaced_as_a_whole(tmp_path):
@@ -73,42 +74,60 @@ def test_place_that_cannot_be_written_is_refused(name, overwrite, words, tmp_pat
 
 
 @pytest.mark.parametrize(
-    ("encoding", "text"), [("utf-8", "5 µs ≤ √2"), ("ascii", "5 us <= sqrt2"), (None, "5 us <= sqrt2")]
+    ("encoding", "text"),
+    [
+        ("utf-8", "5 µs ≤ √2"),
+        ("ascii", "5 us <= sqrt2"),
+        (None, "5 us <= sqrt2"),
+        ("no such encoding", "5 us <= sqrt2"),
+        ("cp1252", "5 µs <= sqrt2"),
+    ],
 )
 def test_text_is_shown_in_what_the_stream_can_take(encoding, text):
     assert shown("5 µs ≤ √2", encoding) == text
 
 
-def test_unknown_characters_become_question_marks():
-    assert as_ascii("日") == "?"
+@pytest.mark.parametrize(("text", "ascii"), [("日", "?"), ("Käppchen", "Kappchen"), ("e\u0301", "e")])
+def test_letters_lose_their_marks_and_unknown_characters_become_question_marks(text, ascii):
+    assert as_ascii(text) == ascii
+
+
+@pytest.mark.parametrize("encoding", ["ascii", "cp1252", "cp437"])
+def test_columns_stay_in_line_where_likenesses_are_wider_or_narrower(encoding):
+    rows = [
+        ("well, surface", "≤ 25375 e⁻", "99.9 %"),
+        ("junction, led", "≤ 135 °C", "7.8 %"),
+        ("depth", "≥ 60 mm", "1 %"),
+    ]
+    lines = [shown(line, encoding) for line in table(("limit", "allowed", "used"), rows, 80)]
+    assert len({len(line) for line in lines}) == 1
+    assert shown("\n".join(labelled("bound", "≤ 3 µm", 80)), "ascii") == " bound       <= 3 um"
+
+
+def test_json_keeps_every_character_in_any_encoding():
+    table = {"title": "Käppchen 日 💡", "unit": "µs"}
+    text = json.dumps(table, ensure_ascii=False)
+    for encoding in ("ascii", "cp1252", "utf-8"):
+        assert json.loads(shown(text, encoding).encode(encoding)) == table
+    assert shown(text, "utf-8") == text
+
+
+def test_wide_characters_count_two_columns_and_marks_none():
+    assert [columns(text) for text in ("ab", "光学", "e\u0301", "💡")] == [2, 4, 1, 2]
+    assert cut("光学検査", 5) == "光学…"
+    assert columns(cut("光学検査" * 20, 40)) <= 40
+
+
+@pytest.mark.parametrize("text", ["光学検査 " * 20, "光" * 200, "e\u0301" * 200, "word " * 40])
+def test_lines_are_wrapped_by_what_they_show(text):
+    for lines, width in ((labelled("title", text, 60), 60), (bullet(text, 60), 60)):
+        assert len(lines) > 1
+        assert max(map(columns, lines)) <= width
+        assert "".join("".join(lines).split())[-5:] == "".join(text.split())[-5:]
+    rows = table(("name", "value"), [(text.strip(), "1"), ("b", "2")], 60)
+    assert {columns(row) for row in rows} == {max(map(columns, rows))}
+    assert columns(rows[0]) <= 60
 
 
 def test_typed_words_stay_on_one_line_without_control_characters():
     assert plain("a\x1b[31mb\u202ec\nd\te") == "a [31mb c d e"
-
-
-class _Terminal(io.StringIO):
-    def isatty(self) -> bool:
-        return True
-
-
-def test_progress_shows_on_a_terminal_only_and_wipes_itself(monkeypatch):
-    monkeypatch.setattr("codesign.report.output.QUIET_SECONDS", 0.0)
-    terminal, pipe = _Terminal(), io.StringIO()
-    for stream in (terminal, pipe):
-        progress = Progress(stream)
-        progress(5.0, 7.0)
-        progress.clear()
-    assert "best CNR 5" in terminal.getvalue()
-    assert terminal.getvalue().endswith(" \r")
-    assert pipe.getvalue() == ""
-
-
-def test_progress_keeps_the_best_while_runners_up_are_looked_for(monkeypatch):
-    monkeypatch.setattr("codesign.report.output.QUIET_SECONDS", 0.0)
-    terminal = _Terminal()
-    progress = Progress(terminal)
-    progress(5.0, 7.0)
-    progress(0.0, 4.0)
-    assert "best CNR 5, none above 7" in terminal.getvalue()
-    assert "best CNR 5, looking for runners-up" in terminal.getvalue()

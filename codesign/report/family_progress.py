@@ -2,38 +2,32 @@
 
 from __future__ import annotations
 
-import time
+from typing import TextIO
 
 from codesign.report.layout import bar
-from codesign.report.output import QUIET_SECONDS, Progress
+from codesign.report.progress import Status
 
 #: Cells of the bar.
 SIZE = 24
-#: Seconds between two lines, so that quick variants do not flood the terminal. [s]
-PACE_SECONDS = 0.1
 
 
-class FamilyProgress(Progress):
+class FamilyProgress(Status):
     """A bar with the time that is left, estimated from the variants run so far."""
 
-    def __init__(self, stream=None) -> None:
-        super().__init__(stream)
-        self.last = 0.0
+    def __init__(self, stream: TextIO | None = None) -> None:
+        self.last: tuple[int, int, int, int] | None = None
+        super().__init__("reading", stream)
 
     def __call__(self, done: int, total: int, failed: int, run: int) -> None:
         """Show variants done of all, those that failed, and the time left.
 
         ``run`` counts the variants run in this call of the program; the others were in the store.
         """
-        now = time.monotonic()
-        seconds = now - self.started
-        if not self.watched or seconds < QUIET_SECONDS or (now - self.last < PACE_SECONDS and done < total):
-            return
-        self.last = now
-        line = family_line(done, total, failed, run, seconds)
-        self.stream.write("\r" + line.ljust(self.width))
-        self.stream.flush()
-        self.width = len(line)
+        self.last = done, total, failed, run
+
+    def line(self, now: float) -> str:
+        """Return the line as it reads at a time. [s]"""
+        return super().line(now) if self.last is None else family_line(*self.last, now - self.started)
 
 
 def family_line(done: int, total: int, failed: int, run: int, seconds: float) -> str:

@@ -10,6 +10,8 @@ from collections.abc import Container, Sequence
 NARROWEST = 60
 #: Width of the label column.
 LABEL = 12
+#: Lengths of bars, the first that leaves room for the words beside them. [characters]
+BARS = (12, 6)
 
 
 def visible(text: str) -> str:
@@ -85,7 +87,7 @@ def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left
     """
     cells = [[visible(cell) for cell in row] for row in (header, *rows)]
     sizes = [max(columns(row[k]) for row in cells) for k in range(len(header))]
-    while sum(sizes) + 2 * len(sizes) > width and max(sizes) > 8:
+    while sum(sizes) + 2 * len(sizes) - 1 > width and max(sizes) > 4:
         sizes[sizes.index(max(sizes))] -= 1
     lines = []
     for row in cells:
@@ -98,6 +100,22 @@ def _fit(cell: str, size: int, *, flush_left: bool) -> str:
     cell = cut(cell, size)
     room = " " * (size - columns(cell))
     return cell + room if flush_left else room + cell
+
+
+def barred(header: Sequence[str], rows: Sequence[Sequence[str]], shares: Sequence[float], width: int) -> list[str]:
+    """Return rows in columns with a bar of each row's share at the right edge.
+
+    Where the page is too narrow for both, bars are shortened or left out rather than words cut.
+    """
+    whole = max(map(columns, table(header, rows, 10 * width)))
+    size = next((size for size in BARS if whole + size + 2 <= width), 0)
+    lines = table(header, rows, width - size - 2 if size else width)
+    if not size:
+        return lines
+    return [lines[0]] + [
+        line + " " * (width - size - 1 - columns(line)) + " " + bar(share, size)
+        for line, share in zip(lines[1:], shares, strict=True)
+    ]
 
 
 def bar(share: float, size: int) -> str:
@@ -133,8 +151,3 @@ def duration(seconds: float) -> str:
         if seconds < top:
             return f"{number(seconds / size, 2 if seconds / size < 100 else 3)} {unit}"
     return f"{number(seconds / 3600, 2)} h"
-
-
-def counted(count: int, thing: str) -> str:
-    """Return a number of things in words: "1 point", "2 points"."""
-    return f"{count} {thing}" if count == 1 else f"{count} {thing}s"

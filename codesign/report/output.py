@@ -2,51 +2,96 @@
 
 from __future__ import annotations
 
+import codecs
+import json
 import os
-import sys
+import re
 import tempfile
-import time
+import unicodedata
+from functools import cache
 from pathlib import Path
-from typing import TYPE_CHECKING, TextIO
+from typing import TYPE_CHECKING
 
 from codesign.errors import CodesignError
-from codesign.report.layout import visible
+from codesign.report.layout import LABEL, visible
+from codesign.report.progress import PointProgress, Progress
 
 if TYPE_CHECKING:
     import pandas as pd
 
-#: How special characters of a report read where only ASCII can be shown.
-ASCII = str.maketrans(
-    {
-        "µ": "u", "°": "", "²": "2", "×": "x", "±": "+/-", "−": "-", "–": "-", "—": "-", "≤": "<=", "≥": ">=",
-        "·": ".", "█": "#", "▌": "#", "░": ".", "─": "-", "►": ">", "…": "...", "σ": "sigma", "⁻": "-", "λ": "lambda",
-        "√": "sqrt", "¼": "(1/4)", "¾": "(3/4)", "³": "3",
-    }
-)  # fmt: skip
+__all__ = ["PointProgress", "Progress", "as_ascii", "plain", "shown", "write_file"]
+
+#: How the characters of reports read where they cannot be shown, as wide as they are where that can be.
+ASCII = {
+    "µ": "u", "°": "", "²": "2", "³": "3", "×": "x", "±": "+/-", "−": "-", "–": "-", "—": "-", "≤": "<=", "≥": ">=",
+    "·": ".", "█": "#", "▌": "#", "░": ".", "─": "-", "►": ">", "…": "~", "σ": "s", "⁻": "-", "λ": "l", "√": "sqrt",
+    "→": "->", "¼": "(1/4)", "¾": "(3/4)",
+}  # fmt: skip
 
 #: What makes a spreadsheet take a cell for a formula.
 FORMULA_STARTS = ("=", "+", "-", "@")
 
-#: A search shorter than this shows no progress. [s]
-QUIET_SECONDS = 0.5
-
 
 def as_ascii(text: str) -> str:
     """Return the text in plain ASCII; what has no likeness becomes ``?``."""
-    return text.translate(ASCII).encode("ascii", "replace").decode("ascii")
+    return shown(text, "ascii")
 
 
 def shown(text: str, encoding: str | None) -> str:
-    """Return the text as it is where the encoding can show it, else in ASCII; never with control characters.
+    """Return the text as it is where the encoding can show it, else with likenesses of what it cannot show.
 
-    Whatever a name holds, nothing but characters that show and line ends reaches a terminal.
+    Whatever a name holds, nothing but characters that show and line ends reaches a terminal: no control characters.
+    Columns of tables stay in line. JSON, which is UTF-8 by its standard (RFC 8259), becomes ASCII with its own escapes
+    in any other encoding.
     """
     text = "\n".join(map(visible, text.split("\n")))
     try:
-        text.encode(encoding or "ascii")
-    except (UnicodeEncodeError, LookupError):
-        return as_ascii(text)
-    return text
+        encoding = codecs.lookup(encoding or "ascii").name
+    except LookupError:
+        encoding = "ascii"
+    if encoding == "utf-8" or text.isascii():
+        return text
+    if text[:1] in ("{", "["):  # reports begin with a space or a word
+        return "".join(c if c.isascii() else json.dumps(c)[1:-1] for c in text)
+    return "\n".join(_line(line, encoding) for line in text.split("\n"))
+
+
+def _line(line: str, encoding: str) -> str:
+    """Replace what cannot be shown; the space before a cell takes up what its likeness is wider or narrower."""
+    found = ""
+    for character in line:
+        if _can(character, encoding):
+            found += character
+            continue
+        likeness = _likeness(character, encoding)
+        found = _widened(found, 1 - len(likeness)) + likeness
+    return found
+
+
+def _widened(line: str, by: int) -> str:
+    """Return a beginning of a line with more or less space before its last cell; words after a label stay in place."""
+    gaps = [gap for gap in re.finditer("  +", line) if gap.end() > LABEL + 1] if by else []
+    if not gaps:
+        return line
+    start, end = gaps[-1].span()
+    return line[:start] + " " * max(end - start + by, 1) + line[end:]
+
+
+@cache
+def _can(character: str, encoding: str) -> bool:
+    try:
+        character.encode(encoding)
+    except UnicodeEncodeError:
+        return False
+    return True
+
+
+def _likeness(character: str, encoding: str) -> str:
+    """Return what a character is replaced by: our own choice, its letter without marks, or a question mark."""
+    if character in ASCII:
+        return ASCII[character]
+    letters = "".join(c for c in unicodedata.normalize("NFKD", character) if _can(c, encoding))
+    return letters if letters.strip() else "" if unicodedata.combining(character) else "?"
 
 
 def plain(text: str) -> str:
@@ -123,50 +168,3 @@ def _umask() -> int:
     mask = os.umask(0)
     os.umask(mask)
     return mask
-
-
-class Progress:
-    """One line on a terminal that tells how far a search is; silent when nobody watches."""
-
-    def __init__(self, stream: TextIO | None = None) -> None:
-        self.stream = sys.stderr if stream is None else stream
-        self.watched = self.stream.isatty()
-        self.started = time.monotonic()
-        self.width = 0
-        self.best = 0.0
-
-    def __call__(self, best: float, bound: float) -> None:
-        """Show the best CNR so far and the bound on what is left."""
-        seconds = time.monotonic() - self.started
-        self.best = max(self.best, best)
-        if not self.watched or seconds < QUIET_SECONDS:
-            return
-        # A search among fewer parts starts from nothing again: it is after runners-up.
-        doing = f"none above {bound:.4g}" if best >= self.best else "looking for runners-up"
-        line = f"searching {seconds:.0f} s: best CNR {self.best:.4g}, {doing}"
-        self.stream.write("\r" + line.ljust(self.width))
-        self.stream.flush()
-        self.width = len(line)
-
-    def clear(self) -> None:
-        """Wipe the line."""
-        if self.width:
-            self.stream.write("\r" + " " * self.width + "\r")
-            self.stream.flush()
-            self.width = 0
-
-    close = clear
-
-
-class PointProgress(Progress):
-    """The same for a study of many points."""
-
-    def __call__(self, done: int, total: int) -> None:
-        """Show how many points are solved."""
-        seconds = time.monotonic() - self.started
-        if not self.watched or seconds < QUIET_SECONDS:
-            return
-        line = f"{done} of {total} points, {seconds:.0f} s"
-        self.stream.write("\r" + line.ljust(self.width))
-        self.stream.flush()
-        self.width = len(line)

@@ -14,11 +14,11 @@ from codesign.study.vary import Variation
 from codesign.study.worth import Worths
 
 
-def show(found: Variation | Worths, *, json: bool) -> str:
+def show(found: Variation | Worths, *, json: bool, width: int = 80) -> str:
     """Return a study as text, or as JSON."""
     if isinstance(found, Variation):
-        return as_json(variation_dict(found)) if json else variation_text(found)
-    return as_json(worth_dict(found)) if json else worth_text(found)
+        return as_json(variation_dict(found)) if json else variation_text(found, width)
+    return as_json(worth_dict(found)) if json else worth_text(found, width)
 
 
 def check_targets(csv: Path | None, figure: Path | None = None) -> None:

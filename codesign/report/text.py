@@ -9,28 +9,29 @@ from typing import TYPE_CHECKING
 from codesign.design import Design, LedState, LimitUse, Performance
 from codesign.problem import Problem
 from codesign.report.cautions import cautions
-from codesign.report.layout import NARROWEST, bar, bullet, heading, labelled, number, percent, table
+from codesign.report.layout import NARROWEST, barred, bullet, heading, labelled, number, percent, table
 from codesign.report.output import plain
 
 if TYPE_CHECKING:
+    from codesign.least_cost import LeastCost
     from codesign.solve import Solution
     from codesign.verify import Verdict
 
-CNR_DEFINITION = "|target mean - background mean| / √(mean of their two variances)"
+CNR_DEFINITION = "|target mean - background mean| / √(mean of their variances)"
 
 #: From this share on a limit counts as reached. [1]
 REACHED = 0.999
 #: Limits met that are used less are counted in one line; the JSON result lists all. [1]
 HARDLY_USED = 0.01
 #: Units as set in text; error messages and JSON keep to ASCII.
-UNITS = {"us": "µs", "e-": "e⁻", "deg C": "°C"}
-#: Length of the bars. [characters]
-BAR = 12
+UNITS = {"us": "µs", "e-": "e⁻", "e-^2": "e⁻²", "deg C": "°C"}
 #: Parts left out that are listed; the JSON result lists all.
 LISTED = 6
 
 
-def solution_text(solution: Solution, width: int = 80, verdict: Verdict | None = None) -> str:
+def solution_text(
+    solution: Solution, width: int = 80, verdict: Verdict | None = None, least: LeastCost | None = None
+) -> str:
     """Return a solution as plain text.
 
     Parameters
@@ -40,6 +41,8 @@ def solution_text(solution: Solution, width: int = 80, verdict: Verdict | None =
         Page width, at least 60. [characters]
     verdict : Verdict, optional
         What `codesign.verify` returned, where it was run.
+    least : LeastCost, optional
+        What was made least, where the solution belongs to that.
 
     Returns
     -------
@@ -49,7 +52,8 @@ def solution_text(solution: Solution, width: int = 80, verdict: Verdict | None =
     width = max(width, NARROWEST)
     problem, recipe = solution.problem, solution.recipe
     blocks = [
-        _title(problem, width),
+        [*_title(problem, width), *_stopped(solution, width)],
+        [] if least is None else _least(least, width),
         _settings(problem, recipe, width),
         _results(problem, recipe, width),
         _limits(recipe, width, solution.binding),
@@ -93,6 +97,25 @@ def _title(problem: Problem, width: int) -> list[str]:
     return [*labelled("title", plain(problem.spec.title), width), *labelled("problem", plain(problem.where), width)]
 
 
+def _stopped(solution: Solution, width: int) -> list[str]:
+    if solution.status != "stopped":
+        return []
+    said = f"before the gap asked for: {percent(solution.certificate.gap)} is proven; more time narrows it"
+    return labelled("stopped", said, width)
+
+
+def _least(least: LeastCost, width: int) -> list[str]:
+    unit = f" {UNITS.get(least.unit, least.unit)}".rstrip()
+    value, bound = f"{least.value:.6g}{unit}", f"{least.bound:.6g}{unit}"
+    short = "" if least.status == "proven" else ", stopped before the gap asked for"
+    return [
+        heading(f"least {least.quantity}", width),
+        *labelled("least", f"{value} reaches CNR {least.required_cnr:g}", width),
+        *labelled("bound", f"with {bound} or less no recipe does (proven{short})", width),
+        *labelled("below", f"the recipe of most CNR at that {least.quantity}, which is among its limits", width),
+    ]
+
+
 def _verdict(performance: Performance, width: int) -> list[str]:
     if performance.feasible:
         return [heading("verdict", width), *labelled("all limits", "are met", width)]
@@ -110,27 +133,25 @@ def _settings(problem: Problem, performance: Performance, width: int) -> list[st
         ("camera", camera),
         ("filter", design.filter),
         ("f-number", f"{design.f_number:g}"),
-        ("exposure", f"{exposure_words(design)}, {light_words(problem, performance)}"),
+        ("exposure", f"{_exposure(design)}, {_light_mode(problem, performance)}"),
         *([("weights", _weights(performance))] if performance.weights else []),
     ):
         lines += labelled(label, text, width)
     if not performance.leds:
         return lines + labelled("LEDs", "all off", width)
     rows = [
-        (s.id, currents_words(design, s), f"× {s.emitters}", f"junction {s.junction_c:.1f} °C")
-        for s in performance.leds
+        (s.id, _currents(design, s), f"× {s.emitters}", f"junction {s.junction_c:.1f} °C") for s in performance.leds
     ]
     return lines + table(("LED", "current", "emitters", "predicted"), rows, width)
 
 
-def exposure_words(design: Design) -> str:
-    """Say the exposure, or those of all shots."""
+def _exposure(design: Design) -> str:
     if not design.shots:
         return f"{design.exposure_us:.10g} µs"
     return f"{len(design.shots)} shots of " + ", ".join(f"{shot.exposure_us:.10g}" for shot in design.shots) + " µs"
 
 
-def currents_words(design: Design, state: LedState) -> str:
+def _currents(design: Design, state: LedState) -> str:
     """Current of an LED, shot after shot."""
     if not design.shots:
         return f"{state.drive_ma:.10g} mA"
@@ -142,8 +163,7 @@ def _weights(performance: Performance) -> str:
     return ", ".join(f"{plain(name)} {weight:+.4f}" for name, weight in performance.weights.items())
 
 
-def light_words(problem: Problem, performance: Performance) -> str:
-    """Say when the LEDs are on."""
+def _light_mode(problem: Problem, performance: Performance) -> str:
     if not problem.strobe:
         return "LEDs on continuously"
     return f"LEDs on {percent(performance.duty)} of the time at {problem.spec.timing.frame_rate_hz:g} Hz"
@@ -192,22 +212,12 @@ def _limits(performance: Performance, width: int, binding: tuple[str, ...] | Non
         shown = ordered
     rows = [_limit_row(limit, binding) for limit in shown]
     lines = [heading("what limits it", width)]
-    lines += _with_bars(table(("  limit", "value", "allowed", "used"), rows, width - BAR - 3), shown, width)
+    lines += barred(("  limit", "value", "allowed", "used"), rows, [limit.share for limit in shown], width)
     if len(shown) < len(ordered):
         lines.append(f"   and {len(ordered) - len(shown)} more below {percent(HARDLY_USED)} (--json lists all)")
     if any(_bound(limit, binding) and limit.met for limit in ordered):
         lines.append(" ► binds: loosening this limit can raise the CNR")
     return lines if performance.feasible else [*lines, " ! exceeded"]
-
-
-def _with_bars(rows: list[str], limits: list[LimitUse], width: int) -> list[str]:
-    header, *rest = rows
-    return [header, *_drawn(rest, [limit.share for limit in limits], width)]
-
-
-def _drawn(rows: list[str], shares: list[float], width: int) -> list[str]:
-    """Put a bar at the right edge of each row."""
-    return [f"{row.ljust(width - BAR - 1)} {bar(share, BAR)}" for row, share in zip(rows, shares, strict=True)]
 
 
 def _bound(limit: LimitUse, binding: tuple[str, ...] | None) -> bool:
@@ -231,10 +241,10 @@ def _noise(performance: Performance, width: int) -> list[str]:
         for name, (a, b) in ordered
         if a + b > 0
     ]
-    header, *lines = table(("term", "σ target", "σ backgr.", "variance"), rows, width - BAR - 3)
     shares = [sum(pair) / total for _, pair in ordered if sum(pair) > 0]
     note = " σ: standard deviation in electrons"
-    return [heading("noise budget", width), header, *_drawn(lines, shares, width), note]
+    table = barred(("term", "σ target", "σ backgr.", "variance"), rows, shares, width)
+    return [heading("noise budget", width), *table, note]
 
 
 def _proof(solution: Solution, width: int, verdict: Verdict | None) -> list[str]:
@@ -242,7 +252,7 @@ def _proof(solution: Solution, width: int, verdict: Verdict | None) -> list[str]
     lines = [heading("how sure it is", width)]
     rows = (
         ("bound", f"no setting of the candidates has a CNR above {number(proof.bound, 6)} (proven)"),
-        ("optimum", f"{number(proof.value, 6)} before rounding, gap {percent(proof.gap)}"),
+        ("optimum", f"{number(proof.value, 6)} before rounding, gap {percent(proof.gap, least=1e-6)}"),
         ("recipe", f"{number(solution.recipe.cnr, 6)} in settable steps, {_loss(solution.rounding_loss)} the bound"),
         (
             "searched",
@@ -270,17 +280,17 @@ def _loss(loss: float) -> str:
 def _runners_up(solution: Solution, width: int) -> list[str]:
     if not solution.alternatives:
         return []
-    best = solution.certificate.value
-    rows = [
-        (a.design.camera, a.design.filter, number(a.cnr), f"{100 * (a.cnr / best - 1):+.1f} %", _aperture(a.design))
-        for a in sorted(solution.alternatives, key=lambda a: -a.cnr)
-    ]
-    header = ("camera", "filter", "CNR", "change", "gain, f-number, exposure")
+    best, found = solution.certificate.value, sorted(solution.alternatives, key=lambda a: -a.cnr)
+    parts = [(a.design.camera, a.design.filter) for a in found]
+    values = [(number(a.cnr), f"{100 * (a.cnr / best - 1):+.1f} %") for a in found]
+    settings = [(f"{a.design.f_number:g}", f"{number(a.design.exposure_us)} µs") for a in found]
+    # A gain that is the same everywhere need not be told.
+    gains = [(f"{a.design.gain_db:g} dB",) for a in found]
+    same = {gain for (gain,) in gains} == {f"{solution.optimum.design.gain_db:g} dB"}
+    columns = [parts, values, *([] if same else [gains]), settings]
+    rows = [[cell for cells in row for cell in cells] for row in zip(*columns, strict=True)]
+    header = ("camera", "filter", "CNR", "change", *(() if same else ("gain",)), "f-stop", "exposure")
     return [heading("runners-up with other parts, before rounding", width), *table(header, rows, width, left=(0, 1))]
-
-
-def _aperture(design: Design) -> str:
-    return f"{design.gain_db:g} dB, f/{design.f_number:g}, {number(design.exposure_us)} µs"
 
 
 def _left_out(problem: Problem, width: int) -> list[str]:

@@ -6,7 +6,7 @@ import math
 
 from codesign.design import Design
 from codesign.problem import Problem
-from codesign.report.layout import NARROWEST, bar, bullet, heading, labelled, number, percent, table
+from codesign.report.layout import NARROWEST, barred, bullet, heading, labelled, number, percent, table
 from codesign.report.output import plain
 from codesign.study.draws import SWITCH, Spread
 from codesign.study.robust import Robust
@@ -17,7 +17,6 @@ from codesign.study.tolerance import QUANTILES, Rate, Tolerance
 LISTED = 6
 #: Causes said to be the main ones.
 MAIN = 3
-BAR = 12
 #: Share of rigs within all limits below which a robust recipe is advised. [1]
 LOW_YIELD = 0.9
 
@@ -89,10 +88,9 @@ def _causes(found: Tolerance, width: int) -> list[str]:
     rows = [
         (c.cause, percent(max(c.first_order, 0.0)), f"{percent(c.total)} ± {_half(c.total_interval)}") for c in shown
     ]
-    header, *body = table(("cause", "alone", "with others"), rows, width - BAR - 3)
-    drawn = [f"{row.ljust(width - BAR - 1)} {bar(c.total, BAR)}" for row, c in zip(body, shown, strict=True)]
+    drawn = barred(("cause", "alone", "with others"), rows, [c.total for c in shown], width)
     main = "; ".join(c.cause for c in shown[:MAIN])
-    lines = [heading("what makes the CNR vary", width), header, *drawn]
+    lines = [heading("what makes the CNR vary", width), *drawn]
     return lines + labelled("main causes", main, width) + labelled("", "shares of the variance (Sobol' indices)", width)
 
 

@@ -9,14 +9,13 @@ All but the ``⌊q K⌋`` scenarios that may fall short must reach the value, so
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from codesign.design import Design, evaluate
-from codesign.display import Displayed
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.limits import junction_limit
 from codesign.problem import Problem
@@ -39,8 +38,8 @@ LARGEST_NUMBER_OF_ROUNDS, JUNCTION_TOLERANCE_K = 4, 0.5
 CHOICES = 3
 
 
-@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
-class Robust(Displayed):
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Robust:
     """A robust recipe next to the nominal one.
 
     Attributes
@@ -97,6 +96,7 @@ def robust(
     seed: int = 1,
     quantile: float = 0.0,
     gap: float = GAP,
+    progress: Callable[[str, int, int], None] | None = None,
 ) -> Robust:
     """Find the recipe of greatest CNR in the worst of many scenarios, or in all but a share of them.
 
@@ -111,6 +111,8 @@ def robust(
         Share of scenarios that may fall short of the CNR; 0 for the worst case.
     gap : float
         Relative gap to prove in the worst case. [1]
+    progress : callable, optional
+        Called with (what is being done, equal pieces of it done, pieces in all or 0 where these are not known).
 
     Returns
     -------
@@ -122,19 +124,28 @@ def robust(
         When the limits cannot hold in all scenarios together.
     """
     _check(problem, scenarios, seed, quantile)
+    say = progress or (lambda what, done, total: None)
+    say("drawing scenarios", 0, 0)
     draws = scenario_draws(problem, scenarios, seed)
     worlds = [scenario(problem, draws, k) for k in range(scenarios)]
     _require_cool_air(problem, worlds)
+    say("solving the rig as stated", 0, 0)
     nominal = solve(problem, alternatives=0)
+    say("searching in all scenarios", 0, 0)
     search = _Search(problem, worlds, draws, nominal, gap)
     spare = int(np.floor(quantile * scenarios + 1e-9))
     everything = list(range(scenarios))
     best, bound, residual = search.over(everything)
     by = "joint search"
     if spare:
+        say("leaving out the worst", 0, 0)
         best, residual = _without_worst(search, best, residual, spare, everything)
-        alone = [search.bound_of(k) for k in everything]
+        alone = []
+        for k in everything:
+            say("bounding each scenario", k, scenarios)
+            alone.append(search.bound_of(k))
         bound, by = float(np.sort(alone)[spare]), "single scenarios"
+    say("trying the recipes", 0, 0)
     trials = [search.trial(nominal.recipe.design), search.derated(), best]
     candidates = [t for t in trials if t is not None]
     chosen = max(reversed(candidates), key=lambda t: t.level(quantile))

@@ -15,7 +15,6 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from codesign.design import Design
-from codesign.display import Displayed
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.problem import Problem
 from codesign.study.ceiling import Ceiling, ceilings
@@ -70,8 +69,8 @@ class Route:
     design: Design | None = field(default=None, repr=False)
 
 
-@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
-class Routes(Displayed):
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Routes:
     """Everything that could be done about a CNR.
 
     ``pair`` is None where none reaches it with noticeably less than a single lever; ``pair_floor`` is the factor at

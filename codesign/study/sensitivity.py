@@ -21,7 +21,6 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from codesign.design import evaluate
-from codesign.display import Displayed
 from codesign.errors import CatalogError, InfeasibleError, ProblemError, SolveError
 from codesign.problem import Problem
 from codesign.problem.choices import JOINT
@@ -102,8 +101,8 @@ class Elasticity:
     high: Shifted | None
 
 
-@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
-class Sensitivities(Displayed):
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Sensitivities:
     """Shadow prices and elasticities at one certified optimum."""
 
     problem: Problem = field(repr=False)

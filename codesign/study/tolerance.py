@@ -7,18 +7,18 @@ limits.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+import itertools
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
 from codesign.design import Design, Performance
-from codesign.display import Displayed
 from codesign.errors import ProblemError
 from codesign.problem import Problem
 from codesign.study.draws import Spread, cause_names, draws_from, filters_in, spreads, standard_normal
-from codesign.study.fleet import Fleet
+from codesign.study.fleet import RIGS_TOGETHER, Fleet
 from codesign.study.fleet_limits import broken, limit_shares, longest_exposure
 from codesign.study.indices import CauseShare, variance_shares
 
@@ -73,8 +73,8 @@ class Outcome:
         return kept
 
 
-@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
-class Tolerance(Displayed):
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Tolerance:
     """Spread of the CNR over rigs, and the yield.
 
     Attributes
@@ -137,6 +137,7 @@ def tolerance(
     seed: int = 1,
     required: float | None = None,
     retune: bool = False,
+    progress: Callable[[int, int], None] | None = None,
 ) -> Tolerance:
     """Set a recipe on many rigs built from real parts.
 
@@ -152,6 +153,8 @@ def tolerance(
         CNR a rig must reach; that of the problem by default.
     retune : bool
         Set the exposure anew on each rig.
+    progress : callable, optional
+        Called with (rigs worked out, rigs in all, those that part the variance included).
 
     Returns
     -------
@@ -173,10 +176,13 @@ def tolerance(
     def rigs(z: dict[str, Array], count: int) -> Fleet:
         return Fleet(problem, design, draws_from(listed, z, count))
 
+    total = draws + (SHARE_SAMPLE * (len(names) + 2) if names else 0)
+    done = itertools.accumulate(itertools.repeat(RIGS_TOGETHER))
+    tick = (lambda: None) if progress is None else (lambda: progress(min(next(done), total), total))
     fleet = rigs(standard_normal(names, draws, seed), draws)
-    outcome = run(fleet, retune=retune)
+    outcome = run(fleet, retune=retune, tick=tick)
     causes = variance_shares(
-        lambda z: run(rigs(z, len(z[names[0]])), retune=retune, limits=False).cnr, names, SHARE_SAMPLE, seed
+        lambda z: run(rigs(z, len(z[names[0]])), retune=retune, limits=False, tick=tick).cnr, names, SHARE_SAMPLE, seed
     )
     above = outcome.cnr >= (required or 0.0)
     shares = {name: float(np.mean(missed)) for name, missed in outcome.missed.items() if np.any(missed)}
@@ -203,8 +209,8 @@ def spreads_of(problem: Problem, design: Design) -> tuple[Spread, ...]:
     return spreads(problem, leds, filters_in(problem, design.filter))
 
 
-def run(fleet: Fleet, *, retune: bool = False, limits: bool = True) -> Outcome:
-    """Evaluate all rigs of a fleet; ``limits`` False leaves them out."""
+def run(fleet: Fleet, *, retune: bool = False, limits: bool = True, tick: Callable[[], None] = lambda: None) -> Outcome:
+    """Evaluate all rigs of a fleet; ``limits`` False leaves them out, ``tick`` is called after each block of rigs."""
     cnr, exposure = np.empty(fleet.rigs.size), np.empty(fleet.rigs.size)
     missed: list[Mapping[str, NDArray[np.bool_]]] = []
     for part, block in fleet.blocks():
@@ -212,6 +218,7 @@ def run(fleet: Fleet, *, retune: bool = False, limits: bool = True) -> Outcome:
         light = longest_exposure(block) if retune else block.light(now)
         cnr[part], exposure[part] = block.contrast(light), light.exposure_s
         missed += [broken(limit_shares(block, light))] if limits else []
+        tick()
     names: Sequence[str] = tuple(missed[0]) if missed else ()
     return Outcome(
         cnr=cnr, exposure_s=exposure, missed={name: np.concatenate([each[name] for each in missed]) for name in names}

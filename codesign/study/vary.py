@@ -16,6 +16,7 @@ from codesign.errors import CatalogError, InfeasibleError, ProblemError
 from codesign.problem import Problem
 from codesign.study.common import Resolved, resolve
 from codesign.study.fields import Axis, varied
+from codesign.study.processes import in_processes
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -170,10 +171,10 @@ def vary(
     jobs = [(problem, settings, axes, chain, start, gap) for chain in chains]
     total = len(grid)
     if workers > 1 and len(jobs) > 1:
-        solved = _in_processes(jobs, workers, progress, total)
+        # The chains are nearly equally long and go side by side, so one tells how far all are.
+        solved = in_processes(_chain, jobs, workers, _tick(progress, total, len(jobs)))
     else:
-        done = itertools.count(1)
-        tick = None if progress is None else lambda: progress(next(done), total)
+        tick = _tick(progress, total)
         solved = [_chain(*job, tick) for job in jobs]
     found = {place: point for chain in solved for place, point in chain}
     return Variation(
@@ -186,6 +187,12 @@ def vary(
         points=tuple(found[place] for place in sorted(found)),
         gap=gap,
     )
+
+
+def _tick(progress: Callable[[int, int], None] | None, total: int, chains: int = 1) -> Callable[[], None] | None:
+    """What to call after each point, ``chains`` of them being solved side by side."""
+    done = itertools.count(chains, chains)
+    return None if progress is None else lambda: progress(min(next(done), total), total)
 
 
 def snake(axes: Sequence[Axis]) -> list[tuple[int, ...]]:
@@ -291,19 +298,6 @@ def point_of(found: Resolved, values: tuple[Any, ...]) -> Point:
 
 def _without_file(text: str, problem: Problem) -> str:
     return text.removeprefix(f"{problem.where}: ")
-
-
-def _in_processes(jobs, workers: int, progress, total: int) -> list:
-    """The first chain here, the others in further processes."""
-    from concurrent.futures import ProcessPoolExecutor
-    from multiprocessing import get_context
-
-    # Forking a process that has threads may lock up.
-    with ProcessPoolExecutor(min(workers, len(jobs)) - 1, mp_context=get_context("spawn")) as pool:
-        running = [pool.submit(_chain, *job) for job in jobs[1:]]
-        done = itertools.count(1)
-        tick = None if progress is None else lambda: progress(next(done), total)
-        return [_chain(*jobs[0], tick), *(future.result() for future in running)]
 
 
 def _plain(value: Any) -> Any:

@@ -8,25 +8,14 @@ from pathlib import Path
 from typing import Any
 
 from codesign.errors import CodesignError
-from codesign.report.output import QUIET_SECONDS, Progress
+from codesign.report.progress import PointProgress
 
 
-class StepProgress(Progress):
+class StepProgress(PointProgress):
     """One line on a terminal that tells how far a named step is; silent when nobody watches."""
 
     def __init__(self, step: str) -> None:
-        super().__init__()
-        self.step = step
-
-    def __call__(self, done: float, total: float) -> None:
-        """Show how much is done."""
-        seconds = time.monotonic() - self.started
-        if not self.watched or seconds < QUIET_SECONDS:
-            return
-        line = f"{self.step}: {done:g} of {total:g}, {seconds:.0f} s"
-        self.stream.write("\r" + line.ljust(self.width))
-        self.stream.flush()
-        self.width = len(line)
+        super().__init__(doing=step)
 
 
 class Work:

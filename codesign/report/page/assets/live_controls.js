@@ -39,7 +39,8 @@
   function typed(input, low, high, open = false) {
     const value = input.value.trim() === "" ? NaN : Number(input.value);
     const good = Number.isFinite(value) && value <= high && (open ? value > low : value >= low);
-    const range = `${open ? "above" : "from"} ${live.number(low, 6)} to ${live.number(high, 6)}`;
+    const range = high === Infinity ? `${open ? "above" : "at least"} ${live.number(low)}`
+      : `${open ? "above" : "from"} ${live.number(low)} to ${live.number(high, 6)}`;
     complain(input, good ? "" : `must be a number ${range}`);
     return good ? value : null;
   }

@@ -83,7 +83,7 @@
       }
       svg("line", { class: "live-zero", x1: LEFT, x2: width - RIGHT, y1: zero, y2: zero }, this.frame);
       this.text("wavelength [nm]", (LEFT + width - RIGHT) / 2, end + 31, "middle");
-      this.text("difference, up: target brighter", LEFT, bottom + GAP - 8, "start");
+      this.text("difference by wavelength, up: target brighter", LEFT, bottom + GAP - 8, "start");
     }
 
     text(content, x, y, anchor) {

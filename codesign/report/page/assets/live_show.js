@@ -103,17 +103,6 @@
     put("greys-note", `Grey values to ${full}; percent of saturation, the stroke marks the ${percent(mark)} allowed.`);
   }
 
-  function pairs(page, result) {
-    $("pairs-box").hidden = result.pairs.length < 2;
-    if (result.pairs.length < 2) return;
-    const most = Math.max(...result.pairs.map((pair) => pair.cnr)), turned = result.sign === "brighter" ? 1 : -1;
-    meters($("pairs"), [...result.pairs].sort((a, b) => a.cnr - b.cnr).map((pair) => {
-      const opposite = pair.signal_e * turned < 0, more = opposite ? "✗ the other way round" : "";
-      const name = `${pair.target} against ${pair.background}`, share = most > 0 ? pair.cnr / most : 0;
-      return { name, more, share, much: number(pair.cnr), kind: opposite ? "live-bad" : "" };
-    }));
-  }
-
   function limits(page, result) {
     const order = result.limits.map((limit, k) => [limit, k]);
     order.sort(([a, i], [b, j]) => Number(a.met) - Number(b.met) || b.share - a.share || i - j);
@@ -190,5 +179,5 @@
     put("printed", `Shown at: ${text.split("\n").filter((line) => line && !line.startsWith("#")).join("; ")}`);
   }
 
-  Object.assign(live, { put, parts: { headline, greys, pairs, limits, noise, views, spectra, recipe } });
+  Object.assign(live, { put, parts: { headline, greys, limits, noise, views, spectra, recipe } });
 })();
