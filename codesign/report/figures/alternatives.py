@@ -11,8 +11,10 @@ from codesign.report.figures.base import (
     describe,
     dress,
     in_house_style,
+    is_narrow,
     legend_above,
     new_figure,
+    room_beside,
     shortened,
     text_width,
     width_mm,
@@ -58,21 +60,22 @@ def draw_alternatives(panel: Panel, solution: Solution, most: int) -> None:
     for row, (_, _, cnr, best) in enumerate(rows):
         axes.barh(row, cnr, height=0.58, color=TARGET if best else BACKGROUND, alpha=0.8, hatch="" if best else "////",
                   edgecolor="white", linewidth=0)  # fmt: skip
-    lines = [(axes.axvline(bound, color=INK, linewidth=1.1, zorder=3), f"bound: nothing is above {number(bound, 5)}")]
+    lines = [(axes.axvline(bound, color=INK, linewidth=1.1, zorder=3), f"bound, {number(bound, 5)}")]
     if required is not None:
         dashed = axes.axvline(required, color=INK, linewidth=1.1, linestyle=(0, (3, 2)), zorder=3)
-        lines.append((dashed, f"required: {required:g}"))
+        lines.append((dashed, f"required, {required:g}"))
     reach = max([bound, *([required] if required is not None else [])])
     axes.set_xlim(0, 1.03 * reach)
     axes.set_ylim(len(rows) - 0.4, -0.6)
     names = [f"{camera}, {optics}" for camera, optics, _, _ in rows]
-    axes.set_yticks(range(len(rows)), [shortened(panel, name, 0.42 * width_mm(panel)) for name in names])
+    names = [shortened(panel, name, 0.42 * width_mm(panel), SMALL, "bold") for name in names]
+    axes.set_yticks(range(len(rows)), names)
     for label, (_, _, _, best) in zip(axes.get_yticklabels(), rows, strict=True):
         label.set_fontweight("bold" if best else "normal")
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
-    dress(axes, x="CNR before rounding to setting steps", grid="x")
-    legend_above(axes, "Best with other parts", lines, aside=0.5 * width_mm(panel))
+    dress(axes, x="" if is_narrow(panel) else "CNR before rounding to setting steps", grid="x")
+    legend_above(axes, "CNR with other parts", lines, aside=room_beside(panel, names))
     _columns(axes, panel, rows)
 
 

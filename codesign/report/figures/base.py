@@ -38,6 +38,8 @@ TEXT_WIDTH = 170.0
 A4 = (210.0, 297.0)
 #: Sizes of letters in print; none is smaller than the last. [pt]
 TITLE, BODY, SMALL = 8.5, 8.0, 7.0
+#: Parts of a page narrower than this have fewer columns and labels. [mm]
+NARROW = 120.0
 #: Width that axis labels and margins take beside axes, rather too much. [mm]
 ROOM_BESIDE = 22.0
 #: Dots per inch of a PNG.
@@ -163,6 +165,16 @@ def height_mm(panel: Panel) -> float:
     return float(panel.bbox.height) / panel.dpi * INCH
 
 
+def is_narrow(panel: Panel) -> bool:
+    """Whether a figure, or a part of one, has room for the most needful only."""
+    return width_mm(panel) < NARROW
+
+
+def room_beside(panel: Panel, names: Sequence[str]) -> float:
+    """Width that the names of rows take beside axes. [mm]"""
+    return max((text_width(panel, name, SMALL, "bold") for name in names), default=0.0) + 6.0
+
+
 def signed(value: float, digits: int = 4, *, plus: bool = False) -> str:
     """Return a number in few digits with a minus sign as set in print, on wish with a plus sign."""
     return ("−" if value < 0 else "+" if plus else "") + number(abs(value), digits)
@@ -271,10 +283,11 @@ def _columns(
 ) -> tuple[list[Artist], list[str], int]:
     """Artists and names that fit, in the order in which matplotlib sets them row by row, and the number of columns."""
     sign, gap = 3.2 * size / POINTS, 2.2 * size / POINTS  # handle with its pad, space between columns
-    longest = room - sign if len(entries) == 1 else (room - gap) / 2 - sign
-    names = [shortened(panel, name, longest, size) for _, name in entries]
-    widths = [text_width(panel, name, size) + sign for name in names]
-    columns = next((n for n in range(len(names), 0, -1) if n == 1 or _table_width(widths, n, gap) <= room), 1)
+    names = [shortened(panel, name, room - sign, size) for _, name in entries]
+    columns = _most_columns([text_width(panel, name, size) + sign for name in names], room, gap)
+    if columns == 1 and len(names) > 1:
+        names = [shortened(panel, name, (room - gap) / 2 - sign, size) for name in names]
+        columns = _most_columns([text_width(panel, name, size) + sign for name in names], room, gap)
     order = [k for column in range(columns) for k in range(column, len(names), columns)]
     return [entries[k][0] for k in order], [names[k] for k in order], columns
 
@@ -288,6 +301,11 @@ def _named(legend: Any, names: Sequence[str]) -> None:
     for text, name in zip(legend.get_texts(), names, strict=True):
         text.set_parse_math(False)
         text.set_text(name)
+
+
+def _most_columns(widths: Sequence[float], room: float, gap: float) -> int:
+    """Columns that entries of these widths can be set in."""
+    return next((n for n in range(len(widths), 1, -1) if _table_width(widths, n, gap) <= room), 1)
 
 
 def _table_width(widths: Sequence[float], columns: int, gap: float) -> float:

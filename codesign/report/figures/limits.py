@@ -16,13 +16,16 @@ from codesign.report.figures.base import (
     describe,
     dress,
     in_house_style,
+    is_narrow,
+    legend_above,
     new_figure,
+    room_beside,
     shortened,
     text_width,
     width_mm,
     write,
 )
-from codesign.report.house import INK, MET, MISSED, MUTED, NEAR
+from codesign.report.house import INK, MET, MISSED, NEAR
 from codesign.report.layout import number, percent
 from codesign.report.text import HARDLY_USED, REACHED, UNITS
 
@@ -53,8 +56,8 @@ def limit_use(performance: Performance, *, binding: Collection[str] | None = Non
     width : float
         Width in print. [mm]
     """
-    shown, left = shown_limits(performance, binding, MOST_ROWS)
-    figure = new_figure(width, REST + ROW * (len(shown) + bool(left)))
+    shown = shown_limits(performance, binding, MOST_ROWS)[0]
+    figure = new_figure(width, REST + ROW * len(shown))
     draw_limit_use(figure, performance, binding, MOST_ROWS)
     said = "; ".join(f"{use.name} {percent(use.share, 1e-3)} {_word(use, binding)}".strip() for use in shown)
     return describe(figure, "Use of limits", f"Share of each limit that is used: {said}.")
@@ -70,18 +73,15 @@ def draw_limit_use(panel: Panel, performance: Performance, binding: Collection[s
         axes.barh(row, share, height=0.62, color=color, alpha=0.75, hatch=hatch, edgecolor="white", linewidth=0)
     axes.axvline(1.0, color=INK, linewidth=1.0, zorder=3)
     axes.set_xlim(0, max([1.04, *shares]))
-    axes.set_ylim(len(shown) - 0.3 + bool(left), -0.7)
-    names = [shortened(panel, use.name, 0.30 * width_mm(panel)) for use in shown]
+    axes.set_ylim(len(shown) - 0.3, -0.7)
+    names = [shortened(panel, use.name, 0.36 * width_mm(panel)) for use in shown]
     axes.set_yticks(range(len(shown)), names)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
-    _per_cent(axes)
-    dress(axes, title="Use of limits", x="share used", grid="x")
+    _per_cent(axes, 0.5 if is_narrow(panel) else 0.25)
+    dress(axes, x=left_words(left) if left else "share used", grid="x")
+    legend_above(axes, "Use of limits", [], aside=room_beside(panel, names))
     _columns(axes, panel, shown, binding)
-    if left:
-        write(
-            axes, 0, len(shown), left_words(left), va="center", xytext=(2, 0), textcoords="offset points", color=MUTED
-        )
 
 
 def shown_limits(
@@ -116,10 +116,10 @@ def _look(use: LimitUse, binding: Collection[str] | None) -> tuple[str, str]:
     return (MISSED, "xxxx") if not use.met else (NEAR, "////") if binds(use, binding) else (MET, "")
 
 
-def _per_cent(axes: Axes) -> None:
+def _per_cent(axes: Axes, step: float) -> None:
     from matplotlib.ticker import FixedLocator, FuncFormatter
 
-    axes.xaxis.set_major_locator(FixedLocator(np.arange(0, LARGEST + 0.01, 0.25).tolist()))
+    axes.xaxis.set_major_locator(FixedLocator(np.arange(0, LARGEST + 0.01, step).tolist()))
     axes.xaxis.set_major_formatter(FuncFormatter(lambda share, _: f"{100 * share:.0f} %"))
 
 
@@ -129,7 +129,8 @@ def _columns(axes: Axes, panel: Panel, shown: Sequence[LimitUse], binding: Colle
     shares = [percent(use.share, 1e-3) for use in shown]
     values = [_value_words(use) for use in shown]
     right = 1.5
-    for column, align in ((words, "left"), (shares, "right"), (values, "left")):
+    every = ((words, "left"), (shares, "right"), (values, "left"))
+    for column, align in every[::2] if is_narrow(panel) else every:
         widest = max((text_width(panel, text, SMALL, "bold") for text in column), default=0.0)
         place = right if align == "left" else right + widest
         for row, text in enumerate(column):

@@ -13,8 +13,10 @@ from codesign.report.figures.base import (
     describe,
     dress,
     in_house_style,
+    is_narrow,
     legend_above,
     new_figure,
+    room_beside,
     text_width,
     width_mm,
     write,
@@ -57,11 +59,14 @@ def noise_budget(problem: Problem, performance: Performance, *, width: float = T
     return describe(figure, "Noise budget", f"Shares of the variance, mean of target and background: {said}.")
 
 
-def draw_noise_budget(panel: Panel, problem: Problem, performance: Performance) -> None:
-    """Draw the budget into a figure or a part of one."""
-    terms = _terms(performance)
-    strip, axes = panel.subplots(2, 1, height_ratios=[1.0, max(len(terms), 2)])
-    _draw_strip(strip, terms)
+def draw_noise_budget(panel: Panel, problem: Problem, performance: Performance, *, most: int = 99) -> None:
+    """Draw at most so many terms into a figure or a part of one; a narrow part has the shares only, no electrons."""
+    terms = _terms(performance)[:most]
+    if is_narrow(panel):
+        axes = top = panel.subplots()
+    else:
+        top, axes = panel.subplots(2, 1, height_ratios=[1.0, max(len(terms), 2)])
+        _draw_strip(top, terms)
     totals = [sum(values[side] for values in performance.noise.values()) for side in (0, 1)]
     target, background = (problem.surfaces[index].id for index in worst_pair(problem, performance))
     rows = range(len(terms))
@@ -78,12 +83,11 @@ def draw_noise_budget(panel: Panel, problem: Problem, performance: Performance) 
     axes.set_ylim(len(terms) - 0.4, -0.6)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
-    dress(axes, x="share of the variance", grid="x")
+    dress(axes, x="" if is_narrow(panel) else "share of the variance", grid="x")
     _numbers(axes, panel, terms)
-    legend_above(
-        strip, "Noise budget of the decision", [(handles[0], f"at {target}"), (handles[1], f"at {background}")],
-        aside=0.55 * width_mm(panel),
-    )  # fmt: skip
+    names = ("target", "background") if is_narrow(panel) else (target, background)
+    keys = [(handle, f"at {name}") for handle, name in zip(handles, names, strict=True)]
+    legend_above(top, "Noise: share of the variance", keys, aside=room_beside(panel, [name for name, _, _ in terms]))
 
 
 def _terms(performance: Performance) -> list[tuple[str, tuple[float, float], float]]:
@@ -132,7 +136,7 @@ def _numbers(axes: Axes, panel: Panel, terms: list[tuple[str, tuple[float, float
         ("σ background [e⁻]", [number(math.sqrt(pair[1]), 3) for _, pair, _ in terms]),
     )
     right = 3.0
-    for head, cells in columns:
+    for head, cells in columns[:1] if is_narrow(panel) else columns:
         right += max(text_width(panel, text) for text in (head, *cells)) + 3.0
         for row, text in ((-1.0, head), *enumerate(cells)):
             write(

@@ -11,8 +11,8 @@ from codesign.report.house import MUTED
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-#: Rows of names at most; where more are needed numbers stand for them.
-MOST_ROWS = 3
+#: Rows of names at most, and share of the height they may take; where more are needed numbers stand for them.
+MOST_ROWS, MOST_HEIGHT = 3, 0.42
 #: Height of a row, room between names side by side, longest name. [mm]
 ROW, GAP, LONGEST = 3.3, 2.0, 48.0
 #: Height of a panel that its ticks, titles and legend take. [mm]
@@ -38,12 +38,12 @@ def name_peaks(axes: Axes, peaks: list[Peak]) -> list[tuple[str, str]]:
     names = [shortened(panel, peak.words, LONGEST) for peak in ordered]
     rows = _rows(axes, ordered, names)
     keys: list[tuple[str, str]] = []
-    if max(rows, default=0) >= MOST_ROWS:
+    if max(rows, default=0) >= min(MOST_ROWS, int(MOST_HEIGHT * _axes_height(axes) / ROW)):
         names = [str(k) for k in range(1, len(ordered) + 1)]
         keys = [(name, peak.words) for name, peak in zip(names, ordered, strict=True)]
         rows = _rows(axes, ordered, names)
     count = max(rows, default=-1) + 1
-    row = ROW / max(_axes_height(axes), 4 * ROW)
+    row = ROW / _axes_height(axes)
     top = max((peak.height for peak in ordered), default=0.0) or 1.0
     axes.set_ylim(0, top / max(1 - (count + 0.5) * row, 0.2))
     for peak, name, number, place in zip(ordered, names, rows, _places(axes, ordered, names), strict=True):
@@ -65,7 +65,7 @@ def _axes_height(axes: Axes) -> float:
     grid = axes.get_subplotspec().get_gridspec()
     ratios = grid.get_height_ratios()
     share = ratios[axes.get_subplotspec().rowspan.start] / sum(ratios)
-    return height_mm(axes.get_figure(root=False)) * share - NOT_AXES
+    return max(height_mm(axes.get_figure(root=False)) * share - NOT_AXES, 3 * ROW)
 
 
 def _places(axes: Axes, peaks: list[Peak], names: list[str]) -> list[tuple[float, float]]:

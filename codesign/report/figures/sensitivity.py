@@ -15,6 +15,7 @@ from codesign.report.figures.base import (
     in_house_style,
     legend_above,
     new_figure,
+    room_beside,
     shortened,
     signed,
     text_width,
@@ -143,7 +144,8 @@ def _draw_swings(axes: Axes, swings: list[Swing], small: list[str]) -> None:
     _scale(axes, max((swing.weight for swing in swings), default=EVEN))
     axes.set_ylim(len(swings) - 0.4, -0.6)
     panel = axes.get_figure(root=False)
-    axes.set_yticks(range(len(swings)), [shortened(panel, swing.name, 0.36 * width_mm(panel)) for swing in swings])
+    names = [shortened(panel, swing.name, 0.36 * width_mm(panel)) for swing in swings]
+    axes.set_yticks(range(len(swings)), names)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
     dress(axes, x="change of CNR when one quantity strays by its tolerance", grid="x")
@@ -156,7 +158,7 @@ def _draw_swings(axes: Axes, swings: list[Swing], small: list[str]) -> None:
         (Line2D([], [], color=MUTED, linestyle="none", marker="v"), "quantity lower"),
         (Line2D([], [], color=MUTED, linestyle="none", marker="^"), "quantity higher"),
     ]
-    legend_above(axes, "What tolerances do to the CNR", keys, aside=0.4 * width_mm(panel))
+    legend_above(axes, "What tolerances do to the CNR", keys, aside=room_beside(panel, names))
     _worst_columns(axes, swings)
 
 
@@ -222,7 +224,8 @@ def _draw_prices(axes: Axes, found: Sensitivities, priced: list[tuple[LimitPrice
     axes.set_xlim(min([*shown, 0.0]) - 0.05 * reach, max([*shown, 0.0]) + 0.05 * reach)
     axes.set_ylim(max(len(priced), 1) - 0.4, -0.6)
     names = [f"{x.name} {number(x.bound)} {UNITS.get(x.unit, x.unit)}".strip() for x, _ in priced]
-    axes.set_yticks(range(len(names)), [shortened(panel, name, 0.36 * width_mm(panel)) for name in names])
+    names = [shortened(panel, name, 0.36 * width_mm(panel)) for name in names]
+    axes.set_yticks(range(len(names)), names)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
     for row, (_, share) in enumerate(priced):
@@ -245,4 +248,4 @@ def _draw_prices(axes: Axes, found: Sensitivities, priced: list[tuple[LimitPrice
     if steps:
         note = f"bind too, but move in whole steps: {', '.join(steps)}"
         axes.set_xlabel(f"{axes.get_xlabel()}\n{wrapped(panel, note, 0.6 * width_mm(panel), BODY)}")
-    legend_above(axes, "What 1 % more of a binding limit brings", [], aside=0.4 * width_mm(panel))
+    legend_above(axes, "What 1 % more of a binding limit brings", [], aside=room_beside(panel, names))

@@ -97,20 +97,27 @@ def simulated_view(
 
 
 def draw_simulated_view(
-    panel: Panel, problem: Problem, performance: Performance, before: Side | None, *, seed: int = SEED
-) -> None:
-    """Draw the pictures into a figure or a part of one."""
+    panel: Panel, problem: Problem, performance: Performance, before: Side | None, *, seed: int = SEED,
+    across: int = ACROSS, down: int = DOWN,
+) -> None:  # fmt: skip
+    """Draw the pictures into a figure or a part of one, with so many pieces across and down."""
     sides = _sides(problem, performance, before)
     reach = display_reach([side.performance.cnr for side in sides])
     room = width_mm(panel) / len(sides)
     every = panel.subplots(
-        2, len(sides), height_ratios=[0.52 * room + 9.0, SPREAD], squeeze=False, gridspec_kw={"wspace": 0.05}
+        2,
+        len(sides),
+        height_ratios=[1.03 * down / across * room + 9.0, SPREAD],
+        squeeze=False,
+        gridspec_kw={"wspace": 0.05},
     )
-    coverage = defects(ACROSS * DOWN, CELLS, np.random.default_rng(seed))
+    coverage = defects(across * down, CELLS, np.random.default_rng(seed))
     for column, side in enumerate(sides):
-        _draw_picture(every[0, column], side, coverage, reach, seed, room)
+        _draw_picture(every[0, column], side, coverage, reach, (across, seed), room)
         _draw_spread(every[1, column], side, reach, room)
-    panel.supxlabel(wrapped(panel, _caption(problem, reach), width_mm(panel) - 8.0), fontsize=SMALL, color=MUTED)
+    panel.supxlabel(
+        wrapped(panel, _caption(problem, reach, across * down), width_mm(panel) - 8.0), fontsize=SMALL, color=MUTED
+    )
 
 
 def _sides(problem: Problem, performance: Performance, before: Side | None) -> list[Side]:
@@ -153,18 +160,20 @@ def picture(side: Side, coverage: Array, seed: int) -> Array:
     return (values - want.middle_e) / max(want.noise_e, 1e-12)
 
 
-def _draw_picture(axes: Axes, side: Side, coverage: Array, reach: float, seed: int, room: float) -> None:
+def _draw_picture(axes: Axes, side: Side, coverage: Array, reach: float, plan: tuple[int, int], room: float) -> None:
+    across, seed = plan
     pieces = picture(side, coverage, seed)
     step = CELLS + GAP
-    sheet = np.full((DOWN * step - GAP, ACROSS * step - GAP), np.nan)
+    sheet = np.full((len(pieces) // across * step - GAP, across * step - GAP), np.nan)
     for index, piece in enumerate(pieces):
-        top, left = divmod(index, ACROSS)
+        top, left = divmod(index, across)
         sheet[top * step : top * step + CELLS, left * step : left * step + CELLS] = piece
     import matplotlib as mpl
 
     shades = mpl.colormaps["gray"].with_extremes(bad=CARD)
     axes.imshow(np.ma.masked_invalid(sheet), cmap=shades, vmin=-reach, vmax=reach, interpolation="none")
     axes.set_axis_off()
+    axes.set_anchor("W")
     panel, result = axes.get_figure(root=False), side.performance
     full = any(surface.saturation_share > 1 for surface in result.surfaces if surface.role != "guard")
     said = f"CNR {number(result.cnr)}, {rate_words(result.error_rate)} missed" + ("; pixels are full" if full else "")
@@ -205,11 +214,11 @@ def _level_words(side: Side) -> str:
     return f"grey values {low:.1f} and {high:.1f} DN"
 
 
-def _caption(problem: Problem, reach: float) -> str:
+def _caption(problem: Problem, reach: float, pieces: int) -> str:
     averaging = problem.spec.averaging
     counts = [f"{n} {what}" for n, what in ((averaging.pixels, "pixels"), (averaging.frames, "frames")) if n > 1]
     dot = f"one decision, the average of {' and '.join(counts)}" if counts else "one pixel"
     return (
-        f"Simulated: {ACROSS * DOWN} pieces, each with a defect. Each dot is {dot}. Black to white is "
+        f"Simulated: {pieces} pieces, each with a defect. Each dot is {dot}. Black to white is "
         f"±{reach:.1f} standard deviations of the noise in every picture; dotted: threshold."
     )
