@@ -133,25 +133,27 @@ def _settings(problem: Problem, performance: Performance, width: int) -> list[st
         ("camera", camera),
         ("filter", design.filter),
         ("f-number", f"{design.f_number:g}"),
-        ("exposure", f"{_exposure(design)}, {_light_mode(problem, performance)}"),
+        ("exposure", f"{exposure_words(design)}, {light_words(problem, performance)}"),
         *([("weights", _weights(performance))] if performance.weights else []),
     ):
         lines += labelled(label, text, width)
     if not performance.leds:
         return lines + labelled("LEDs", "all off", width)
     rows = [
-        (s.id, _currents(design, s), f"× {s.emitters}", f"junction {s.junction_c:.1f} °C") for s in performance.leds
+        (s.id, currents_words(design, s), f"× {s.emitters}", f"junction {s.junction_c:.1f} °C")
+        for s in performance.leds
     ]
     return lines + table(("LED", "current", "emitters", "predicted"), rows, width)
 
 
-def _exposure(design: Design) -> str:
+def exposure_words(design: Design) -> str:
+    """Say the exposure, or those of all shots."""
     if not design.shots:
         return f"{design.exposure_us:.10g} µs"
     return f"{len(design.shots)} shots of " + ", ".join(f"{shot.exposure_us:.10g}" for shot in design.shots) + " µs"
 
 
-def _currents(design: Design, state: LedState) -> str:
+def currents_words(design: Design, state: LedState) -> str:
     """Current of an LED, shot after shot."""
     if not design.shots:
         return f"{state.drive_ma:.10g} mA"
@@ -163,7 +165,8 @@ def _weights(performance: Performance) -> str:
     return ", ".join(f"{plain(name)} {weight:+.4f}" for name, weight in performance.weights.items())
 
 
-def _light_mode(problem: Problem, performance: Performance) -> str:
+def light_words(problem: Problem, performance: Performance) -> str:
+    """Say when the LEDs are on."""
     if not problem.strobe:
         return "LEDs on continuously"
     return f"LEDs on {percent(performance.duty)} of the time at {problem.spec.timing.frame_rate_hz:g} Hz"
