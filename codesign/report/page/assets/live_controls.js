@@ -39,8 +39,7 @@
   function typed(input, low, high, open = false) {
     const value = input.value.trim() === "" ? NaN : Number(input.value);
     const good = Number.isFinite(value) && value <= high && (open ? value > low : value >= low);
-    const range = high === Infinity ? `${open ? "above" : "at least"} ${live.number(low)}`
-      : `${open ? "above" : "from"} ${live.number(low)} to ${live.number(high, 6)}`;
+    const range = `${open ? "above" : "from"} ${live.number(low, 6)} to ${live.number(high, 6)}`;
     complain(input, good ? "" : `must be a number ${range}`);
     return good ? value : null;
   }
@@ -169,7 +168,8 @@
       }
       const emitters = line.count ? "" : `× ${line.led.emitters}, `;
       const heat = state ? `junction ${state.junction_c.toFixed(1)} °C` : "off";
-      const text = `${emitters}${heat}, up to ${live.number(top)} mA at this exposure`;
+      const now = this.model.data.pulse_levels.length > 1 ? " now" : ""; // ratings differ by exposure
+      const text = `${emitters}${heat}, ${ma > top * (1 + live.TOLERANCE) ? "✗ only " : ""}up to ${live.number(top)} mA${now}`;
       if (line.note.textContent !== text) line.note.textContent = text;
     }
   }

@@ -83,7 +83,7 @@
       }
       svg("line", { class: "live-zero", x1: LEFT, x2: width - RIGHT, y1: zero, y2: zero }, this.frame);
       this.text("wavelength [nm]", (LEFT + width - RIGHT) / 2, end + 31, "middle");
-      this.text("difference by wavelength, up: target brighter", LEFT, bottom + GAP - 8, "start");
+      this.text("difference, up: target brighter", LEFT, bottom + GAP - 8, "start");
     }
 
     text(content, x, y, anchor) {
@@ -182,7 +182,8 @@
 
     draw(result, stretched) {
       const { mean, spread, top } = result.picture, reach = 4 * Math.max(...spread);
-      const low = stretched ? Math.min(...mean) - reach : 0, high = stretched ? Math.max(...mean) + reach : top;
+      const low = stretched ? Math.min(...mean, top) - reach : 0; // a surface that saturates is white
+      const high = stretched ? Math.min(Math.max(...mean) + reach, top) : top;
       const scale = 255 / Math.max(high - low, 1e-12), data = this.image.data;
       for (let k = 0; k < this.inside.length; k++) {
         const side = this.inside[k], electrons = Math.min(mean[side] + spread[side] * this.noise[k], top);

@@ -6,6 +6,7 @@
   const LOWEST_SHOWN = 0.01; // limits met that are used less are folded away
   const MOST_LIMITS = 14; // limits met that are listed before the rest is folded away
   const REACHED = 0.999; // from this share on a limit counts as reached
+  const FEWEST_LINES = 8, MOST_LINES = 24; // of the recipe in view
   const SPOKEN_AFTER = 900; // ms of rest before the summary is read out
 
   /** Set text where it differs. */
@@ -45,9 +46,13 @@
   function headline(page, result) {
     const { data } = page, missed = result.limits.filter((limit) => !limit.met);
     put("cnr", number(result.cnr));
-    put("sign", result.cnr > 0 ? `target ${result.sign} than background` : "no usable contrast");
+    const lost = result.surfaces.some((s) => s.role !== "guard" && s.saturation_share >= 1);
+    const seen = result.cnr > 0 ? `target ${result.sign} than background` : "no usable contrast";
+    put("sign", lost ? "✗ not to be had: the camera saturates" : seen);
+    $("sign").classList.toggle("live-lost", lost);
     put("share", againstBound(page, result, missed));
     put("required", data.required_cnr === null ? "" : requirement(result.cnr, data.required_cnr));
+    put("change", againstStart(page, result));
     put("errors", `${live.missed(result.error_rate)}, as many false alarms`);
     const weights = Object.entries(result.weights).map(([name, w]) => `${name} ${w < 0 ? "−" : "+"}${Math.abs(w).toFixed(4)}`);
     put("weights", weights.length ? `best weights here: ${weights.join(", ")}` : "");
@@ -69,6 +74,13 @@
     const reached = share < 1 ? `${Math.floor(share * 1e4) / 100} %` : percent(share); // never rounded up to all of it
     const caveat = share > 1 && missed.length ? ": only with limits missed" : "";
     return `${reached} of ${proven ? "the proven best" : "the bound proven so far"}, ${best}${caveat}`;
+  }
+
+  /** How the CNR compares with the recipe's, once it differs. */
+  function againstStart(page, result) {
+    const start = page.atStart.cnr, change = result.cnr / start - 1;
+    if (!(Math.abs(change) > 1e-9)) return "";
+    return `${percent(Math.abs(change), 0.001)} ${change < 0 ? "below" : "above"} the recipe's ${number(start)}`;
   }
 
   function requirement(cnr, required) {
@@ -101,6 +113,17 @@
       return { name, more: `grey value ${s.grey_dn.toFixed(1)}`, share: s.saturation_share, kind, mark };
     }));
     put("greys-note", `Grey values to ${full}; percent of saturation, the stroke marks the ${percent(mark)} allowed.`);
+  }
+
+  function pairs(page, result) {
+    $("pairs-box").hidden = result.pairs.length < 2;
+    if (result.pairs.length < 2) return;
+    const most = Math.max(...result.pairs.map((pair) => pair.cnr)), turned = result.sign === "brighter" ? 1 : -1;
+    meters($("pairs"), [...result.pairs].sort((a, b) => a.cnr - b.cnr).map((pair) => {
+      const opposite = pair.signal_e * turned < 0, more = opposite ? "✗ the other way round" : "";
+      const name = `${pair.target} against ${pair.background}`, share = most > 0 ? pair.cnr / most : 0;
+      return { name, more, share, much: number(pair.cnr), kind: opposite ? "live-bad" : "" };
+    }));
   }
 
   function limits(page, result) {
@@ -174,10 +197,12 @@
     const text = live.recipe(setting, comments);
     if ($("toml").value !== text) {
       $("toml").value = text;
+      const rows = Math.min(Math.max(text.split("\n").length, FEWEST_LINES), MOST_LINES);
+      if ($("toml").rows !== rows) $("toml").rows = rows;
       put("copied", "");
     }
     put("printed", `Shown at: ${text.split("\n").filter((line) => line && !line.startsWith("#")).join("; ")}`);
   }
 
-  Object.assign(live, { put, parts: { headline, greys, limits, noise, views, spectra, recipe } });
+  Object.assign(live, { put, parts: { headline, greys, pairs, limits, noise, views, spectra, recipe } });
 })();
