@@ -6,17 +6,60 @@ import json
 import math
 from collections.abc import Iterator
 from dataclasses import replace
+from functools import cache
 from pathlib import Path
 from typing import Any
 
 import numpy as np
+from test_detection_combined import CHANNELS, SHOTS
 
-from codesign import evaluate
+from codesign import build_problem, evaluate, solve
 from codesign.design import Design, Performance, Shot
 from codesign.problem import Problem
 from codesign.problem.schema import Temperature
 from codesign.report.house import css_properties
 from codesign.report.page.live import LiveFragment
+from codesign.solve import Solution
+
+#: Several targets, stacked filters at the sensor, free numbers of emitters, every optional limit.
+BUILT = {
+    "title": "several of everything",
+    "scene": {
+        "target": ["steel-rust", "steel-film"], "background": "steel-bare", "guards": ["card-white"],
+        "ambient": [{"illuminant": "D65", "illuminance_lx": 300}],
+    },
+    "candidates": {
+        "leds": ["white-4000k-a", "blue-470-a", "green-525-a", "red-625-a"],
+        "filters": ["bp-525-60", "sp-650", "bp-450-30"], "filter_pairs": True, "cameras": "mono-5mp", "gains_db": [0],
+    },
+    "optics": {
+        "f_numbers": [4, 8], "magnification": 0.08, "filter_position": "sensor", "field_angle_deg": 5,
+        "required_depth_mm": 3,
+    },
+    "lighting": {
+        "mode": "strobe", "emitters_per_channel": 4, "distance_mm": 200, "board_k_per_w": 8, "specular_weight": 0.3,
+    },
+    "motion": {"speed_mm_per_s": 100, "max_blur_px": 5},
+    "timing": {"frame_rate_hz": 20, "exposure_min_us": 5, "exposure_max_us": 2000},
+    "temperature": {"air_c": 25, "sensor_c": 40},
+    "limits": {
+        "rig_heat_w": 5, "supply_w": 10, "supply_peak_w": 60, "dark_well_share": 0.1, "dark_noise_share": 1.0,
+        "junction_max_c": 90,
+    },
+    "build": {
+        "max_led_channels": 2, "board_slots": 6, "emitters": "free", "price_budget": 2000, "must_have": ["red-625-a"],
+    },
+    "averaging": {"pixels": 4, "frames": 2},
+    "solver": {"gap": 0.03, "alternatives": 1},
+}  # fmt: skip
+SPECIAL = {"built": BUILT, "channels": CHANNELS, "shots": SHOTS}
+
+
+@cache
+def special(name: str) -> Solution:
+    """Solution of one of these, roughly."""
+    return solve(build_problem(SPECIAL[name]), gap=0.5)
+
 
 #: Escaped in the data, as the document does it.
 ESCAPED = {ord(c): f"\\u{ord(c):04x}" for c in "<>&\u2028\u2029"}

@@ -3,10 +3,8 @@
 import numpy as np
 import pytest
 from demo_names import DEMOS
-from live_shell import by_library, by_page, differences, random_settings, written
-from test_detection_combined import CHANNELS, SHOTS
+from live_shell import SPECIAL, by_library, by_page, differences, random_settings, special, written
 
-from codesign import build_problem, solve
 from codesign.report.page import live_parts
 from codesign.report.page.live import live_fragment
 
@@ -14,44 +12,6 @@ from codesign.report.page.live import live_fragment
 ALLOWED = 1e-6
 #: Settings per demo, 207 in all, and as many around its recipe.
 SETTINGS = 23
-
-#: Several targets, stacked filters at the sensor, free numbers of emitters, every optional limit.
-BUILT = {
-    "title": "several of everything",
-    "scene": {
-        "target": ["steel-rust", "steel-film"], "background": "steel-bare", "guards": ["card-white"],
-        "ambient": [{"illuminant": "D65", "illuminance_lx": 300}],
-    },
-    "candidates": {
-        "leds": ["white-4000k-a", "blue-470-a", "green-525-a", "red-625-a"],
-        "filters": ["bp-525-60", "sp-650", "bp-450-30"], "filter_pairs": True, "cameras": "mono-5mp", "gains_db": [0],
-    },
-    "optics": {
-        "f_numbers": [4, 8], "magnification": 0.08, "filter_position": "sensor", "field_angle_deg": 5,
-        "required_depth_mm": 3,
-    },
-    "lighting": {
-        "mode": "strobe", "emitters_per_channel": 4, "distance_mm": 200, "board_k_per_w": 8, "specular_weight": 0.3,
-    },
-    "motion": {"speed_mm_per_s": 100, "max_blur_px": 5},
-    "timing": {"frame_rate_hz": 20, "exposure_min_us": 5, "exposure_max_us": 2000},
-    "temperature": {"air_c": 25, "sensor_c": 40},
-    "limits": {
-        "rig_heat_w": 5, "supply_w": 10, "supply_peak_w": 60, "dark_well_share": 0.1, "dark_noise_share": 1.0,
-        "junction_max_c": 90,
-    },
-    "build": {
-        "max_led_channels": 2, "board_slots": 6, "emitters": "free", "price_budget": 2000, "must_have": ["red-625-a"],
-    },
-    "averaging": {"pixels": 4, "frames": 2},
-    "solver": {"gap": 0.03, "alternatives": 1},
-}  # fmt: skip
-SPECIAL = {"built": BUILT, "channels": CHANNELS, "shots": SHOTS}
-
-
-@pytest.fixture(scope="module")
-def special():
-    return {name: solve(build_problem(table), gap=0.5) for name, table in SPECIAL.items()}
 
 
 def around(setting: dict, rng: np.random.Generator) -> dict:
@@ -100,8 +60,8 @@ def test_page_equals_library_at_random_settings(browser, solved, tmp_path, name)
 
 @pytest.mark.oracle
 @pytest.mark.parametrize("name", SPECIAL)
-def test_page_equals_library_for_pairs_build_limits_and_combined_readings(browser, special, tmp_path, name):
-    found = sampled(browser, special[name], tmp_path, 30)
+def test_page_equals_library_for_pairs_build_limits_and_combined_readings(browser, tmp_path, name):
+    found = sampled(browser, special(name), tmp_path, 30)
     assert max(found.values()) < ALLOWED, found
 
 
