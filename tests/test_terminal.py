@@ -11,6 +11,7 @@ from command_line import cnr
 from demo_names import DEMOS
 
 from codesign import Design, evaluate, load_problem
+from codesign.least_cost import LeastCost
 from codesign.report.colour import coloured, wanted
 from codesign.report.output import shown
 from codesign.report.progress import PointProgress, Progress, Status
@@ -235,3 +236,19 @@ def test_error_without_an_interrupt_keeps_its_traceback(monkeypatch):
     monkeypatch.setattr("codesign.problem.load_problem", broken)
     with pytest.raises(ValueError, match="a bug"):
         cnr("check", "yellow-stain", "recipe.toml")
+
+
+@pytest.mark.parametrize(("value", "bound", "status", "words"), [
+    (0.0, 0.0, "proven", "there is no less"),
+    (5.0, 0.0, "stopped", "none is proven, stopped before"),
+    (5.0, 4.9, "proven", "with 4.9 W or less no recipe does (proven)"),
+])  # fmt: skip
+def test_least_is_told_with_its_bound(value, bound, status, words, solved):
+    solution = solved("yellow-stain")
+    cost = LeastCost(
+        quantity="heat", unit="W", value=value, bound=bound, required_cnr=4.0, status=status, steps=3, seconds=1.0,
+        solution=solution,
+    )  # fmt: skip
+    text = solution_text(solution, least=cost)
+    assert f" least       {value:g} W reaches CNR 4\n" in text
+    assert words in text.split("WHAT TO SET")[0]

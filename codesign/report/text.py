@@ -108,10 +108,11 @@ def _least(least: LeastCost, width: int) -> list[str]:
     unit = f" {UNITS.get(least.unit, least.unit)}".rstrip()
     value, bound = f"{least.value:.6g}{unit}", f"{least.bound:.6g}{unit}"
     short = "" if least.status == "proven" else ", stopped before the gap asked for"
+    none = "there is no less" if least.value == 0 else f"none is proven{short}"
     return [
         heading(f"least {least.quantity}", width),
         *labelled("least", f"{value} reaches CNR {least.required_cnr:g}", width),
-        *labelled("bound", f"with {bound} or less no recipe does (proven{short})", width),
+        *labelled("bound", f"with {bound} or less no recipe does (proven{short})" if least.bound > 0 else none, width),
         *labelled("below", f"the recipe of most CNR at that {least.quantity}, which is among its limits", width),
     ]
 
@@ -292,7 +293,7 @@ def _runners_up(solution: Solution, width: int) -> list[str]:
     same = {gain for (gain,) in gains} == {f"{solution.optimum.design.gain_db:g} dB"}
     columns = [parts, values, *([] if same else [gains]), settings]
     rows = [[cell for cells in row for cell in cells] for row in zip(*columns, strict=True)]
-    header = ("camera", "filter", "CNR", "change", *(() if same else ("gain",)), "f-stop", "exposure")
+    header = ("camera", "filter", "CNR", "change", *(() if same else ("gain",)), "f-number", "exposure")
     return [heading("runners-up with other parts, before rounding", width), *table(header, rows, width, left=(0, 1))]
 
 
