@@ -20,6 +20,7 @@ import typer
 from typer.core import TyperGroup
 
 from codesign.cli_family import family
+from codesign.cli_overview import ABOUT, OVERVIEW, in_order
 from codesign.cli_radiation import radiation
 from codesign.cli_report import Quick, Report, TradeOff, require_page, write_check_page, write_solution_page
 from codesign.cli_routes import calibrate, routes
@@ -42,6 +43,15 @@ INTERRUPTED = 130
 
 class _Commands(TyperGroup):
     """All commands, with errors translated in this one place; bugs keep their traceback."""
+
+    def list_commands(self, ctx: Any) -> list[str]:
+        return in_order(super().list_commands(ctx))
+
+    def get_command(self, ctx: Any, cmd_name: str) -> Any:
+        command = super().get_command(ctx, cmd_name)
+        if command is not None:
+            command.short_help = OVERVIEW.get(cmd_name)
+        return command
 
     def invoke(self, ctx: Any) -> Any:
         with _translated():
@@ -90,7 +100,7 @@ app = typer.Typer(
     add_completion=False,
     rich_markup_mode=None,
     pretty_exceptions_enable=False,
-    help="Certified choice of LEDs, drive currents, filter, camera and exposure for hard-to-see defects.",
+    help=ABOUT,
 )
 
 ProblemFile = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
@@ -129,20 +139,25 @@ def solve(
     problem: ProblemFile,
     json: AsJson = False,
     recipe: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the recipe here, for 'cnr check'.")] = None,
-    gap: Annotated[float | None, typer.Option(metavar="G", help="Relative gap to prove, 1e-8 to 0.5.")] = None,
-    alternatives: Annotated[int | None, typer.Option(metavar="N", help="Runners-up to certify, 0 to 50.")] = None,
+    gap: Annotated[
+        float | None, typer.Option(metavar="G", help="Prove the best to this share of its CNR, 1e-8 to 0.5.")
+    ] = None,
+    alternatives: Annotated[
+        int | None, typer.Option(metavar="N", help="Runners-up with other parts to certify, 0 to 50.")
+    ] = None,
     verify: Annotated[bool, typer.Option("--verify", help="Check the whole proof again from the start.")] = False,
     sensitivities: Annotated[
         bool, typer.Option("--sensitivities", help="Add shadow prices and tolerances; see 'cnr sensitivity'.")
     ] = False,
     time_limit: Annotated[
-        float | None, typer.Option(metavar="SECONDS", min=0, help="Stop then with the best so far and its proven gap.")
+        float | None,
+        typer.Option(metavar="SECONDS", min=0, help="Stop after this time; the gap proven by then is told."),
     ] = None,
     least: Annotated[
-        str | None, typer.Option(metavar="WHAT", help="Least price, heat or exposure for the CNR required instead.")
+        str | None, typer.Option(metavar="WHAT", help="Find the least price, heat, exposure or leds for a CNR instead.")
     ] = None,
     cnr: Annotated[
-        float | None, typer.Option(metavar="CNR", help="CNR required with --least; by default required_cnr.")
+        float | None, typer.Option(metavar="CNR", help="CNR to reach with --least; by default required_cnr.")
     ] = None,
     report: Report = None,
     quick: Quick = False,
@@ -150,8 +165,9 @@ def solve(
 ) -> None:
     """Find the recipe of greatest CNR, with its proof.
 
-    Example: cnr solve yellow-stain --recipe recipe.toml, or the coolest light that is enough:
-    cnr solve yellow-stain --least heat --cnr 4
+    \b
+    Example: cnr solve yellow-stain --recipe recipe.toml
+    The coolest light that is enough: cnr solve yellow-stain --least heat --cnr 4
     """
     cost = None
     require_page(report, quick=quick, trade_off=trade_off)
@@ -186,7 +202,10 @@ def check(
 ) -> None:
     """Predict what a recipe does and which limits it misses.
 
-    The exit code is 3 when it misses any. Example: cnr check yellow-stain recipe.toml
+    The exit code is 3 when it misses any limit.
+
+    \b
+    Example: cnr check yellow-stain recipe.toml
     """
     from codesign.design import evaluate
     from codesign.problem import load_problem
@@ -206,10 +225,14 @@ def check(
 
 @app.command()
 def parts(
-    kind: Annotated[PartKind | None, typer.Argument(help="What to list.")] = None,
-    expression: Annotated[str, typer.Argument(help="e.g. '700 <= peak_nm <= 1000 and price < 12'")] = "all",
-    catalog: Annotated[str, typer.Option(metavar="FOLDER", help="Catalogue folder.")] = "demo",
-    id: Annotated[str | None, typer.Option(metavar="ID", help="Show all one part states.")] = None,
+    kind: Annotated[
+        PartKind | None, typer.Argument(metavar="KIND", help="What to list: leds, filters, cameras or surfaces.")
+    ] = None,
+    expression: Annotated[
+        str, typer.Argument(metavar="EXPRESSION", help="Which, e.g. '700 <= peak_nm <= 1000 and price < 12'.")
+    ] = "all",
+    catalog: Annotated[str, typer.Option(metavar="FOLDER", help="Folder of another catalogue.")] = "demo",
+    id: Annotated[str | None, typer.Option(metavar="ID", help="Show all that one part states.")] = None,
     json: AsJson = False,
 ) -> None:
     """List, filter and inspect the parts of a catalogue.
@@ -240,7 +263,11 @@ def new(
 
 
 @app.command()
-def schema(kind: Annotated[SchemaKind, typer.Argument(help="Which file.")] = SchemaKind.PROBLEM) -> None:
+def schema(
+    kind: Annotated[
+        SchemaKind, typer.Argument(metavar="KIND", help="Of which file: problem, recipe or family.")
+    ] = SchemaKind.PROBLEM,
+) -> None:
     """Print the JSON Schema of a file, for editors and programs.
 
     Example: cnr schema > problem.schema.json
@@ -256,7 +283,7 @@ def schema(kind: Annotated[SchemaKind, typer.Argument(help="Which file.")] = Sch
 
 @app.command()
 def demos() -> None:
-    """List the embedded demo problems and families.
+    """List the demo problems and families that come with the program.
 
     Example: cnr demos
     """
@@ -268,7 +295,7 @@ def demos() -> None:
     tables = [
         table(head, [(d.name, d.title) for d in found], page_width(), left=(0, 1)) for head, found in lists.items()
     ]
-    put("\n\n".join("\n".join(lines) for lines in tables) + "\n")
+    put("\n\n".join("\n".join(lines) for lines in tables) + "\n\n try one with 'cnr solve NAME'\n")
 
 
 def _least(

@@ -31,8 +31,12 @@ def family(
     json: Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")] = False,
     csv: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the recipes here, a row per variant.")] = None,
     figure: Annotated[Path | None, typer.Option(metavar="FILE", help="Draw it: .svg, .png or .pdf.")] = None,
-    only: Annotated[list[str] | None, typer.Option(metavar="VARIANT", help="Only this variant; repeat it.")] = None,
-    gap: Annotated[float | None, typer.Option(metavar="G", help="Relative gap to prove, 1e-8 to 0.5.")] = None,
+    only: Annotated[
+        list[str] | None, typer.Option(metavar="VARIANT", help="Only this variant; may be repeated.")
+    ] = None,
+    gap: Annotated[
+        float | None, typer.Option(metavar="G", help="Prove the best to this share of its CNR, 1e-8 to 0.5.")
+    ] = None,
     processes: Annotated[
         int | None, typer.Option(metavar="N", help="Local processes; as many as cores by default.")
     ] = None,
@@ -47,7 +51,10 @@ def family(
     """Solve all variants of a product: a recipe for each, kept as it is found.
 
     What is done already is taken from the store, so an interrupted run goes on where it was. The exit code is 1 when a
-    variant has no recipe. Example: cnr family labels-200 --csv recipes.csv
+    variant has no recipe.
+
+    \b
+    Example: cnr family labels-200 --csv recipes.csv
     """
     from codesign.family import load_family
     from codesign.report.family_files import check_targets, save, show

@@ -12,8 +12,12 @@ from codesign.cli_terminal import page_width, put, searching
 
 def radiation(
     problem: Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")],
-    recipe: Annotated[Path | None, typer.Argument(metavar="RECIPE", help="Recipe file; the best by default.")] = None,
-    distance_mm: Annotated[float, typer.Option(metavar="MM", help="From the emitters to the eye.")] = 200.0,
+    recipe: Annotated[
+        Path | None, typer.Argument(metavar="RECIPE", help="Recipe file; by default the best recipe is found first.")
+    ] = None,
+    distance_mm: Annotated[
+        float, typer.Option(metavar="MM", help="From the emitters to the eye; 200 is usual.", show_default=False)
+    ] = 200.0,
     json: Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")] = False,
 ) -> None:
     """Compare the light at the eye with published exposure limits: a warning aid, never a classification.

@@ -36,8 +36,12 @@ def routes(
 
 def calibrate(
     problem: _Problem,
-    readings: Annotated[Path, typer.Argument(metavar="READINGS.csv", help="Grey values measured, a row per recipe.")],
-    fit: Annotated[str, typer.Option(metavar="LIST", help="'offset', 'gain' or 'offset,gain' to fit too.")] = "",
+    readings: Annotated[
+        Path, typer.Argument(metavar="READINGS", help="CSV table of measured grey values, a row per recipe.")
+    ],
+    fit: Annotated[
+        str, typer.Option(metavar="LIST", help="Fit the camera too: 'offset', 'gain' or 'offset,gain'.")
+    ] = "",
     update: Annotated[
         Path | None, typer.Option(metavar="FILE", help="Write the problem with the deliveries fitted here.")
     ] = None,
@@ -45,7 +49,8 @@ def calibrate(
 ) -> None:
     """Fit the light each LED brings to grey values measured with known recipes, and name what does not fit.
 
-    Example: cnr calibrate problem.toml readings.csv --fit offset --update calibrated.toml
+    \b
+    Example: cnr calibrate problem.toml readings.csv --fit offset --update new.toml
     """
     from codesign.problem import load_problem
     from codesign.report.calibration_text import calibration_dict, calibration_text

@@ -20,11 +20,17 @@ def sensitivity(
     json: Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")] = False,
     tolerance: Annotated[
         list[str] | None,
-        typer.Option(metavar="NAME=VALUE", help="Another standard deviation, e.g. 'LED flux=5%' or 'LED peak=2'."),
+        typer.Option(
+            metavar="NAME=VALUE", help="Standard deviation to use, e.g. 'LED flux=5%' or 'LED peak=2'; may be repeated."
+        ),
     ] = None,
-    quick: Annotated[bool, typer.Option("--quick", help="Derivatives only, without solving at either end.")] = False,
+    quick: Annotated[
+        bool, typer.Option("--quick", help="Derivatives only, without solving at the ends of tolerances.")
+    ] = False,
 ) -> None:
-    """Shadow prices of the limits, and what each data-sheet tolerance does to the CNR, re-tuned and held fixed.
+    """Price each limit (shadow prices) and tell what each data-sheet tolerance does to the CNR.
+
+    Each tolerance is told twice: with the recipe tuned again, and held fixed.
 
     Example: cnr sensitivity yellow-stain --tolerance "LED flux=5%"
     """

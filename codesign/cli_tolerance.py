@@ -16,18 +16,25 @@ _Seed = Annotated[int, typer.Option(metavar="S", help="The same seed gives the s
 
 def tolerance(
     problem: _Problem,
-    recipe: Annotated[Path | None, typer.Argument(metavar="RECIPE", help="Recipe file; the best by default.")] = None,
+    recipe: Annotated[
+        Path | None, typer.Argument(metavar="RECIPE", help="Recipe file; by default the best recipe is found first.")
+    ] = None,
     draws: Annotated[int, typer.Option(metavar="N", help="Rigs to draw.")] = 10_000,
     seed: _Seed = 1,
-    required: Annotated[float | None, typer.Option(metavar="CNR", help="CNR a rig must reach.")] = None,
+    required: Annotated[
+        float | None, typer.Option(metavar="CNR", help="CNR a rig must reach; by default required_cnr.")
+    ] = None,
     retune_exposure: Annotated[
-        bool, typer.Option("--retune-exposure", help="Set the exposure anew on each rig.")
+        bool, typer.Option("--retune-exposure", help="Let each rig set its own exposure.")
     ] = False,
     json: _Json = False,
 ) -> None:
     """Predict the yield over rigs built from real parts, and what makes them differ.
 
-    Spreads are under [tolerance] in the problem file. Example: cnr tolerance bruise --retune-exposure
+    Spreads are under [tolerance] in the problem file.
+
+    \b
+    Example: cnr tolerance bruise --retune-exposure
     """
     from codesign.problem import load_problem
     from codesign.report import machine, tolerance_dict, tolerance_text

@@ -11,23 +11,29 @@ from codesign.cli_terminal import counting, page_width, put
 
 _Problem = Annotated[str, typer.Argument(metavar="PROBLEM", help="Problem file, or the name of a demo problem.")]
 _Json = Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")]
-_Csv = Annotated[Path | None, typer.Option(metavar="FILE", help="Write the table here.")]
-_Gap = Annotated[float | None, typer.Option(metavar="G", help="Relative gap to prove, 1e-8 to 0.5.")]
+_Csv = Annotated[Path | None, typer.Option(metavar="FILE", help="Write the table to this file.")]
+_Gap = Annotated[float | None, typer.Option(metavar="G", help="Prove the best to this share of its CNR, 1e-8 to 0.5.")]
 _Values = "FIELD=FIRST:LAST:COUNT[:log] or FIELD=A,B,C"
 
 
 def vary(
     problem: _Problem,
     set_: Annotated[
-        list[str] | None, typer.Option("--set", metavar="FIELD=VALUE", help="Set a field of the problem or a part.")
+        list[str] | None,
+        typer.Option("--set", metavar="FIELD=VALUE", help="Set a field of the problem or of a part; may be repeated."),
     ] = None,
-    sweep: Annotated[str | None, typer.Option(metavar="VALUES", help=f"Values of a field: {_Values}.")] = None,
-    sweep2: Annotated[str | None, typer.Option(metavar="VALUES", help="Second axis, written alike.")] = None,
-    without: Annotated[list[str] | None, typer.Option(metavar="KIND:ID", help="A part that is not in stock.")] = None,
+    sweep: Annotated[str | None, typer.Option(metavar="VALUES", help=f"Sweep a field: {_Values}.")] = None,
+    sweep2: Annotated[
+        str | None, typer.Option(metavar="VALUES", help="Sweep a second field, written the same way.")
+    ] = None,
+    without: Annotated[
+        list[str] | None, typer.Option(metavar="KIND:ID", help="Leave a part out, e.g. led:nir-850-a; may be repeated.")
+    ] = None,
     with_: Annotated[
-        list[Path] | None, typer.Option("--with", metavar="FILE", help="TOML file with [[led]] ... tables to add.")
+        list[Path] | None,
+        typer.Option("--with", metavar="FILE", help="Add the parts of a TOML file of [[led]] ... tables."),
     ] = None,
-    catalog: Annotated[Path | None, typer.Option(metavar="FOLDER", help="Catalogue to choose from instead.")] = None,
+    catalog: Annotated[Path | None, typer.Option(metavar="FOLDER", help="Choose from this catalogue instead.")] = None,
     csv: _Csv = None,
     figure: Annotated[Path | None, typer.Option(metavar="FILE", help="Draw it: .svg, .png or .pdf.")] = None,
     gap: _Gap = None,
@@ -35,7 +41,8 @@ def vary(
 ) -> None:
     """Re-solve with fields set or swept, or with other parts; every point is certified.
 
-    Example: cnr vary bruise --sweep lighting.distance_mm=200:500:7 --figure distance.svg
+    \b
+    Example: cnr vary bruise --sweep lighting.distance_mm=200:500:7 --figure d.svg
     """
     from codesign.problem import load_problem
     from codesign.report.study_files import check_targets, save, show
@@ -53,7 +60,7 @@ def vary(
 def worth(
     problem: _Problem,
     others: Annotated[
-        Path | None, typer.Option("--from", metavar="FOLDER", help="Catalogue whose parts to try as additions.")
+        Path | None, typer.Option("--from", metavar="FOLDER", help="Try the parts of this catalogue as additions.")
     ] = None,
     csv: _Csv = None,
     gap: _Gap = None,

@@ -18,7 +18,7 @@ _BLANK = "-"
 #: Columns of words, flush left.
 _WORDS = frozenset({"kind", "what", "tags", "channels"})
 #: Width of the key column of one part.
-KEY = 30
+KEY = 34
 
 
 def listing(catalog: Catalog, kind: str | None, expression: str, name: str | None, *, json: bool) -> str:
@@ -66,6 +66,7 @@ def catalog_text(catalog: Catalog, width: int = 80) -> str:
     lines = labelled("catalogue", plain(catalog.name), width) + labelled("source", plain(catalog.source), width)
     for name, kind in KINDS.items():
         lines += labelled(name, str(len(catalog.parts(kind))), width)
+    lines += labelled("next", "'cnr parts leds' lists the LEDs, 'cnr parts --id ID' shows all of one part", width)
     return "\n".join(lines) + "\n"
 
 
@@ -92,11 +93,24 @@ def part_text(part: Part, width: int = 80) -> str:
 def _key_lines(key: str, value: Any, width: int) -> list[str]:
     """Return one key and its value; each record of a list takes an entry of its own."""
     if isinstance(value, list) and value and isinstance(value[0], dict):
-        entries = [plain(", ".join(f"{inner} = {text}" for inner, text in _flat(record).items())) for record in value]
+        entries = [
+            ", ".join(f"{plain(k)} = {_stated(inner)}" for k, inner in _flat(record).items()) for record in value
+        ]
         return [f"   {key}", *("  " + line for entry in entries for line in bullet(entry, width - 2))]
     head = f"   {key:<{KEY}} "
-    first, *rest = wrap(plain(str(value)), width - len(head)) or [""]
+    first, *rest = wrap(_stated(value), width - len(head)) or [""]
     return [head + first, *(" " * len(head) + line for line in rest)]
+
+
+def _stated(value: Any) -> str:
+    """A value as it would be written in a file."""
+    if isinstance(value, bool):
+        return str(value).lower()
+    if isinstance(value, float):
+        return f"{value:.10g}"
+    if isinstance(value, list):
+        return "[" + ", ".join(map(_stated, value)) + "]"
+    return plain(str(value))
 
 
 def _flat(record: Mapping[str, Any]) -> dict[str, Any]:
