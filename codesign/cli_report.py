@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from codesign.problem import Problem
     from codesign.report.page.progress import StepProgress
     from codesign.solve import Solution
+    from codesign.study.plain_light import PlainLight
     from codesign.study.sensitivity import Sensitivities
     from codesign.study.trade import Trade
 
@@ -86,6 +87,7 @@ def write_solution_page(
         for name in trade_off or ()
         if (curve := work.optional(f"trade-off {name}", notes, _curve(solution, name))) is not None
     ]
+    plain = work.optional("plain light", notes, lambda _: _plain_light(solution))
     work.timed(
         "page",
         lambda _: write_report(
@@ -95,6 +97,7 @@ def write_solution_page(
             sensitivities=found,
             trade=tuple(curves),
             cost=cost,
+            plain=plain,
             notes=notes,
             command=command_line(context),
         ),
@@ -111,6 +114,12 @@ def write_check_page(context: typer.Context, path: Path, problem: Problem, perfo
     work = Work()
     work.timed("page", lambda _: write_file(path, check_html(problem, performance, command=command_line(context))))
     typer.echo(work.told(path), err=True)
+
+
+def _plain_light(solution: Solution) -> PlainLight | None:
+    from codesign.study.plain_light import plain_light
+
+    return plain_light(solution.problem)
 
 
 def _sensitivities(solution: Solution, cost: LeastCost | None, quick: bool) -> Callable[[StepProgress], Sensitivities]:

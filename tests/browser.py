@@ -40,12 +40,14 @@ A4 = {"paperWidth": 8.27, "paperHeight": 11.69}
 #: Elements that stick out of the page, innermost first; boxes that scroll on their own may.
 _STICKING_OUT = """
 const edge = document.documentElement.clientWidth + 0.5, found = [];
+const scrollsAlone = e => e.tagName === 'SELECT' || /(auto|scroll|hidden|clip)/.test(getComputedStyle(e).overflowX);
 for (const element of document.body.querySelectorAll('*')) {
   const box = element.getBoundingClientRect();
-  if (box.width === 0 || box.right <= edge) continue;
+  const right = scrollsAlone(element) ? box.right : Math.max(box.right, box.left + element.scrollWidth);
+  if (box.width === 0 || right <= edge) continue;
   let parent = element, scrolls = false;
   while ((parent = parent.parentElement) && parent !== document.body)
-    if (/(auto|scroll|hidden|clip)/.test(getComputedStyle(parent).overflowX)) scrolls = true;
+    if (scrollsAlone(parent)) scrolls = true;
   if (!scrolls) found.push(element.tagName + '.' + element.getAttribute('class') + ': '
     + (element.textContent || '').trim().slice(0, 40));
 }
@@ -137,8 +139,14 @@ class Browser:
         Path(path).write_bytes(base64.b64decode(shot["data"]))
         return Path(path)
 
+    def settle(self) -> None:
+        """Wait until fonts are there and the page is drawn."""
+        frames = "requestAnimationFrame(() => requestAnimationFrame(done))"
+        self.driver.execute_async_script(f"const [done] = arguments; document.fonts.ready.then(() => {frames})")
+
     def pdf(self, path: str | Path, **options: Any) -> Path:
         """Print to a file, on A4 unless the page says otherwise."""
+        self.settle()
         wanted = {"printBackground": False, "preferCSSPageSize": True, **A4, **options}
         Path(path).write_bytes(base64.b64decode(self.cdp("Page.printToPDF", **wanted)["data"]))
         return Path(path)

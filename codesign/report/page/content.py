@@ -10,13 +10,14 @@ from typing import TYPE_CHECKING
 from codesign.design import Performance
 from codesign.limit_use import LimitUse
 from codesign.problem import Problem
-from codesign.report.layout import number, percent
+from codesign.report.layout import number
 from codesign.report.page.html import Html, element
 from codesign.report.text import REACHED, UNITS
 
 if TYPE_CHECKING:
     from codesign.least_cost import LeastCost
     from codesign.solve import Solution
+    from codesign.study.plain_light import PlainLight
     from codesign.study.sensitivity import Sensitivities
     from codesign.study.trade import Trade
     from codesign.verify import Verdict
@@ -39,6 +40,8 @@ class Subject:
         Trade-off curves.
     cost : LeastCost, optional
         Where something else than the CNR was to be best.
+    plain : PlainLight, optional
+        What one white LED without a filter reaches, to compare with.
     notes : mapping
         Why a part of the report is not there, by section.
     command : str
@@ -56,6 +59,7 @@ class Subject:
     sensitivities: Sensitivities | None = None
     trade: tuple[Trade, ...] = ()
     cost: LeastCost | None = None
+    plain: PlainLight | None = None
     notes: dict[str, str]
     command: str = ""
     source: str = ""
@@ -87,13 +91,6 @@ class Section:
 def quantity(value: float, unit: str, digits: int = 4) -> str:
     """Return a number with its unit as set in text."""
     return f"{number(value, digits)} {UNITS.get(unit, unit)}".rstrip()
-
-
-def misses(rate: float) -> str:
-    """Return a share of errors in words."""
-    if rate < 1e-12:
-        return "fewer than 1 in 10¹²"
-    return percent(rate) if rate >= 0.01 else f"1 in {number(1 / rate, 3)}"
 
 
 def state(word: str, kind: str) -> Html:

@@ -12,8 +12,9 @@ from typing import TYPE_CHECKING, Any
 import codesign
 from codesign.design import Performance
 from codesign.problem import Problem
+from codesign.report import output
 from codesign.report.house import css_properties
-from codesign.report.output import plain, write_file
+from codesign.report.output import write_file
 from codesign.report.page import sections_basis, sections_proof, sections_result, sections_safety, sections_study
 from codesign.report.page.content import Section, Subject
 from codesign.report.page.glance import glance
@@ -33,6 +34,7 @@ if TYPE_CHECKING:
     from codesign.least_cost import LeastCost
     from codesign.report.page.live import LiveFragment
     from codesign.solve import Solution
+    from codesign.study.plain_light import PlainLight
     from codesign.study.sensitivity import Sensitivities
     from codesign.study.trade import Trade
     from codesign.verify import Verdict
@@ -67,6 +69,7 @@ def report_html(
     sensitivities: Sensitivities | None = None,
     trade: Sequence[Trade] = (),
     cost: LeastCost | None = None,
+    plain: PlainLight | None = None,
     notes: Mapping[str, str] | None = None,
     command: str = "",
     source: str = "",
@@ -85,6 +88,8 @@ def report_html(
         Trade-off curves of `codesign.study.trade`.
     cost : LeastCost, optional
         Where the solution is that of `codesign.least_cost`.
+    plain : PlainLight, optional
+        Of `codesign.study.plain_light`, to compare with.
     notes : mapping, optional
         Why a part ("sensitivities", "trade-off heat") is not there.
     command : str
@@ -114,6 +119,7 @@ def report_html(
             sensitivities=sensitivities,
             trade=tuple(trade),
             cost=cost,
+            plain=plain,
             notes=dict(notes or {}),
             command=command,
             source=source,
@@ -182,7 +188,7 @@ def policy(styles: list[str], scripts: list[str]) -> str:
         for kind, texts in (("style", styles), ("script", scripts))
         if texts
     )
-    return f"default-src 'none'{allowed}; base-uri 'none'; form-action 'none'"
+    return f"default-src 'none'{allowed}; img-src data:; base-uri 'none'; form-action 'none'"
 
 
 def _sections(subject: Subject, live: LiveFragment | None) -> Iterator[Section]:
@@ -234,7 +240,7 @@ def _live(subject: Subject) -> LiveFragment | None:
 
 def _running_title(subject: Subject) -> str:
     """Head and foot of printed pages; the title is the only text somebody typed in any style."""
-    title = plain(subject.problem.spec.title)
+    title = output.plain(subject.problem.spec.title)
     short = title if len(title) <= LONGEST_RUNNING_TITLE else title[: LONGEST_RUNNING_TITLE - 1] + "…"
     return f"@page{{@top-left{{content:{css_string(short)}}}}}"
 

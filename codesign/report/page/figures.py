@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 def drawn(subject: Subject, key: str) -> Html | None:
     """Return the figure of a section with its caption, None where there is none for this subject."""
     found = DRAWN[key](subject) if key in DRAWN else None
-    return None if found is None else framed(*found)
+    return None if found is None else framed(*found, key)
 
 
 def _story(subject: Subject) -> Drawing | None:
@@ -30,13 +30,62 @@ def _story(subject: Subject) -> Drawing | None:
     )
 
 
-def framed(figure: Figure, caption: str) -> Html:
-    """Return a figure of matplotlib with a caption, scaled to the width of the page."""
+def framed(figure: Figure, caption: str, key: str) -> Html:
+    """Return a figure of matplotlib with a caption, scaled to the width of the page; ``key`` begins its ids."""
     from codesign.report.figures.base import svg_fragment
 
-    picture = trusted(svg_fragment(figure, letters="text"))
+    picture = trusted(svg_fragment(figure, prefix=f"figure-{key}-", letters="text"))
     return element("figure", element("div", picture, class_="picture"), element("figcaption", caption))
 
 
+def _view(subject: Subject) -> Drawing | None:
+    from codesign.report.figures.view import simulated_view
+
+    if not subject.performance.cnr > 0:
+        return None
+    figure = simulated_view(subject.problem, subject.performance, subject.plain)
+    beside = "" if subject.plain is None else " Left: what could be had without thought of wavelengths."
+    return (
+        figure,
+        f"Simulated at the electrons and the noise predicted; defects of this size and shape are invented.{beside}",
+    )
+
+
+def _noise(subject: Subject) -> Drawing | None:
+    from codesign.report.figures.noise import noise_budget
+
+    if not sum(map(sum, subject.performance.noise.values())) > 0:
+        return None
+    return noise_budget(
+        subject.problem, subject.performance
+    ), "Every source of noise, down to a millionth of the variance."
+
+
+def _sensitivities(subject: Subject) -> Drawing | None:
+    from codesign.report.figures.sensitivity import sensitivity_figure
+
+    if subject.sensitivities is None:
+        return None
+    return sensitivity_figure(
+        subject.sensitivities
+    ), "What tolerances do to the CNR, and what loosening a limit would bring."
+
+
+def _trade(subject: Subject) -> Drawing | None:
+    from codesign.report.figures.trade import trade_figure
+
+    if not subject.trade:
+        return None
+    return trade_figure(
+        subject.trade
+    ), "Reached, proven impossible, and the room between; where the parts to use change."
+
+
 #: Figures by section; each with its caption, or None where there is nothing to draw.
-DRAWN: dict[str, Callable[[Subject], Drawing | None]] = {"story": _story}
+DRAWN: dict[str, Callable[[Subject], Drawing | None]] = {
+    "story": _story,
+    "view": _view,
+    "noise": _noise,
+    "sensitivities": _sensitivities,
+    "trade": _trade,
+}

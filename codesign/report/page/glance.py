@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from codesign.design import Performance
 from codesign.report.layout import number, percent
-from codesign.report.page.content import Subject, misses, state
+from codesign.report.page.content import Subject, state
 from codesign.report.page.html import Content, Html, element, joined, name, paragraph, settings
-from codesign.report.page.sections_result import compared, currents, exposure, sign
+from codesign.report.page.sections_result import compared, sign
+from codesign.report.text import currents_words, exposure_words, rate_words
 
 #: Losses below this are told as this. [1]
 LEAST_LOSS = 1e-6
@@ -42,10 +43,10 @@ def _set_in_short(subject: Subject) -> Html:
         ("camera", (name(design.camera), f", {design.gain_db:+g} dB" if design.gain_db else None)),
         ("filter", name(design.filter)),
         ("lens", f"f/{design.f_number:g}"),
-        ("exposure", exposure(performance)),
+        ("exposure", exposure_words(design)),
     ]
     shown = performance.leds[:AT_A_GLANCE] if len(performance.leds) <= AT_A_GLANCE else performance.leds[:3]
-    parts += [(name(led.id), currents(performance, led)) for led in shown]
+    parts += [(name(led.id), currents_words(design, led)) for led in shown]
     more = len(performance.leds) - len(shown)
     rest = paragraph(f"and {more} more LEDs", class_="more") if more else None
     dark = paragraph("all LEDs off") if not performance.leds else None
@@ -60,7 +61,7 @@ def _got_in_short(subject: Subject) -> Html:
             cnr,
             None if required is None else paragraph(compared(performance.cnr, required)),
             paragraph(sign(performance), class_="more"),
-            paragraph(f"{misses(performance.error_rate)} missed, as many false alarms", class_="more"),
+            paragraph(f"{rate_words(performance.error_rate)} missed, as many false alarms", class_="more"),
         )
     )
 

@@ -4,7 +4,19 @@ from __future__ import annotations
 
 from codesign.report.layout import number, percent
 from codesign.report.page.content import Section, Subject, quantity, state
-from codesign.report.page.html import Content, Html, element, joined, listed, name, paragraph, settings, table
+from codesign.report.page.html import (
+    BAR_HEADER,
+    Content,
+    Html,
+    bar,
+    element,
+    joined,
+    listed,
+    name,
+    paragraph,
+    settings,
+    table,
+)
 
 #: What no proof can say.
 NOT_SAID = (
@@ -128,16 +140,24 @@ def alternatives(subject: Subject) -> Section | None:
             f"{a.design.gain_db:g} dB, f/{a.design.f_number:g}",
             f"{number(a.design.exposure_us)} µs",
             _lit(a.design.drive_ma),
+            bar(a.cnr / solution.certificate.bound),
         )
         for a in sorted(solution.alternatives, key=lambda a: -a.cnr)
     ]
-    header = ("camera, filter", "CNR", "change", "gain, f-number", "exposure", "LEDs lit")
+    header = ("camera, filter", "CNR", "change", "gain, f-number", "exposure", "LEDs lit", BAR_HEADER)
     body = (
         paragraph(
             "The best that other cameras or filters of the candidates can do, each with its own best currents and "
             "exposure, before rounding to setting steps. Worth a look where a part is hard to get or dear."
         ),
-        table("Runners-up with other parts", header, rows, numbers=(1, 2, 4), wide=True),
+        table(
+            "Runners-up with other parts, bars up to the proven bound",
+            header,
+            rows,
+            numbers=(1, 2, 4),
+            class_="with-bars",
+            wide=True,
+        ),
     )
     return Section(id="alternatives", title="Alternatives", short="Alternatives", body=joined(body))
 

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-from codesign.design import LedState, Performance
+from codesign.design import Performance
 from codesign.limit_use import LimitUse
 from codesign.report.layout import number, percent
-from codesign.report.page.content import Section, Subject, misses, quantity, root_mean_square, state
+from codesign.report.page.content import Section, Subject, quantity, root_mean_square, state
 from codesign.report.page.figures import drawn
 from codesign.report.page.html import (
     BAR_HEADER,
@@ -24,7 +24,7 @@ from codesign.report.page.html import (
     table,
 )
 from codesign.report.recipe_file import recipe_toml
-from codesign.report.text import CNR_DEFINITION
+from codesign.report.text import CNR_DEFINITION, currents_words, exposure_words, light_words, rate_words
 
 
 def recipe(subject: Subject) -> Section:
@@ -36,8 +36,8 @@ def recipe(subject: Subject) -> Section:
         ("gain", f"{design.gain_db:g} dB"),
         ("filter", name(design.filter) if design.filter != "none" else "none"),
         ("f-number", f"f/{design.f_number:g}"),
-        ("exposure", exposure(performance)),
-        ("light", _mode(subject)),
+        ("exposure", exposure_words(design)),
+        ("light", light_words(subject.problem, performance)),
     ]
     if performance.weights:
         weights = ((name(key), f" {value:+.4f}; ") for key, value in performance.weights.items())
@@ -46,7 +46,7 @@ def recipe(subject: Subject) -> Section:
     leds = [
         (
             name(led.id),
-            currents(performance, led),
+            currents_words(design, led),
             f"× {led.emitters}",
             f"{led.junction_c:.1f} °C",
             f"{number(led.electrical_w, 3)} W in, {number(led.optical_w, 3)} W of light",
@@ -63,31 +63,6 @@ def recipe(subject: Subject) -> Section:
         element("pre", lines(text.rstrip("\n")), class_="file whole"),
     )
     return Section(id="recipe", title="What to set", short="What to set", body=joined(body))
-
-
-def _mode(subject: Subject) -> str:
-    problem, performance = subject.problem, subject.performance
-    if not problem.strobe:
-        return "LEDs on all the time"
-    return f"LEDs on during the exposure only: {percent(performance.duty)} of the time at " + (
-        f"{problem.spec.timing.frame_rate_hz:g} frames per second"
-    )
-
-
-def exposure(performance: Performance) -> str:
-    """Exposure, or those of all shots."""
-    design = performance.design
-    if not design.shots:
-        return f"{design.exposure_us:.10g} µs"
-    return f"{len(design.shots)} shots: " + ", ".join(f"{shot.exposure_us:.10g}" for shot in design.shots) + " µs"
-
-
-def currents(performance: Performance, led: LedState) -> str:
-    """Current of an LED, shot after shot."""
-    shots = performance.design.shots
-    if not shots:
-        return f"{led.drive_ma:.10g} mA"
-    return ", ".join(f"{shot.drive_ma.get(led.id, 0.0):.10g}" for shot in shots) + " mA"
 
 
 def sign(performance: Performance) -> str:
@@ -116,7 +91,7 @@ def result(subject: Subject) -> Section:
     rows.append(
         (
             "errors",
-            f"{misses(performance.error_rate)} missed and as many false alarms, with a threshold midway and normally "
+            f"{rate_words(performance.error_rate)} missed and as many false alarms, threshold midway, noise normally "
             "distributed noise",
         )
     )
@@ -143,9 +118,22 @@ def result(subject: Subject) -> Section:
             "Compare the grey values with those of a first picture before parts are ordered: they tell more quickly "
             "than anything else whether the rig is the one described here."
         ),
+        _beside_plain(subject),
         drawn(subject, "view"),
     )
     return Section(id="result", title="What you get", short="What you get", body=joined(body))
+
+
+def _beside_plain(subject: Subject) -> Html | None:
+    """The recipe against one white LED without a filter."""
+    plain = subject.plain
+    if plain is None or not plain.performance.cnr > 0:
+        return None
+    return paragraph(
+        name(plain.words),
+        f", set as well as can be within the same limits, reaches CNR {number(plain.performance.cnr)}: the recipe has "
+        f"{number(subject.performance.cnr / plain.performance.cnr, 3)} times that.",
+    )
 
 
 def _in_numbers(subject: Subject, noise: float) -> str:
@@ -193,7 +181,6 @@ def limits(subject: Subject) -> Section:
         [paragraph(state("Not met", "missed"), ": ", name(limit.shortfall())) for limit in missed],
         paragraph(note, class_="more") if subject.binding else None,
         table("All limits, the most used first", header, rows, numbers=(1, 2, 3), class_="with-bars", wide=True),
-        drawn(subject, "limits"),
     )
     return Section(id="limits", title="What limits it", short="Limits", body=joined(body))
 
