@@ -9,93 +9,33 @@ needs.
 
 from __future__ import annotations
 
-import os
 import sys
-from contextlib import contextmanager
 from enum import StrEnum
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
-from typer.core import TyperGroup
 
 from codesign.cli_family import family
-from codesign.cli_overview import ABOUT, OVERVIEW, in_order
+from codesign.cli_group import INTERRUPTED, Commands
+from codesign.cli_overview import ABOUT
 from codesign.cli_radiation import radiation
 from codesign.cli_report import Quick, Report, TradeOff, require_page, write_check_page, write_solution_page
 from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
-from codesign.cli_terminal import interrupts, page_width, put, searching
+from codesign.cli_terminal import page_width, put, searching
 from codesign.cli_tolerance import robust, tolerance
 from codesign.cli_vary import vary, worth
-from codesign.errors import CodesignError, InfeasibleError, ProblemError
+from codesign.errors import InfeasibleError, ProblemError
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
-
     from codesign.least_cost import LeastCost
     from codesign.report.progress import Progress
     from codesign.solve import Solution
     from codesign.study.sensitivity import Sensitivities
 
-INTERRUPTED = 130
-
-
-class _Commands(TyperGroup):
-    """All commands, with errors translated in this one place; bugs keep their traceback."""
-
-    def list_commands(self, ctx: Any) -> list[str]:
-        return in_order(super().list_commands(ctx))
-
-    def get_command(self, ctx: Any, cmd_name: str) -> Any:
-        command = super().get_command(ctx, cmd_name)
-        if command is not None:
-            command.short_help = OVERVIEW.get(cmd_name)
-        return command
-
-    def invoke(self, ctx: Any) -> Any:
-        with _translated():
-            return super().invoke(ctx)
-
-
-@contextmanager
-def _translated() -> Iterator[None]:
-    with interrupts() as noted:
-        try:
-            yield
-            sys.stdout.flush()
-        except typer.Exit:
-            raise
-        except BaseException as error:
-            _end(error, interrupted=noted.seen or isinstance(error, KeyboardInterrupt))
-    if noted.seen:
-        typer.echo("cnr: interrupted; this is the best found until then", err=True)
-        raise typer.Exit(INTERRUPTED)
-
-
-def _end(error: BaseException, *, interrupted: bool) -> None:
-    """Turn what ended a command into one line and an exit code; raise it again where that is a bug."""
-    if interrupted:  # whatever was interrupted may have failed with an error of its own
-        typer.echo("cnr: interrupted", err=True)
-        raise typer.Exit(INTERRUPTED) from None
-    if isinstance(error, BrokenPipeError):
-        # The reader has seen enough; keep the interpreter from flushing into nowhere on its way out.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return
-    from codesign.cli_usage import usage_line
-    from codesign.report.output import plain
-
-    line, code = usage_line(error), 2
-    if isinstance(error, CodesignError):
-        line, code = f"cnr: {error}", error.exit_code
-    if line is None:
-        raise error
-    typer.echo(plain(line), err=True)
-    raise typer.Exit(code) from None
-
-
 app = typer.Typer(
-    cls=_Commands,
+    cls=Commands,
     no_args_is_help=True,
     add_completion=False,
     rich_markup_mode=None,
