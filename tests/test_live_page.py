@@ -32,6 +32,10 @@ class Live:
         """Wait for the next frame."""
         self.browser.driver.execute_async_script("requestAnimationFrame(() => requestAnimationFrame(arguments[0]))")
 
+    def rest(self) -> None:
+        """Wait until the recipe is written out."""
+        self.browser.driver.execute_async_script("setTimeout(arguments[0], 250)")
+
     def element(self, name: str):
         return self.browser.driver.find_element("id", f"live-{name}")
 
@@ -238,6 +242,14 @@ def test_bound_is_not_claimed_for_other_surroundings(page, name, value):
     assert "of the proven best" in page.text("share")
 
 
+def test_search_stopped_without_a_bound_claims_none(browser, solved, folder):
+    solution = solved("bruise")
+    stopped = replace(solution, certificate=replace(solution.certificate, bound=np.inf), status="stopped")
+    browser.open(written(live_fragment(stopped), folder))
+    assert "no bound was proven" in Live(browser).text("share")
+    assert browser.console() == []
+
+
 def test_more_than_the_bound_is_said_to_miss_limits(page):
     page.type("exposure", "6000")
     assert page.cnr > page.browser.run("return codesignLive.page.data.bound.cnr")
@@ -246,6 +258,7 @@ def test_more_than_the_bound_is_said_to_miss_limits(page):
     first = page.browser.run("return document.querySelector('#live-limits li').textContent")
     assert first.startswith("✗ missed: ")
     assert "✗ saturated: " in page.text("greys")
+    assert page.text("sign") == "✗ not to be had: the camera saturates"
 
 
 def test_summary_is_read_out_once_things_rest(page):
@@ -299,6 +312,7 @@ def test_spectra_follow_parts_and_drives(page):
 def carried_out(live: Live, tmp_path):
     """The recipe in the text area, read as `cnr check` reads it."""
     path = tmp_path / "tried.toml"
+    live.rest()
     path.write_text(live.element("toml").get_attribute("value"), encoding="utf-8")
     return load_recipe(path)
 
@@ -388,6 +402,7 @@ def test_page_fits_narrow_and_wide_screens(browser, solved, folder, width, dark)
 
 
 def test_printed_page_says_the_settings_and_hides_the_controls(page):
+    page.rest()
     page.browser.scheme(media="print")
     visible = "return document.getElementById(`live-${arguments[0]}`).checkVisibility()"
     assert not page.browser.run(visible, "form") and not page.browser.run(visible, "toml")

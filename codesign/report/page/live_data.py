@@ -77,7 +77,7 @@ def live_data(solution: Solution, kept: Kept) -> dict[str, Any]:
         "recipe": _result(solution.recipe),
         "optimum": _result(solution.optimum),
         "alternatives": [{**settings(a.design), "cnr": a.cnr} for a in solution.alternatives],
-        "bound": {"cnr": solution.certificate.bound, "proven": solution.status == "proven"},
+        "bound": {"cnr": _finite(solution.certificate.bound), "proven": solution.status == "proven"},
         "joined_channels": spec.detection.combine_channels,
         "left_out": kept.note,
     }

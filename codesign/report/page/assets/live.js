@@ -4,6 +4,7 @@
   const live = globalThis.codesignLive;
   const { $, element, fill, number, percent, put } = live;
   const FAITHFUL = 1e-6; // the page's CNR of the recipe must agree with the program's to this
+  const REST = 120; // ms without a change before the recipe is written out
   const MANY_LEDS = 8; // lines of LEDs from which on those out of view are not laid out
 
   class Page {
@@ -142,7 +143,7 @@
       });
       this.wireNumbers();
       this.wireShots();
-      new ResizeObserver(() => this.later()).observe($("spectra"));
+      new ResizeObserver(() => this.spectra.fit() && this.later()).observe($("spectra"));
     }
 
     wireNumbers() {
@@ -191,6 +192,7 @@
     }
 
     async copy() {
+      live.parts.recipe(this, this.result);
       let done = true;
       try {
         await navigator.clipboard.writeText($("toml").value);
@@ -209,7 +211,9 @@
       const result = this.model.evaluate(this.setting);
       this.result = result;
       this.showControls(result);
-      for (const show of Object.values(live.parts)) show(this, result);
+      for (const [name, show] of Object.entries(live.parts)) if (name !== "recipe") show(this, result);
+      clearTimeout(this.writing); // long text is costly to lay out: once a moment of rest comes
+      this.writing = setTimeout(() => live.parts.recipe(this, this.result), REST);
     }
 
     showControls(result) {

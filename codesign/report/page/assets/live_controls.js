@@ -18,7 +18,7 @@
       select.replaceChildren(...entries.map(([entry, text]) => element("option", { value: entry }, text)));
       select.entries = now;
     }
-    select.value = String(value);
+    if (select.value !== String(value)) select.value = String(value);
   }
 
   /** Say what is wrong with a number typed, or take it back. */

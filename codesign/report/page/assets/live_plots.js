@@ -58,10 +58,10 @@
       return LEFT + ((nm - this.low) / (this.high - this.low)) * (this.width - LEFT - RIGHT);
     }
 
-    /** Lay the axes out anew where the width has changed. */
+    /** Take the width of the box and lay the axes out anew where it has changed; returns whether it has. */
     fit() {
       const width = Math.max(Math.floor(this.box.clientWidth), 260);
-      if (width === this.width) return;
+      if (width === this.width) return false;
       this.width = width;
       this.svg.setAttribute("viewBox", `0 0 ${width} ${HEIGHT}`);
       this.svg.setAttribute("width", width);
@@ -84,6 +84,7 @@
       svg("line", { class: "live-zero", x1: LEFT, x2: width - RIGHT, y1: zero, y2: zero }, this.frame);
       this.text("wavelength [nm]", (LEFT + width - RIGHT) / 2, end + 31, "middle");
       this.text("difference, up: target brighter", LEFT, bottom + GAP - 8, "start");
+      return true;
     }
 
     text(content, x, y, anchor) {
@@ -113,7 +114,7 @@
 
     /** Draw a result; of several shots the light of one. */
     draw(result, setting, shot) {
-      this.fit();
+      if (!this.width) this.fit(); // later when the page says so: asking for the width costs a layout
       const { model, largest: top } = this, base = TOP + MAIN, { all, seen } = result.light;
       const diffuse = result.light.diffuse[shot];
       const { i: one, j: other } = result.pair, target = model.surfaces[one].mean, back = model.surfaces[other].mean;

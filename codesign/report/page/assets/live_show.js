@@ -68,8 +68,9 @@
 
   /** The CNR as a share of the bound, which holds for the problem's own surroundings only. */
   function againstBound(page, result, missed) {
-    const { cnr: bound, proven } = page.data.bound, share = bound > 0 ? result.cnr / bound : 0;
-    const best = `CNR ${number(bound, 5)}`;
+    const { cnr: bound, proven } = page.data.bound;
+    if (bound === null) return "no bound was proven before the search was stopped";
+    const share = bound > 0 ? result.cnr / bound : 0, best = `CNR ${number(bound, 5)}`;
     if (!page.atHome()) return `The bound, ${best}, holds for the problem's own surroundings, not for these`;
     const reached = share < 1 ? `${Math.floor(share * 1e4) / 100} %` : percent(share); // never rounded up to all of it
     const caveat = share > 1 && missed.length ? ": only with limits missed" : "";
@@ -89,10 +90,11 @@
   }
 
   function rail(page, cnr) {
-    const { bound, required_cnr: required } = page.data, end = Math.max(bound.cnr, required ?? 0, cnr) * 1.02 || 1;
+    const { bound, required_cnr: required } = page.data, end = Math.max(bound.cnr ?? 0, required ?? 0, cnr) * 1.02 || 1;
     const at = (value) => `${(100 * value) / end}%`;
     $("fill").style.width = at(cnr);
-    $("bound-tick").style.left = at(bound.cnr);
+    $("bound-tick").hidden = bound.cnr === null;
+    if (bound.cnr !== null) $("bound-tick").style.left = at(bound.cnr);
     $("needed").hidden = required === null;
     if (required !== null) $("needed").style.left = at(required);
   }
