@@ -31,7 +31,7 @@ def check_figure(figure: Figure, *, smallest: float = SMALL, apart: bool = True)
         Whether words must not touch each other.
     """
     with house_style():
-        figure.canvas.draw()
+        figure.draw_without_rendering()
         boxes = dict(_boxes(figure))
         assert boxes, "a figure without words"
         _inside(figure, boxes)
@@ -45,7 +45,7 @@ def check_figure(figure: Figure, *, smallest: float = SMALL, apart: bool = True)
 def words(figure: Figure) -> str:
     """All words of a figure that can be seen, one line each."""
     with house_style():
-        figure.canvas.draw()
+        figure.draw_without_rendering()
         return "\n".join(text.get_text() for text, _ in _boxes(figure))
 
 

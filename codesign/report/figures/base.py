@@ -190,13 +190,19 @@ def scale_of(largest: float) -> tuple[float, str]:
 
 def text_width(figure: Panel, text: str, size: float = SMALL, weight: str = "normal") -> float:
     """Width of a line of text in print. [mm]"""
+    return _width_of_line(plain(text), size, weight)
+
+
+@functools.lru_cache(maxsize=4096)
+def _width_of_line(text: str, size: float, weight: str) -> float:
     from matplotlib.text import Text
 
     with house_style():
-        measured = Text(0, 0, plain(text), fontsize=size, fontweight=weight)
+        figure = new_figure(layout=None)
+        measured = Text(0, 0, text, fontsize=size, fontweight=weight)
         measured.set_figure(figure)
         extent = measured.get_window_extent(figure.canvas.get_renderer())  # type: ignore[attr-defined]
-    return float(extent.width) / figure.dpi * INCH
+        return float(extent.width) / figure.dpi * INCH
 
 
 def shortened(figure: Panel, text: str, width_mm: float, size: float = SMALL, weight: str = "normal") -> str:
@@ -376,6 +382,5 @@ def _raw(figure: Figure, form: str, letters: str) -> bytes:
     metadata = {"svg": {"Date": None}, "pdf": {"CreationDate": None, "Title": words_of(figure).title}}.get(form)
     content = BytesIO()
     with house_style(**{"svg.fonttype": "path" if letters == "shapes" else "none"}):
-        _read_no_formulas(figure)
         figure.savefig(content, format=form, metadata=metadata, dpi=DPI)
     return content.getvalue()

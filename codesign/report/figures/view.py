@@ -90,7 +90,8 @@ def simulated_view(
         Of the pieces, the light and the noise.
     """
     sides = _sides(problem, performance, before)
-    figure = new_figure(width if before is not None else width / 2 + 4.0, 0.52 * width / 2 + 42.0)
+    room = width / 2 + (4.0 if before is None else 0.0)  # the caption of one picture takes a line more
+    figure = new_figure(room * len(sides), 0.52 * room + (46.0 if before is None else 42.0))
     draw_simulated_view(figure, problem, performance, before, seed=seed)
     said = "; ".join(f"{side.words}: CNR {number(side.performance.cnr)}" for side in sides)
     return describe(figure, "Simulated pictures of pieces with a defect", f"{said}.")
