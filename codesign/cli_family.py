@@ -79,9 +79,14 @@ def _engine(processes: int | None, scheduler: str | None, variants: int) -> Engi
         return local_engine(processes, variants)
     if processes is not None:
         raise CodesignError("--processes is for local processes, --scheduler names others; leave one out")
+    import logging
+
     from codesign.family.cluster import ClusterEngine
 
-    return ClusterEngine(scheduler)
+    engine = ClusterEngine(scheduler)
+    for name in ("distributed", "distributed.client"):  # what matters is told in one line
+        logging.getLogger(name).setLevel(logging.CRITICAL + 1)
+    return engine
 
 
 def _own_rigs(loaded: Family, place: Path, engine: Engine, *, gap: float | None, fresh: bool) -> OwnRigs:

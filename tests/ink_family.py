@@ -97,7 +97,7 @@ def variants_csv(family: list[Ink], seed: int = SEED) -> str:
     lines = ["variant,scene.target,scene.background,motion.speed_mm_per_s,required_cnr"]
     for ink in family:
         number, strict = ink.name[:3], rng.random() < 0.15
-        lines.append(f"{ink.name},thin-{number},ink-{number},{rng.choice(WEB_SPEEDS)},{8 if strict else ''}")
+        lines.append(f"{ink.name},thin-{number},ink-{number},{rng.choice(WEB_SPEEDS)},{10 if strict else ''}")
     return "\n".join([*lines, ""])
 
 
@@ -125,7 +125,7 @@ PROBLEM = """\
 [problem]                          # the base problem; rows of the table change fields of it
 title = "Too thin a film of ink"
 notes = "Invented scenario with the embedded demo catalogue."
-required_cnr = 5.0
+required_cnr = 7.0
 
 [problem.scene]
 target = "thin-001"                # of the first ink; every row names its own

@@ -14,6 +14,7 @@ from concurrent.futures import FIRST_COMPLETED, CancelledError, Future, wait
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 
+from codesign.display import Displayed
 from codesign.errors import CodesignError
 from codesign.family.engine import Engine, HereEngine
 from codesign.family.load import Family
@@ -68,8 +69,8 @@ class Entry:
         return self.outcome.cnr >= self.required_cnr
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class OwnRigs:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class OwnRigs(Displayed):
     """Each variant with its own best rig, in the order of the family.
 
     ``gap`` is the relative gap proven, None where each variant's problem states its own; ``run_now`` how many were

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import logging
 import time
 from collections.abc import Callable
 from concurrent.futures import CancelledError, Future
@@ -9,6 +10,8 @@ from typing import Any
 
 from codesign.errors import CodesignError
 from codesign.family.worker import run_task, run_task_elsewhere
+
+log = logging.getLogger(__name__)
 
 #: How to get the engine.
 INSTALL = "pip install 'codesign[cluster]'"
@@ -69,8 +72,12 @@ class ClusterEngine:
 
     def close(self, *, now: bool = False) -> None:
         """Leave the cluster; ``now`` takes back what it has not done."""
+        if self._client.status == "closed":
+            return
         try:
-            self._executor.shutdown(wait=not now, cancel_futures=now)
+            self._executor.shutdown(wait=not now)
+        except Exception as error:  # the scheduler may be gone, and with it what there was to take back
+            log.debug("leaving %s: %s", self.address, error)
         finally:
             self._client.close()
 

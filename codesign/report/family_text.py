@@ -118,20 +118,14 @@ def _edges(values: np.ndarray) -> np.ndarray:
 def _worst(entries: Sequence[Entry], width: int) -> list[str]:
     ordered = sorted(entries, key=by_need)
     need = any(entry.required_cnr is not None for entry in entries)
-    some = "" if len(entries) <= MOST_ROWS else f" ({MOST_ROWS} of {len(entries)}; --csv FILE has all)"
     rows = [
-        (
-            plain(entry.name),
-            cnr_words(entry.outcome.cnr),
-            *((_needed(entry),) if need else ()),
-            cnr_words(entry.outcome.bound, 5),
-            *rig_words(entry.outcome),
-        )
+        (plain(entry.name), cnr_words(entry.outcome.cnr), *((_needed(entry),) if need else ()), *_rig(entry.outcome))
         for entry in ordered[:MOST_ROWS]
     ]
-    header = ("variant", "CNR", *(("needs",) if need else ()), "bound", "camera", "filter", "LEDs")
-    left = (0, *range(4 + need - 1, 7 + need))
-    return [heading(f"worst off first{some}", width), *table(header, rows, width, left=left)]
+    header = ("variant", "CNR", *(("needs",) if need else ()), "camera", "filter", "LEDs")
+    lines = [heading("worst off first", width), *table(header, rows, width, left=(0, *range(2 + need, 5 + need)))]
+    left = len(entries) - MOST_ROWS
+    return lines + (bullet(f"{_count(left, 'other')} not shown; --csv and --json have all", width) if left > 0 else [])
 
 
 def _needed(entry: Entry) -> str:
@@ -140,10 +134,11 @@ def _needed(entry: Entry) -> str:
     return f"{entry.required_cnr:g}" + ("" if entry.met else " !")
 
 
-def rig_words(outcome: Outcome) -> tuple[str, str, str]:
+def _rig(outcome: Outcome) -> tuple[str, str, str]:
     """Camera, filter and LEDs of an outcome in words."""
     channel = "" if outcome.channel == "mono" else f" ({outcome.channel})"
-    return plain(outcome.camera + channel), outcome.filter, ", ".join(outcome.leds) or "none lit"
+    leds = f"{len(outcome.leds)}: {', '.join(outcome.leds)}" if outcome.leds else "none lit"
+    return plain(outcome.camera + channel), outcome.filter, leds
 
 
 def _recurring(outcomes: Sequence[Outcome], width: int) -> list[str]:
