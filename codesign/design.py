@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from codesign.catalog import Camera, GainSetting
 from codesign.catalog.camera import JOINT
 from codesign.design_checks import candidate, check_values
+from codesign.display import Displayed
 from codesign.errors import ProblemError, nearest
 from codesign.limit_use import LedState, LimitUse, build_uses, limit_uses
 from codesign.limits import PulseLevel, Setting, dark_rate, pulse_levels, saturation_electrons, thermal_resistance
@@ -94,8 +95,8 @@ class PairContrast:
     cnr: float
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Performance:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Performance(Displayed):
     """What a recipe achieves.
 
     ``pairs`` lists every target and background; ``cnr``, ``signal_e`` and ``noise`` are those of the worst pair, the

@@ -14,6 +14,7 @@ import numpy as np
 
 from codesign.build import part_price, units_in_use
 from codesign.design import Performance
+from codesign.display import Displayed
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.limit_use import recipe_price
 from codesign.problem import Problem
@@ -45,8 +46,8 @@ LARGEST_MARGIN = 0.1
 NEXT_TO_NOTHING = 1e-6
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class LeastCost:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class LeastCost(Displayed):
     """The least value found and what is proven.
 
     ``value`` is what the settable recipe of ``solution`` uses, in ``unit``; no recipe that uses ``bound`` or less

@@ -12,6 +12,7 @@ from codesign.assemble_conflicts import no_step_fits, nothing_seen
 from codesign.build import Units
 from codesign.certificate_build import check_recipe
 from codesign.design import Design, Performance, evaluate
+from codesign.display import Displayed
 from codesign.problem import Problem
 from codesign.program import Array
 from codesign.recipe import design_at, settable
@@ -55,8 +56,8 @@ class Alternative:
     cnr: float
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Solution:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Solution(Displayed):
     """The optimum, the settable recipe near it, and the proof.
 
     ``optimum`` is the continuous optimum, ``recipe`` the same in whole setting steps (what to dial in). ``winner``,

@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from codesign.catalog import Camera, Catalog, Filter, Led, Surface
+from codesign.display import Displayed
 from codesign.errors import ProblemError, nearest
 from codesign.problem.choices import FilterChoices
 from codesign.problem.schema import ProblemSpec
@@ -50,8 +51,8 @@ class LedChannel:
         return self.led.id
 
 
-@dataclass(frozen=True, kw_only=True, eq=False)
-class Problem:
+@dataclass(frozen=True, kw_only=True, eq=False, repr=False)
+class Problem(Displayed):
     """What `load_problem` returns; frozen, so a what-if is a new problem.
 
     Attributes

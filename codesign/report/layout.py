@@ -151,3 +151,8 @@ def duration(seconds: float) -> str:
         if seconds < top:
             return f"{number(seconds / size, 2 if seconds / size < 100 else 3)} {unit}"
     return f"{number(seconds / 3600, 2)} h"
+
+
+def counted(count: int, thing: str) -> str:
+    """Return a number of things in words: "1 point", "2 points"."""
+    return f"{count} {thing}" if count == 1 else f"{count} {thing}s"

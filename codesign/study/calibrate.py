@@ -12,6 +12,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from scipy import stats
 
+from codesign.display import Displayed
 from codesign.errors import ProblemError, nearest
 from codesign.problem import Problem
 from codesign.program import Array
@@ -61,8 +62,8 @@ class Residual:
     pull: float
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Calibration:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Calibration(Displayed):
     """What readings say about a rig.
 
     Attributes

@@ -15,6 +15,7 @@ import numpy as np
 
 from codesign.design import Performance, Shot
 from codesign.design_combined import optical_power
+from codesign.display import Displayed
 from codesign.errors import ProblemError
 from codesign.physics import radiation as hazard
 from codesign.physics.light import delivery_from_beam
@@ -80,8 +81,8 @@ class Exposure:
     note: str = ""
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Screening:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Screening(Displayed):
     """What `screening` found: the rows, the distance [mm] and the assumptions made."""
 
     distance_mm: float

@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from codesign.design import Design, evaluate
+from codesign.display import Displayed
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.limits import junction_limit
 from codesign.problem import Problem
@@ -38,8 +39,8 @@ LARGEST_NUMBER_OF_ROUNDS, JUNCTION_TOLERANCE_K = 4, 0.5
 CHOICES = 3
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Robust:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Robust(Displayed):
     """A robust recipe next to the nominal one.
 
     Attributes

@@ -15,6 +15,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from codesign.design import Design
+from codesign.display import Displayed
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.problem import Problem
 from codesign.study.ceiling import Ceiling, ceilings
@@ -69,8 +70,8 @@ class Route:
     design: Design | None = field(default=None, repr=False)
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Routes:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Routes(Displayed):
     """Everything that could be done about a CNR.
 
     ``pair`` is None where none reaches it with noticeably less than a single lever; ``pair_floor`` is the factor at

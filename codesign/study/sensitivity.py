@@ -21,6 +21,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from codesign.design import evaluate
+from codesign.display import Displayed
 from codesign.errors import CatalogError, InfeasibleError, ProblemError, SolveError
 from codesign.problem import Problem
 from codesign.problem.choices import JOINT
@@ -101,8 +102,8 @@ class Elasticity:
     high: Shifted | None
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Sensitivities:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Sensitivities(Displayed):
     """Shadow prices and elasticities at one certified optimum."""
 
     problem: Problem = field(repr=False)

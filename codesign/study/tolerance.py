@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from codesign.design import Design, Performance
+from codesign.display import Displayed
 from codesign.errors import ProblemError
 from codesign.problem import Problem
 from codesign.study.draws import Spread, cause_names, draws_from, filters_in, spreads, standard_normal
@@ -73,8 +74,8 @@ class Outcome:
         return kept
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Tolerance:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Tolerance(Displayed):
     """Spread of the CNR over rigs, and the yield.
 
     Attributes

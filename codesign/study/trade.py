@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from codesign.design import Performance
+from codesign.display import Displayed
 from codesign.errors import ProblemError, nearest
 from codesign.least_cost import FIELDS, WHOLE
 from codesign.problem import Problem, solver_settings
@@ -105,8 +106,8 @@ class Enough:
         return bool(np.isfinite(self.value))
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Trade:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Trade(Displayed):
     """The frontier of CNR against one quantity, least first.
 
     Attributes

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from codesign.catalog import Catalog
+from codesign.display import Displayed
 from codesign.errors import InfeasibleError, ProblemError
 from codesign.problem import Problem
 from codesign.problem.choices import JOINT, FilterChoices
@@ -57,8 +58,8 @@ class PartWorth:
     reason: str = ""
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Worths:
+@dataclass(frozen=True, slots=True, kw_only=True, repr=False)
+class Worths(Displayed):
     """Worth of each part in use, dearest loss first, and of parts that could be added, greatest gain first.
 
     ``cnr`` and ``bound`` are those of the problem as it is; ``tried`` counts the parts that were tried as additions.
