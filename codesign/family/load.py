@@ -82,9 +82,7 @@ class Family:
             assert self.base is not None
             return varied(replace(self.base, where=f"variant {variant.name!r}"), variant.changes)
         except CodesignError as error:
-            # A folder's messages name the file already.
-            text = str(error) if variant.file is not None else f"{variant.where}: {error}"
-            raise type(error)(text) from None
+            raise type(error)(_at_row(variant, str(error))) from None
 
     def problems(self) -> Iterator[tuple[Variant, Problem | CodesignError]]:
         """Build the problems of all variants one after another; a variant that cannot be built comes with its error."""
@@ -93,6 +91,14 @@ class Family:
                 yield variant, self.problem(variant)
             except CodesignError as error:
                 yield variant, error
+
+
+def _at_row(variant: Variant, text: str) -> str:
+    """A message with the row and the name of its variant; those of a folder name their file."""
+    if variant.file is not None:
+        return text
+    name = f"variant {variant.name!r}"
+    return f"{variant.where}: {text}" if text.startswith(name) else f"{variant.where}: {name}: {text}"
 
 
 def load_family(source: str | Path) -> Family:
@@ -187,7 +193,7 @@ def _problem(table: dict[str, Any], folder: Path, where: str, family: Family) ->
     if place not in family._catalogs:
         try:
             catalog = load_catalog(place)
-            family._catalogs[place] = catalog.with_parts({"surface": family.surfaces})
         except CatalogError as error:
             raise CatalogError(f"{where}: catalog is {name!r}: {error}") from None
+        family._catalogs[place] = catalog.with_parts({"surface": family.surfaces})
     return build_problem(table, folder=folder, where=where, catalog=family._catalogs[place])

@@ -26,8 +26,9 @@ from codesign.problem.choices import FilterChoices
 WORDS = {"description", "source", "invented", "tags"}
 #: Sections and fields of a problem that no result of a solve depends on; parts are taken as they were found.
 BESIDE = {"title", "notes", "catalog", "required_cnr", "tolerance", "led", "filter", "camera", "surface"}
-#: Sub-packages whose code cannot change a result.
-OUTSIDE = ("report", "cli")
+#: Code that cannot change a result, and within it what can.
+OUTSIDE = ("report/", "cli", "study/", "family/", "verify", "least_cost")
+INSIDE = ("study/common", "study/warm", "study/multipliers", "family/worker", "family/outcome", "family/sealed")
 
 
 class Sealer:
@@ -125,11 +126,15 @@ def program() -> str:
     """Version of the program, and a digest of the code that results depend on."""
     root = Path(__file__).resolve().parents[1]
     digest = hashlib.sha256()
-    for path in sorted(root.rglob("*.py")):
-        name = path.relative_to(root).as_posix()
-        if not name.startswith(OUTSIDE):
-            digest.update(name.encode() + b"\0" + path.read_bytes() + b"\0")
+    for name in sorted(path.relative_to(root).as_posix() for path in root.rglob("*.py")):
+        if decides(name):
+            digest.update(name.encode() + b"\0" + (root / name).read_bytes() + b"\0")
     return f"{codesign.__version__}+{digest.hexdigest()[:12]}"
+
+
+def decides(file: str) -> bool:
+    """Whether results depend on a file of the package, e.g. ``search/walk.py``."""
+    return not file.startswith(OUTSIDE) or file.startswith(INSIDE)
 
 
 def _digest_part(part: Part) -> str:
