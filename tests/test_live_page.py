@@ -9,7 +9,6 @@ import pytest
 from live_shell import by_library, special, written
 
 from codesign import evaluate, load_recipe
-from codesign.report.page.document import report_html
 from codesign.report.page.live import live_fragment
 
 #: Every control of a page without build limits, by id.
@@ -100,9 +99,9 @@ def test_page_opens_on_the_recipe_quietly(page, solved):
     assert page.browser.console() == [] and page.browser.requests() == []
 
 
-def test_it_works_in_the_report_under_its_policy(browser, solved, tmp_path):
+def test_it_works_in_the_report_under_its_policy(browser, reported, solved, tmp_path):
     path = tmp_path / "report.html"
-    path.write_text(report_html(solved("bruise")), encoding="utf-8")
+    path.write_text(reported("bruise"), encoding="utf-8")
     browser.open(path)
     page = Live(browser)
     page.type("exposure", "500")
@@ -388,8 +387,7 @@ def test_names_are_text_wherever_they_come_out(browser, solved, folder, tmp_path
 # --- everywhere --------------------------------------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("width", [320, 390, 800, 1280])
-@pytest.mark.parametrize("dark", [False, True])
+@pytest.mark.parametrize(("width", "dark"), [(320, False), (390, True), (800, False), (1280, True)])
 def test_page_fits_narrow_and_wide_screens(browser, solved, folder, width, dark):
     browser.open(written(live_fragment(solved("thin-film")), folder), width=width, dark=dark)
     Live(browser).settle()
