@@ -294,7 +294,7 @@ def _worst(pairs: tuple[PairContrast, ...]) -> tuple[int, int, float]:
     signed = np.array([pair.cnr if pair.signal_e > 0 else -pair.cnr for pair in pairs])
     direction = 1 if signed.min() >= -signed.max() else -1
     worst = int(np.argmin(direction * signed))
-    return direction, worst, max(float(direction * signed[worst]), 0.0)
+    return direction, worst, max(float(direction * signed[worst]), 0.0) + 0.0  # no minus before a zero
 
 
 @dataclass(frozen=True, slots=True)

@@ -78,7 +78,7 @@ def draw_limit_use(panel: Panel, performance: Performance, binding: Collection[s
     axes.set_yticks(range(len(shown)), names)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
-    _per_cent(axes, 0.5 if is_narrow(panel) else 0.25)
+    _per_cent(axes, 1.0 if is_narrow(panel) else 0.25)
     dress(axes, x=left_words(left) if left else "share used", grid="x")
     legend_above(axes, "Use of limits", [], aside=room_beside(panel, names))
     _columns(axes, panel, shown, binding)

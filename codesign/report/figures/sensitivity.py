@@ -75,10 +75,9 @@ def sensitivity_figure(found: Sensitivities, *, width: float = TEXT_WIDTH) -> Fi
     """
     swings, small = swings_of(found)
     priced = prices_of(found)
-    figure = new_figure(width, REST + ROW * max(len(swings), 1) + PRICE_ROW * max(len(priced), 1))
-    upper, lower = figure.subplots(
-        2, 1, height_ratios=[ROW * max(len(swings), 1) + 4, PRICE_ROW * max(len(priced), 1) + 2]
-    )
+    heights = [ROW * max(len(swings), 2), PRICE_ROW * max(len(priced), 2)]
+    figure = new_figure(width, REST + sum(heights))
+    upper, lower = figure.subplots(2, 1, height_ratios=[heights[0] + 4, heights[1] + 2])
     _draw_swings(upper, swings, small)
     _draw_prices(lower, found, priced)
     said = "; ".join(f"{x.name} at most {x.weight:.2g} %" for x in swings[:8])
@@ -142,7 +141,9 @@ def _draw_swings(axes: Axes, swings: list[Swing], small: list[str]) -> None:
                     axes.plot(end, row + lift, marker=marker, color=color, markerfacecolor=face, markersize=4.5)
     axes.axvline(0, color=INK, linewidth=0.8)
     _scale(axes, max((swing.weight for swing in swings), default=EVEN))
-    axes.set_ylim(len(swings) - 0.4, -0.6)
+    axes.set_ylim(max(len(swings), 1) - 0.4, -0.6)
+    if not swings:
+        write(axes, 0, 0, "no tolerance moves the CNR", va="center", xytext=(4, 0), textcoords="offset points")
     panel = axes.get_figure(root=False)
     names = [shortened(panel, swing.name, 0.36 * width_mm(panel)) for swing in swings]
     axes.set_yticks(range(len(swings)), names)
@@ -159,7 +160,8 @@ def _draw_swings(axes: Axes, swings: list[Swing], small: list[str]) -> None:
         (Line2D([], [], color=MUTED, linestyle="none", marker="^"), "quantity higher"),
     ]
     legend_above(axes, "What tolerances do to the CNR", keys, aside=room_beside(panel, names))
-    _worst_columns(axes, swings)
+    if swings:
+        _worst_columns(axes, swings)
 
 
 def _scale(axes: Axes, largest: float) -> None:

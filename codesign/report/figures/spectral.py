@@ -23,6 +23,8 @@ from codesign.report.figures.base import (
 from codesign.report.figures.peaks import Peak, name_peaks
 from codesign.report.figures.spectral_electrons import (
     BEYOND,
+    area,
+    curve,
     draw_contrast,
     draw_electrons,
     draw_noise,
@@ -107,8 +109,8 @@ def _draw_light(axes: Axes, problem: Problem, found: Spectra, performance: Perfo
         line = None
         for led, own in leds.items():
             light = own / unit
-            (line,) = axes.plot(grid, light, color=INK, linestyle=DASHES[index % len(DASHES)], linewidth=1.0)
-            axes.fill_between(grid, light, color=RULE, alpha=0.6, linewidth=0)
+            line = curve(axes, grid, light, color=INK, linestyle=DASHES[index % len(DASHES)], linewidth=1.0)
+            area(axes, grid, 0 * light, light, color=RULE, alpha=0.6)
             peak = Peak(float(grid[np.argmax(light)]), float(light.max()), _led_words(performance, led))
             peaks[led] = max(peaks.get(led, peak), peak, key=lambda p: p.height)
         if line is not None and performance.design.shots:
@@ -116,7 +118,7 @@ def _draw_light(axes: Axes, problem: Problem, found: Spectra, performance: Perfo
     if np.any(problem.ambient):
         entries.append(
             (
-                axes.plot(grid, problem.ambient / unit, color=AMBIENT, linestyle=DASHES[5], linewidth=1.6)[0],
+                curve(axes, grid, problem.ambient / unit, color=AMBIENT, linestyle=DASHES[5], linewidth=1.6),
                 "ambient light",
             )
         )
@@ -142,20 +144,20 @@ def _draw_parts(axes: Axes, problem: Problem, found: Spectra, performance: Perfo
     grid, entries = found.wavelength_nm, []
     for index, dash, color, width in surface_lines(problem, found.pair):
         mean, spread = found.reflectance[index], found.spread[index]
-        (line,) = axes.plot(grid, mean, color=color, linestyle=dash, linewidth=width)
-        axes.fill_between(grid, mean - spread, mean + spread, color=color, alpha=0.22, linewidth=0)
+        line = curve(axes, grid, mean, color=color, linestyle=dash, linewidth=width)
+        area(axes, grid, mean - spread, mean + spread, color=color, alpha=0.22)
         entries.append((line, problem.surfaces[index].id))
     if performance.design.filter != "none":
-        axes.fill_between(grid, found.filter, color=FILTER, alpha=0.12, linewidth=0)
-        (line,) = axes.plot(grid, found.filter, color=FILTER, linestyle=DASHES[2], linewidth=1.2)
+        area(axes, grid, 0 * found.filter, found.filter, color=FILTER, alpha=0.12)
+        line = curve(axes, grid, found.filter, color=FILTER, linestyle=DASHES[2], linewidth=1.2)
         entries.append((line, f"filter {performance.design.filter}"))
     for k, reading in enumerate(found.readings if not performance.design.shots else found.readings[:1]):
-        (line,) = axes.plot(
-            grid, reading.quantum_efficiency, color=SENSOR, linestyle=DASHES[(3, 4, 6)[k % 3]], linewidth=1.2
+        line = curve(
+            axes, grid, reading.quantum_efficiency, color=SENSOR, linestyle=DASHES[(3, 4, 6)[k % 3]], linewidth=1.2
         )
         which = f", {reading.name}" if len(found.readings) > 1 and not performance.design.shots else ""
         entries.append((line, f"sensor, electrons per photon{which}"))
-    entries.append((axes.plot(grid, found.lens, color=MUTED, linestyle=DASHES[7], linewidth=0.9)[0], "lens"))
+    entries.append((curve(axes, grid, found.lens, color=MUTED, linestyle=DASHES[7], linewidth=0.9), "lens"))
     dress(axes, y="share")
     axes.set_ylim(0, max(1.02, 1.05 * float(np.max(found.reflectance[list(found.pair)]))))
     legend_above(axes, "What the light meets (bands: spread of the samples)", entries)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -25,11 +25,33 @@ if TYPE_CHECKING:
 BEYOND = 2e-3
 #: Noise terms that take less of the variance have no line. [1]
 LEAST_NOISE = 1e-3
+#: Points of a curve; more would only make files larger.
+POINTS_DRAWN = 400
 #: Colours of the noise terms that grow with light, wherever they are shown.
 NOISE_COLORS = {
     "light shot noise": INK, "ambient shot noise": AMBIENT, "photo-response fixed pattern": FILTER,
     "surface clutter": TARGET,
 }  # fmt: skip
+
+
+def curve(axes: Axes, grid: Array, values: Array, **look: Any) -> Any:
+    """Draw a curve over wavelength, as finely as can be seen; returns the line."""
+    at = _drawn(axes, grid)
+    return axes.plot(grid[at], values[at], **look)[0]
+
+
+def area(axes: Axes, grid: Array, low: Array, high: Array, **look: Any) -> Any:
+    """Fill between two curves over wavelength, as finely as can be seen."""
+    at = _drawn(axes, grid)
+    return axes.fill_between(grid[at], low[at], high[at], **{"linewidth": 0, **look})
+
+
+def _drawn(axes: Axes, grid: Array) -> Array:
+    """Positions of the wavelengths to draw: those shown and one beyond, at most about `POINTS_DRAWN`."""
+    low, high = axes.get_xlim()
+    first, last = np.searchsorted(grid, (low, high))
+    first, last = max(first - 1, 0), min(last + 1, grid.size)
+    return np.arange(first, last, max((last - first) // POINTS_DRAWN, 1))
 
 
 def surface_lines(problem: Problem, pair: tuple[int, int]) -> list[tuple[int, object, str, float]]:
@@ -52,19 +74,19 @@ def draw_electrons(axes: Axes, problem: Problem, found: Spectra) -> None:
         for k, reading in enumerate(found.readings)
         for index, dash, color, width in lines
     ]
-    unit, sign = scale_of(max(float(curve.max()) for curve, *_ in curves))
-    for curve, index, k, dash, color, width in curves:
+    unit, sign = scale_of(max(float(density.max()) for density, *_ in curves))
+    for density, index, k, dash, color, width in curves:
         style = DASHES[k % len(DASHES)] if many else dash
-        (line,) = axes.plot(grid, curve / unit, color=color, linestyle=style, linewidth=width)
+        line = curve(axes, grid, density / unit, color=color, linestyle=style, linewidth=width)
         which = f", {found.readings[k].name}" if many else ""
         entries.append((line, problem.surfaces[index].id + which))
     ambient = sum(reading.ambient_e[found.pair[1]] for reading in found.readings)
     if np.any(ambient):
-        area = axes.fill_between(grid, ambient / unit, facecolor=AMBIENT, edgecolor=AMBIENT, alpha=0.6, linewidth=0.5)
+        filled = area(axes, grid, 0 * ambient, ambient / unit, color=AMBIENT, alpha=0.6, linewidth=0.5)
         share = float(found.integral(ambient) / found.integral(_background_e(found)))
-        entries.append((area, f"of these by ambient light, {percent(share, 1e-4)}"))
+        entries.append((filled, f"of these by ambient light, {percent(share, 1e-4)}"))
     dress(axes, y=f"{sign}e⁻ per nm")
-    axes.set_ylim(bottom=0)
+    axes.set_ylim(0, None if any(np.any(density) for density, *_ in curves) else 1.0)
     legend_above(axes, f"Electrons in one pixel{_beyond_words(axes, found)}", entries)
 
 
@@ -87,13 +109,13 @@ def draw_contrast(axes: Axes, problem: Problem, found: Spectra, performance: Per
     grid = found.wavelength_nm
     unit, sign = scale_of(float(np.abs(found.signal_e).max()))
     signal = found.signal_e / unit
-    axes.fill_between(grid, np.maximum(signal, 0), color=TARGET, alpha=0.45, linewidth=0)
-    axes.fill_between(grid, np.minimum(signal, 0), color=BACKGROUND, alpha=0.45, linewidth=0)
-    axes.plot(grid, signal, color=INK, linewidth=1.0)
+    area(axes, grid, 0 * signal, np.maximum(signal, 0), color=TARGET, alpha=0.45)
+    area(axes, grid, np.minimum(signal, 0), 0 * signal, color=BACKGROUND, alpha=0.45)
+    curve(axes, grid, signal, color=INK, linewidth=1.0)
     axes.axhline(0, color=MUTED, linewidth=0.7)
     dress(axes, y=f"{sign}e⁻ per nm")
     top, bottom = max(float(signal.max()), 0.0), min(float(signal.min()), 0.0)
-    reach = max(top - bottom, 1e-12)
+    reach = top - bottom if top > bottom else 1.0
     axes.set_ylim(bottom - 0.08 * reach, top + 0.08 * reach)
     target, background = (problem.surfaces[index].id for index in found.pair)
     weighted = ", weighted" if len(found.readings) > 1 else ""
@@ -102,8 +124,8 @@ def draw_contrast(axes: Axes, problem: Problem, found: Spectra, performance: Per
 
 def _sum_words(found: Spectra, performance: Performance) -> str:
     """What the contrast adds up to, and how much of it has the other sign."""
-    whole = max(float(found.integral(np.abs(found.signal_e))), 1e-300)
-    against = (whole - abs(float(found.integral(found.signal_e)))) / 2 / whole
+    whole = float(found.integral(np.abs(found.signal_e)))
+    against = (1 - abs(float(found.integral(found.signal_e))) / whole) / 2 if whole > 0 else 0.0
     words = f"in all {signed(performance.signal_e)} e⁻"
     return words + (f"; {percent(against)} of it works against the rest" if against > 1e-3 else "")
 
@@ -121,7 +143,7 @@ def draw_noise(axes: Axes, found: Spectra) -> None:
             small += [name] if share > 0 else []
             continue
         color = NOISE_COLORS.get(name, MUTED)
-        (line,) = axes.plot(found.wavelength_nm, density / unit, color=color, linestyle=DASHES[index % len(DASHES)])
+        line = curve(axes, found.wavelength_nm, density / unit, color=color, linestyle=DASHES[index % len(DASHES)])
         entries.append((line, f"{name}, {percent(share)}"))
     if small:
         entries.append((blank(), f"below {percent(LEAST_NOISE)} each: {', '.join(small)}"))

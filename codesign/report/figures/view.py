@@ -142,10 +142,10 @@ def defects(count: int, cells: int, rng: np.random.Generator) -> Array:
     y, x = np.mgrid[:cells, :cells] + 0.5
     found = np.empty((count, cells, cells))
     for piece in range(count):
-        centre = cells * rng.uniform(0.38, 0.62, 2)
+        centre = cells * rng.uniform(0.43, 0.57, 2)
         dx, dy = x - centre[0], y - centre[1]
-        angle, stretch = np.arctan2(dy, dx), rng.uniform(0.75, 1.3)
-        radius = cells * rng.uniform(0.17, 0.24)
+        angle, stretch = np.arctan2(dy, dx), rng.uniform(0.8, 1.25)
+        radius = cells * rng.uniform(0.16, 0.22)
         outline = np.ones_like(angle)
         for order in (2, 3, 4, 5):
             outline += rng.uniform(0.0, 0.28 / order) * np.cos(order * angle + rng.uniform(0, 2 * np.pi))
