@@ -28,6 +28,9 @@ class Html(str):
     __slots__ = ()
 
 
+#: Tables up to so many rows are not broken over printed pages.
+SHORT_TABLE = 8
+
 Content = str | int | float | None | Iterable["Content"]
 
 
@@ -133,13 +136,14 @@ def table(
         Whether it scrolls on its own where the page is too narrow; others have to fit.
     """
     head = (element("th", cell, scope="col", class_=_column(k, numbers)) for k, cell in enumerate(header))
-    body = (_row(row, numbers) for row in rows)
+    body = [_row(row, numbers) for row in rows]
+    kinds = " ".join(filter(None, (class_, "whole" if len(body) <= SHORT_TABLE else None))) or None
     whole = element(
         "table",
         element("caption", caption),
         element("thead", element("tr", head)),
         element("tbody", body),
-        class_=class_,
+        class_=kinds,
     )
     if not wide:
         return whole

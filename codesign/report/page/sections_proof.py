@@ -5,10 +5,8 @@ from __future__ import annotations
 from codesign.report.layout import number, percent
 from codesign.report.page.content import Section, Subject, quantity, state
 from codesign.report.page.html import (
-    BAR_HEADER,
     Content,
     Html,
-    bar,
     element,
     joined,
     listed,
@@ -140,22 +138,20 @@ def alternatives(subject: Subject) -> Section | None:
             f"{a.design.gain_db:g} dB, f/{a.design.f_number:g}",
             f"{number(a.design.exposure_us)} µs",
             _lit(a.design.drive_ma),
-            bar(a.cnr / solution.certificate.bound),
         )
         for a in sorted(solution.alternatives, key=lambda a: -a.cnr)
     ]
-    header = ("camera, filter", "CNR", "change", "gain, f-number", "exposure", "LEDs lit", BAR_HEADER)
+    header = ("camera, filter", "CNR", "change", "gain, f-number", "exposure", "LEDs lit")
     body = (
         paragraph(
             "The best that other cameras or filters of the candidates can do, each with its own best currents and "
             "exposure, before rounding to setting steps. Worth a look where a part is hard to get or dear."
         ),
         table(
-            "Runners-up with other parts, bars up to the proven bound",
+            "Runners-up with other parts",
             header,
             rows,
             numbers=(1, 2, 4),
-            class_="with-bars",
             wide=True,
         ),
     )

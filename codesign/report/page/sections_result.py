@@ -214,17 +214,14 @@ def noise(subject: Subject) -> Section:
             number(pair[0] ** 0.5, 3),
             number(pair[1] ** 0.5, 3),
             percent(sum(pair) / total, least=0.001),
-            bar(sum(pair) / total),
             NOISE_WORDS.get(term),
         )
         for term, pair in ordered
         if total > 0 and sum(pair) > 0
     ]
-    header = ("source", "target [e⁻]", "background [e⁻]", "of the variance", BAR_HEADER, "what lowers it")
+    header = ("source", "target [e⁻]", "background [e⁻]", "of the variance", "what lowers it")
     body = (
-        table(
-            "Standard deviation by source, in electrons", header, rows, numbers=(1, 2, 3), class_="with-bars", wide=True
-        )
+        table("Standard deviation by source, in electrons", header, rows, numbers=(1, 2, 3), wide=True)
         if rows
         else paragraph("There is no noise to list."),
         drawn(subject, "noise"),
