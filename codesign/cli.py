@@ -25,6 +25,7 @@ from codesign.cli_routes import calibrate, routes
 from codesign.cli_sensitivity import sensitivity
 from codesign.cli_terminal import page_width, put, searching
 from codesign.cli_tolerance import robust, tolerance
+from codesign.cli_trade import trade
 from codesign.cli_vary import vary, worth
 from codesign.errors import InfeasibleError, ProblemError
 
@@ -300,6 +301,7 @@ def _show_solution(
 app.command()(sensitivity)
 app.command()(vary)
 app.command()(worth)
+app.command()(trade)
 app.command()(tolerance)
 app.command()(robust)
 app.command()(routes)

@@ -137,12 +137,14 @@ def test_what_the_camera_cannot_do_ends_the_curve():
     # The shortest exposure of the camera is already the best one.
     found = trade(load_problem("rust-outdoors"), "exposure")
     assert [round(point.used) for point in found.points] == [30] and found.resolves == 1
+    assert found.enough.value == pytest.approx(30) and found.enough.bound == pytest.approx(30, rel=1e-5)
 
 
-def test_table_names_units_and_marks(curves):
+def test_tables_of_all_curves_have_the_same_columns(curves):
     table = curves["heat"].table()
-    assert list(table.columns[:6]) == ["against", "limit_w", "used_w", "cnr", "cnr_bound", "recipe_cnr"]
-    assert "enough" in set(table["mark"]) and (table["against"] == "heat").all()
+    assert list(table.columns[:6]) == ["against", "unit", "limit", "used", "cnr", "cnr_bound"]
+    assert "enough" in set(table["mark"]) and (table["unit"] == "W").all()
+    assert all(list(curve.table().columns) == list(table.columns) for curve in curves.values())
 
 
 @pytest.mark.parametrize(

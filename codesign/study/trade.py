@@ -147,15 +147,15 @@ class Trade(Displayed):
         return tuple(point for point in self.points if point.optimum.possible)
 
     def table(self) -> pd.DataFrame:
-        """One row per point, units in the column names."""
+        """One row per point, all curves with the same columns; ``unit`` is that of ``limit`` and ``used``."""
         import pandas as pd
 
-        unit = f"_{self.quantity.unit.lower()}" if self.quantity.unit else ""
         rows = [
             {
                 "against": self.quantity.name,
-                f"limit{unit}": point.limit,
-                f"used{unit}": point.used,
+                "unit": self.quantity.unit,
+                "limit": point.limit,
+                "used": point.used,
                 "cnr": point.optimum.cnr,
                 "cnr_bound": point.optimum.bound,
                 "recipe_cnr": point.recipe_cnr,

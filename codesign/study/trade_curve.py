@@ -130,9 +130,10 @@ class Curve:
 
     def bracket(self, cnr: float) -> dict[str, float]:
         """What a settable recipe of that CNR uses at least so far, and the limit under which none reaches it."""
-        enough = self.cheapest(cnr)
-        short = [solved.limit for solved in self.solved if solved.bound < cnr]
-        return {"value": np.inf if enough is None else enough.recipe_used, "bound": max(short, default=0.0)}
+        enough, least = self.cheapest(cnr), self._least()
+        impossible = least - 1 if self.whole else least * (1 - JUST_LESS)
+        short = [impossible, *(solved.limit for solved in self.solved if solved.bound < cnr)]
+        return {"value": np.inf if enough is None else enough.recipe_used, "bound": max(short)}
 
     # --- solving --------------------------------------------------------------------------------------------
 

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
-from codesign.report.figures.base import INCH, POINTS, SMALL, blank, text_width, width_mm, wrapped
+from codesign.report.figures.base import INCH, POINTS, SMALL, TITLE, blank, text_width, width_mm, wrapped
 from codesign.report.house import CARD, INK, MARKERS, SERIES
 
 if TYPE_CHECKING:
@@ -18,8 +18,10 @@ if TYPE_CHECKING:
 
 #: Combinations listed below a figure; the table that goes with it has all.
 LISTED = 12
-#: Lines an entry takes at most, and entries from which on two columns are tried.
-LINES, MANY = 4, 4
+#: Lines an entry takes at most, and columns tried.
+LINES, COLUMNS = 4, 5
+#: More columns are taken where they make a legend that much lower.
+WORTH_BREAKING = 0.8
 #: Height of a line of the legend. [pt]
 LINE = 1.42 * SMALL
 
@@ -49,6 +51,25 @@ def part_entries(words: Mapping[str, str]) -> list[tuple[Artist, str]]:
     return entries
 
 
+def lines_above(figure: Figure, title: str, entries: Sequence[tuple[Artist, str]]) -> None:
+    """Put a title, wrapped, and below it what lines mean on top of a figure, and make it higher by that.
+
+    Parameters
+    ----------
+    figure : Figure
+        With ``layout="constrained"``.
+    title : str
+    entries : sequence of (artist, str)
+    """
+    room = width_mm(figure) - 6.0
+    names, columns = _set(figure, [name for _, name in entries], room)
+    title = wrapped(figure, title, room / 1.12, TITLE, lines=2)  # bold letters are wider than they are measured
+    legend = _legend(figure, entries, names, columns, "outside upper left")
+    legend.set_title(title, prop={"size": TITLE, "weight": "bold"})
+    legend.get_title().set_parse_math(False)
+    _grow(figure, (title.count("\n") + 1) * 1.4 * TITLE + _height(names, columns))
+
+
 def parts_below(figure: Figure, entries: Sequence[tuple[Artist, str]]) -> None:
     """Put a legend below everything, its names wrapped, and make the figure higher by it.
 
@@ -58,32 +79,51 @@ def parts_below(figure: Figure, entries: Sequence[tuple[Artist, str]]) -> None:
         With ``layout="constrained"``.
     entries : sequence of (artist, str)
     """
-    if not entries:
-        return
-    room, handle, gap = width_mm(figure) - 6.0, 3.2 * SMALL / POINTS, 2.2 * SMALL / POINTS
-    names, columns = _set(figure, [name for _, name in entries], room, handle, gap)
-    rows = -(-len(names) // columns)
-    heights = [max(name.count("\n") + 1 for name in names[k * columns : (k + 1) * columns]) for k in range(rows)]
-    figure.set_figheight(figure.get_figheight() + (sum(heights) * LINE + 6) / POINTS / INCH)
+    if entries:
+        names, columns = _set(figure, [name for _, name in entries], width_mm(figure) - 6.0)
+        _legend(figure, entries, names, columns, "outside lower left")
+        _grow(figure, _height(names, columns))
+
+
+def _legend(figure: Figure, entries: Sequence[tuple[Artist, str]], names: list[str], columns: int, place: str) -> Any:
     # matplotlib fills column by column; people read row by row.
     order = [k for column in range(columns) for k in range(column, len(names), columns)]
     legend = figure.legend(
-        [entries[k][0] for k in order], [f"entry {k}" for k in order], loc="outside lower left", ncols=columns,
-        fontsize=SMALL, alignment="left",
+        [entries[k][0] for k in order], [f"entry {k}" for k in order], loc=place, ncols=columns, fontsize=SMALL,
+        alignment="left",
     )  # fmt: skip
     for text, k in zip(legend.get_texts(), order, strict=True):
         text.set_parse_math(False)
         text.set_text(names[k])
+    return legend
 
 
-def _set(figure: Figure, names: list[str], room: float, handle: float, gap: float) -> tuple[list[str], int]:
-    """The names wrapped, and in how many columns they stand: two or three where all are short."""
-    for columns in (3, 2) if len(names) >= MANY else ():
+def _grow(figure: Figure, points: float) -> None:
+    figure.set_figheight(figure.get_figheight() + (points + 4) / POINTS / INCH)
+
+
+def _height(names: list[str], columns: int) -> float:
+    """Height of a legend. [pt]"""
+    rows = [names[k : k + columns] for k in range(0, len(names), columns)]
+    return sum(LINE * max(name.count("\n") + 1 for name in row) for row in rows)
+
+
+def _set(figure: Figure, names: list[str], room: float) -> tuple[list[str], int]:
+    """The names wrapped, and in how many columns they stand: in as many as make the legend low.
+
+    ``room`` is the width there is. [mm]
+    """
+    handle, gap = 3.6 * SMALL / POINTS, 1.6 * SMALL / POINTS
+    best: tuple[list[str], int] | None = None
+    for columns in range(1, min(len(names), COLUMNS) + 1):
         width = (room - (columns - 1) * gap) / columns - handle
-        if all(text_width(figure, name) <= width for name in names):
-            return names, columns
-    width = room - handle
-    return [_hanging(figure, name, width) for name in names], 1
+        trial = [_hanging(figure, name, width) for name in names], columns
+        if any("…" in name for name in trial[0]) and best is not None:
+            break
+        # A little lower is not worth lines that are broken.
+        if best is None or _height(*trial) < WORTH_BREAKING * _height(*best):
+            best = trial
+    return best or (names, 1)
 
 
 def _hanging(figure: Figure, name: str, width: float) -> str:

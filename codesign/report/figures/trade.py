@@ -8,35 +8,48 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from codesign.report.figures.base import (
-    SMALL,
+    POINTS,
     TEXT_WIDTH,
     describe,
     dress,
     in_house_style,
     new_figure,
-    wrapped,
+    text_width,
     write,
 )
-from codesign.report.figures.combinations import LISTED, part_entries, parts_below, sign
-from codesign.report.figures.ends import log_axis
+from codesign.report.figures.combinations import lines_above, part_entries, parts_below, sign
+from codesign.report.figures.ends import log_axis, rounded_out
 from codesign.report.house import BACKGROUND, INK, MUTED, RULE, TARGET
 from codesign.report.layout import number
 from codesign.report.study_text import configuration_letters, configuration_words
-from codesign.report.text import UNITS
+from codesign.report.trade_text import axis_words, in_units
 
 if TYPE_CHECKING:
     from matplotlib.artist import Artist
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
+    from matplotlib.text import Annotation
 
     from codesign.study.trade import Trade
+    from codesign.study.vary import Point
 
-#: Height of one curve, and of each row of several. [mm]
-ALONE, ROW = 82.0, 62.0
+#: Height of one curve, and of each row of several; what the axes of a curve do not have of it across and up. [mm]
+ALONE, ROW, BESIDE, BELOW = 82.0, 62.0, 16.0, 16.0
 #: Ratio of the ends from which on an axis is logarithmic.
 LOGARITHMIC = 6.0
 #: A CNR required above this multiple of the greatest is said, not drawn.
 OUT_OF_SIGHT = 2.0
+#: Height of a line of words. [pt]
+WORDS = 9.5
+#: Room of a letter and of a sign across and up, and places of a letter from its point that are tried. [mm], [pt]
+LETTER, SIGN = (3.4, 3.6), (2.6, 2.8)
+SPOTS = ((0, 5.5), (0, -14.0), (9, -4.5), (-9, -4.5), (0, 15.5), (0, -24.0), (9, 5.5), (-9, 5.5), (0, 25.5))
+#: What lines look like wherever they stand.
+PROVEN, REQUIRED, OWN = (
+    {"color": MUTED, "linewidth": 0.8},
+    {"color": TARGET, "linewidth": 1.0, "linestyle": (0, (5, 3))},
+    {"color": INK, "linewidth": 0.9, "linestyle": (0, (4, 2, 1, 2))},
+)
 
 
 @in_house_style
@@ -50,155 +63,212 @@ def trade_figure(curves: Sequence[Trade], *, width: float = TEXT_WIDTH) -> Figur
     width : float
         Width in print. [mm]
     """
-    from matplotlib.figure import SubFigure  # noqa: F401  (constrained layout needs the class loaded)
-
     columns = min(len(curves), 2)
     rows = -(-len(curves) // columns)
-    figure = new_figure(width, ALONE if len(curves) == 1 else ROW * rows)
+    size = width / columns, ALONE if len(curves) == 1 else ROW
+    figure = new_figure(width, size[1] * rows)
     letters = configuration_letters([point.optimum for curve in curves for point in curve.points])
     cells = figure.subplots(rows, columns, squeeze=False).ravel()
     for axes in cells[len(curves) :]:
         axes.set_visible(False)
     for axes, curve in zip(cells, curves, strict=False):
-        _draw(axes, curve, letters, width / columns)
-    title = wrapped(figure, curves[0].title, width - 8.0, lines=2)
-    figure.suptitle(title, x=0.01, ha="left", fontsize=SMALL + 1.5, fontweight="bold", color=INK)
+        _draw(axes, curve, letters, (size[0] - BESIDE, size[1] - BELOW))
+    lines_above(figure, curves[0].title, _line_entries(curves))
     words = {letter: configuration_words(_example(curves, each)) for each, letter in letters.items()}
-    parts_below(figure, [*_line_entries(curves), *part_entries(words)])
+    parts_below(figure, part_entries(words))
     return describe(figure, f"Trade-offs: {curves[0].title}", " ".join(_said(curve) for curve in curves))
 
 
-def _example(curves: Sequence[Trade], configuration: tuple[str, ...]):
+def _example(curves: Sequence[Trade], configuration: tuple[str, ...]) -> Point:
     return next(p.optimum for c in curves for p in c.possible if p.optimum.configuration == configuration)
-
-
-def axis_words(curve: Trade) -> str:
-    """Name and unit of what CNR is traded against."""
-    unit = UNITS.get(curve.quantity.unit, curve.quantity.unit)
-    return curve.quantity.label + (f" [{unit}]" if unit else "")
 
 
 def _said(curve: Trade) -> str:
     """One curve in words."""
     first, last = curve.possible[0], curve.possible[-1]
-    unit = UNITS.get(curve.quantity.unit, curve.quantity.unit)
     text = (
-        f"CNR against {curve.quantity.label}: {number(first.optimum.cnr)} with {number(first.used)} {unit}, "
-        f"{number(last.optimum.cnr)} with {number(last.used)} {unit}."
+        f"CNR against {curve.quantity.label}: {number(first.optimum.cnr)} with {in_units(curve, first.used)}, "
+        f"{number(last.optimum.cnr)} with {in_units(curve, last.used)}."
     )
     if curve.enough is not None and curve.enough.reached:
-        text += f" {number(curve.enough.value)} {unit} is enough for CNR {curve.enough.cnr:g}."
-    return " ".join(text.split())
+        text += f" {in_units(curve, curve.enough.value)} is enough for CNR {curve.enough.cnr:g}."
+    return text
 
 
-def _draw(axes: Axes, curve: Trade, letters: dict[tuple[str, ...], str], width: float) -> None:
-    low, high = _range(curve)
-    top = curve.points[-1].optimum.bound
-    required = curve.required_cnr
-    shown = required if required is not None and required <= OUT_OF_SIGHT * top else None
-    axes.set_ylim(0, 1.16 * max(top, shown or 0.0))
-    _band(axes, curve, low, high)
+def _draw(axes: Axes, curve: Trade, letters: dict[tuple[str, ...], str], size: tuple[float, float]) -> None:
+    """One curve; ``size`` is about that of its axes. [mm]"""
+    low, high, log = _range(curve)
+    wanted = curve.required_cnr if _in_sight(curve) else 0.0
+    axes.set_ylim(0, 1.2 * max(curve.points[-1].optimum.bound, wanted))
+    if log:
+        log_axis(axes, "x", low, high, size[0])
+    else:
+        axes.set_xlim(low, high)
+    if curve.quantity.whole:
+        axes.set_xticks(range(1, int(high) + 1, max(1, -(-int(high) // 12))))
+    elif not log:
+        axes.locator_params(axis="x", nbins=max(4, int(size[0] / 12)))
+    _band(axes, curve)
     _recipes(axes, curve, high)
-    _signs(axes, curve, letters)
-    _scale(axes, curve, low, high, width)
-    _required(axes, curve, shown)
-    _own(axes, curve, low, high)
+    _marks(axes, curve, size[1] * POINTS)
+    _signs(axes, curve, letters, size, _written(axes, size))
     dress(axes, x=axis_words(curve), y="CNR", grid="y")
 
 
-def _range(curve: Trade) -> tuple[float, float]:
-    """Both ends of the axis."""
-    points = curve.points
+def _range(curve: Trade) -> tuple[float, float, bool]:
+    """Both ends of the axis, and whether it is logarithmic."""
+    low, high = curve.possible[0].used, curve.points[-1].limit
     if curve.quantity.whole:
-        return 0.5, points[-1].limit + 0.5
-    low, high = points[0].limit if not points[0].optimum.possible else points[0].used, points[-1].limit
-    if not curve.possible[0].used < high * (1 - 1e-3):
-        return 0.5 * low, 2.0 * high
-    room = 0.03 * (high - low)
-    return (low, high) if high / low >= LOGARITHMIC else (low - room, high + room)
+        return 0.5, high + 0.5, False
+    if high / low < 1 + 1e-3:
+        return 0.5 * low, 1.5 * high, False
+    if high / low >= LOGARITHMIC:
+        return *rounded_out(low, high), True
+    room = 0.04 * (high - low)
+    return low - room, high + room, False
 
 
-def _band(axes: Axes, curve: Trade, low: float, high: float) -> None:
+def _band(axes: Axes, curve: Trade) -> None:
     """From what recipes reach up to what is proven impossible: both hold beyond their point, to the right and left."""
     points = curve.points
-    x = np.unique([low, *(p.limit for p in points), *(p.used for p in points), high])
-    x = x[(x >= low) & (x <= high)]
-    # Just right of each step the next bound holds, just left of each the recipe before.
-    x = np.sort(np.concatenate([x, x * (1 + 1e-9)]))
-    above = [min((p.optimum.bound for p in points if p.limit >= v * (1 - 2e-10)), default=np.nan) for v in x]
+    ends = [value for point in points for value in (point.limit, point.used)]
+    x = np.unique([value * nudge for value in ends for nudge in (1 - 1e-9, 1.0, 1 + 1e-9)])
+    x = x[(x >= curve.possible[0].used * (1 - 1e-9)) & (x <= points[-1].limit)]
+    if curve.quantity.whole:  # each count by itself, a tread of half a step to either side
+        x = np.repeat(np.arange(1, points[-1].limit + 1), 2)
+    above = [
+        next(p.optimum.bound if p.optimum.possible else 0.0 for p in points if p.limit >= v * (1 - 1e-12)) for v in x
+    ]
     below = [max((p.recipe_cnr for p in curve.possible if p.used <= v and p.recipe), default=0.0) for v in x]
-    above = np.where(np.isnan(np.array(above, float)), points[-1].optimum.bound, np.array(above, float))
-    above = np.where(np.isfinite(above), above, 0.0)
+    if curve.quantity.whole:
+        x = x + np.tile([-0.5, 0.5], len(x) // 2)
     axes.fill_between(x, below, np.maximum(above, below), color=RULE, alpha=0.75, linewidth=0, zorder=1)
-    axes.plot(x, above, color=MUTED, linewidth=0.8, zorder=2)
+    axes.plot(x, above, zorder=2, **PROVEN)
 
 
 def _recipes(axes: Axes, curve: Trade, high: float) -> None:
     points = [point for point in curve.possible if point.recipe is not None]
     x, y = [point.used for point in points], [point.recipe_cnr for point in points]
-    if x:
+    if curve.quantity.whole and x:
+        axes.plot([x[0] - 0.5, *x, high], [y[0], *y, y[-1]], color=BACKGROUND, drawstyle="steps-mid", zorder=3)
+    elif x:
         style = "steps-post" if curve.quantity.steps else "default"
-        axes.plot([*x, max(high, x[-1])], [*y, y[-1]], color=BACKGROUND, linewidth=1.4, drawstyle=style, zorder=3)
+        axes.plot([*x, max(high, x[-1])], [*y, y[-1]], color=BACKGROUND, drawstyle=style, zorder=3)
 
 
-def _signs(axes: Axes, curve: Trade, letters: dict[tuple[str, ...], str]) -> None:
-    """A sign at each point, a letter where the parts change."""
+def _signs(
+    axes: Axes,
+    curve: Trade,
+    letters: dict[tuple[str, ...], str],
+    size: tuple[float, float],
+    taken: list[tuple[float, float]],
+) -> None:
+    """A sign at each recipe, and at it a letter where the parts change, clear of other signs, letters and words."""
     order, before = list(letters), None
-    for point in curve.possible:
+    points = [point for point in curve.possible if point.recipe is not None]
+    spots = [tuple(np.multiply(_place(axes, point.used, point.recipe_cnr), size)) for point in points]
+    for point, (across, up) in zip(points, spots, strict=True):
         each = point.optimum.configuration
-        index = order.index(each)
-        value = point.recipe_cnr if point.recipe is not None else point.optimum.cnr
-        axes.plot([point.used], [value], **sign(index), zorder=4, clip_on=False)
+        axes.plot([point.used], [point.recipe_cnr], **sign(order.index(each)), zorder=4, clip_on=False)
         if each != before:
-            write(
-                axes, point.used, value, letters[each], xytext=(0, 5.5), textcoords="offset points", ha="center",
-                va="bottom", fontweight="bold",
-            )  # fmt: skip
+            # A letter stands on its spot, a sign around it. Where there is no room the sign alone has to do.
+            trials = {spot: (across + spot[0] / POINTS, up + spot[1] / POINTS) for spot in SPOTS}
+            spot = next((spot for spot, place in trials.items() if _free(place, taken, spots, size)), None)
+            if spot is not None:
+                taken.append(trials[spot])
+                write(
+                    axes, point.used, point.recipe_cnr, letters[each], xytext=spot, zorder=6,
+                    textcoords="offset points", ha="center", va="bottom", fontweight="bold",
+                )  # fmt: skip
         before = each
 
 
-def _scale(axes: Axes, curve: Trade, low: float, high: float, width: float) -> None:
-    if curve.quantity.whole:
-        axes.set_xlim(low, high)
-        count = int(curve.points[-1].limit)
-        axes.set_xticks(range(1, count + 1, max(1, -(-count // 12))))
-    elif high / low >= LOGARITHMIC:
-        log_axis(axes, "x", low, high, most=int(width / 11))
-    else:
-        axes.set_xlim(low, high)
-        axes.locator_params(axis="x", nbins=max(3, int(width / 17)))
+def _place(axes: Axes, x: float, y: float) -> tuple[float, float]:
+    """Where a point stands, as shares of both axes."""
+    return tuple(axes.transAxes.inverted().transform(axes.transData.transform((x, y))))
 
 
-def _required(axes: Axes, curve: Trade, shown: float | None) -> None:
-    """The CNR required, and the least that is enough for it."""
-    if shown is None:
-        if curve.required_cnr is not None:
-            write(
-                axes, 0.02, 1.0, f"required CNR {curve.required_cnr:g}: out of reach", xycoords="axes fraction",
-                va="top", color=TARGET,
-            )  # fmt: skip
-        return
-    axes.axhline(shown, color=TARGET, linewidth=1.0, linestyle=(0, (5, 3)), zorder=2)
-    write(
-        axes, 1.0, shown, f"required {shown:g}", xycoords=("axes fraction", "data"), xytext=(-1, -2),
-        textcoords="offset points", ha="right", va="top", color=TARGET,
-    )  # fmt: skip
+def _share(axes: Axes, words: Annotation) -> tuple[float, float]:
+    """Where words are tied to, as shares of both axes."""
+    x, y = words.xy
+    across, up = _place(axes, x, y)
+    kinds = words.xycoords if isinstance(words.xycoords, tuple) else (words.xycoords,) * 2
+    return x if kinds[0] == "axes fraction" else across, y if kinds[1] == "axes fraction" else up
+
+
+def _written(axes: Axes, size: tuple[float, float]) -> list[tuple[float, float]]:
+    """Spots along the words written so far. [mm]"""
+    spots = []
+    for words in axes.texts:
+        x, y = np.multiply(_share(axes, words), size) + np.divide(words.xyann, POINTS)
+        width = text_width(axes.get_figure(root=False), words.get_text())
+        left = x - (width if words.get_ha() == "right" else 0.0)
+        low = y - (LETTER[1] if words.get_va() == "top" else 0.0)
+        spots += [(left + step, low) for step in np.linspace(0, width, 2 + int(width / LETTER[0]))]
+    return spots
+
+
+def _free(spot: tuple[float, float], letters: Sequence, signs: Sequence, size: tuple[float, float]) -> bool:
+    """Whether a letter may stand on a spot: on the axes, apart from other letters and from signs. [mm]"""
+    x, y = spot
+    apart = all(abs(x - a) >= LETTER[0] or abs(y - b) >= LETTER[1] for a, b in letters)
+    middle = y + LETTER[1] / 2
+    clear = all(abs(x - a) >= SIGN[0] or abs(middle - b) >= SIGN[1] for a, b in signs)
+    return 0 <= y <= size[1] - LETTER[1] and x <= size[0] + LETTER[0] / 2 and apart and clear
+
+
+def _marks(axes: Axes, curve: Trade, height: float) -> None:
+    """The CNR required and the least that is enough, and the limit of the problem; ``height`` of the axes in points."""
+    taken = _required(axes, curve, height)
     enough = curve.enough
-    if enough is not None and enough.reached and enough.value > 0:
-        axes.plot([enough.value] * 2, [0, enough.cnr], color=TARGET, linewidth=1.0, linestyle=(0, (1, 1.5)), zorder=2)
-        unit = UNITS.get(curve.quantity.unit, curve.quantity.unit)
-        write(
-            axes, enough.value, 0, f"enough: {number(enough.value)} {unit}", xytext=(2.5, 2.5),
-            textcoords="offset points", ha="left", va="bottom", color=TARGET,
-        )  # fmt: skip
+    if taken and enough is not None and enough.reached and enough.value > 0:
+        axes.plot([enough.value] * 2, [0, enough.cnr], **{**REQUIRED, "linestyle": (0, (1, 1.5))}, zorder=2)
+        _beside(axes, enough.value, f"enough: {in_units(curve, enough.value)}", TARGET, taken)
+    if _own_shown(curve):
+        axes.axvline(curve.own_limit, zorder=2, **OWN)
+        _beside(axes, curve.own_limit, f"limit: {in_units(curve, curve.own_limit)}", INK, taken)
 
 
-def _own(axes: Axes, curve: Trade, low: float, high: float) -> None:
-    """The limit the problem itself sets."""
-    own = curve.own_limit
-    if own is None or not low <= own <= high:
-        return
-    axes.axvline(own, color=INK, linewidth=0.9, linestyle=(0, (4, 2, 1, 2)), zorder=2)
+def _required(axes: Axes, curve: Trade, height: float) -> list[float]:
+    """The line of the CNR required; returns how high its words stand, nothing where it is out of sight. [pt]"""
+    wanted, enough = curve.required_cnr, curve.enough
+    style = {"color": TARGET, "textcoords": "offset points"}
+    if wanted is None or not _in_sight(curve):
+        if wanted is not None:
+            text = f"required CNR {wanted:g}: out of reach"
+            write(axes, 0, 1, text, xycoords="axes fraction", xytext=(4, 0), va="top", **style)
+        return []
+    axes.axhline(wanted, zorder=2, **REQUIRED)
+    late = enough is not None and enough.reached and enough.value > 0 and _place(axes, enough.value, 0)[0] > 0.7
+    line = height * wanted / axes.get_ylim()[1]
+    # A curve is below the line before it crosses and above it after: the words stand where it is not.
+    above = late or line < 1.5 * WORDS
+    x, side, offset = (0, "left", 3) if late else (1, "right", -1)
+    write(
+        axes, x, wanted, f"required {wanted:g}", xycoords=("axes fraction", "data"), ha=side,
+        va="bottom" if above else "top", xytext=(offset, 2 if above else -2), **style,
+    )  # fmt: skip
+    return [line + 2 if above else line - WORDS]
+
+
+def _in_sight(curve: Trade) -> bool:
+    return curve.required_cnr is not None and curve.required_cnr <= OUT_OF_SIGHT * curve.points[-1].optimum.bound
+
+
+def _own_shown(curve: Trade) -> bool:
+    low, high, _ = _range(curve)
+    return curve.own_limit is not None and low <= curve.own_limit <= high
+
+
+def _beside(axes: Axes, x: float, text: str, color: str, taken: list[float]) -> None:
+    """Words low beside an upright line, on the side that has room and clear of other words; notes their height. [pt]"""
+    rise = next(r for r in (2.5 + k * WORDS for k in range(20)) if all(abs(r - other) >= WORDS for other in taken))
+    taken.append(rise)
+    right = _place(axes, x, 0)[0] > 0.62
+    write(
+        axes, x, 0, text, xytext=(-2.5 if right else 2.5, rise), textcoords="offset points",
+        ha="right" if right else "left", va="bottom", color=color,
+    )  # fmt: skip
 
 
 def _line_entries(curves: Sequence[Trade]) -> list[tuple[Artist, str]]:
@@ -206,15 +276,12 @@ def _line_entries(curves: Sequence[Trade]) -> list[tuple[Artist, str]]:
     from matplotlib.patches import Patch
 
     entries: list[tuple[Artist, str]] = [
-        (Line2D([], [], color=BACKGROUND, linewidth=1.4), "recipes found, in setting steps"),
-        (Line2D([], [], color=MUTED, linewidth=0.8), "proven: nothing is above"),
-        (Patch(facecolor=RULE, alpha=0.75), "not decided between points"),
+        (Line2D([], [], color=BACKGROUND), "recipes found, in setting steps"),
+        (Line2D([], [], **PROVEN), "proven: nothing is above"),
+        (Patch(facecolor=RULE, alpha=0.75), "between points: not decided"),
     ]
     if any(curve.required_cnr is not None for curve in curves):
-        entries.append((Line2D([], [], color=TARGET, linewidth=1.0, linestyle=(0, (5, 3))), "CNR required"))
-    if any(curve.own_limit is not None for curve in curves):
-        entries.append((Line2D([], [], color=INK, linewidth=0.9, linestyle=(0, (4, 2, 1, 2))), "limit of the problem"))
+        entries.append((Line2D([], [], **REQUIRED), "CNR required"))
+    if any(_own_shown(curve) for curve in curves):
+        entries.append((Line2D([], [], **OWN), "limit the problem sets"))
     return entries
-
-
-__all__ = ["LISTED", "axis_words", "trade_figure"]
