@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-import sys
 from enum import StrEnum
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
+
+from codesign.cli_terminal import page_width, put
 
 if TYPE_CHECKING:
     from codesign.family import Family
@@ -66,7 +67,7 @@ def family(
     engine = _engine(processes, scheduler, len(loaded.variants))
     found = _own_rigs(loaded, place, engine, gap=gap, fresh=fresh)
     save(found, csv, figure)
-    _print(show(found, json=json))
+    put(show(found, json=json, width=page_width()))
     if found.failed:
         raise typer.Exit(SOME_FAILED)
 
@@ -95,24 +96,14 @@ def _own_rigs(loaded: Family, place: Path, engine: Engine, *, gap: float | None,
     from codesign.family.batch import Interrupted, own_rigs
     from codesign.family.store import Store
     from codesign.report.family_progress import FamilyProgress
+    from codesign.report.output import plain
 
-    with closing(engine), Store(place, fresh=fresh) as store, closing(FamilyProgress()) as progress:
+    with closing(engine), Store(place, fresh=fresh) as store, FamilyProgress() as progress:
         try:
             return own_rigs(loaded, store, engine, gap=gap, progress=progress)
         except Interrupted as stop:
-            progress.clear()
-            kept = f"{stop.done} of {stop.total} variants are kept in {place}"
-            _tell(f"cnr: interrupted; {kept}, the same command{' without --fresh' if fresh else ''} goes on from there")
+            progress.close()
+            again = "the same command" + (" without --fresh" if fresh else "")
+            kept = f"{stop.done} of {stop.total} variants are kept in {place}, {again} goes on from there"
+            typer.echo(plain(f"cnr: interrupted; {kept}"), err=True)
             raise typer.Exit(INTERRUPTED) from None
-
-
-def _tell(text: str) -> None:
-    from codesign.report.output import plain
-
-    typer.echo(plain(text), err=True)
-
-
-def _print(text: str) -> None:
-    from codesign.report.output import shown
-
-    typer.echo(shown(text, sys.stdout.encoding), nl=False)

@@ -15,9 +15,9 @@ from codesign.report.study_files import check_targets
 __all__ = ["check_targets", "save", "show"]
 
 
-def show(found: OwnRigs, *, json: bool) -> str:
+def show(found: OwnRigs, *, json: bool, width: int = 80) -> str:
     """Return a family as text, or as JSON."""
-    return as_json(own_rigs_dict(found)) if json else own_rigs_text(found)
+    return as_json(own_rigs_dict(found)) if json else own_rigs_text(found, width)
 
 
 def save(found: OwnRigs, csv: Path | None, figure: Path | None = None) -> None:
@@ -28,4 +28,4 @@ def save(found: OwnRigs, csv: Path | None, figure: Path | None = None) -> None:
         from codesign.report.figures.base import save_figure
         from codesign.report.figures.families import family_figure
 
-        save_figure(family_figure(found), figure)
+        save_figure(family_figure(found.entries, title=found.title), figure)

@@ -10,7 +10,7 @@ import numpy as np
 
 from codesign.family.batch import Entry, OwnRigs
 from codesign.family.outcome import Outcome
-from codesign.report.layout import NARROWEST, bar, bullet, heading, labelled, number, percent, table
+from codesign.report.layout import NARROWEST, bar, bullet, counted, heading, labelled, number, percent, table
 from codesign.report.output import plain
 
 #: Variants shown, those worst off first; the table for the line controller has all.
@@ -43,7 +43,7 @@ def failures(entries: Sequence[Entry], width: int) -> list[str]:
     """Variants without a recipe, and why."""
     if not entries:
         return []
-    lines = ["", heading(f"{_count(len(entries), 'variant')} without a recipe", width)]
+    lines = ["", heading(f"{counted(len(entries), 'variant')} without a recipe", width)]
     for entry in entries[:MOST_FAILURES]:
         reason = plain(entry.outcome.reason)
         # Messages that name the row name the variant too.
@@ -125,7 +125,7 @@ def _worst(entries: Sequence[Entry], width: int) -> list[str]:
     header = ("variant", "CNR", *(("needs",) if need else ()), "camera", "filter", "LEDs")
     lines = [heading("worst off first", width), *table(header, rows, width, left=(0, *range(2 + need, 5 + need)))]
     left = len(entries) - MOST_ROWS
-    return lines + (bullet(f"{_count(left, 'other')} not shown; --csv and --json have all", width) if left > 0 else [])
+    return lines + (bullet(f"{counted(left, 'other')} not shown; --csv and --json have all", width) if left > 0 else [])
 
 
 def _needed(entry: Entry) -> str:
@@ -149,7 +149,7 @@ def _recurring(outcomes: Sequence[Outcome], width: int) -> list[str]:
     lines += labelled("LEDs", _counted(led for outcome in outcomes for led in outcome.leds), width)
     rigs = Counter((outcome.camera, outcome.filter, tuple(sorted(outcome.leds))) for outcome in outcomes)
     (camera, part, leds), most = rigs.most_common(1)[0]
-    text = f"{_count(len(rigs), 'combination')} of camera, filter and LEDs"
+    text = f"{counted(len(rigs), 'combination')} of camera, filter and LEDs"
     if len(rigs) > 1 and most > 1:
         text += f"; the most frequent serves {most}: {camera}, filter {part}, {' + '.join(leds) or 'no LED'}"
     return lines + labelled("whole rigs", text, width)
@@ -159,7 +159,7 @@ def _counted(names: Iterable[str]) -> str:
     counts = Counter(names).most_common()
     shown = ", ".join(f"{plain(name)} {count}" for name, count in counts[:MOST_PARTS])
     more = len(counts) - MOST_PARTS
-    return shown + (f" and {_count(more, 'other')}" if more > 0 else "")
+    return shown + (f" and {counted(more, 'other')}" if more > 0 else "")
 
 
 def _sure(found: OwnRigs, width: int) -> list[str]:
@@ -175,10 +175,7 @@ def _sure(found: OwnRigs, width: int) -> list[str]:
     )
     stopped = len(found.solved) - len(proven)
     if stopped:
-        lines += bullet(f"{_count(stopped, 'search')} stopped at a time limit before the gap asked for", width)
+        lines += bullet(
+            f"for {counted(stopped, 'variant')} the search stopped at a time limit before the gap asked for", width
+        )
     return lines
-
-
-def _count(number: int, noun: str) -> str:
-    plural = noun + ("es" if noun.endswith("ch") else "s")
-    return f"{number} {noun if number == 1 else plural}"
