@@ -40,7 +40,7 @@ LOGARITHMIC = 6.0
 #: A CNR required above this multiple of the greatest is said, not drawn.
 OUT_OF_SIGHT = 2.0
 #: Height of a line of words. [pt]
-WORDS = 9.5
+WORDS = 8.5
 #: Room of a letter and of a sign across and up, and places of a letter from its point that are tried. [mm], [pt]
 LETTER, SIGN = (3.4, 3.6), (2.6, 2.8)
 SPOTS = ((0, 5.5), (0, -14.0), (9, -4.5), (-9, -4.5), (0, 15.5), (0, -24.0), (9, 5.5), (-9, 5.5), (0, 25.5))
@@ -230,7 +230,7 @@ def _marks(axes: Axes, curve: Trade, height: float) -> None:
 
 
 def _required(axes: Axes, curve: Trade, height: float) -> list[float]:
-    """The line of the CNR required; returns how high its words stand, nothing where it is out of sight. [pt]"""
+    """The line of the CNR required; returns heights no other words may stand at, none where it is out of sight. [pt]"""
     wanted, enough = curve.required_cnr, curve.enough
     style = {"color": TARGET, "textcoords": "offset points"}
     if wanted is None or not _in_sight(curve):
@@ -248,7 +248,7 @@ def _required(axes: Axes, curve: Trade, height: float) -> list[float]:
         axes, x, wanted, f"required {wanted:g}", xycoords=("axes fraction", "data"), ha=side,
         va="bottom" if above else "top", xytext=(offset, 2 if above else -2), **style,
     )  # fmt: skip
-    return [line + 2 if above else line - WORDS]
+    return [line - WORDS, line + 2 if above else line - 1.0]
 
 
 def _in_sight(curve: Trade) -> bool:
