@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 
 from codesign.cli_family import family
+from codesign.cli_figures import Figures, Format, Present, draw_check, draw_solution, wanted_figures
 from codesign.cli_group import INTERRUPTED, Commands
 from codesign.cli_overview import ABOUT
 from codesign.cli_radiation import radiation
@@ -103,6 +104,9 @@ def solve(
     report: Report = None,
     quick: Quick = False,
     trade_off: TradeOff = None,
+    figures: Figures = None,
+    form: Format = None,
+    present: Present = None,
 ) -> None:
     """Find the recipe of greatest CNR, with its proof.
 
@@ -112,6 +116,7 @@ def solve(
     """
     cost = None
     require_page(report, quick=quick, trade_off=trade_off)
+    drawing = wanted_figures(figures, form, present)
     if least is None and cnr is not None:
         raise ProblemError(f"--cnr {cnr:g} belongs to --least; for the greatest CNR set required_cnr in the problem")
     with searching() as line:
@@ -131,6 +136,7 @@ def solve(
         write_solution_page(
             context, report, solution, verdict=verdict, found=found, cost=cost, quick=quick, trade_off=trade_off
         )
+    draw_solution(drawing, solution, found)
 
 
 @app.command()
@@ -140,6 +146,8 @@ def check(
     recipe: Annotated[Path, typer.Argument(metavar="RECIPE", help="Recipe file; 'cnr solve --recipe' writes one.")],
     json: AsJson = False,
     report: Report = None,
+    figures: Figures = None,
+    form: Format = None,
 ) -> None:
     """Predict what a recipe does and which limits it misses.
 
@@ -154,12 +162,14 @@ def check(
     from codesign.report.recipe_file import load_recipe
 
     require_page(report)
+    drawing = wanted_figures(figures, form)
     loaded = load_problem(problem)
     result = evaluate(loaded, load_recipe(recipe))
     table = machine.as_json(machine.performance_dict(loaded, result)) if json else None
     put(table or text.performance_text(loaded, result, page_width()))
     if report is not None:
         write_check_page(context, report, loaded, result)
+    draw_check(drawing, loaded, result)
     if not result.feasible:
         raise InfeasibleError(f"{recipe}: {'; '.join(limit.shortfall() for limit in result.violated)}")
 

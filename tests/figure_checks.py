@@ -19,8 +19,10 @@ AIR = 1.5
 EDGE = 0.3
 
 
-def check_figure(figure: Figure, *, smallest: float = SMALL, apart: bool = True) -> None:
+def check_figure(figure: Figure, *, smallest: float = SMALL, apart: bool = True) -> str:
     """Draw a figure and fail where words are cut, too small, read as a formula or set on other words.
+
+    Returns all words that can be seen, one line each.
 
     Parameters
     ----------
@@ -40,13 +42,18 @@ def check_figure(figure: Figure, *, smallest: float = SMALL, apart: bool = True)
             assert not text.get_parse_math(), f"{text.get_text()!r} may be read as a formula"
         if apart:
             _apart(figure, boxes)
+        return _joined(boxes)
 
 
 def words(figure: Figure) -> str:
     """All words of a figure that can be seen, one line each."""
     with house_style():
         figure.draw_without_rendering()
-        return "\n".join(text.get_text() for text, _ in _boxes(figure))
+        return _joined(dict(_boxes(figure)))
+
+
+def _joined(boxes: Iterable[Text]) -> str:
+    return "\n".join(text.get_text() for text in boxes)
 
 
 def _visible(text: Text) -> bool:

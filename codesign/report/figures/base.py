@@ -205,17 +205,22 @@ def _width_of_line(text: str, size: float, weight: str) -> float:
         return float(extent.width) / figure.dpi * INCH
 
 
-def shortened(figure: Panel, text: str, width_mm: float, size: float = SMALL, weight: str = "normal") -> str:
-    """Return the text on one line, its middle left out where it is wider than ``width_mm``: ends tell names apart."""
-    text = plain(text)
-    if text_width(figure, text, size, weight) <= width_mm:
-        return text
+def shortened(
+    figure: Panel, text: str, width_mm: float, size: float = SMALL, weight: str = "normal", *, tail: str = ""
+) -> str:
+    """Return the text on one line, its middle left out where it is wider than ``width_mm``: ends tell names apart.
+
+    ``tail`` follows the text and stays whole, for values that must not be cut.
+    """
+    text, tail = plain(text), tail and f" {plain(tail)}"
+    if text_width(figure, text + tail, size, weight) <= width_mm:
+        return text + tail
     low, high = 0, len(text)
     while high - low > 1:
         middle = (low + high) // 2
-        fits = text_width(figure, _without_middle(text, middle), size, weight) <= width_mm
+        fits = text_width(figure, _without_middle(text, middle) + tail, size, weight) <= width_mm
         low, high = (middle, high) if fits else (low, middle)
-    return _without_middle(text, low)
+    return _without_middle(text, low) + tail
 
 
 def _without_middle(text: str, kept: int) -> str:

@@ -85,8 +85,8 @@ def draw_noise_budget(panel: Panel, problem: Problem, performance: Performance, 
     axes.spines["left"].set_visible(False)
     dress(axes, x="" if is_narrow(panel) else "share of the variance", grid="x")
     _numbers(axes, panel, terms)
-    names = ("target", "background") if is_narrow(panel) else (target, background)
-    keys = [(handle, f"at {name}") for handle, name in zip(handles, names, strict=True)]
+    names = ("target", "background") if is_narrow(panel) else (f"at {target}", f"at {background}")
+    keys = list(zip(handles, names, strict=True))
     legend_above(top, "Noise: share of the variance", keys, aside=room_beside(panel, [name for name, _, _ in terms]))
 
 

@@ -21,26 +21,28 @@ NOT_AXES = 13.0
 
 @dataclass(frozen=True, slots=True)
 class Peak:
-    """A point to be named: where, how high, and its name."""
+    """A point to be named: where, how high, its name, and a value that goes with the name."""
 
     x: float
     height: float
-    words: str
+    name: str
+    value: str = ""
 
 
-def name_peaks(axes: Axes, peaks: list[Peak]) -> list[tuple[str, str]]:
+def name_peaks(axes: Axes, peaks: list[Peak]) -> list[tuple[int, str, str]]:
     """Write names over peaks, with leaders, and make room for them at the top of the axes.
 
-    Returns the (number, name) of each where numbers stand for the names, else nothing.
+    Returns number, name, and name with value as far as it fits, of each where numbers stand for the names.
     """
     ordered = sorted(peaks, key=lambda peak: peak.x)
     panel = axes.get_figure(root=False)
-    names = [shortened(panel, peak.words, LONGEST) for peak in ordered]
+    whole = [shortened(panel, peak.name, LONGEST, tail=peak.value) for peak in ordered]
+    names = whole
     rows = _rows(axes, ordered, names)
-    keys: list[tuple[str, str]] = []
+    keys: list[tuple[int, str, str]] = []
     if max(rows, default=0) >= min(MOST_ROWS, int(MOST_HEIGHT * _axes_height(axes) / ROW)):
-        names = [str(k) for k in range(1, len(ordered) + 1)]
-        keys = [(name, peak.words) for name, peak in zip(names, ordered, strict=True)]
+        keys = [(k, peak.name, words) for k, (peak, words) in enumerate(zip(ordered, whole, strict=True), start=1)]
+        names = [str(number) for number, _, _ in keys]
         rows = _rows(axes, ordered, names)
     count = max(rows, default=-1) + 1
     row = ROW / _axes_height(axes)

@@ -52,6 +52,7 @@ class Swing:
     """
 
     name: str
+    size: str
     retuned: tuple[float | None, float | None]
     fixed: tuple[float | None, float | None]
     misses: bool
@@ -98,7 +99,8 @@ def _swing(x: Elasticity, cnr: float) -> Swing:
     name = x.parameter if x.part is None else f"{x.parameter}, {x.part}"
     ends = (x.low, x.high)
     return Swing(
-        name=f"{name} {size}",
+        name=name,
+        size=size,
         retuned=tuple(_change(end, "cnr_retuned", cnr, x.retuned * s) for end, s in zip(ends, _signs(x), strict=True)),
         fixed=tuple(_change(end, "cnr_fixed", cnr, x.fixed * s) for end, s in zip(ends, _signs(x), strict=True)),
         misses=any(end is not None and bool(end.missed) for end in ends),
@@ -145,7 +147,7 @@ def _draw_swings(axes: Axes, swings: list[Swing], small: list[str]) -> None:
     if not swings:
         write(axes, 0, 0, "no tolerance moves the CNR", va="center", xytext=(4, 0), textcoords="offset points")
     panel = axes.get_figure(root=False)
-    names = [shortened(panel, swing.name, 0.36 * width_mm(panel)) for swing in swings]
+    names = [shortened(panel, swing.name, 0.36 * width_mm(panel), tail=swing.size) for swing in swings]
     axes.set_yticks(range(len(swings)), names)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
@@ -225,8 +227,11 @@ def _draw_prices(axes: Axes, found: Sensitivities, priced: list[tuple[LimitPrice
     reach = max([abs(x) for x in shown], default=0.0) or 1.0
     axes.set_xlim(min([*shown, 0.0]) - 0.05 * reach, max([*shown, 0.0]) + 0.05 * reach)
     axes.set_ylim(max(len(priced), 1) - 0.4, -0.6)
-    names = [f"{x.name} {number(x.bound)} {UNITS.get(x.unit, x.unit)}".strip() for x, _ in priced]
-    names = [shortened(panel, name, 0.36 * width_mm(panel)) for name in names]
+    bounds = [f"{number(x.bound)} {UNITS.get(x.unit, x.unit)}".strip() for x, _ in priced]
+    names = [
+        shortened(panel, x.name, 0.36 * width_mm(panel), tail=bound)
+        for (x, _), bound in zip(priced, bounds, strict=True)
+    ]
     axes.set_yticks(range(len(names)), names)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)

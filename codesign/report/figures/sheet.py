@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
 from codesign.design import Performance
@@ -37,6 +38,8 @@ if TYPE_CHECKING:
 EDGE = 10.0
 #: Heights of head, story, pictures, budgets and foot. [mm]
 HEIGHTS = (43.0, 104.0, 52.0, 71.0, 7.0)
+#: Where the settings begin, from the top of the head. [mm]
+SETTINGS_DOWN = 18.5
 #: Letters of the headline. [pt]
 HEADLINE = 13.0
 #: LEDs listed in the head; rows of limits and of runners-up.
@@ -70,8 +73,8 @@ def performance_sheet(
         len(HEIGHTS) + 2, 3, width_ratios=[EDGE, inner, EDGE], height_ratios=[EDGE, *HEIGHTS, EDGE]
     )
     head, story, pictures, budgets, foot = (rows[k, 1] for k in range(1, len(HEIGHTS) + 1))
-    _draw_head(head, problem, performance, solution)
-    draw_spectral_story(story, problem, performance, noise=False)
+    numbers = draw_spectral_story(story, problem, performance, noise=False, keys=False)
+    _draw_head(head, problem, performance, solution, numbers)
     draw_simulated_view(pictures, problem, performance, before, across=6 if before is not None else 12, down=1)
     left, right = budgets.subfigures(1, 2, wspace=0.03)
     draw_limit_use(left, performance, None if solution is None else solution.binding, LIMITS)
@@ -87,17 +90,23 @@ def performance_sheet(
 
 def _spoken(problem: Problem, performance: Performance) -> str:
     settings = "; ".join(f"{label} {text}" for label, text in _settings(problem, performance))
-    return f"CNR {number(performance.cnr)}. {settings}. {'; '.join(_leds(performance))}."
+    return (
+        f"CNR {number(performance.cnr)}. {settings}. {'; '.join(name + what for name, what in _leds(performance, {}))}."
+    )
 
 
 # --- head ------------------------------------------------------------------------------------------------------
 
 
-def _draw_head(panel: Panel, problem: Problem, performance: Performance, solution: Solution | None) -> None:
+def _draw_head(
+    panel: Panel, problem: Problem, performance: Performance, solution: Solution | None, numbers: Mapping[str, int]
+) -> None:
     width = width_mm(panel)
     title = shortened(panel, problem.spec.title or problem.where, width, HEADLINE, "bold")
     panel.text(0, 1, title, fontsize=HEADLINE, fontweight="bold", color=INK, va="top")
-    lines = [_result(performance)] + ([] if solution is None else [_proof(solution)])
+    lines = [_result(performance), _proof(solution) if solution is not None else "all limits are met"]
+    if not performance.feasible:
+        lines.pop()
     for row, line in enumerate(lines):
         text = shortened(panel, line, width, BODY)
         panel.text(0, 1 - (7.5 + 4.3 * row) / HEIGHTS[0], text, fontsize=BODY, color=INK, va="top")
@@ -105,9 +114,9 @@ def _draw_head(panel: Panel, problem: Problem, performance: Performance, solutio
         missed = shortened(panel, "misses " + ", ".join(limit.name for limit in performance.violated), width, BODY)
         panel.text(0, 1 - 11.8 / HEIGHTS[0], missed, fontsize=BODY, color=MISSED, fontweight="bold", va="top")
     _rule(panel, 17.0)
-    _table(panel, _settings(problem, performance), 0.0, 0.46 * width, 18.5)
-    panel.text(0.48, 1 - 18.5 / HEIGHTS[0], "LEDs", fontsize=BODY, color=MUTED, va="top")
-    _led_list(panel, performance, 0.48 * width + 12.0, 0.52 * width - 12.0, 18.5)
+    _table(panel, _settings(problem, performance), 0.46 * width)
+    panel.text(0.48, 1 - SETTINGS_DOWN / HEIGHTS[0], "LEDs", fontsize=BODY, color=MUTED, va="top")
+    _led_list(panel, _leds(performance, numbers), 0.48 * width + 12.0, 0.52 * width - 12.0)
 
 
 def _rule(panel: Panel, down: float) -> None:
@@ -142,32 +151,37 @@ def _settings(problem: Problem, performance: Performance) -> list[tuple[str, str
     return found
 
 
-def _table(panel: Panel, rows: list[tuple[str, str]], left: float, width: float, down: float) -> None:
+def _table(panel: Panel, rows: list[tuple[str, str]], width: float) -> None:
     """Labels and texts, a line each."""
     whole = width_mm(panel)
     for row, (label, text) in enumerate(rows):
-        y = 1 - (down + 4.2 * row) / HEIGHTS[0]
-        panel.text(left / whole, y, label, fontsize=BODY, color=MUTED, va="top")
-        panel.text(
-            (left + 17.0) / whole, y, shortened(panel, text, width - 17.0, BODY), fontsize=BODY, color=INK, va="top"
-        )
+        y = 1 - (SETTINGS_DOWN + 4.2 * row) / HEIGHTS[0]
+        panel.text(0, y, label, fontsize=BODY, color=MUTED, va="top")
+        text = shortened(panel, text, width - 17.0, BODY)
+        panel.text(17.0 / whole, y, text, fontsize=BODY, color=INK, va="top")
 
 
-def _leds(performance: Performance) -> list[str]:
+def _leds(performance: Performance, numbers: Mapping[str, int]) -> list[tuple[str, str]]:
+    """Each LED with its number over the light, if any, and what to set; in the order of the numbers."""
+    ordered = sorted(performance.leds, key=lambda state: numbers.get(state.id, 0))
     return [
-        f"{state.id}  {currents_words(performance.design, state)}  × {state.emitters}" for state in performance.leds
+        (
+            f"{numbers[state.id]}  {state.id}" if numbers else state.id,
+            f" {currents_words(performance.design, state)} × {state.emitters}",
+        )
+        for state in ordered
     ]
 
 
-def _led_list(panel: Panel, performance: Performance, left: float, width: float, down: float) -> None:
-    """LEDs and currents, in two columns where there are many."""
-    lines = _leds(performance) or ["all LEDs off"]
+def _led_list(panel: Panel, leds: list[tuple[str, str]], left: float, width: float) -> None:
+    """LEDs and what to set, in two columns where there are many."""
+    lines = leds or [("all off", "")]
     if len(lines) > LISTED:
-        lines = [*lines[: LISTED - 1], f"and {len(lines) - LISTED + 1} more"]
+        lines = [*lines[: LISTED - 1], (f"and {len(lines) - LISTED + 1} more", "")]
     columns = 1 if len(lines) <= 6 else 2
     whole, room = width_mm(panel), width / columns
-    for index, line in enumerate(lines):
+    for index, (name, settings) in enumerate(lines):
         column, row = divmod(index, 6)
-        text = shortened(panel, line, room - 2.0, BODY)
-        y = 1 - (down + 4.2 * row) / HEIGHTS[0]
+        text = shortened(panel, name, room - 2.0, BODY, tail=settings)
+        y = 1 - (SETTINGS_DOWN + 4.2 * row) / HEIGHTS[0]
         panel.text((left + column * room) / whole, y, text, fontsize=BODY, color=INK, va="top")

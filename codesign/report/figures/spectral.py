@@ -66,19 +66,26 @@ def spectral_story(problem: Problem, performance: Performance, *, width: float =
     return describe(figure, "Spectral story of the recipe", story_in_words(problem, performance))
 
 
-def draw_spectral_story(panel: Panel, problem: Problem, performance: Performance, *, noise: bool = True) -> None:
-    """Draw the story into a figure or a part of one; ``noise`` says whether with the last panel."""
+def draw_spectral_story(
+    panel: Panel, problem: Problem, performance: Performance, *, noise: bool = True, keys: bool = True
+) -> dict[str, int]:
+    """Draw the story into a figure or a part of one.
+
+    ``noise`` says whether with the last panel. Returns the number of each LED where numbers stand for the names over
+    the light, else nothing; ``keys`` says whether they are explained above it.
+    """
     found = spectra(problem, performance)
     heights = HEIGHTS[: 5 if noise else 4]
     every = panel.subplots(len(heights), 1, sharex=True, height_ratios=heights)
     every[0].set_xlim(*shown_range(found))
-    _draw_light(every[0], problem, found, performance)
+    numbers = _draw_light(every[0], problem, found, performance, keys)
     _draw_parts(every[1], problem, found, performance)
     draw_electrons(every[2], problem, found)
     draw_contrast(every[3], problem, found, performance)
     if noise:
         draw_noise(every[4], found)
     every[-1].set_xlabel("wavelength [nm]")
+    return numbers
 
 
 def shown_range(found: Spectra) -> tuple[float, float]:
@@ -102,7 +109,7 @@ def _core(grid: Array, curve: Array) -> tuple[float, float]:
 # --- light and parts -------------------------------------------------------------------------------------------
 
 
-def _draw_light(axes: Axes, problem: Problem, found: Spectra, performance: Performance) -> None:
+def _draw_light(axes: Axes, problem: Problem, found: Spectra, performance: Performance, keys: bool) -> dict[str, int]:
     grid, entries, peaks, shots = found.wavelength_nm, [], {}, _light_of_shots(found, performance)
     unit, sign = scale_of(max((float(light.max()) for _, leds in shots for light in leds.values()), default=1.0))
     for index, (name, leds) in enumerate(shots):
@@ -111,7 +118,7 @@ def _draw_light(axes: Axes, problem: Problem, found: Spectra, performance: Perfo
             light = own / unit
             line = curve(axes, grid, light, color=INK, linestyle=DASHES[index % len(DASHES)], linewidth=1.0)
             area(axes, grid, 0 * light, light, color=RULE, alpha=0.6)
-            peak = Peak(float(grid[np.argmax(light)]), float(light.max()), _led_words(performance, led))
+            peak = Peak(float(grid[np.argmax(light)]), float(light.max()), led, _drive_words(performance, led))
             peaks[led] = max(peaks.get(led, peak), peak, key=lambda p: p.height)
         if line is not None and performance.design.shots:
             entries.append((line, f"LEDs in {name}"))
@@ -124,8 +131,9 @@ def _draw_light(axes: Axes, problem: Problem, found: Spectra, performance: Perfo
         )
     dress(axes, y=f"{sign}W m⁻² nm⁻¹")
     numbered = name_peaks(axes, list(peaks.values()))
-    entries += [(blank(), f"{key}  {words}") for key, words in numbered]
+    entries += [(blank(), f"{key}  {words}") for key, _, words in numbered if keys]
     legend_above(axes, "Light at the object" + (" during the exposure" if problem.strobe else ""), entries)
+    return {led: key for key, led, _ in numbered}
 
 
 def _light_of_shots(found: Spectra, performance: Performance) -> list[tuple[str, dict[str, Array]]]:
@@ -134,10 +142,9 @@ def _light_of_shots(found: Spectra, performance: Performance) -> list[tuple[str,
     return [(reading.name, dict(reading.leds)) for reading in readings]
 
 
-def _led_words(performance: Performance, led: str) -> str:
-    if performance.design.shots:
-        return led
-    return f"{led}, {performance.design.drive_ma[led]:.10g} mA"
+def _drive_words(performance: Performance, led: str) -> str:
+    """Current of an LED; none where it differs from shot to shot."""
+    return "" if performance.design.shots else f"{performance.design.drive_ma[led]:.10g} mA"
 
 
 def _draw_parts(axes: Axes, problem: Problem, found: Spectra, performance: Performance) -> None:
