@@ -141,8 +141,8 @@ def test_results_do_not_depend_on_processes_or_on_workers_that_are_killed(family
     killed: list[int] = []
 
     def kill_one(done: int, *_: int) -> None:
-        if done >= 6 and not killed and engine._pool is not None:
-            killed.extend(list(engine._pool._processes)[:1])
+        if done >= 6 and not killed and engine.pids():
+            killed.extend(engine.pids()[:1])
             os.kill(killed[0], signal.SIGKILL)
 
     store = tmp_path / "processes.sqlite"

@@ -93,6 +93,10 @@ class ProcessEngine:
             future.set_exception(error)
             return future
 
+    def pids(self) -> list[int]:
+        """Process ids of the workers there are now."""
+        return [] if self._pool is None else list(self._pool._processes or ())
+
     def lost(self, error: BaseException) -> bool:
         """A process that ends breaks the whole pool."""
         return isinstance(error, BrokenExecutor)

@@ -12,6 +12,7 @@ from pathlib import Path
 sys.path[:0] = [str(Path(__file__).parents[2]), str(Path(__file__).parents[1]), str(Path(__file__).parent)]
 
 import bench_catalogue
+import bench_family
 import bench_page
 import bench_rivals
 import bench_single
@@ -19,7 +20,8 @@ import bench_tolerance
 import bench_vary
 from bench_registry import REGISTRY, Benchmark, Figure
 
-MODULES = (bench_catalogue, bench_page, bench_rivals, bench_single, bench_tolerance, bench_vary)  # importing registers
+# Importing registers.
+MODULES = (bench_catalogue, bench_family, bench_page, bench_rivals, bench_single, bench_tolerance, bench_vary)
 
 
 def figures(benchmarks: Iterable[Benchmark], *, tiny: bool, **changes) -> Iterator[tuple[Benchmark, Figure]]:
