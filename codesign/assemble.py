@@ -21,6 +21,7 @@ from codesign.limits import (
     junction_limit,
     pulse_levels,
     sum_limits,
+    sum_weights,
     thermal_resistance,
     time_limits,
     well_bound,
@@ -313,13 +314,15 @@ def _listed(choice) -> tuple[str, ...]:
 
 
 def _rows(problem: Problem, setting: Setting, segments: Segments, electrons: Array):
-    """Coupling rows: the wells of all surfaces, then heat and supply. Shapes (P, m, n+1), (P, m)."""
+    """Coupling rows: the wells of all surfaces, then sums of power and light. Shapes (P, m, n+1), (P, m)."""
     count = len(electrons)
     names = [f"well, {surface.id}" for surface in problem.surfaces]
     rows, bounds = [electrons], [np.full((count, len(names)), well_bound(problem, setting))]
     emitters = np.array([channel.emitters for channel in problem.channels])[segments.led]
+    optical = segments.power - segments.heat
     for limit in sum_limits(problem):
-        per_charge = emitters * (segments.heat if limit.quantity == "heat" else segments.power)
+        electrical, light = sum_weights(problem, limit.quantity)
+        per_charge = emitters * (electrical * segments.power + light[segments.led] * optical)
         if problem.strobe and limit.mean:
             row, bound = np.append(per_charge * problem.spec.timing.frame_rate_hz, 0.0), limit.bound
         else:

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from codesign.build import build_limits, free, part_price, units_in_use
-from codesign.limits import Setting, junction_limit, sum_limits, time_limits, well_bound
+from codesign.limits import Setting, junction_limit, sum_limits, sum_weights, time_limits, well_bound
 from codesign.physics.optics import depth_of_field
 from codesign.problem import Problem
 
@@ -134,15 +134,13 @@ def _depth_use(problem: Problem, setting: Setting, f_number: float) -> LimitUse:
 
 
 def _power_uses(problem: Problem, states: tuple[LedState, ...], t: float) -> list[LimitUse]:
-    heat = sum(s.emitters * (s.electrical_w - s.optical_w) for s in states)
-    power = sum(s.emitters * s.electrical_w for s in states)
-    duty = problem.duty(t)
-    return [
-        _use(
-            limit.name,
-            limit.unit,
-            (heat if limit.quantity == "heat" else power) * (duty if limit.mean else 1.0),
-            limit.bound,
+    duty, found = problem.duty(t), []
+    for limit in sum_limits(problem):
+        electrical, light = sum_weights(problem, limit.quantity)
+        weights = (float(light[problem.channel_index[s.id]]) for s in states)
+        value = sum(
+            s.emitters * (electrical * s.electrical_w + weight * s.optical_w)
+            for s, weight in zip(states, weights, strict=True)
         )
-        for limit in sum_limits(problem)
-    ]
+        found.append(_use(limit.name, limit.unit, value * (duty if limit.mean else 1.0), limit.bound))
+    return found

@@ -11,10 +11,14 @@ from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
+from numpy.typing import NDArray
 
 from codesign.catalog import Camera, GainSetting
+from codesign.limits_eye import WEIGHTS, eye_weight
 from codesign.physics.optics import depth_of_field, motion_blur_pixels
 from codesign.problem import LedChannel, Problem
+
+Array = NDArray[np.float64]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -159,9 +163,10 @@ def time_limits(problem: Problem, setting: Setting) -> list[TimeLimit]:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class SumLimit:
-    """A bound on a power summed over all LEDs.
+    """A bound on a power, or on weighted irradiance at the eye, summed over all LEDs.
 
-    ``quantity`` picks what is summed ("heat" or "power"); ``mean`` whether it is averaged over the frame.
+    ``quantity`` picks what is summed ("heat", "power" or one of `codesign.limits_eye.WEIGHTS`); ``mean`` whether it is
+    averaged over the frame.
     """
 
     name: str
@@ -172,18 +177,39 @@ class SumLimit:
 
 
 def sum_limits(problem: Problem) -> list[SumLimit]:
-    """Limits on heat and supply that the problem states."""
+    """Limits on heat, supply and light at the eye that the problem states."""
     limits = problem.spec.limits
     stated = (
-        ("rig heat", "heat", True, limits.rig_heat_w),
-        ("supply power", "power", True, limits.supply_w),
-        ("supply peak power", "power", False, limits.supply_peak_w),
+        ("rig heat", "W", "heat", True, limits.rig_heat_w),
+        ("supply power", "W", "power", True, limits.supply_w),
+        ("supply peak power", "W", "power", False, limits.supply_peak_w),
+        ("actinic ultraviolet at 200 mm", "W/m2", "actinic", True, limits.actinic_w_per_m2),
+        ("ultraviolet A at 200 mm", "W/m2", "ultraviolet_a", True, limits.ultraviolet_a_w_per_m2),
+        ("blue light at 200 mm", "W/m2", "blue_light", True, limits.blue_light_w_per_m2),
+        ("infrared at 200 mm", "W/m2", "infrared", True, limits.infrared_w_per_m2),
     )
     return [
-        SumLimit(name=name, unit="W", quantity=quantity, mean=mean, bound=bound)
-        for name, quantity, mean, bound in stated
+        SumLimit(name=name, unit=unit, quantity=quantity, mean=mean, bound=bound)
+        for name, unit, quantity, mean, bound in stated
         if bound is not None
     ]
+
+
+def eye_limits(problem: Problem) -> list[SumLimit]:
+    """Those of `sum_limits` on light at the eye."""
+    return [limit for limit in sum_limits(problem) if limit.quantity in WEIGHTS]
+
+
+@lru_cache(maxsize=64)
+def sum_weights(problem: Problem, quantity: str) -> tuple[float, Array]:
+    """What a watt of electrical power, and a watt of light of each LED, add to the `SumLimit` of a quantity.
+
+    Per emitter: ``electrical · P_el + light · P_opt``. Returns a number and (L,), [1] or [1/m²] for light at the eye.
+    """
+    count = len(problem.channels)
+    if quantity in WEIGHTS:
+        return 0.0, np.array([eye_weight(channel.led, quantity) for channel in problem.channels])
+    return 1.0, np.full(count, -1.0 if quantity == "heat" else 0.0)
 
 
 # --- limits on single LEDs -------------------------------------------------------------------------------------

@@ -44,7 +44,8 @@ BUILT = {
     "temperature": {"air_c": 25, "sensor_c": 40},
     "limits": {
         "rig_heat_w": 5, "supply_w": 10, "supply_peak_w": 60, "dark_well_share": 0.1, "dark_noise_share": 1.0,
-        "junction_max_c": 90,
+        "junction_max_c": 90, "actinic_w_per_m2": 1, "ultraviolet_a_w_per_m2": 1, "blue_light_w_per_m2": 5,
+        "infrared_w_per_m2": 1,
     },
     "build": {
         "max_led_channels": 2, "board_slots": 6, "emitters": "free", "price_budget": 2000, "must_have": ["red-625-a"],
@@ -52,7 +53,9 @@ BUILT = {
     "averaging": {"pixels": 4, "frames": 2},
     "solver": {"gap": 0.03, "alternatives": 1},
 }  # fmt: skip
-SPECIAL = {"built": BUILT, "channels": CHANNELS, "shots": SHOTS}
+#: Light at the eye is a mean over all shots.
+LIMITED_SHOTS = {**SHOTS, "limits": {**SHOTS.get("limits", {}), "infrared_w_per_m2": 5.0}}
+SPECIAL = {"built": BUILT, "channels": CHANNELS, "shots": LIMITED_SHOTS}
 
 
 @cache

@@ -195,6 +195,18 @@ class Limits(Record):
     rig_heat_w: float | None = Field(default=None, gt=0, description="mean heat of all LEDs [W]")
     supply_w: float | None = Field(default=None, gt=0, description="mean electrical power of all LEDs [W]")
     supply_peak_w: float | None = Field(default=None, gt=0, description="electrical power while on [W]")
+    actinic_w_per_m2: float | None = Field(
+        default=None, gt=0, description="actinic ultraviolet 200 mm from the bare emitters, weighted, mean [W/m2]"
+    )
+    ultraviolet_a_w_per_m2: float | None = Field(
+        default=None, gt=0, description="ultraviolet A 200 mm from the bare emitters, mean [W/m2]"
+    )
+    blue_light_w_per_m2: float | None = Field(
+        default=None, gt=0, description="blue light 200 mm from the bare emitters, weighted, mean [W/m2]"
+    )
+    infrared_w_per_m2: float | None = Field(
+        default=None, gt=0, description="infrared 200 mm from the bare emitters, 780-3000 nm, mean [W/m2]"
+    )
 
 
 class Build(Record):

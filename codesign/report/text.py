@@ -24,7 +24,7 @@ REACHED = 0.999
 #: Limits met that are used less are counted in one line; the JSON result lists all. [1]
 HARDLY_USED = 0.01
 #: Units as set in text; error messages and JSON keep to ASCII.
-UNITS = {"us": "µs", "e-": "e⁻", "e-^2": "e⁻²", "deg C": "°C"}
+UNITS = {"us": "µs", "e-": "e⁻", "e-^2": "e⁻²", "deg C": "°C", "W/m2": "W/m²"}
 #: Parts left out that are listed; the JSON result lists all.
 LISTED = 6
 

@@ -9,12 +9,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from codesign.limit_use import TOLERANCE
-from codesign.limits import TimeLimit, junction_limit, pulse_levels, sum_limits, time_limits
+from codesign.limits import TimeLimit, junction_limit, pulse_levels, sum_limits, sum_weights, time_limits
 from codesign.study.fleet import Block, Light
 from codesign.study.rigs import duty, lit_channels
 
 Array = NDArray[np.float64]
 
+#: How the names of limits on light at the eye end.
+AT_THE_EYE = " at 200 mm"
 #: Rounds towards the longest exposure of a strobed rig, whose LEDs warm with it.
 LARGEST_NUMBER_OF_ROUNDS = 8
 
@@ -60,10 +62,12 @@ def _times(block: Block) -> list[tuple[TimeLimit, Array | float, Array | float]]
 
 
 def _power_of(block: Block, quantity: str, optical_w: Array) -> Array:
-    """Heat or electrical power of all LEDs while on. (B,) [W]"""
-    emitters = [_emitters(block, channel) for channel, _ in lit_channels(block.problem, block.fleet.design)]
-    each = block.rigs.electrical_w - (optical_w if quantity == "heat" else 0.0)
-    return each @ np.array(emitters, dtype=float) if emitters else np.zeros(block.rigs.size)
+    """Heat, electrical power or weighted irradiance at the eye of all LEDs while on. (B,) [W] or [W/m²]"""
+    lit = [channel for channel, _ in lit_channels(block.problem, block.fleet.design)]
+    emitters = np.array([_emitters(block, channel) for channel in lit], dtype=float)
+    electrical, light = sum_weights(block.problem, quantity)
+    light = light[[block.problem.channel_index[channel.id] for channel in lit]]
+    return electrical * block.rigs.electrical_w @ emitters + optical_w @ (light * emitters)
 
 
 def _emitters(block: Block, channel) -> int:
@@ -120,7 +124,7 @@ def longest_exposure(block: Block) -> Light:
 
 def _yields(name: str) -> bool:
     """Whether a shorter exposure helps."""
-    return name.startswith(("well", "junction", "rig heat", "supply power"))
+    return name.startswith(("well", "junction", "rig heat", "supply power")) or name.endswith(AT_THE_EYE)
 
 
 def _shortest(block: Block, step: float) -> Array:

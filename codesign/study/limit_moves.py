@@ -136,4 +136,8 @@ MOVES: dict[str, Move] = {
     "rig heat": _spec("limits", "rig_heat_w"),
     "supply power": _spec("limits", "supply_w"),
     "supply peak power": _spec("limits", "supply_peak_w"),
+    "actinic ultraviolet at 200 mm": _spec("limits", "actinic_w_per_m2"),
+    "ultraviolet A at 200 mm": _spec("limits", "ultraviolet_a_w_per_m2"),
+    "blue light at 200 mm": _spec("limits", "blue_light_w_per_m2"),
+    "infrared at 200 mm": _spec("limits", "infrared_w_per_m2"),
 }

@@ -17,16 +17,15 @@ from codesign.design import Performance, Shot
 from codesign.design_combined import optical_power
 from codesign.display import Displayed
 from codesign.errors import ProblemError
+from codesign.limits_eye import STANDARD_M, own_light
 from codesign.physics import radiation as hazard
 from codesign.physics.light import delivery_from_beam
 from codesign.problem import LedChannel, Problem
 from codesign.spectra import FloatArray
 
-#: Distance at which lamps other than room lighting are looked at. [mm] IEC 62471:2006, 5.2; confidence B.
-STANDARD_MM = 200.0
+#: Distance of the eye where none is stated. [mm]
+STANDARD_MM = 1e3 * STANDARD_M
 NEAREST_MM, FARTHEST_MM = 20.0, 1e5
-#: Points over which an LED's light is integrated, and how far beyond its support, in widths of it.
-POINTS, BEYOND = 4001, 1.0
 
 NAMES = (
     "actinic ultraviolet",
@@ -206,11 +205,7 @@ class _Light:
 def _spectrum(channel: LedChannel, junction_c: float) -> tuple[FloatArray, FloatArray]:
     """Wavelengths [nm] and light per watt [1/nm] of an LED at a junction temperature, on a grid of its own."""
     led = channel.led
-    shift = channel.peak_shift_nm + led.peak_shift_nm_per_k * (junction_c - led.reference_junction_c)
-    low, high = led.support()
-    beyond = BEYOND * (high - low)
-    nm = np.linspace(max(low - beyond, 1.0), high + beyond, POINTS) + shift
-    return nm, led.spectrum(nm, shift) / led.flux_w()
+    return own_light(led, channel.peak_shift_nm + led.peak_shift_nm_per_k * (junction_c - led.reference_junction_c))
 
 
 def _assumptions(light: _Light) -> tuple[str, ...]:

@@ -17,7 +17,8 @@ from numpy.typing import NDArray
 from codesign.build import free, part_price
 from codesign.catalog import Camera, Filter
 from codesign.design import Design, Performance
-from codesign.limits import junction_limit, pulse_levels, thermal_resistance
+from codesign.limits import eye_limits, junction_limit, pulse_levels, thermal_resistance
+from codesign.limits_eye import eye_weight
 from codesign.physics.light import OHNO_FWHM_FACTOR, photons_per_joule
 from codesign.problem import LedChannel, Problem
 from codesign.problem.choices import FilterChoices
@@ -72,6 +73,7 @@ def live_data(solution: Solution, kept: Kept) -> dict[str, Any]:
         "timing": spec.timing.model_dump(),
         "temperature": spec.temperature.model_dump(),
         "limits": spec.limits.model_dump(),
+        "eye_limits": [{"name": x.name, "unit": x.unit, "bound": x.bound} for x in eye_limits(problem)],
         "averaging": spec.averaging.model_dump(),
         "build": _build(problem),
         "recipe": _result(solution.recipe),
@@ -144,6 +146,7 @@ def _led(problem: Problem, channel: LedChannel) -> dict[str, Any]:
         "power_w": power.tolist(),
         "price": _finite(part_price(problem, led)),
         "must_have": led.id in problem.spec.build.must_have,
+        "at_the_eye": {limit.name: eye_weight(led, limit.quantity) for limit in eye_limits(problem)},
         **_spectrum(channel),
     }
 

@@ -2,7 +2,7 @@
 (() => {
   "use strict";
   const live = globalThis.codesignLive;
-  const UNITS = { us: "µs", "e-": "e⁻", "e-^2": "e⁻²", "deg C": "°C" };
+  const UNITS = { us: "µs", "e-": "e⁻", "e-^2": "e⁻²", "deg C": "°C", "W/m2": "W/m²" };
 
   /** A number in few digits, without powers of ten in everyday ranges. */
   function number(value, digits = 4) {

@@ -94,6 +94,7 @@
   /** Use of every limit; with shots those on single exposures by shot, sums over the frame once. */
   function limitsOfShots(model, whole, parts) {
     const apart = [], sums = new Map(), means = ["rig heat", "supply power"];
+    means.push(...model.data.eye_limits.map((limit) => limit.name));
     parts.forEach((context, k) => {
       for (const use of live.limitUses(model, context)) {
         if (means.includes(use.name)) {

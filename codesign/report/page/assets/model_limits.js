@@ -51,6 +51,10 @@
     if (limits.rig_heat_w !== null) found.push(use("rig heat", "W", heat * duty, limits.rig_heat_w));
     if (limits.supply_w !== null) found.push(use("supply power", "W", power * duty, limits.supply_w));
     if (limits.supply_peak_w !== null) found.push(use("supply peak power", "W", power, limits.supply_peak_w));
+    for (const { name, unit, bound } of model.data.eye_limits) {
+      const light = states.reduce((sum, s) => sum + s.emitters * s.optical_w * s.led.at_the_eye[name], 0);
+      found.push(use(name, unit, light * duty, bound));
+    }
     return found;
   }
 
