@@ -10,7 +10,7 @@ from codesign import load_problem, solve
 from codesign.solve import Solution
 
 #: Demo problems whose report pages are made with figures, which take seconds each.
-DRAWN = ("yellow-stain", "bruise")
+DRAWN = ("yellow-stain", "fast-web")
 
 
 @pytest.fixture(scope="session")

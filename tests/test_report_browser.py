@@ -20,7 +20,7 @@ return [...document.querySelectorAll('table')].filter(t => !t.closest('.scroller
 """
 #: Text cut off by a box that hides what does not fit.
 _CLIPPED = """
-return [...document.querySelectorAll('main *')].filter(e => !e.closest('svg, canvas, select, .hidden, .fields thead')
+return [...document.querySelectorAll('main *')].filter(e => !e.closest('svg, canvas, select, .hidden, thead')
   && getComputedStyle(e).overflowX === 'hidden' && e.scrollWidth > e.clientWidth + 1).map(e => e.outerHTML.slice(0, 80))
 """
 
@@ -51,6 +51,7 @@ def test_page_is_quiet_and_fits(name, browser, reported, tmp_path):
     assert browser.requests() == []
     for width, height in (DESK, PHONE):
         browser.resize(width, height)
+        browser.settle()
         assert (browser.sideways(), browser.sticking_out(), browser.run(_TOO_WIDE), browser.run(_CLIPPED)) == (
             0, [], [], [],
         ), width  # fmt: skip
@@ -58,6 +59,7 @@ def test_page_is_quiet_and_fits(name, browser, reported, tmp_path):
         assert bottom <= height, "the four answers are not on the first screen"
     browser.resize(PAPER)
     browser.scheme(media="print")
+    browser.settle()
     assert (browser.sideways(), browser.sticking_out()) == (0, [])
 
 

@@ -39,7 +39,9 @@ def framed(figure: Figure, caption: str, key: str) -> Html:
     from codesign.report.figures.base import svg_fragment
 
     picture = trusted(lighter(svg_fragment(figure, prefix=f"figure-{key}-", letters="text")))
-    return element("figure", element("div", picture, class_="picture"), element("figcaption", caption))
+    # Narrow pages scroll a figure sideways to keep its words legible, so it has to be reachable by keyboard.
+    box = element("div", picture, class_="picture", role="region", aria_label=caption, tabindex="0")
+    return element("figure", box, element("figcaption", caption))
 
 
 def _view(subject: Subject) -> Drawing | None:

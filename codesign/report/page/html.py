@@ -135,16 +135,11 @@ def table(
     wide : bool
         Whether it scrolls on its own where the page is too narrow; others have to fit.
     """
-    head = (element("th", cell, scope="col", class_=_column(k, numbers)) for k, cell in enumerate(header))
-    body = [_row(row, numbers) for row in rows]
+    head = [_head(cell, _column(k, numbers)) for k, cell in enumerate(header)]
+    labels = [None if isinstance(cell, Html) else str(cell) for cell in header]
+    body = [_row(row, numbers, labels) for row in rows]
     kinds = " ".join(filter(None, (class_, "whole" if len(body) <= SHORT_TABLE else None))) or None
-    whole = element(
-        "table",
-        element("caption", caption),
-        element("thead", element("tr", head)),
-        element("tbody", body),
-        class_=kinds,
-    )
+    whole = _table(caption, head, (element("tbody", body, role="rowgroup"),), kinds)
     if not wide:
         return whole
     # A region that scrolls has to be reachable by keyboard, and named.
@@ -153,29 +148,44 @@ def table(
 
 def grouped_table(
     caption: str,
-    header: Sequence[Content],
+    header: Sequence[str],
     groups: Iterable[tuple[str, Sequence[Sequence[Content]]]],
     *,
     class_: str | None = None,
 ) -> Html:
     """Return a table whose rows stand in groups with a title each; groups without rows are left out."""
-    head = (element("th", cell, scope="col") for cell in header)
     bodies = (
-        element(
-            "tbody",
-            element("tr", element("th", title, colspan=len(header), scope="rowgroup"), class_="group"),
-            (_row(row, ()) for row in rows),
-        )
+        element("tbody", _title(title, len(header)), (_row(row, ()) for row in rows), role="rowgroup")
         for title, rows in groups
         if rows
     )
-    return element("table", element("caption", caption), element("thead", element("tr", head)), bodies, class_=class_)
+    return _table(caption, [_head(cell) for cell in header], bodies, class_)
 
 
-def _row(row: Sequence[Content], numbers: Container[int]) -> Html:
+# Roles are said again because narrow pages lay rows out as blocks, which would make browsers forget what they are.
+
+
+def _table(caption: str, head: Sequence[Html], bodies: Iterable[Html], class_: str | None) -> Html:
+    heads = element("thead", element("tr", head, role="row"), role="rowgroup")
+    return element("table", element("caption", caption), heads, bodies, class_=class_, role="table")
+
+
+def _head(cell: Content, class_: str | None = None) -> Html:
+    return element("th", cell, scope="col", role="columnheader", class_=class_)
+
+
+def _title(title: str, columns: int) -> Html:
+    head = element("th", title, colspan=columns, scope="rowgroup", role="rowheader")
+    return element("tr", head, class_="group", role="row")
+
+
+def _row(row: Sequence[Content], numbers: Container[int], labels: Sequence[str | None] | None = None) -> Html:
     first, *rest = row
-    cells = [element("td", cell, class_=_column(k, numbers)) for k, cell in enumerate(rest, start=1)]
-    return element("tr", element("th", first, scope="row"), cells)
+    cells = (
+        element("td", cell, role="cell", class_=_column(k, numbers), data_label=labels[k] if labels else None)
+        for k, cell in enumerate(rest, start=1)
+    )
+    return element("tr", element("th", first, scope="row", role="rowheader"), cells, role="row")
 
 
 def _column(index: int, numbers: Container[int]) -> str | None:

@@ -30,14 +30,14 @@ def radiation(subject: Subject) -> Section | None:
             f"{row['value']} {row['unit']}",
             row["limit"],
             row["share"],
-            row["time"],
+            row["time"].removeprefix("reached "),
             row["note"],
         )
         for row in radiation_rows(found)
     ]
     reached = reached_words(found) or ["reaches none of the limits below within 8 h, as far as this model goes"]
     head, _, rest = DISCLAIMER.partition(": ")
-    header = ("weighted for", "at the eye", "published limit", "of the long limit", "", "note, source")
+    header = ("weighted for", "at the eye", "published limit", "of the long limit", "reached", "note, source")
     body = (
         paragraph(element("strong", head, ": "), rest),
         paragraph(f"An eye that looks into the bare emitters from {found.distance_mm:g} mm:"),
