@@ -272,3 +272,16 @@ def test_pictures_stay_small(tmp_path):
     figures = performance_figures(problem, evaluate(problem, small_design()))
     assert len(figure_bytes(figures["spectral-story"]())) < 400_000
     assert len(figure_bytes(figures["simulated-view"]())) < 200_000
+
+
+def test_the_sheet_is_one_page_of_a4_whose_words_can_be_searched(solved, tmp_path):
+    from pypdf import PdfReader
+
+    solution = solved("yellow-stain")
+    wanted = {"recipe-sheet": solution_figures(solution)["recipe-sheet"]}
+    (path,) = write_figures(tmp_path, wanted, "pdf")
+    (page,) = PdfReader(path).pages
+    size = [float(x) / 72 * 25.4 for x in page.mediabox[2:]]
+    assert size == pytest.approx([210, 297], abs=0.1)
+    text = page.extract_text()
+    assert solution.problem.spec.title in text and "violet-405-a 450 mA × 12" in text
