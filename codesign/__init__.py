@@ -20,12 +20,14 @@ _PUBLIC = {
     "evaluate": "codesign.design",
     "least_cost": "codesign.least_cost",
     "load_catalog": "codesign.catalog",
+    "load_family": "codesign.family",
     "load_problem": "codesign.problem",
     "load_recipe": "codesign.report.recipe_file",
     "sensitivities": "codesign.study.sensitivity",
     "solution_dict": "codesign.report.machine",
     "solution_text": "codesign.report.text",
     "solve": "codesign.solve",
+    "solve_family": "codesign.family.solve",
     "verify": "codesign.verify",
 }
 

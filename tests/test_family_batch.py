@@ -16,7 +16,7 @@ import numpy as np
 import pytest
 from family_runs import ROOT, DeadlyEngine, Server, content, run, write_family
 
-from codesign import solve
+from codesign import solve, solve_family
 from codesign.errors import CodesignError
 from codesign.family import load_family
 from codesign.family.batch import Interrupted, own_rigs
@@ -195,11 +195,14 @@ def test_a_killed_command_leaves_no_worker_behind_and_is_taken_up_again(family, 
         [sys.executable, "-m", "codesign", "family", str(family), "--processes", "2", "--store", str(store)],
         env={**os.environ, "PYTHONPATH": path},
         stdout=subprocess.DEVNULL,
-        stderr=subprocess.DEVNULL,
+        stderr=subprocess.PIPE,
     )
-    workers = _wait_for(lambda: _workers(command.pid))
-    command.kill()
-    command.wait()
+    try:
+        workers = _wait_for(lambda: _workers(command.pid) or command.poll() is not None)
+    finally:
+        command.kill()
+        said = command.communicate()[1]
+    assert command.returncode == -signal.SIGKILL and workers is not True, said
     _wait_for(lambda: not any(_alive(worker) for worker in workers))
     assert content(store).items() <= undisturbed[1].items()
     assert outcomes(run(family, store)) == outcomes(undisturbed[0])
@@ -289,7 +292,7 @@ def test_engines_by_the_number_of_processes():
     assert isinstance(local_engine(3, 2), ProcessEngine)
     assert local_engine(None, 1000).workers == cores()
     for wrong in (0, -1, 1000):
-        with pytest.raises(CodesignError, match=f"--processes is {wrong}, must be 1 to 256"):
+        with pytest.raises(CodesignError, match=f"processes is {wrong}, must be 1 to 256"):
             local_engine(wrong, 10)
 
 
@@ -314,3 +317,12 @@ def test_workers_of_another_version_are_refused(family, tmp_path, monkeypatch):
     assert "this is 9.9+other; install the same version there" in found.failed[0].outcome.reason
     assert not found.solved
     assert dataclasses.is_dataclass(found)
+
+
+def test_one_call_solves_a_family_and_keeps_it_where_asked(family, undisturbed, tmp_path):
+    assert solve_family(load_family(family)).entries == undisturbed[0].entries
+    store = tmp_path / "one-call.sqlite"
+    assert solve_family(str(family), store=store).run_now == COUNT - 1
+    assert solve_family(str(family), store=store).run_now == 0
+    with pytest.raises(CodesignError, match="processes is 0"):
+        solve_family(family, processes=0)

@@ -137,15 +137,6 @@ def own_rigs(
         When the store or the engine fails; a variant that fails is part of the result.
     Interrupted
         Upon Ctrl-C; what is done is in the store.
-
-    Examples
-    --------
-    >>> from codesign.family import load_family
-    >>> from tempfile import TemporaryDirectory
-    >>> with TemporaryDirectory() as folder, Store(f"{folder}/labels.sqlite") as store:
-    ...     found = own_rigs(load_family("labels-200").only(["001-pale-cyan"]), store, gap=0.01)
-    >>> found.solved[0].outcome.proven
-    True
     """
     return _Batch(family, store, engine or HereEngine(), gap, progress).run()
 

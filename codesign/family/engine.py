@@ -129,7 +129,7 @@ def local_engine(processes: int | None, tasks: int) -> Engine:
     Raises CodesignError when the number cannot be used.
     """
     if processes is not None and not 1 <= processes <= MOST_PROCESSES:
-        raise CodesignError(f"--processes is {processes}, must be 1 to {MOST_PROCESSES}")
+        raise CodesignError(f"processes is {processes}, must be 1 to {MOST_PROCESSES}")
     wanted = processes or (cores() if tasks >= LEAST_FOR_PROCESSES else 1)
     return HereEngine() if wanted == 1 else ProcessEngine(wanted)
 

@@ -16,6 +16,8 @@ from typing import Self
 from codesign.errors import CodesignError
 from codesign.family.outcome import Outcome
 
+#: In place of a path: kept for as long as it is open.
+IN_MEMORY = ":memory:"
 #: Marks of the file: "CNRF", and the version of its layout.
 APPLICATION_ID, LAYOUT = 0x434E5246, 1
 
