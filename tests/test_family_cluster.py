@@ -84,6 +84,40 @@ def test_without_the_package_the_way_to_get_it_is_told(family, tmp_path, monkeyp
     assert err == "cnr: --scheduler needs the package distributed; pip install 'codesign[cluster]'\n"
 
 
+def test_workers_that_cannot_run_the_program_are_told_in_one_line(family, workers, tmp_path, monkeypatch):
+    monkeypatch.setattr(cluster, "_sent", lambda: lambda task: __import__("no_such_program"))
+    with pytest.raises(
+        CodesignError, match=r"its workers cannot run this program \(No module named 'no_such_program'\)"
+    ):
+        run(family, tmp_path / "none.sqlite", ClusterEngine(workers.scheduler_address))
+
+
+def test_workers_of_another_version_are_refused(family, workers, tmp_path, monkeypatch):
+    from codesign.family import batch
+
+    monkeypatch.setattr(batch, "program", lambda: "9.9+other")
+    with pytest.raises(CodesignError, match=r"a worker runs codesign 0\.1\.0\+\w+, this is 9\.9\+other"):
+        run(family, tmp_path / "version.sqlite", ClusterEngine(workers.scheduler_address))
+
+
+def test_a_scheduler_that_goes_away_is_told_in_one_line(family, local, tmp_path):
+    store = tmp_path / "gone.sqlite"
+    own = distributed.LocalCluster(
+        n_workers=1, threads_per_worker=1, processes=False, dashboard_address=":0", silence_logs=logging.CRITICAL
+    )
+    gone: list[int] = []
+
+    def leave(done: int, *_: int) -> None:
+        if done >= 3 and not gone:
+            gone.append(done)
+            own.close()
+
+    with own, pytest.raises(CodesignError, match="the scheduler is gone; what is done is kept, run the same command"):
+        run(family, store, ClusterEngine(own.scheduler_address), progress=leave)
+    done = content(store)
+    assert 0 < len(done) < len(local) and done.items() <= local.items()
+
+
 def test_processes_and_scheduler_do_not_go_together(family):
     code, _, err = cnr("family", family, "--scheduler", "tcp://127.0.0.1:9", "--processes", "2")
     assert code == 2

@@ -241,7 +241,7 @@ class _Batch:
         return lost
 
     def _fail(self, job: _Job, error: BaseException) -> None:
-        told = self.engine.failed(error)
+        told = error if isinstance(error, CodesignError) else self.engine.failed(error)
         if told is not None:
             raise told
         reason = f"could not be run: {type(error).__name__}: {error}"

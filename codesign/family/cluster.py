@@ -3,13 +3,15 @@
 from __future__ import annotations
 
 import logging
+import pickle
 import time
 from collections.abc import Callable
 from concurrent.futures import CancelledError, Future
+from functools import partial
 from typing import Any
 
 from codesign.errors import CodesignError
-from codesign.family.worker import run_task, run_task_elsewhere
+from codesign.family.worker import run_task
 
 log = logging.getLogger(__name__)
 
@@ -38,8 +40,12 @@ class ClusterEngine:
         self._last_seen = time.monotonic()
 
     def submit(self, function: Callable[[Any], Any], task: Any) -> Future:
-        """Send a task."""
-        return self._executor.submit(run_task_elsewhere if function is run_task else function, task)
+        """Send a task; of the function there is but one."""
+        assert function is run_task
+        found: Future = Future()
+        found.set_running_or_notify_cancel()
+        self._executor.submit(_sent(), pickle.dumps(task)).add_done_callback(partial(_hand_over, found))
+        return found
 
     def lost(self, error: BaseException) -> bool:
         """The scheduler gives a task up after it ended several workers."""
@@ -61,14 +67,15 @@ class ClusterEngine:
             )
 
     def failed(self, error: BaseException) -> CodesignError | None:
-        """What the error of a task says about the cluster as a whole; None where nothing."""
+        """What the error of a task says about the cluster as a whole."""
         if isinstance(error, CancelledError):
             return self._gone()
-        if isinstance(error, ImportError):
-            return CodesignError(
-                f"--scheduler {self.address}: its workers cannot load codesign ({error}); install it there too"
-            )
-        return None
+        # Anything else that reaches this place went wrong before or after the task, which tells its own mistakes.
+        said = " ".join(str(error).split())[:160]
+        return CodesignError(
+            f"--scheduler {self.address}: its workers cannot run this program ({said}); "
+            "install the same version of codesign there, what is done is kept"
+        )
 
     def close(self, *, now: bool = False) -> None:
         """Leave the cluster; ``now`` takes back what it has not done."""
@@ -90,6 +97,30 @@ class ClusterEngine:
         return CodesignError(
             f"--scheduler {self.address}: the scheduler is gone; what is done is kept, run the same command again"
         )
+
+
+def _sent() -> Callable[[bytes], bytes]:
+    """What a worker is told to do.
+
+    A function inside a function travels by its content, not by its name: the scheduler, which looks at it, does not
+    need this program.
+    """
+
+    def run(task: bytes) -> bytes:
+        from codesign.family.worker import run_packed
+
+        return run_packed(task)
+
+    return run
+
+
+def _hand_over(found: Future, sent: Future) -> None:
+    """Unpack what came back."""
+    error = CancelledError() if sent.cancelled() else sent.exception()
+    if error is None:
+        found.set_result(pickle.loads(sent.result()))
+    else:
+        found.set_exception(error)
 
 
 def _connected(address: str):

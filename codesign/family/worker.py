@@ -51,19 +51,24 @@ class Done:
 
 
 def run_task(task: Task) -> Done:
-    """Solve one variant; what goes wrong becomes part of the outcome."""
-    started = time.perf_counter()
+    """Solve one variant; what goes wrong becomes part of the outcome.
+
+    Raises CodesignError when this process runs another version of the program than the one that sent the task.
+    """
     if task.program != program():
-        reason = f"its worker runs codesign {program()}, this is {task.program}; install the same version there"
-        return Done(Outcome(status="bad", reason=reason), False, 0.0)
+        raise CodesignError(
+            f"a worker runs codesign {program()}, this is {task.program}; use the same version for both, "
+            "what is done is kept"
+        )
+    started = time.perf_counter()
     outcome, lasting = _outcome(task)
     return Done(outcome, lasting, time.perf_counter() - started)
 
 
-def run_task_elsewhere(task: Task) -> Done:
-    """`run_task` in a worker of a cluster, which nobody prepared."""
+def run_packed(task: bytes) -> bytes:
+    """`run_task` in a worker of a cluster, which nobody prepared; packed, so that only workers need this program."""
     hold_threads()
-    return run_task(task)
+    return pickle.dumps(run_task(pickle.loads(task)))
 
 
 def _outcome(task: Task) -> tuple[Outcome, bool]:
