@@ -103,6 +103,8 @@ def write_solution_page(
         ),
     )
     typer.echo(work.told(path), err=True)
+    if work.interrupted:  # the page is there, without what was being worked out
+        raise KeyboardInterrupt
 
 
 def write_check_page(context: typer.Context, path: Path, problem: Problem, performance: Performance) -> None:

@@ -18,6 +18,7 @@ from codesign.report.machine import solution_dict
 from codesign.report.page import figures, html
 from codesign.report.page.document import check_html, report_html, write_report
 from codesign.report.page.html import element, joined, name, words
+from codesign.report.page.progress import Work
 
 #: What a file to be mailed may hold at most. [byte]
 LARGEST = 3_000_000
@@ -265,7 +266,7 @@ def test_left_out_parts_are_all_listed(solution):
 
 
 def test_report_with_figures_can_be_mailed(text):
-    assert text.count('<div class="picture"') == 4
+    assert text.count('<div class="picture') == 4
     assert len(text.encode()) <= LARGEST
 
 
@@ -343,6 +344,23 @@ def test_solve_writes_the_report_beside_its_result(tmp_path):
     assert f"cnr solve yellow-stain --json --report {file} --quick --trade-off leds" in words
     assert "CNR against LED channels" in words and "shadow prices" in words
     assert "white-6500k-a alone, no filter" in words
+
+
+@pytest.mark.usefixtures("no_figures")
+def test_interrupted_sensitivities_leave_a_report_without_them(tmp_path, monkeypatch):
+    def interrupted(*_, **__):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr("codesign.study.sensitivity.sensitivities", interrupted)
+    outcome = cnr("solve", "yellow-stain", "--report", tmp_path / "r.html")
+    assert outcome.code == 130
+    words = Outline((tmp_path / "r.html").read_text(encoding="utf-8")).words
+    assert "Not in this report: interrupted" in words and "How sure it is" in words
+
+
+def test_large_reports_are_told_of(tmp_path):
+    (tmp_path / "r.html").write_bytes(bytes(3_100_000))
+    assert "larger than 3 MB" in Work().told(tmp_path / "r.html")
 
 
 @pytest.mark.usefixtures("no_figures")

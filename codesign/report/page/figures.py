@@ -8,6 +8,8 @@ from typing import TYPE_CHECKING
 
 from codesign.report.page.html import Html, element, trusted
 
+#: Figures below this width are not stretched to the width of the page. [mm]
+NARROW = 120.0
 _COORDINATES = re.compile(r' (?:d|x|y|points)="[^"]*"')
 _FURTHER_DIGITS = re.compile(r"(\.\d\d)\d+")
 
@@ -36,11 +38,12 @@ def _story(subject: Subject) -> Drawing | None:
 
 def framed(figure: Figure, caption: str, key: str) -> Html:
     """Return a figure of matplotlib with a caption, scaled to the width of the page; ``key`` begins its ids."""
-    from codesign.report.figures.base import svg_fragment
+    from codesign.report.figures.base import INCH, svg_fragment
 
     picture = trusted(lighter(svg_fragment(figure, prefix=f"figure-{key}-", letters="text")))
     # Narrow pages scroll a figure sideways to keep its words legible, so it has to be reachable by keyboard.
-    box = element("div", picture, class_="picture", role="region", aria_label=caption, tabindex="0")
+    kind = "picture small" if figure.get_figwidth() * INCH < NARROW else "picture"
+    box = element("div", picture, class_=kind, role="region", aria_label=caption, tabindex="0")
     return element("figure", box, element("figcaption", caption))
 
 

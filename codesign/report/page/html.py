@@ -19,7 +19,7 @@ from codesign.report.output import plain
 #: Elements without an end tag.
 VOID = frozenset({"br", "hr", "input", "link", "meta", "col"})
 #: Files up to this size are carried inside the page as links that save them. [byte]
-LARGEST_DOWNLOAD = 400_000
+LARGEST_DOWNLOAD = 200_000
 
 
 class Html(str):

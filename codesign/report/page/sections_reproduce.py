@@ -20,7 +20,7 @@ from codesign.report.page.html import Content, Html, download, element, joined, 
 #: Libraries whose versions can move the last digits.
 LIBRARIES = ("numpy", "scipy", "clarabel")
 #: Longest problem file shown. [characters]
-LONGEST_FILE = 200_000
+LONGEST_FILE = 100_000
 
 
 def reproduce(subject: Subject) -> Section:
