@@ -3,41 +3,37 @@
 from xml.etree import ElementTree
 
 import pytest
-from command_line import cnr
-from demo_names import FOLDER
+from command_line import PROBLEM, RECIPE, cnr
 from hostile import STRINGS, write_hostile
 
 ALWAYS = {"recipe-sheet", "spectral-story", "simulated-view", "noise-budget", "use-of-limits"}
 
 
-@pytest.fixture(scope="module")
-def recipe(tmp_path_factory):
-    """A recipe for the yellow stain, typed by hand."""
-    path = tmp_path_factory.mktemp("recipe") / "mine.toml"
-    path.write_text(
-        'camera = "mono-5mp"\nchannel = "mono"\ngain_db = 0\nfilter = "none"\nf_number = 5.6\nexposure_us = 20000\n'
-        "[drive_ma]\nblue-450-a = 100\n",
-        encoding="utf-8",
-    )
-    return path
+@pytest.fixture
+def files(tmp_path):
+    """A small problem and a recipe typed for it, as files."""
+    (tmp_path / "problem.toml").write_text(PROBLEM, encoding="utf-8")
+    (tmp_path / "recipe.toml").write_text(RECIPE, encoding="utf-8")
+    return tmp_path
 
 
-def test_check_draws_a_typed_recipe(tmp_path, recipe):
-    result = cnr("check", "yellow-stain", recipe, "--figures", tmp_path / "drawn")
-    files = {path.stem: path for path in (tmp_path / "drawn").iterdir()}
-    assert set(files) == ALWAYS
+def test_check_draws_a_typed_recipe_beside_plain_light(files):
+    result = cnr("check", files / "problem.toml", files / "recipe.toml", "--figures", files / "drawn")
+    drawn = {path.stem: path for path in (files / "drawn").iterdir()}
+    assert set(drawn) == ALWAYS
     assert "wrote 5 figures" in result.err
-    assert all(ElementTree.parse(path).getroot().get("width") for path in files.values())
-    text = "".join(ElementTree.parse(files["simulated-view"]).getroot().itertext())
+    assert all(ElementTree.parse(path).getroot().get("width") for path in drawn.values())
+    text = "".join(ElementTree.parse(drawn["simulated-view"]).getroot().itertext())
     assert "alone, no filter: CNR" in text and "With the recipe: CNR" in text
 
 
-def test_solve_draws_beside_the_present_recipe(tmp_path, recipe):
-    folder = tmp_path / "drawn"
+def test_solve_draws_beside_the_present_recipe(files):
+    folder = files / "drawn"
     folder.mkdir()
-    result = cnr("solve", FOLDER / "yellow-stain.toml", "--figures", folder, "--format", "pdf", "--present", recipe)
+    drawing = ("--figures", folder, "--format", "pdf", "--present", files / "recipe.toml")
+    result = cnr("solve", files / "problem.toml", *drawing)
     assert result.code == 0
-    assert {path.name for path in folder.iterdir()} == {f"{name}.pdf" for name in {*ALWAYS, "alternatives"}}
+    assert {path.name for path in folder.iterdir()} == {f"{name}.pdf" for name in ALWAYS}
     assert all(path.read_bytes()[:5] == b"%PDF-" for path in folder.iterdir())
 
 

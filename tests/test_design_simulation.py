@@ -12,7 +12,7 @@ from codesign.problem.schema import Averaging
 
 #: Allowed distance in standard errors of the simulation: chance alone exceeds it once in 16,000 comparisons.
 STANDARD_ERRORS = 4.0
-PIECES = 20_000
+PIECES = 8_000
 
 
 def assert_moments_agree(values, mean, variance):

@@ -19,7 +19,7 @@ TOGETHER = {
     "surfaces and parts": (house.TARGET, house.BACKGROUND, house.FILTER, house.AMBIENT, house.SENSOR),
     "series": house.SERIES[:6],
 }
-#: Least difference of any two that stand together: several times what is just noticed. Dashes and markers tell them too.
+#: Least difference of any two that stand together: several times what is just noticed. Dashes and markers differ too.
 LEAST_DIFFERENCE = 8.0
 
 
