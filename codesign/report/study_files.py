@@ -5,11 +5,12 @@ from __future__ import annotations
 from pathlib import Path
 
 from codesign.errors import CodesignError
+from codesign.report.figures.base import figure_format
 from codesign.report.machine import as_json
 from codesign.report.output import csv_text, write_file
 from codesign.report.study_dict import variation_dict, worth_dict
 from codesign.report.study_text import variation_text, worth_text
-from codesign.report.vary_figure import figure_format, variation_figure
+from codesign.report.vary_figure import variation_figure
 from codesign.study.vary import Variation
 from codesign.study.worth import Worths
 

@@ -70,7 +70,7 @@ def lines_above(figure: Figure, title: str, entries: Sequence[tuple[Artist, str]
     _grow(figure, (title.count("\n") + 1) * 1.4 * TITLE + _height(names, columns))
 
 
-def parts_below(figure: Figure, entries: Sequence[tuple[Artist, str]]) -> None:
+def parts_below(figure: Figure, entries: Sequence[tuple[Artist, str]], *, bare: bool = False) -> None:
     """Put a legend below everything, its names wrapped, and make the figure higher by it.
 
     Parameters
@@ -78,19 +78,30 @@ def parts_below(figure: Figure, entries: Sequence[tuple[Artist, str]]) -> None:
     figure : Figure
         With ``layout="constrained"``.
     entries : sequence of (artist, str)
+    bare : bool
+        Without signs: the letters alone stand in the figure.
     """
     if entries:
         names, columns = _set(figure, [name for _, name in entries], width_mm(figure) - 6.0)
-        _legend(figure, entries, names, columns, "outside lower left")
+        shown = [(blank(), name) for _, name in entries] if bare else entries
+        _legend(figure, shown, names, columns, "outside lower left", bare=bare)
         _grow(figure, _height(names, columns))
 
 
-def _legend(figure: Figure, entries: Sequence[tuple[Artist, str]], names: list[str], columns: int, place: str) -> Any:
+def _legend(
+    figure: Figure,
+    entries: Sequence[tuple[Artist, str]],
+    names: list[str],
+    columns: int,
+    place: str,
+    *,
+    bare: bool = False,
+) -> Any:
     # matplotlib fills column by column; people read row by row.
     order = [k for column in range(columns) for k in range(column, len(names), columns)]
     legend = figure.legend(
         [entries[k][0] for k in order], [f"entry {k}" for k in order], loc=place, ncols=columns, fontsize=SMALL,
-        alignment="left",
+        alignment="left", **({"handlelength": 0, "handletextpad": 0} if bare else {}),
     )  # fmt: skip
     for text, k in zip(legend.get_texts(), order, strict=True):
         text.set_parse_math(False)
