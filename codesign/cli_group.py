@@ -30,6 +30,14 @@ class Commands(TyperGroup):
             command.short_help = OVERVIEW.get(cmd_name)
         return command
 
+    def make_context(self, info_name: str | None, args: list[str], parent: Any = None, **extra: Any) -> Any:
+        try:
+            return super().make_context(info_name, args, parent, **extra)
+        except Exception as error:
+            if isinstance(error, typer.Exit):
+                raise
+            _end(error, interrupted=False)
+
     def invoke(self, ctx: Any) -> Any:
         with _translated():
             return super().invoke(ctx)

@@ -105,9 +105,12 @@ def test_error_about_a_name_beyond_ascii_still_shows(tmp_path):
     assert b"Traceback" not in error
 
 
-def test_wrong_usage_exits_with_two():
-    process = start("solve")
+@pytest.mark.parametrize(
+    ("arguments", "named"), [(("solve",), b"PROBLEM"), (("--foo",), b"--foo"), (("solv",), b"'solve'")]
+)
+def test_wrong_usage_is_one_line_and_exit_code_two(arguments, named):
+    process = start(*arguments)
     _, error = process.communicate(timeout=20)
     assert process.returncode == 2
-    assert b"Traceback" not in error
-    assert b"PROBLEM" in error
+    assert error.count(b"\n") == 1
+    assert named in error
