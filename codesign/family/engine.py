@@ -135,7 +135,7 @@ def local_engine(processes: int | None, tasks: int) -> Engine:
 
 
 #: Fewer variants than this are done before processes would have started.
-LEAST_FOR_PROCESSES = 4
+LEAST_FOR_PROCESSES = 8
 
 
 def cores() -> int:
