@@ -231,7 +231,7 @@ def test_defects_are_soft_and_inside_their_piece():
 
 def test_a_weak_contrast_is_not_stretched_out_of_the_noise():
     assert display_reach([0.2, 0.1]) == pytest.approx(3.1)
-    assert display_reach([500.0]) == 10.0
+    assert display_reach([500.0]) == 25.0
 
 
 def test_plain_light_is_one_white_led_without_filter():

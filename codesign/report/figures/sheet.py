@@ -16,6 +16,7 @@ from codesign.report.figures.base import (
     in_house_style,
     new_figure,
     shortened,
+    signed,
     width_mm,
     wrapped,
 )
@@ -24,7 +25,7 @@ from codesign.report.figures.noise import draw_noise_budget
 from codesign.report.figures.spectral import draw_spectral_story
 from codesign.report.figures.view import draw_simulated_view
 from codesign.report.house import INK, MISSED, MUTED, RULE
-from codesign.report.layout import number
+from codesign.report.layout import number, percent
 from codesign.report.text import currents_words, exposure_words, light_words, rate_words
 
 if TYPE_CHECKING:
@@ -133,6 +134,8 @@ def _result(performance: Performance) -> str:
 
 def _proof(solution: Solution) -> str:
     bound = f"no setting of the candidates has a CNR above {number(solution.certificate.bound, 5)} (proven)"
+    if solution.status != "proven":
+        bound += f", search stopped with a gap of {percent(solution.certificate.gap)}"
     required = solution.problem.spec.required_cnr
     return bound if required is None else f"{bound}; required {required:g}"
 
@@ -147,7 +150,12 @@ def _settings(problem: Problem, performance: Performance) -> list[tuple[str, str
         ("light", light_words(problem, performance)),
     ]
     if performance.weights:
-        found.append(("weights", ", ".join(f"{name} {weight:+.4f}" for name, weight in performance.weights.items())))
+        found.append(
+            (
+                "weights",
+                ", ".join(f"{name} {signed(weight, plus=True)}" for name, weight in performance.weights.items()),
+            )
+        )
     return found
 
 

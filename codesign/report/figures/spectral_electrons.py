@@ -9,7 +9,17 @@ import numpy as np
 from codesign.design import Performance
 from codesign.design_spectra import Spectra
 from codesign.problem import Problem
-from codesign.report.figures.base import blank, dress, legend_above, scale_of, signed
+from codesign.report.figures.base import (
+    ROOM_BESIDE,
+    TITLE,
+    blank,
+    dress,
+    legend_above,
+    scale_of,
+    shortened,
+    signed,
+    width_mm,
+)
 from codesign.report.house import AMBIENT, BACKGROUND, DASHES, FILTER, INK, MUTED, TARGET
 from codesign.report.layout import percent
 
@@ -119,15 +129,20 @@ def draw_contrast(axes: Axes, problem: Problem, found: Spectra, performance: Per
     axes.set_ylim(bottom - 0.08 * reach, top + 0.08 * reach)
     target, background = (problem.surfaces[index].id for index in found.pair)
     weighted = ", weighted" if len(found.readings) > 1 else ""
-    legend_above(axes, f"Contrast: {target} minus {background}{weighted}, {_sum_words(found, performance)}", [])
+    panel = axes.get_figure(root=False)
+    title = shortened(
+        panel, f"Contrast: {target} minus {background}{weighted},", width_mm(panel) - ROOM_BESIDE, TITLE, "bold",
+        tail=f"in all {signed(performance.signal_e)} e⁻",
+    )  # fmt: skip
+    against = _against(found)
+    notes = [(blank(), f"{percent(against)} of it has the other sign and works against the rest")]
+    legend_above(axes, title, notes if against > 1e-3 else [])
 
 
-def _sum_words(found: Spectra, performance: Performance) -> str:
-    """What the contrast adds up to, and how much of it has the other sign."""
+def _against(found: Spectra) -> float:
+    """Share of the contrast, without signs, that has the sign of the lesser part. [1]"""
     whole = float(found.integral(np.abs(found.signal_e)))
-    against = (1 - abs(float(found.integral(found.signal_e))) / whole) / 2 if whole > 0 else 0.0
-    words = f"in all {signed(performance.signal_e)} e⁻"
-    return words + (f"; {percent(against)} of it works against the rest" if against > 1e-3 else "")
+    return (1 - abs(float(found.integral(found.signal_e))) / whole) / 2 if whole > 0 else 0.0
 
 
 def draw_noise(axes: Axes, found: Spectra) -> None:

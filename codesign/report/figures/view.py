@@ -20,6 +20,7 @@ from codesign.report.figures.base import (
     in_house_style,
     new_figure,
     shortened,
+    signed,
     width_mm,
     wrapped,
     write,
@@ -38,7 +39,7 @@ if TYPE_CHECKING:
 #: Pieces across and down, cells along each, cells between them.
 ACROSS, DOWN, CELLS, GAP = 4, 2, 40, 2
 #: The pictures run from black to white over at most so many standard deviations of the noise to either side.
-WIDEST = 10.0
+WIDEST = 25.0
 #: Room beyond the means on that scale. [standard deviations]
 MARGIN = 3.0
 #: Softness of a defect's edge. [cells]
@@ -115,7 +116,7 @@ def draw_simulated_view(
     coverage = defects(across * down, CELLS, np.random.default_rng(seed))
     for column, side in enumerate(sides):
         _draw_picture(every[0, column], side, coverage, reach, (across, seed), room)
-        _draw_spread(every[1, column], side, reach, room)
+        _draw_spread(every[1, column], side, max(reach, side.performance.cnr / 2 + MARGIN), room)
     panel.supxlabel(
         wrapped(panel, _caption(problem, reach, across * down), width_mm(panel) - 8.0), fontsize=SMALL, color=MUTED
     )
@@ -209,7 +210,7 @@ def _level_words(side: Side) -> str:
     """Grey values on both sides of the threshold; weighted electrons where readings are combined."""
     if side.performance.weights:
         low, high = sorted(expected(side.problem, side.performance).mean_e)
-        return f"weighted sum: {number(low)} and {number(high)} e⁻"
+        return f"weighted sum: {signed(low)} and {signed(high)} e⁻"
     target, background = (side.performance.surfaces[i] for i in worst_pair(side.problem, side.performance))
     low, high = sorted((target.grey_dn, background.grey_dn))
     return f"grey values {low:.1f} and {high:.1f} DN"
