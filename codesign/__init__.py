@@ -23,12 +23,14 @@ _PUBLIC = {
     "load_family": "codesign.family",
     "load_problem": "codesign.problem",
     "load_recipe": "codesign.report.recipe_file",
+    "report_html": "codesign.report.page.document",
     "sensitivities": "codesign.study.sensitivity",
     "solution_dict": "codesign.report.machine",
     "solution_text": "codesign.report.text",
     "solve": "codesign.solve",
     "solve_family": "codesign.family.solve",
     "verify": "codesign.verify",
+    "write_report": "codesign.report.page.document",
 }
 
 __all__ = sorted(_PUBLIC)

@@ -313,6 +313,15 @@ def test_missed_limits_of_a_typed_recipe_come_first(tmp_path):
     assert "Proven" not in words and "nothing was searched" in words
 
 
+@pytest.mark.usefixtures("no_figures")
+def test_saturated_recipe_is_told_beside_its_cnr(tmp_path):
+    problem = bench(tmp_path)
+    for exposure, told in ((20000, 2), (300, 0)):
+        performance = evaluate(problem, typed(exposure_us=exposure, drive_ma={"blue-470-a": 800}))
+        words = Outline(check_html(problem, performance, made=DATE)).words
+        assert words.count("a picture does not show this CNR") == told
+
+
 def test_dark_recipe_has_a_page(tmp_path):
     problem = bench(tmp_path)
     words = Outline(check_html(problem, evaluate(problem, typed()), made=DATE)).words

@@ -6,7 +6,7 @@ from codesign.design import Performance
 from codesign.report.layout import number, percent
 from codesign.report.page.content import Subject, state
 from codesign.report.page.html import Content, Html, element, joined, name, paragraph, settings
-from codesign.report.page.sections_result import compared, sign
+from codesign.report.page.sections_result import compared, saturated, sign
 from codesign.report.text import currents_words, exposure_words, rate_words
 
 #: Losses below this are told as this. [1]
@@ -59,6 +59,7 @@ def _got_in_short(subject: Subject) -> Html:
     return joined(
         (
             cnr,
+            saturated(performance),
             None if required is None else paragraph(compared(performance.cnr, required)),
             paragraph(sign(performance), class_="more"),
             paragraph(f"{rate_words(performance.error_rate)} missed, as many false alarms", class_="more"),

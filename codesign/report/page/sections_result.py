@@ -77,6 +77,15 @@ def compared(cnr: float, required: float) -> Html:
     return joined((f"needed {required:g}: ", state("not met", "missed"), f", {percent(1 - cnr / required)} short"))
 
 
+def saturated(performance: Performance) -> Html | None:
+    """Say that the camera clips where it does: the CNR is then that of a camera without an end to its well."""
+    clipped = [s.id for s in performance.surfaces if s.role != "guard" and s.saturation_share > 1]
+    if not clipped:
+        return None
+    names = [(", " if k else "", name(each)) for k, each in enumerate(clipped)]
+    return paragraph(state("Saturated", "missed"), ": ", names, "; a picture does not show this CNR.")
+
+
 def result(subject: Subject) -> Section:
     """Contrast, errors, grey values."""
     problem, performance = subject.problem, subject.performance
@@ -109,6 +118,7 @@ def result(subject: Subject) -> Section:
         for s in performance.surfaces
     ]
     body = (
+        saturated(performance),
         settings(rows, class_="pairs wide"),
         _pairs(performance),
         table(
@@ -179,7 +189,7 @@ def limits(subject: Subject) -> Section:
     missed = [limit for limit in subject.performance.limits if not limit.met]
     body = (
         [paragraph(state("Not met", "missed"), ": ", name(limit.shortfall())) for limit in missed],
-        paragraph(note, class_="more") if subject.binding else None,
+        paragraph(note, class_="more lead") if subject.binding else None,
         table("All limits, the most used first", header, rows, numbers=(1, 2, 3), class_="with-bars", wide=True),
     )
     return Section(id="limits", title="What limits it", short="Limits", body=joined(body))

@@ -39,6 +39,7 @@ def sensitivities(subject: Subject) -> Section | None:
             " means currents and exposure are set anew for the changed value, ",
             element("em", "fixed"),
             " that the recipe stays as it is.",
+            class_="lead",
         ),
         drawn(subject, "sensitivities"),
         element("h3", "What loosening a limit brings"),
