@@ -7,9 +7,7 @@ Words typed by people are never read as formulas, and a glyph the font lacks is 
 from __future__ import annotations
 
 import functools
-import warnings
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from io import BytesIO
 from pathlib import Path
@@ -17,63 +15,84 @@ from typing import TYPE_CHECKING, Any
 
 from codesign.errors import ProblemError
 from codesign.report.figures.inline import inline_svg
-from codesign.report.house import CARD, INK, MUTED, RULE
-from codesign.report.layout import number
+from codesign.report.figures.lettering import (
+    height_mm,
+    is_narrow,
+    room_beside,
+    scale_of,
+    shortened,
+    signed,
+    text_width,
+    width_mm,
+    wrapped,
+)
+from codesign.report.figures.style import (
+    A4,
+    BODY,
+    DPI,
+    INCH,
+    NARROW,
+    POINTS,
+    ROOM_BESIDE,
+    SMALL,
+    STYLE,
+    TEXT_WIDTH,
+    TITLE,
+    house_style,
+    new_figure,
+)
+from codesign.report.house import CARD, INK
 from codesign.report.output import plain, write_file
 
 if TYPE_CHECKING:
     from matplotlib.artist import Artist
     from matplotlib.axes import Axes
-    from matplotlib.figure import Figure, SubFigure
+    from matplotlib.figure import Figure
     from matplotlib.text import Text
 
-    Panel = Figure | SubFigure
+    from codesign.report.figures.style import Panel
+
+__all__ = [
+    "A4",
+    "BODY",
+    "DPI",
+    "FORMATS",
+    "INCH",
+    "NARROW",
+    "POINTS",
+    "ROOM_BESIDE",
+    "SMALL",
+    "STYLE",
+    "TEXT_WIDTH",
+    "TITLE",
+    "Words",
+    "blank",
+    "describe",
+    "dress",
+    "figure_bytes",
+    "figure_format",
+    "height_mm",
+    "house_style",
+    "in_house_style",
+    "is_narrow",
+    "legend_above",
+    "legend_below",
+    "new_figure",
+    "room_beside",
+    "save_figure",
+    "scale_of",
+    "shortened",
+    "signed",
+    "svg_fragment",
+    "text_width",
+    "width_mm",
+    "words_of",
+    "wrapped",
+    "write",
+]
 
 #: File formats by ending.
 FORMATS = ("svg", "png", "pdf")
-#: Millimetres per inch, and points per millimetre.
-INCH, POINTS = 25.4, 72 / 25.4
-#: Width of a figure in the text of an A4 page, and the page itself. [mm]
-TEXT_WIDTH = 170.0
-A4 = (210.0, 297.0)
-#: Sizes of letters in print; none is smaller than the last. [pt]
-TITLE, BODY, SMALL = 8.5, 8.0, 7.0
-#: Parts of a page narrower than this have fewer columns and labels. [mm]
-NARROW = 120.0
-#: Width that axis labels and margins take beside axes, rather too much. [mm]
-ROOM_BESIDE = 22.0
-#: Dots per inch of a PNG.
-DPI = 200
-
-STYLE: dict[str, Any] = {
-    "font.family": ["DejaVu Sans"], "font.size": BODY, "text.color": INK, "text.parse_math": False,
-    "text.hinting": "none",
-    "axes.titlesize": TITLE, "axes.titlelocation": "left", "axes.titleweight": "bold", "axes.titlecolor": INK,
-    "axes.labelsize": BODY, "axes.labelcolor": INK, "axes.edgecolor": MUTED, "axes.linewidth": 0.7,
-    "axes.spines.top": False, "axes.spines.right": False, "axes.axisbelow": True, "axes.facecolor": "none",
-    "axes.unicode_minus": True, "axes.formatter.use_mathtext": False, "axes.formatter.useoffset": False,
-    "axes.formatter.limits": (-9, 9),
-    "xtick.labelsize": SMALL, "ytick.labelsize": SMALL, "xtick.color": MUTED, "ytick.color": MUTED,
-    "xtick.labelcolor": INK, "ytick.labelcolor": INK, "xtick.major.width": 0.7, "ytick.major.width": 0.7,
-    "xtick.major.size": 3, "ytick.major.size": 3, "grid.color": RULE, "grid.linewidth": 0.6,
-    "lines.linewidth": 1.3, "lines.markersize": 4, "patch.linewidth": 0.6, "hatch.linewidth": 0.5,
-    "legend.frameon": False, "legend.fontsize": SMALL, "legend.handlelength": 2.4, "legend.handletextpad": 0.6,
-    "legend.columnspacing": 1.6, "legend.borderpad": 0.0, "legend.borderaxespad": 0.2, "legend.labelspacing": 0.35,
-    "figure.facecolor": CARD, "savefig.facecolor": "auto", "figure.dpi": 100, "savefig.dpi": DPI,
-    "svg.hashsalt": "codesign", "pdf.fonttype": 42, "pdf.compression": 6, "path.simplify": True,
-    "figure.constrained_layout.h_pad": 0.03, "figure.constrained_layout.w_pad": 0.03,
-}  # fmt: skip
-
-
-@contextmanager
-def house_style(**more: Any) -> Iterator[None]:
-    """Make or draw artists in the house style; ``more`` are further settings of matplotlib."""
-    import matplotlib as mpl
-
-    with warnings.catch_warnings(), mpl.rc_context({**STYLE, **more}):
-        # A part may be named in any script; what the font lacks is a box in print and right in SVG text.
-        warnings.filterwarnings("ignore", message=r"Glyph .* missing from font", category=UserWarning)
-        yield
 
 
 def in_house_style(draw: Callable[..., Figure]) -> Callable[..., Figure]:
@@ -95,24 +114,6 @@ class Words:
 
     title: str
     description: str
-
-
-def new_figure(width_mm: float = TEXT_WIDTH, height_mm: float = 95.0, *, layout: str | None = "constrained") -> Figure:
-    """Return an empty figure of a size in print, drawn without a display.
-
-    Parameters
-    ----------
-    width_mm, height_mm : float
-        [mm]
-    layout : {"constrained", None}
-        Whether axes, labels and legends make room for each other.
-    """
-    from matplotlib.backends.backend_agg import FigureCanvasAgg
-    from matplotlib.figure import Figure
-
-    figure = Figure(figsize=(width_mm / INCH, height_mm / INCH), layout=layout)
-    FigureCanvasAgg(figure)
-    return figure
 
 
 def describe(figure: Figure, title: str, description: str) -> Figure:
@@ -153,93 +154,6 @@ def write(axes: Axes, x: float, y: float, text: str, **keywords: Any) -> Text:
     if halo:
         found.set_path_effects([withStroke(linewidth=2.0, foreground=CARD)])
     return found
-
-
-def width_mm(panel: Panel) -> float:
-    """Width of a figure, or of a part of one, in print. [mm]"""
-    return float(panel.bbox.width) / panel.dpi * INCH
-
-
-def height_mm(panel: Panel) -> float:
-    """Height of a figure, or of a part of one, in print. [mm]"""
-    return float(panel.bbox.height) / panel.dpi * INCH
-
-
-def is_narrow(panel: Panel) -> bool:
-    """Whether a figure, or a part of one, has room for the most needful only."""
-    return width_mm(panel) < NARROW
-
-
-def room_beside(panel: Panel, names: Sequence[str]) -> float:
-    """Width that the names of rows take beside axes. [mm]"""
-    return max((text_width(panel, name, SMALL, "bold") for name in names), default=0.0) + 6.0
-
-
-def signed(value: float, digits: int = 4, *, plus: bool = False) -> str:
-    """Return a number in few digits with a minus sign as set in print, on wish with a plus sign."""
-    return ("−" if value < 0 else "+" if plus else "") + number(abs(value), digits)
-
-
-def scale_of(largest: float) -> tuple[float, str]:
-    """Return what to divide values by so that few digits say them, and the power of ten to put before the unit."""
-    for power, sign in ((9, "10⁹ "), (6, "10⁶ "), (3, "10³ "), (0, ""), (-3, "10⁻³ "), (-6, "10⁻⁶ ")):
-        if largest >= 2 * 10.0**power or (power == 0 and largest >= 0.02):
-            return 10.0**power, sign
-    return 1.0, ""
-
-
-def text_width(figure: Panel, text: str, size: float = SMALL, weight: str = "normal") -> float:
-    """Width of a line of text in print. [mm]"""
-    return _width_of_line(plain(text), size, weight)
-
-
-@functools.lru_cache(maxsize=4096)
-def _width_of_line(text: str, size: float, weight: str) -> float:
-    from matplotlib.text import Text
-
-    with house_style():
-        figure = new_figure(layout=None)
-        measured = Text(0, 0, text, fontsize=size, fontweight=weight)
-        measured.set_figure(figure)
-        extent = measured.get_window_extent(figure.canvas.get_renderer())  # type: ignore[attr-defined]
-        return float(extent.width) / figure.dpi * INCH
-
-
-def shortened(
-    figure: Panel, text: str, width_mm: float, size: float = SMALL, weight: str = "normal", *, tail: str = ""
-) -> str:
-    """Return the text on one line, its middle left out where it is wider than ``width_mm``: ends tell names apart.
-
-    ``tail`` follows the text and stays whole, for values that must not be cut.
-    """
-    text, tail = plain(text), tail and f" {plain(tail)}"
-    if text_width(figure, text + tail, size, weight) <= width_mm:
-        return text + tail
-    low, high = 0, len(text)
-    while high - low > 1:
-        middle = (low + high) // 2
-        fits = text_width(figure, _without_middle(text, middle) + tail, size, weight) <= width_mm
-        low, high = (middle, high) if fits else (low, middle)
-    return _without_middle(text, low) + tail
-
-
-def _without_middle(text: str, kept: int) -> str:
-    """The first and last letters, ``kept`` in all."""
-    tail = kept // 3
-    return text[: kept - tail].rstrip() + "…" + (text[-tail:].lstrip() if tail else "")
-
-
-def wrapped(figure: Panel, text: str, width_mm: float, size: float = SMALL, lines: int = 99) -> str:
-    """Return the text in lines no wider than ``width_mm``; the last one is shortened where ``lines`` are too few."""
-    found: list[str] = []
-    for word in plain(text).split():
-        longer = f"{found[-1]} {word}" if found else word
-        if found and text_width(figure, longer, size) <= width_mm:
-            found[-1] = longer
-        else:
-            found.append(word)
-    kept = [*found[: lines - 1], " ".join(found[lines - 1 :])] if len(found) > lines else found
-    return "\n".join(shortened(figure, line, width_mm, size) for line in kept)
 
 
 def legend_below(figure: Panel, entries: Sequence[tuple[Artist, str]], *, size: float = SMALL) -> None:
