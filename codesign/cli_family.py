@@ -4,23 +4,25 @@ from __future__ import annotations
 
 from enum import StrEnum
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from codesign.cli_terminal import page_width, put
+from codesign.cli_terminal import page_width, put, searching
+from codesign.errors import CodesignError
 
 if TYPE_CHECKING:
     from codesign.family import Family
     from codesign.family.batch import OwnRigs
     from codesign.family.engine import Engine
+    from codesign.family.shared import SharedFamily
 
 #: Exit codes: a variant without a recipe, and an interrupt.
 SOME_FAILED, INTERRUPTED = 1, 130
 
 
 class Goal(StrEnum):
-    """What a shared rig is for, as typed."""
+    """What a rig in common is for, as typed."""
 
     WORST = "worst"
     COUNT = "count"
@@ -30,14 +32,26 @@ class Goal(StrEnum):
 def family(
     file: Annotated[str, typer.Argument(metavar="FILE", help="Family file, or the name of a demo family.")],
     json: Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")] = False,
-    csv: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the recipes here, a row per variant.")] = None,
+    csv: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Write the recipes to this file, a row per variant.")
+    ] = None,
     figure: Annotated[Path | None, typer.Option(metavar="FILE", help="Draw it: .svg, .png or .pdf.")] = None,
-    only: Annotated[
-        list[str] | None, typer.Option(metavar="VARIANT", help="Only this variant; may be repeated.")
+    only: Annotated[list[str] | None, typer.Option(metavar="VARIANT", help="Only this variant; repeat it.")] = None,
+    shared: Annotated[bool, typer.Option("--shared", help="One rig for all variants instead of one each.")] = False,
+    goal: Annotated[
+        Goal | None,
+        typer.Option(metavar="WHAT", help="For --shared: worst CNR, count of variants at --cnr, or cost of that."),
     ] = None,
-    gap: Annotated[
-        float | None, typer.Option(metavar="G", help="Prove the best to this share of its CNR, 1e-8 to 0.5.")
+    max_leds: Annotated[
+        int | None, typer.Option(metavar="K", min=1, help="LED channels of a rig in common at most.")
     ] = None,
+    cnr: Annotated[
+        float | None, typer.Option(metavar="X", min=0, help="CNR that is enough on a rig in common.")
+    ] = None,
+    time_limit: Annotated[
+        float | None, typer.Option(metavar="SECONDS", min=0, help="Stop the search for a rig in common then.")
+    ] = None,
+    gap: Annotated[float | None, typer.Option(metavar="G", help="Prove to this share of the CNR, 1e-8 to 0.5.")] = None,
     processes: Annotated[
         int | None, typer.Option(metavar="N", help="Local processes; as many as cores by default.")
     ] = None,
@@ -49,31 +63,45 @@ def family(
     ] = None,
     fresh: Annotated[bool, typer.Option("--fresh", help="Forget the results kept there.")] = False,
 ) -> None:
-    """Solve all variants of a product: a recipe for each, kept as it is found.
+    """Solve all variants of a product: a recipe for each on its own best rig, or one rig for all.
 
     What is done already is taken from the store, so an interrupted run goes on where it was. The exit code is 1 when a
     variant has no recipe.
 
-    \b
     Example: cnr family labels-200 --csv recipes.csv
     """
     from codesign.family import load_family
     from codesign.report.family_files import check_targets, save, show
 
     check_targets(csv, figure)
+    wishes = {"goal": goal, "max_led_channels": max_leds, "required_cnr": cnr, "time_limit": time_limit}
+    _require_shared(shared, wishes)
     loaded = load_family(file)
     loaded = loaded if only is None else loaded.only(only)
     place = store if store is not None else Path(f"{Path(loaded.where).stem}.results.sqlite")
     engine = _engine(processes, scheduler, len(loaded.variants))
-    found = _own_rigs(loaded, place, engine, gap=gap, fresh=fresh)
+    own = _own_rigs(loaded, place, engine, gap=gap, fresh=fresh)
+    found = _shared(loaded, own, wishes | {"gap": gap}) if shared and own.solved else own
     save(found, csv, figure)
     put(show(found, json=json, width=page_width()))
-    if found.failed:
+    if own.failed:
         raise typer.Exit(SOME_FAILED)
 
 
+def _require_shared(shared: bool, wishes: dict[str, Any]) -> None:
+    """What is said of a rig in common needs one."""
+    options = {
+        "goal": "--goal",
+        "max_led_channels": "--max-leds",
+        "required_cnr": "--cnr",
+        "time_limit": "--time-limit",
+    }
+    for name, option in options.items():
+        if wishes[name] is not None and not shared:
+            raise CodesignError(f"{option} is for a rig in common; add --shared, or leave it out")
+
+
 def _engine(processes: int | None, scheduler: str | None, variants: int) -> Engine:
-    from codesign.errors import CodesignError
     from codesign.family.engine import local_engine
 
     if scheduler is None:
@@ -107,3 +135,10 @@ def _own_rigs(loaded: Family, place: Path, engine: Engine, *, gap: float | None,
             kept = f"{stop.done} of {stop.total} variants are kept in {place}, {again} goes on from there"
             typer.echo(plain(f"cnr: interrupted; {kept}"), err=True)
             raise typer.Exit(INTERRUPTED) from None
+
+
+def _shared(loaded: Family, own: OwnRigs, wishes: dict[str, Any]) -> SharedFamily:
+    from codesign.family.shared import shared_family
+
+    with searching("rig in common") as progress:
+        return shared_family(loaded, own, progress=progress, **wishes)

@@ -50,7 +50,7 @@ class Outcome:
         Of the recipe, in whole setting steps.
     best_cnr : float
         Of the optimum, before rounding.
-    bound : float
+    bound : float or None
         No configuration has a CNR above it.
     proven : bool
         Whether the gap asked for is proven; a time limit may end the search before.
@@ -94,9 +94,9 @@ class Outcome:
         return self.status == "solved"
 
     @property
-    def gap(self) -> float:
-        """Relative gap proven of the optimum. [1]"""
-        return self.bound / self.best_cnr - 1
+    def gap(self) -> float | None:
+        """Relative gap proven of the optimum; None without a bound of its own. [1]"""
+        return None if self.bound is None else self.bound / self.best_cnr - 1
 
     @property
     def leds(self) -> tuple[str, ...]:
@@ -132,9 +132,9 @@ def outcome_of(solution: Solution, gap: float) -> Outcome:
 
 
 def outcome_with(
-    recipe: Performance, *, best_cnr: float, bound: float, proven: bool, binding: tuple[str, ...]
+    recipe: Performance, *, best_cnr: float, bound: float | None, proven: bool, binding: tuple[str, ...]
 ) -> Outcome:
-    """Return the outcome that holds a recipe."""
+    """Return the outcome that holds a recipe; ``bound`` is None where the proof is not one of this variant alone."""
     design = recipe.design
     return Outcome(
         status="solved",

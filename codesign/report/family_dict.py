@@ -83,7 +83,7 @@ def entry_dict(entry: Entry) -> dict[str, Any]:
         "cnr": outcome.cnr,
         "cnr_optimum": outcome.best_cnr,
         "cnr_bound": outcome.bound,
-        "gap": outcome.gap if known else None,
+        "gap": outcome.gap,
         "proven": outcome.proven,
         "required_cnr": entry.required_cnr,
         "required_met": entry.met,

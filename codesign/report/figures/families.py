@@ -55,7 +55,12 @@ class _Row:
 
 @in_house_style
 def family_figure(
-    entries: Sequence[Entry], shared: Mapping[str, Outcome] | None = None, title: str = "", *, width: float = TEXT_WIDTH
+    entries: Sequence[Entry],
+    shared: Mapping[str, Outcome] | None = None,
+    title: str = "",
+    *,
+    common: str = "rig in common",
+    width: float = TEXT_WIDTH,
 ) -> Figure:
     """Draw the CNR of each variant in the order of their own rigs, and below it the parts in use.
 
@@ -66,6 +71,8 @@ def family_figure(
     shared : mapping, optional
         Outcome of each variant with the rig in common. The strip then shows the drives of that one.
     title : str
+    common : str
+        Name of the rig in common.
     width : float
         [mm]
     """
@@ -77,14 +84,14 @@ def family_figure(
     figure = new_figure(width, height)
     above, below = figure.subplots(2, 1, sharex=True, gridspec_kw={"height_ratios": [UPPER, low]})
     aside = MARGINS + max((text_width(figure, shortened(figure, row.name, LONGEST)) for row in rows), default=0.0)
-    _draw_cnr(above, solved, shared, title, aside)
+    _draw_cnr(above, solved, shared, (title, common), aside)
     _draw_strip(below, rows, len(solved))
     _draw_names(below, solved, entries)
     return describe(figure, f"CNR of the variants: {title}", _description(entries, solved, shared))
 
 
 def _draw_cnr(
-    axes: Axes, solved: Sequence[Entry], shared: Mapping[str, Outcome] | None, title: str, aside: float
+    axes: Axes, solved: Sequence[Entry], shared: Mapping[str, Outcome] | None, words: tuple[str, str], aside: float
 ) -> None:
     place = np.arange(len(solved))
     own = np.array([entry.outcome.cnr for entry in solved])
@@ -95,7 +102,7 @@ def _draw_cnr(
         reached = np.array([_cnr(shared.get(entry.name)) for entry in solved])
         line = axes.plot(place, reached, "s", color=TARGET, markersize=size, markerfacecolor=CARD)[0]
         axes.vlines(place, reached, own, color=MUTED, linewidth=0.7, zorder=1)
-        entries.append((line, "rig in common"))
+        entries.append((line, words[1]))
     needs = np.array([entry.required_cnr or np.nan for entry in solved])
     if np.isfinite(needs).any():
         half = 0.5 if len(solved) <= MOST_NAMES else 0.9
@@ -109,7 +116,7 @@ def _draw_cnr(
     axes.set_xlim(-0.7, max(len(solved), 1) - 0.3)
     axes.set_ylim(bottom=0)
     axes.tick_params(axis="x", length=0, labelbottom=False)
-    legend_above(axes, title or "CNR of each variant", entries, aside=aside)
+    legend_above(axes, words[0] or "CNR of each variant", entries, aside=aside)
 
 
 def _cnr(outcome: Outcome | None) -> float:
@@ -120,7 +127,7 @@ def _draw_strip(axes: Axes, rows: Sequence[_Row], count: int) -> None:
     figure = axes.get_figure()
     for number, row in enumerate(rows):
         base = number + FILLED
-        for start, stop, fill in _runs(row.fill):
+        for start, stop, fill in _runs(row.fill, joined=count > MOST_NAMES):
             axes.fill_between([start - 0.42, stop + 0.42], base, base - FILLED * fill, color=row.colour, linewidth=0)
         if row.first and number:
             axes.axhline(number - (1 - FILLED) / 2, color=MUTED, linewidth=0.6)
@@ -137,11 +144,11 @@ def _draw_strip(axes: Axes, rows: Sequence[_Row], count: int) -> None:
     axes.set_xlim(-0.7, max(count, 1) - 0.3)
 
 
-def _runs(fill: np.ndarray) -> list[tuple[int, int, float]]:
-    """First and last of neighbours that are filled alike, empty ones left out: few shapes for many variants."""
+def _runs(fill: np.ndarray, *, joined: bool) -> list[tuple[int, int, float]]:
+    """Places that are filled, first and last; neighbours filled alike as one where ``joined``: few shapes for many."""
     found, start = [], 0
     for place in range(1, len(fill) + 1):
-        if place == len(fill) or fill[place] != fill[start]:
+        if place == len(fill) or fill[place] != fill[start] or not joined:
             if fill[start] > 0:
                 found.append((start, place - 1, float(fill[start])))
             start = place
