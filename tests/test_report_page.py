@@ -246,6 +246,14 @@ def test_check_of_the_proof_is_told_where_it_was_run(outline, solution):
 
 
 @pytest.mark.usefixtures("no_figures")
+def test_gain_that_is_still_possible_is_counted_from_the_recipe(solution):
+    loose = replace(solution, certificate=replace(solution.certificate, bound=1.25 * solution.recipe.cnr))
+    words = Outline(report_html(loose, made=DATE)).words
+    assert "no other setting of the candidates gains more than 25.0 %" in words
+    assert "20.0 % below it" in words
+
+
+@pytest.mark.usefixtures("no_figures")
 def test_search_that_was_stopped_says_so(solution):
     stopped = Outline(report_html(replace(solution, status="stopped"), made=DATE)).words
     assert "Stopped early" in stopped and "Proven" not in stopped

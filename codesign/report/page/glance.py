@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+import math
+
 from codesign.design import Performance
 from codesign.report.layout import number, percent
 from codesign.report.page.content import Subject, state
 from codesign.report.page.html import Content, Html, element, joined, name, paragraph, settings
-from codesign.report.page.sections_result import compared, saturated, sign
-from codesign.report.text import currents_words, exposure_words, rate_words
+from codesign.report.page.sections_result import compared, error_words, saturated, sign
+from codesign.report.text import currents_words, exposure_words
 
-#: Losses below this are told as this. [1]
-LEAST_LOSS = 1e-6
+#: Gains below this are told as this. [1]
+LEAST_GAIN = 1e-6
 #: LEDs and limits named on the first screen; all are in their sections.
 AT_A_GLANCE = 4
 
@@ -62,7 +64,7 @@ def _got_in_short(subject: Subject) -> Html:
             saturated(performance),
             None if required is None else paragraph(compared(performance.cnr, required)),
             paragraph(sign(performance), class_="more"),
-            paragraph(f"{rate_words(performance.error_rate)} missed, as many false alarms", class_="more"),
+            paragraph(f"{error_words(performance)} missed, as many false alarms", class_="more"),
         )
     )
 
@@ -109,13 +111,13 @@ def _sure_in_short(subject: Subject) -> Html:
         )
     proof = solution.certificate
     lead = {"proven": ("Proven", "met")}.get(solution.status, ("Stopped early", "near"))
-    loss = solution.rounding_loss
+    gain = max(proof.bound / solution.recipe.cnr - 1, 0.0) if solution.recipe.cnr > 0 else math.inf
     return joined(
         (
             paragraph(
                 state(*lead),
-                f": no other setting of the candidates gains more than {percent(max(loss, LEAST_LOSS))}."
-                if loss > 0
+                f": no other setting of the candidates gains more than {percent(max(gain, LEAST_GAIN))}."
+                if gain > 0
                 else ": no other setting of the candidates is better.",
             ),
             paragraph(f"{proof.configurations} configurations, a bound for each.", class_="more"),

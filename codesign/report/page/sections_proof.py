@@ -81,7 +81,7 @@ def _of_a_search(subject: Subject) -> list[Html]:
             "contrast; in each, all currents and exposures within the limits are allowed at once. For every "
             "configuration an upper bound on the CNR was worked out from multipliers that anybody can put into the "
             "same inequality and add up again: no solver has to be trusted, only arithmetic. None of the bounds is "
-            "above the figure below, and the recipe reaches all but the last little bit of it."
+            "above the figure below; what the recipe lacks of it stands beside it."
         ),
         settings(rows, class_="pairs wide"),
         _checked(subject),

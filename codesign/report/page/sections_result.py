@@ -40,7 +40,10 @@ def recipe(subject: Subject) -> Section:
         ("light", light_words(subject.problem, performance)),
     ]
     if performance.weights:
-        weights = ((name(key), f" {value:+.4f}; ") for key, value in performance.weights.items())
+        weights = [
+            (", " if k else "", name(key), f" {value:+.4f}")
+            for k, (key, value) in enumerate(performance.weights.items())
+        ]
         rows.append(("weights", ("readings added up as ", weights)))
     header = ("LED", "current", "emitters", "junction", "heat and light of one emitter while on")
     leds = [
@@ -77,6 +80,11 @@ def compared(cnr: float, required: float) -> Html:
     return joined((f"needed {required:g}: ", state("not met", "missed"), f", {percent(1 - cnr / required)} short"))
 
 
+def error_words(performance: Performance) -> str:
+    """How often a decision is wrong."""
+    return rate_words(performance.error_rate).replace("10^12", "10¹²")
+
+
 def saturated(performance: Performance) -> Html | None:
     """Say that the camera clips where it does: the CNR is then that of a camera without an end to its well."""
     clipped = [s.id for s in performance.surfaces if s.role != "guard" and s.saturation_share > 1]
@@ -100,7 +108,7 @@ def result(subject: Subject) -> Section:
     rows.append(
         (
             "errors",
-            f"{rate_words(performance.error_rate)} missed and as many false alarms, threshold midway, noise normally "
+            f"{error_words(performance)} missed and as many false alarms, threshold midway, noise normally "
             "distributed noise",
         )
     )
