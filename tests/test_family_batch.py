@@ -68,7 +68,9 @@ def test_a_bad_variant_stops_no_other_one(undisturbed):
 
 def test_an_outcome_survives_its_text(undisturbed):
     for outcome in outcomes(undisturbed[0]).values():
-        assert Outcome.from_text(outcome.text()) == outcome
+        again = Outcome.from_text(outcome.text())
+        assert again == outcome
+        assert list(again.drive_ma) == list(outcome.drive_ma)  # reports list LEDs in this order
 
 
 def test_nothing_is_done_twice(family, undisturbed, tmp_path):

@@ -149,7 +149,7 @@ def outcome_with(
         f_number=float(design.f_number),
         exposure_us=float(design.exposure_us),
         drive_ma=_numbers(design.drive_ma),
-        emitters={led: int(count) for led, count in design.emitters.items()},
+        emitters={led: int(design.emitters[led]) for led in sorted(design.emitters)},
         shots=tuple(
             {"exposure_us": float(shot.exposure_us), "drive_ma": _numbers(shot.drive_ma)} for shot in design.shots
         ),
@@ -162,4 +162,5 @@ def outcome_with(
 
 
 def _numbers(values: Mapping[str, float]) -> dict[str, float]:
-    return {name: float(value) for name, value in values.items()}
+    # In the order in which their text has them, so that it makes no difference whether it was read back.
+    return {name: float(values[name]) for name in sorted(values)}

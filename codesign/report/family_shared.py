@@ -24,7 +24,7 @@ from codesign.family.batch import Entry
 from codesign.family.shared import SharedFamily
 from codesign.report.family_dict import entry_dict, summary_dict
 from codesign.report.family_table import recipe_rows
-from codesign.report.family_text import by_need, cnr_words, failures, need_sentence
+from codesign.report.family_text import MISSED, by_need, cnr_words, failures, need_sentence
 from codesign.report.layout import NARROWEST, bullet, counted, heading, labelled, number, percent, table
 from codesign.report.output import plain
 
@@ -84,7 +84,8 @@ def _variants(found: SharedFamily, width: int) -> list[str]:
     need = any(entry.required_cnr is not None for entry in found.entries)
     rows = [_row(found, entry, need) for entry in sorted(found.entries, key=lambda entry: _standing(found, entry))]
     header = ("variant", "CNR", *(("needs",) if need else ()), "own rig", "lost", "gain", "exposure", "LEDs lit")
-    return table(header, rows, width, left=(0, len(header) - 1))
+    lines = table(header, rows, width, left=(0, len(header) - 1))
+    return lines + (bullet(MISSED, width) if any(entry.met is False for entry in found.entries) else [])
 
 
 def _standing(found: SharedFamily, entry: Entry) -> float:

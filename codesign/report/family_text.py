@@ -17,6 +17,8 @@ from codesign.report.output import plain
 MOST_ROWS = 16
 #: Parts named of a kind, and failures explained.
 MOST_PARTS, MOST_FAILURES = 6, 20
+#: What the mark beside a CNR needed says.
+MISSED = "! the recipe misses the CNR needed"
 #: Classes of the distribution, about.
 CLASSES = 8
 
@@ -124,6 +126,7 @@ def _worst(entries: Sequence[Entry], width: int) -> list[str]:
     ]
     header = ("variant", "CNR", *(("needs",) if need else ()), "camera", "filter", "LEDs")
     lines = [heading("worst off first", width), *table(header, rows, width, left=(0, *range(2 + need, 5 + need)))]
+    lines += bullet(MISSED, width) if any(entry.met is False for entry in ordered[:MOST_ROWS]) else []
     left = len(entries) - MOST_ROWS
     return lines + (bullet(f"{counted(left, 'other')} not shown; --csv and --json have all", width) if left > 0 else [])
 
