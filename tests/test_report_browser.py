@@ -20,7 +20,8 @@ return [...document.querySelectorAll('table')].filter(t => !t.closest('.scroller
 """
 #: Text cut off by a box that hides what does not fit.
 _CLIPPED = """
-return [...document.querySelectorAll('main *')].filter(e => !e.closest('svg, canvas, select, thead, .hidden, .live-hidden')
+const meant = 'svg, canvas, select, thead, .hidden, .live-hidden';
+return [...document.querySelectorAll('main *')].filter(e => !e.closest(meant)
   && getComputedStyle(e).overflowX === 'hidden' && e.scrollWidth > e.clientWidth + 1).map(e => e.outerHTML.slice(0, 80))
 """
 
