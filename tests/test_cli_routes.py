@@ -1,6 +1,7 @@
 """The commands ``cnr routes`` and ``cnr calibrate``: text, JSON, files written, mistakes in one line."""
 
 import json
+import re
 from pathlib import Path
 
 import pytest
@@ -35,6 +36,13 @@ def test_routes_print_levers_pair_parts_and_ceiling(problem: Path) -> None:
     ):
         assert title in found.out
     assert all(len(line) <= 80 for line in found.out.splitlines())
+    assert "…" not in found.out  # what changes is wrapped, not cut
+    assert re.search(r"^ lever +what changes +factor +CNR$", found.out, re.M)
+    assert re.search(r"^ delivery +largest delivery 15\.9 → 1\d\d 1/m² +9\.\d+ × +40", found.out, re.M)
+    assert re.search(r"^ exposure +longest blur 1 → 100 pixel +100 × +at most 39", found.out, re.M)
+    assert "emitters per channel 2 → 20 " in found.out  # fewest and most are the same
+    pair = found.out.split("─ TWO LEVERS BY ONE FACTOR")[1]
+    assert pair.index("largest delivery 15.9 → ") < pair.index(", each by ")
 
 
 def test_routes_as_json(problem: Path) -> None:

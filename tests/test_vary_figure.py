@@ -1,4 +1,4 @@
-"""Figures of what-ifs: every word on the page whatever the names, ends of axes labelled, nothing told by colour alone."""
+"""Figures of what-ifs: every word on the page whatever the names, ends labelled, nothing told by colour alone."""
 
 import itertools
 import math

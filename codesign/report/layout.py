@@ -8,6 +8,8 @@ from collections.abc import Container, Sequence
 
 #: Narrowest page a report is laid out for. [characters]
 NARROWEST = 60
+#: Narrowest column whose cells run on over several lines. [characters]
+LEAST_TO_FLOW = 16
 #: Width of the label column.
 LABEL = 12
 #: Lengths of bars, the first that leaves room for the words beside them. [characters]
@@ -80,19 +82,54 @@ def bullet(text: str, width: int) -> list[str]:
     return [f" - {line}" if index == 0 else f"   {line}" for index, line in enumerate(wrap(text, width - 3))]
 
 
-def table(header: Sequence[str], rows: Sequence[Sequence[str]], width: int, left: Container[int] = (0,)) -> list[str]:
+def table(
+    header: Sequence[str],
+    rows: Sequence[Sequence[str]],
+    width: int,
+    left: Container[int] = (0,),
+    flow: int | None = None,
+) -> list[str]:
     """Return rows in columns, those in ``left`` flush left, the others flush right.
 
-    A cell that would push the line over the edge is cut with an ellipsis, the widest column first.
+    A cell that would push the line over the edge is cut with an ellipsis, the widest column first; those of the column
+    ``flow`` run on over as many lines as they need instead, broken after a semicolon where there is one.
     """
     cells = [[visible(cell) for cell in row] for row in (header, *rows)]
     sizes = [max(columns(row[k]) for row in cells) for k in range(len(header))]
+    if flow is not None:
+        room = width + 1 - 2 * len(sizes) - (sum(sizes) - sizes[flow])
+        sizes[flow] = min(sizes[flow], max(room, LEAST_TO_FLOW))
     while sum(sizes) + 2 * len(sizes) - 1 > width and max(sizes) > 4:
         sizes[sizes.index(max(sizes))] -= 1
     lines = []
     for row in cells:
-        parts = [_fit(cell, size, flush_left=k in left) for k, (cell, size) in enumerate(zip(row, sizes, strict=True))]
+        lines += _row(row, sizes, left, flow)
+    return lines
+
+
+def _row(row: Sequence[str], sizes: Sequence[int], left: Container[int], flow: int | None) -> list[str]:
+    """One row of a table: a line, or as many as the cell that runs on needs."""
+    pieces = [[cell] if k != flow else _flowing(cell, sizes[k]) or [""] for k, cell in enumerate(row)]
+    lines = []
+    for line in range(max(map(len, pieces))):
+        cells = [piece[line] if line < len(piece) else "" for piece in pieces]
+        parts = [
+            _fit(cell, size, flush_left=k in left) for k, (cell, size) in enumerate(zip(cells, sizes, strict=True))
+        ]
         lines.append(" " + "  ".join(parts).rstrip())
+    return lines
+
+
+def _flowing(text: str, size: int) -> list[str]:
+    """A cell in lines: as many of its entries as fit in each, an entry longer than a line wrapped."""
+    lines: list[str] = []
+    *others, last = text.split("; ")
+    for entry in [*(f"{other};" for other in others), last]:
+        joined = f"{lines[-1]} {entry}" if lines else entry
+        if lines and columns(joined) <= size:
+            lines[-1] = joined
+        else:
+            lines += wrap(entry, size)
     return lines
 
 

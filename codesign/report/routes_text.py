@@ -30,10 +30,15 @@ from typing import Any
 
 from codesign.report.layout import NARROWEST, bullet, heading, labelled, number, table
 from codesign.report.output import plain
+from codesign.study.fields import field_label
 from codesign.study.ideal import IdealPart
 from codesign.study.routes import Route, Routes
 
 ROUTES_SCHEMA = "codesign.routes/1"
+#: How some field names are written.
+WORDS = {"exposure max": "longest exposure", "max blur": "longest blur", "prnu": "PRNU"}
+#: Units as set in text.
+UNITS_IN_TEXT = {"1/m2": "1/m²", "W/m2": "W/m²"}
 _SETTINGS = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "drive_ma")
 
 
@@ -118,14 +123,12 @@ def _single(found: Routes, width: int) -> list[str]:
     enough = [route for route in found.singles if route.factor is not None]
     short = [route for route in found.singles if route.factor is None]
     if enough:
-        rows = [(r.levers[0], _times(r.factor), _moves(r), f"{r.cnr:.4g}") for r in enough]
-        lines += table(("lever", "factor", "from → to", "CNR"), rows, width, left=(0, 2))
+        rows = [(r.levers[0], _moves(r), _times(r.factor), f"{r.cnr:.4g}") for r in enough]
+        lines += table(("lever", "what changes", "factor", "CNR"), rows, width, left=(0, 1), flow=1)
     if short:
         lines += ["", " not reachable by this lever alone:"] if enough else [" not reachable by any lever alone:"]
-        rows = [
-            (r.levers[0], f"at most {r.short_bound:.4g}", f"at {_times(r.short_factor)}: {_ends(r)}") for r in short
-        ]
-        lines += table(("lever", "CNR", "however far"), rows, width, left=(0, 2))
+        rows = [(r.levers[0], _ends(r), _times(r.short_factor), f"at most {r.short_bound:.4g}") for r in short]
+        lines += table(("lever", "as far as it goes", "factor", "CNR"), rows, width, left=(0, 1), flow=1)
     lines += ["", *bullet("factors are proven from both sides: 1 % less of ln(factor) is not enough", width)]
     loose = [r.levers[0] for r in found.singles if not r.monotone]
     if loose:
@@ -142,13 +145,10 @@ def _pair(found: Routes, width: int) -> list[str]:
         text = "no two levers reach the CNR wanted" if none else "no two need noticeably less than the first one alone"
         return [*lines, *bullet(text, width)]
     pair = found.pair
-    lines += labelled(
-        "levers", f"{' and '.join(pair.levers)}, each by {_times(pair.factor)}: CNR {pair.cnr:.4g}", width
-    )
-    for key, value in pair.after.items():
-        before = pair.before.get(key)
-        if before is not None and before != value:
-            lines += labelled("", f"{key} {number(before)} → {number(value)}", width)
+    for number_, text in enumerate(_changes(pair)):
+        lines += labelled("" if number_ else "change", text, width)
+    text = f"{' and '.join(pair.levers)}, each by {_times(pair.factor)}: CNR {pair.cnr:.4g}"
+    lines += labelled("that is", text, width)
     lines += labelled("proven", f"no other pair is enough at {_times(found.pair_floor)}", width)
     return lines
 
@@ -200,10 +200,37 @@ def _times(factor: float) -> str:
 
 
 def _moves(route: Route) -> str:
-    changed = [key for key, value in route.after.items() if route.before.get(key) != value]
-    return "; ".join(f"{key} {number(route.before[key], 3)} → {number(route.after[key], 3)}" for key in changed)
+    return "; ".join(_changes(route))
 
 
 def _ends(route: Route) -> str:
-    changed = [key for key, value in route.after.items() if route.before.get(key) != value]
-    return "; ".join(f"{key} {number(route.after[key], 3)}" for key in changed) or "no effect"
+    return "; ".join(_changes(route)) or "no effect"
+
+
+def _changes(route: Route) -> list[str]:
+    """What a route changes: each quantity, from which to which value, with its unit."""
+    told = [
+        _change(key, route.before[key], value)
+        for key, value in route.after.items()
+        if key in route.before and route.before[key] != value
+    ]
+    both = [text for text in told if text.replace(", fewest", ", most") in told and ", fewest" in text]
+    # Where the fewest and the most are the same, one line tells both.
+    same = {text: text.replace(", fewest", "") for text in both}
+    return [same.get(text, text) for text in told if text not in {one.replace(", fewest", ", most") for one in both}]
+
+
+def _change(key: str, before: float, after: float) -> str:
+    owner, _, name = key.rpartition(" ")
+    if "_" in name or "." in name:  # a field of a part, or of the problem file
+        key = f"{owner} {field_label(name)}".strip()
+    label, _, unit = key.partition(" [")
+    for field, words in WORDS.items():
+        label = label.replace(field, words) if label.endswith(field) else label
+    unit = unit.rstrip("]")
+    return f"{label} {_value(before)} → {_value(after)} {UNITS_IN_TEXT.get(unit, unit)}".strip()
+
+
+def _value(value: float) -> str:
+    """A value in three digits, whole from a thousand on."""
+    return f"{value:.0f}" if 1000 <= abs(value) < 1e9 else f"{value:.3g}"

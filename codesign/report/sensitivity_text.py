@@ -169,21 +169,35 @@ def amount_text(x: Elasticity, amount: float) -> str:
 
 
 def changes(found: Sensitivities) -> list[str]:
-    """What binds elsewhere within the tolerances, one sentence each; a derivative holds only up to there."""
-    told = []
+    """What binds elsewhere within the tolerances, one sentence for each event; a derivative holds only up to there.
+
+    A sentence names what happens, then every quantity that brings it about and from which amount on. Events brought
+    about by the same quantities share a sentence; another configuration that wins comes first.
+    """
+    causes: dict[str, list[str]] = {}
     for x, end in _ends(found):
-        said = []
-        if end.other:
-            said.append(f"{end.other} wins")
-        if end.cnr_retuned is None or end.note:
-            said.append(plain(end.note))
-        said += [f"{name} from then on" if name.endswith(" lit") else f"{name} starts to bind" for name in end.starts]
-        said += [f"{name} no longer" if name.endswith(" lit") else f"{name} stops binding" for name in end.stops]
-        if said:
-            name = x.parameter if x.part is None else f"{x.parameter}, {x.part}"
-            where = f"about {amount_text(x, end.at)}" if end.at is not None else f"at {amount_text(x, end.amount)}"
-            told.append(f"{name} {where}: {'; '.join(said)}")
-    return told
+        at = f"from {amount_text(x, end.at)}" if end.at is not None else f"at {amount_text(x, end.amount)}"
+        for event in _events(end):
+            causes.setdefault(event, []).append(f"{_owner(x)} {at}")
+    together: dict[tuple[str, ...], list[str]] = {}
+    for event, why in causes.items():
+        together.setdefault(tuple(why), []).append(event)
+    told = [f"{' and '.join(events)}: {'; '.join(why)}" for why, events in together.items()]
+    return sorted(told, key=lambda text: " wins" not in text)
+
+
+def _events(end: Shifted) -> list[str]:
+    """What happens towards one end of a tolerance."""
+    said = [f"{end.other} wins"] if end.other else []
+    said += [plain(end.note)] if end.cnr_retuned is None or end.note else []
+    said += [name if name.endswith(" lit") else f"{name} starts to bind" for name in end.starts]
+    dark = [f"{name.removesuffix(' lit')} dark" for name in end.stops if name.endswith(" lit")]
+    return said + dark + [f"{name} stops binding" for name in end.stops if not name.endswith(" lit")]
+
+
+def _owner(x: Elasticity) -> str:
+    """A quantity and the part it belongs to."""
+    return x.parameter if x.part is None else f"{x.parameter} ({x.part})"
 
 
 def missed(found: Sensitivities) -> dict[str, list[str]]:
@@ -191,8 +205,7 @@ def missed(found: Sensitivities) -> dict[str, list[str]]:
     by_limit: dict[str, list[str]] = {}
     for x, end in _ends(found):
         for name in end.missed:
-            owner = x.parameter if x.part is None else f"{x.parameter} ({x.part})"
-            by_limit.setdefault(name, []).append(f"{owner} {amount_text(x, end.amount)}")
+            by_limit.setdefault(name, []).append(f"{_owner(x)} {amount_text(x, end.amount)}")
     return by_limit
 
 

@@ -101,7 +101,7 @@ def _rows(found: Variation, letters: dict[tuple[str, ...], str], width: int) -> 
         for point in found.points
     ]
     header = (axis.label, "CNR", "bound", "use", "limits reached")
-    return [heading(axis.key, width), *table(header, rows, width, left=(3, 4))]
+    return [heading(axis.key, width), *table(header, rows, width, left=(3, 4), flow=4)]
 
 
 def _map(found: Variation, letters: dict[tuple[str, ...], str], width: int) -> list[str]:

@@ -7,6 +7,7 @@ from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
 from codesign.design import Design, LedState, LimitUse, Performance
+from codesign.least_cost import LIMIT_NAMES
 from codesign.problem import Problem
 from codesign.report.cautions import cautions
 from codesign.report.layout import NARROWEST, barred, bullet, heading, labelled, number, percent, table
@@ -25,6 +26,8 @@ REACHED = 0.999
 HARDLY_USED = 0.01
 #: Units as set in text; error messages and JSON keep to ASCII.
 UNITS = {"us": "µs", "e-": "e⁻", "e-^2": "e⁻²", "deg C": "°C", "W/m2": "W/m²"}
+#: What can be made least, in words.
+QUANTITY_NAMES = {"price": "price", "heat": "rig heat", "exposure": "exposure", "leds": "number of LED channels"}
 #: Parts left out that are listed; the JSON result lists all.
 LISTED = 6
 
@@ -56,7 +59,7 @@ def solution_text(
         [] if least is None else _least(least, width),
         _settings(problem, recipe, width),
         _results(problem, recipe, width),
-        _limits(recipe, width, solution.binding),
+        _limits(recipe, width, solution.binding, least),
         _noise(recipe, width),
         _proof(solution, width, verdict),
         _runners_up(solution, width),
@@ -108,12 +111,12 @@ def _least(least: LeastCost, width: int) -> list[str]:
     unit = f" {UNITS.get(least.unit, least.unit)}".rstrip()
     value, bound = f"{least.value:.6g}{unit}", f"{least.bound:.6g}{unit}"
     short = "" if least.status == "proven" else ", stopped before the gap asked for"
-    none = "there is no less" if least.value == 0 else f"none is proven{short}"
+    none = "there is no less" if least.value == 0 or least.quantity == "leds" else f"none is proven{short}"
     return [
-        heading(f"least {least.quantity}", width),
+        heading(f"least {QUANTITY_NAMES[least.quantity]}", width),
         *labelled("least", f"{value} reaches CNR {least.required_cnr:g}", width),
         *labelled("bound", f"with {bound} or less no recipe does (proven{short})" if least.bound > 0 else none, width),
-        *labelled("below", f"the recipe of most CNR at that {least.quantity}, which is among its limits", width),
+        *labelled("below", "the recipe of most CNR with about that much, which is among its limits (marked *)", width),
     ]
 
 
@@ -208,19 +211,27 @@ def rate_words(rate: float) -> str:
     return percent(rate) if rate >= 0.01 else f"1 in {number(1 / rate, 3)}"
 
 
-def _limits(performance: Performance, width: int, binding: tuple[str, ...] | None = None) -> list[str]:
-    """All limits, the most used first; ``binding`` are those the optimum touches before rounding."""
+def _limits(
+    performance: Performance, width: int, binding: tuple[str, ...] | None = None, least: LeastCost | None = None
+) -> list[str]:
+    """All limits, the most used first; ``binding`` are those the optimum touches before rounding.
+
+    The limit that a search for the ``least`` adds to those of the problem is marked.
+    """
     ordered = sorted(performance.limits, key=lambda limit: -limit.share)
     shown = [limit for limit in ordered if limit.share >= HARDLY_USED or not limit.met or _bound(limit, binding)]
     if len(ordered) - len(shown) < 2:  # a line that counts one is no shorter
         shown = ordered
-    rows = [_limit_row(limit, binding) for limit in shown]
+    added = "" if least is None else LIMIT_NAMES[least.quantity]
+    rows = [_limit_row(limit, binding, added) for limit in shown]
     lines = [heading("what limits it", width)]
     lines += barred(("  limit", "value", "allowed", "used"), rows, [limit.share for limit in shown], width)
     if len(shown) < len(ordered):
         lines.append(f"   and {len(ordered) - len(shown)} more below {percent(HARDLY_USED)} (--json lists all)")
     if any(_bound(limit, binding) and limit.met for limit in ordered):
         lines.append(" ► binds: loosening this limit can raise the CNR")
+    if any(limit.name == added for limit in ordered):
+        lines.append(f" * the limit that --least {least.quantity} tightens to find the least that is enough")
     return lines if performance.feasible else [*lines, " ! exceeded"]
 
 
@@ -228,11 +239,12 @@ def _bound(limit: LimitUse, binding: tuple[str, ...] | None) -> bool:
     return limit.share >= REACHED if binding is None else limit.name in binding
 
 
-def _limit_row(limit: LimitUse, binding: tuple[str, ...] | None) -> tuple[str, str, str, str]:
+def _limit_row(limit: LimitUse, binding: tuple[str, ...] | None, added: str = "") -> tuple[str, str, str, str]:
     mark = "!" if not limit.met else "►" if _bound(limit, binding) else " "
     sign = "≥" if limit.floor else "≤"
     allowed = f"{sign} {number(limit.bound)} {UNITS.get(limit.unit, limit.unit)}"
-    return f"{mark} {limit.name}", number(limit.value), allowed, percent(limit.share, least=0.001)
+    name = f"{limit.name} *" if limit.name == added else limit.name
+    return f"{mark} {name}", number(limit.value), allowed, percent(limit.share, least=0.001)
 
 
 def _noise(performance: Performance, width: int) -> list[str]:
