@@ -2,17 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import replace
 
 import numpy as np
 
 from codesign.assemble import Assembly
 from codesign.build import Units, free
+from codesign.certificate_pairs import worst_contrast
 from codesign.design import Design, Performance, evaluate
 from codesign.limits import Setting
 from codesign.problem import Problem
-from codesign.program import Array
+from codesign.program import Array, Program
+from codesign.search.build import Built
+from codesign.search.frontier import Certified
+from codesign.search.pairs import CertifiedPairs
+
+Found = Certified | CertifiedPairs | Built
 
 #: Currents below this share of a setting step count as off. [1]
 OFF = 1e-6
@@ -57,6 +63,21 @@ def design_at(
         drive_ma=drive,
         emitters=emitters,
     )
+
+
+def lit_only(
+    assembly: Assembly, setting: Setting, found: Found, design: Design, programs: Sequence[Program]
+) -> Found:
+    """What was found without the charges of LEDs too dim to be in its design: its value is then that of the design.
+
+    A charge left out loosens every limit, so the point stays feasible and bounds are not touched.
+    """
+    lit = np.array([channel.id in design.drive_ma for channel in assembly.problem.channels])
+    charges = np.where(lit[assembly.segments(setting).led], found.point[:-1], 0.0)
+    if np.array_equal(charges, found.point[:-1]):
+        return found
+    point = np.append(charges, found.point[-1])
+    return replace(found, point=point, value=worst_contrast(programs, point))
 
 
 def settable(problem: Problem, design: Design) -> tuple[Design, Performance] | None:

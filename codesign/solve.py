@@ -15,7 +15,7 @@ from codesign.design import Design, Performance, evaluate
 from codesign.display import Displayed
 from codesign.problem import Problem
 from codesign.program import Array
-from codesign.recipe import design_at, settable
+from codesign.recipe import design_at, lit_only, settable
 from codesign.search.walk import Evidence, Tally, Walk
 from codesign.solve_rounds import POLISH_GAP, Clock, Search, search_rounds
 
@@ -153,6 +153,7 @@ def solution_of(search: Search, gap: float, started: float, alternatives: int = 
     result = walk.polish(best, min(gap, POLISH_GAP))
     units = getattr(result, "units", None)
     design = design_at(walk.assembly, known.setting, known.filter, result.point, units)
+    result = lit_only(walk.assembly, known.setting, result, design, walk.every_pair(best))
     optimum = evaluate(problem, design)
     rounded = settable(problem, design)
     if rounded is None or (optimum.leds and not rounded[1].leds):

@@ -44,3 +44,11 @@ def test_what_setting_steps_cost_does_not_keep_the_bound_away():
     below = solve(limited_to(load_problem("cap-colour"), "heat", found.bound), alternatives=0)
     assert below.certificate.bound < found.required_cnr
     assert found.gap < 0.02
+
+
+def test_light_too_dim_to_set_is_left_out_of_the_proof_as_well():
+    # Ambient light alone is enough here; what a solver leaves on an LED no recipe can hold.
+    solution = least_cost(load_problem("yellow-stain"), "heat", 4).solution
+    verify(solution)
+    assert solution.certificate.forward_residual < 1e-9
+    assert not solution.optimum.design.drive_ma and not solution.point[:-1].any()

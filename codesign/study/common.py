@@ -21,7 +21,7 @@ from codesign.errors import InfeasibleError
 from codesign.problem import Problem
 from codesign.problem.choices import FilterChoices
 from codesign.program import Array
-from codesign.recipe import settable
+from codesign.recipe import lit_only, settable
 from codesign.search.frontier import Hint
 from codesign.search.walk import Evidence, Walk
 from codesign.solve import Certificate, Solution, solve
@@ -251,6 +251,7 @@ def _finished(walk: Walk, best: int, gap: float, multipliers: Multipliers) -> Re
     result = walk.polish(best, min(gap, POLISH_GAP))
     units = getattr(result, "units", None)
     design = design_of(walk, best)
+    result = lit_only(walk.assembly, walk.configuration(best).setting, result, design, walk.every_pair(best))
     optimum = evaluate(problem, design)
     check_recipe(walk.every_pair(best), result.point, result.value, walk.space(best), units)
     assumed = {c.id: float(t) for c, t in zip(problem.channels, walk.assembly.junction_c, strict=True)}
