@@ -88,6 +88,14 @@ def test_a_wrong_start_costs_time_only(stain, solved):
     assert resolve(stain, cold).cnr == pytest.approx(cold.optimum.cnr, rel=2e-5)
 
 
+def test_a_start_that_promises_too_much_keeps_no_gap_open():
+    # With a quarter of the exposure the CNR the start promises is far away: the first slope lights next to nothing.
+    caps = load_problem("cap-colour")
+    whole = resolve(caps)
+    quarter = varied(caps, {"timing.exposure_max_us": whole.optimum.design.exposure_us / 4})
+    assert resolve(quarter, whole).certificate.gap <= 1e-3
+
+
 def test_conflicting_limits_are_a_point_without_result(stain):
     found = vary(stain, axes=[Axis("optics.required_depth_mm", (5, 100000, 5))])
     assert [point.possible for point in found.points] == [True, False, True]

@@ -149,7 +149,8 @@ class _Walk:
             level = (below[0] + max(self.limit, v)) / max(self.best, 1e-300) ** 2
             return max(level, 2.0 * max(flattest, 1e-300))
         slope = (below[0] + above[0]) / max(self.best, 1e-300) ** 2
-        margin = 1e-6 * (steepest - flattest)
+        # Slopes may differ by many powers of ten: an end is left by a share of the smaller one.
+        margin = 1e-6 * min(steepest - flattest, flattest)
         if not flattest + margin < slope < steepest - margin:
             slope = (above[1] - below[1]) / (above[0] - below[0])
         return slope if flattest + margin < slope < steepest - margin else None
