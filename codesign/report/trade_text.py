@@ -155,7 +155,7 @@ def _stretch(curve: Trade, points: Sequence[TradePoint]) -> str:
 
 def _sure(curves: Sequence[Trade], width: int) -> list[str]:
     gaps = [p.optimum.bound / p.optimum.cnr - 1 for c in curves for p in c.possible if p.optimum.cnr > 0]
-    most = percent(max(gaps, default=0.0), 1e-6)
+    most = percent(max([1e-6, *gaps]))
     solved = sum(curve.resolves for curve in curves)
     lines = [heading("how sure this is", width)]
     text = (
@@ -163,7 +163,8 @@ def _sure(curves: Sequence[Trade], width: int) -> list[str]:
         "before rounding; 'in steps' is what can be dialled in"
     )
     lines += bullet(text, width)
-    return lines + bullet(f"a curve never falls, so between points the CNR lies between theirs; {solved} solves", width)
+    text = f"a curve never falls, so between two points the CNR lies between theirs; problems solved: {solved}"
+    return lines + bullet(text, width)
 
 
 def trade_dict(curves: Sequence[Trade]) -> dict[str, Any]:
