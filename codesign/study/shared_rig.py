@@ -1,0 +1,388 @@
+"""One rig for all variants of a family: camera, filter, f-number and LED channels in common, with proof.
+
+Shared are the parts that are bought and set by hand once: camera, filter, f-number (set on the lens and locked) and the
+set of LED channels. What is electronic follows the variant: gain, camera channel, pulse level, exposure, the current of
+each channel, and whether the target is to be brighter or darker than the background.
+"""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+
+from codesign.assemble_conflicts import no_step_fits
+from codesign.certificate_shared import Cut
+from codesign.design import Performance, evaluate
+from codesign.errors import ProblemError
+from codesign.problem import Problem
+from codesign.program import Array
+from codesign.recipe import settable
+from codesign.search.shared import REACHED
+from codesign.search.shared_goals import least_price, most_variants
+from codesign.search.shared_rig import Hunt, Outcome
+from codesign.search.shared_worst import best_worst
+from codesign.solve_rounds import Clock
+from codesign.study.common import Resolved, resolve
+from codesign.study.shared_rig_parts import common_problems
+from codesign.study.shared_rig_rounds import Settled, Start, named, settled_search
+
+Goal = Literal["worst", "count", "cost"]
+GOALS: tuple[Goal, ...] = ("worst", "count", "cost")
+#: Default gap. [1]
+DEFAULT_GAP = 0.02
+#: Gap of the first round, which only has to find the junction temperatures.
+SCOUT_GAP = 0.05
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class VariantOutcome:
+    """What one variant gets from the rig in common.
+
+    Attributes
+    ----------
+    name : str
+    problem : Problem
+        The variant with the parts of the rig alone.
+    optimum : Performance or None
+        Best settings before rounding; None where the rig shows nothing of this variant.
+    recipe : Performance or None
+        The same in whole setting steps, at the junction temperatures it leads to: what to dial in.
+    own_cnr : float
+        CNR of the variant's own best rig, NaN where unknown.
+    required_cnr : float or None
+    """
+
+    name: str
+    problem: Problem = field(repr=False)
+    optimum: Performance | None = field(repr=False)
+    recipe: Performance | None = field(repr=False)
+    own_cnr: float
+    required_cnr: float | None
+
+    @property
+    def cnr(self) -> float:
+        """CNR of the recipe, 0 where there is none."""
+        return 0.0 if self.recipe is None else self.recipe.cnr
+
+    @property
+    def regret(self) -> float:
+        """Share of the CNR of its own best rig that the variant gives up, at least 0; NaN where that is unknown."""
+        if np.isnan(self.own_cnr):
+            return float("nan")
+        best = 0.0 if self.optimum is None else self.optimum.cnr
+        return max(1 - best / self.own_cnr, 0.0) if self.own_cnr > 0 else 0.0
+
+    @property
+    def met(self) -> bool | None:
+        """Whether the optimum has the CNR required; None where none is."""
+        if self.required_cnr is None:
+            return None
+        return self.optimum is not None and self.optimum.cnr >= self.required_cnr * (1 - 2 * REACHED)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class SharedProof:
+    """What `verify_shared` re-derives the bound from.
+
+    Attributes
+    ----------
+    problems : mapping
+        Variants with the parts in common and the build limits of the rig.
+    junction_c : mapping
+        Junction temperatures of each variant at which the proof holds. (L,) [deg C]
+    levels : (V,) array
+        CNR that each variant needs, for the goals that ask for one.
+    order : tuple of int
+        Variants in the order in which they close most rigs.
+    cuts : mapping
+        By rig number, cuts with the position of their variant.
+    proven : (C,) array
+        What no rig exceeds (or, for a price, goes below).
+    """
+
+    problems: Mapping[str, Problem]
+    junction_c: Mapping[str, Array]
+    levels: Array
+    order: tuple[int, ...]
+    cuts: Mapping[int, tuple[tuple[int, Cut], ...]]
+    proven: Array
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Help:
+    """A change to the rig in common: how many variants gain more than 1 %, and the worst CNR then. (`worst_gain`: 1)"""
+
+    change: str
+    helped: int
+    worst_cnr: float
+    worst_gain: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SharedRig:
+    """The rig in common, what each variant gets from it, and how sure that is.
+
+    Attributes
+    ----------
+    camera, filter : str
+    f_number : float
+    leds : tuple of str
+        LED channels to build in.
+    goal : {"worst", "count", "cost"}
+    value, bound : float
+        Of the goal: worst CNR and what no rig exceeds; number of variants served and what no rig exceeds; price and
+        what every rig that serves all costs at least.
+    status : str
+        "proven", or "stopped" when time ran out before the gap asked for was reached.
+    outcomes : mapping
+        By variant.
+    limiting : str
+        Variant with the lowest CNR, or with the lowest share of what it needs.
+    helps : tuple of Help
+        Changes that would help, those that help most variants first.
+    seconds : float
+    residual_k : float
+        Largest difference between a junction temperature assumed and reached. [K]
+    left_out : tuple of str
+        Parts that not all variants have, and which are therefore no choice.
+    evidence : SharedProof
+    """
+
+    camera: str
+    filter: str
+    f_number: float
+    leds: tuple[str, ...]
+    goal: Goal
+    value: float
+    bound: float
+    status: str
+    outcomes: Mapping[str, VariantOutcome]
+    limiting: str
+    helps: tuple[Help, ...] = ()
+    seconds: float = 0.0
+    residual_k: float = 0.0
+    left_out: tuple[str, ...] = ()
+    evidence: SharedProof = field(repr=False)
+
+    @property
+    def gap(self) -> float:
+        """Relative distance between value and bound."""
+        low, high = sorted((self.value, self.bound))
+        return high / low - 1 if low > 0 else (0.0 if high <= 0 else np.inf)
+
+    @property
+    def worst_cnr(self) -> float:
+        """Least CNR of any variant's recipe."""
+        return min(outcome.cnr for outcome in self.outcomes.values())
+
+    @property
+    def served(self) -> int:
+        """Number of variants whose optimum has the CNR they require."""
+        return sum(bool(outcome.met) for outcome in self.outcomes.values())
+
+
+def shared_rig(
+    variants: Mapping[str, Problem],
+    *,
+    max_led_channels: int | None = None,
+    goal: Goal = "worst",
+    required_cnr: float | None = None,
+    gap: float = DEFAULT_GAP,
+    time_limit: float | None = None,
+    progress: Callable[[float, float], None] | None = None,
+    own: Mapping[str, float] | None = None,
+) -> SharedRig:
+    """Find the best rig that all variants have in common, with proof.
+
+    Camera, filter, f-number and LED channels are shared; gain, camera channel, pulse level, exposure, currents and
+    contrast sign are set anew for each variant.
+
+    Parameters
+    ----------
+    variants : mapping
+        Problem of each variant by name. Parts that not all of them have are no choice.
+    max_led_channels : int, optional
+        LED channels of the rig at most; what the problems say by default, else any number.
+    goal : {"worst", "count", "cost"}
+        Greatest CNR of the worst variant, most variants with the CNR required, or lowest price of camera, filter and
+        emitters with which all have it.
+    required_cnr : float, optional
+        CNR that every variant needs; that of its problem by default.
+    gap : float
+        Relative gap to prove; a count is proven exactly. [1]
+    time_limit : float, optional
+        Stop about then with the best so far and the bound proven so far. [s]
+    progress : callable, optional
+        Called with (value so far, bound so far).
+    own : mapping, optional
+        CNR of each variant's own best rig, for the regret; worked out by default, which takes a solve each.
+
+    Returns
+    -------
+    SharedRig
+
+    Raises
+    ------
+    ProblemError
+        One line naming the variant: combined readings, free numbers of emitters, other parts by the same id, no CNR
+        required where the goal needs one.
+    InfeasibleError
+        When a variant cannot be served at all, naming it, or no rig in common serves all where the goal asks for it.
+
+    Examples
+    --------
+    >>> from codesign import load_problem
+    >>> from codesign.study.fields import varied
+    >>> base = load_problem("yellow-stain")
+    >>> pair = {"near": base, "far": varied(base, {"lighting.distance_mm": 500})}
+    >>> found = shared_rig(pair, max_led_channels=2)
+    >>> found.limiting, found.gap < 0.02
+    ('far', True)
+    """
+    from threadpoolctl import threadpool_limits
+
+    started = time.perf_counter()
+    if goal not in GOALS:
+        raise ProblemError(f"shared rig: goal is {goal!r}, must be one of {', '.join(GOALS)}")
+    problems, left_out = common_problems(variants, max_led_channels)
+    required = {name: p.spec.required_cnr if required_cnr is None else required_cnr for name, p in problems.items()}
+    levels = _levels(required, goal)
+    clock = Clock.lasting(time_limit)
+    with threadpool_limits(limits=1, user_api="blas"):  # small arrays: more threads would only wait for each other
+        settled = settled_search(
+            problems, _search(goal, levels, gap, progress), clock, None if goal == "worst" else levels
+        )
+        own = own_cnrs(variants) if own is None else own
+        return _result(settled, problems, goal, required, levels, gap, own, left_out, started)
+
+
+def _levels(required: Mapping[str, float | None], goal: Goal) -> Array:
+    """CNR that each variant needs. (V,)"""
+    if goal == "worst":
+        return np.zeros(len(required))
+    for name, value in required.items():
+        if value is None or not value > 0:
+            raise ProblemError(
+                f"shared rig: variant {name!r}: required_cnr is {value}, must be above 0; goal {goal!r} needs it"
+            )
+    return np.array(list(required.values()), dtype=float)
+
+
+def _search(goal: Goal, levels: Array, gap: float, progress) -> Callable[[Hunt, Start, bool], Outcome]:
+    def search(hunt: Hunt, start: Start, scout: bool) -> Outcome:
+        wanted = max(gap, SCOUT_GAP) if scout else gap
+        if goal == "worst":
+            return best_worst(hunt, wanted, start, progress)
+        if goal == "count":
+            return most_variants(hunt, levels, None, start, progress)
+        return least_price(hunt, levels, wanted, start, progress)
+
+    return search
+
+
+def own_cnrs(variants: Mapping[str, Problem]) -> dict[str, float]:
+    """CNR of the best rig of each variant alone, as its problem states it."""
+    return {name: resolve(problem, gap=max(problem.spec.solver.gap, 1e-3)).cnr for name, problem in variants.items()}
+
+
+def _result(
+    settled: Settled,
+    problems: Mapping[str, Problem],
+    goal: Goal,
+    required: Mapping[str, float | None],
+    levels: Array,
+    gap: float,
+    own: Mapping[str, float],
+    left_out: tuple[str, ...],
+    started: float,
+) -> SharedRig:
+    hunt, best = settled.hunt, settled.outcome.best
+    rig, ids = hunt.space.rig(best.rig), [channel.id for channel in hunt.space.problem.channels]
+    outcomes = {
+        name: _outcome(name, problems[name], found, own.get(name, float("nan")), required[name], goal)
+        for name, found in settled.resolved.items()
+    }
+    value = _value(goal, settled, outcomes, best.value)
+    bound = _bound(goal, settled, value)
+    share = {name: outcome.cnr / (required[name] if goal != "worst" else 1.0) for name, outcome in outcomes.items()}
+    found = SharedRig(
+        camera=rig.camera,
+        filter=rig.filter,
+        f_number=rig.f_number,
+        leds=tuple(ids[place] for place in np.flatnonzero(best.leds)),
+        goal=goal,
+        value=value,
+        bound=bound,
+        status="proven",
+        outcomes=outcomes,
+        limiting=min(share, key=lambda name: share[name]),
+        seconds=time.perf_counter() - started,
+        residual_k=_residual(settled),
+        left_out=left_out,
+        evidence=_evidence(settled, problems, levels),
+    )
+    return found
+
+
+def _outcome(name, problem: Problem, found: Resolved | None, own: float, required, goal: Goal) -> VariantOutcome:
+    if found is None:
+        return VariantOutcome(name=name, problem=problem, optimum=None, recipe=None, own_cnr=own, required_cnr=required)
+    rounded = settable(found.problem, found.optimum.design)
+    if rounded is None and goal != "count":
+        raise named(name, no_step_fits(found.problem))
+    return VariantOutcome(
+        name=name,
+        problem=found.problem,
+        optimum=found.optimum,
+        recipe=None if rounded is None else rounded[1],
+        own_cnr=own,
+        required_cnr=required,
+    )
+
+
+def _value(goal: Goal, settled: Settled, outcomes: Mapping[str, VariantOutcome], found: float) -> float:
+    """Value of the goal at the junction temperatures of the proof."""
+    if goal == "cost":
+        return found
+    reached = {name: stated_cnr(outcome, settled.junction_c[name], settled) for name, outcome in outcomes.items()}
+    if goal == "worst":
+        return min(reached.values())
+    return float(sum(reached[n] >= (outcomes[n].required_cnr or 0.0) * (1 - 2 * REACHED) for n in outcomes))
+
+
+def stated_cnr(outcome: VariantOutcome, junction_c: Array, settled: Settled) -> float:
+    """CNR of a variant's optimum at the junction temperatures of the proof, by the forward model."""
+    if outcome.optimum is None:
+        return 0.0
+    ids = [channel.id for channel in settled.hunt.space.problem.channels]
+    stated = {name: float(t) for name, t in zip(ids, junction_c, strict=True) if name in outcome.problem.channel_index}
+    return evaluate(outcome.problem, outcome.optimum.design, junction_c=stated).cnr
+
+
+def _bound(goal: Goal, settled: Settled, value: float) -> float:
+    proven = settled.outcome.proven
+    if goal == "cost":
+        return float(min(proven.min(initial=np.inf), value))
+    return float(max(proven.max(initial=0.0), value))
+
+
+def _residual(settled: Settled) -> float:
+    """Largest difference of the junction temperatures the proof assumes from those that the optima lead to. [K]"""
+    own = [found.certificate.junction_residual_k for found in settled.resolved.values() if found is not None]
+    return max(settled.residual_k, *own) if own else settled.residual_k
+
+
+def _evidence(settled: Settled, problems: Mapping[str, Problem], levels: Array) -> SharedProof:
+    hunt = settled.hunt
+    return SharedProof(
+        problems=dict(problems),
+        junction_c=settled.junction_c,
+        levels=levels,
+        order=tuple(hunt.in_order()),
+        cuts={rig: tuple((place, cut) for place, cut, _ in own) for rig, own in hunt.cuts.items() if own},
+        proven=settled.outcome.proven,
+    )

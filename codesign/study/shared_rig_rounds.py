@@ -1,0 +1,159 @@
+"""Rounds of the search for a rig in common, until the junction temperatures assumed are those its recipes lead to.
+
+The proof of each round holds at stated junction temperatures, of every variant its own. The recipes of the best rig
+lead to others; the next round starts from these, and from what the last one found worth trying. LEDs that are off count
+as cool as the air, or as warm as they last were when lit.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from codesign.assemble_conflicts import nothing_seen, require_usable_leds
+from codesign.build import require_buildable
+from codesign.errors import InfeasibleError
+from codesign.problem import Problem
+from codesign.program import Array
+from codesign.search.shared import Judge
+from codesign.search.shared_rig import Hunt, Outcome
+from codesign.search.shared_space import RigSpace
+from codesign.solve_rounds import JUNCTION_TOLERANCE_K, Clock
+from codesign.study.common import Resolved, resolve
+from codesign.study.shared_rig_parts import on_rig
+
+#: Rounds before the residual is stated as it is.
+LARGEST_NUMBER_OF_ROUNDS = 8
+#: Gap to which recipes on the rig found are proven.
+RECIPE_GAP = 1e-4
+
+Start = tuple[int, Array] | None
+Search = Callable[[Hunt, Start, bool], Outcome]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Settled:
+    """The last round: its hunt and outcome, the optimum of each variant on the rig found, and the residual. [K]
+
+    A variant that shows nothing on that rig has None.
+    """
+
+    hunt: Hunt = field(repr=False)
+    outcome: Outcome = field(repr=False)
+    resolved: dict[str, Resolved | None] = field(repr=False)
+    junction_c: dict[str, Array] = field(repr=False)
+    rounds: int
+    residual_k: float
+
+
+def settled_search(
+    problems: Mapping[str, Problem], search: Search, clock: Clock, levels: Array | None = None
+) -> Settled:
+    """Search again at the junction temperatures found until these agree with the best rig.
+
+    Parameters
+    ----------
+    problems : mapping
+        As `common_problems` returns them.
+    search : callable
+        Outcome from (hunt, rig and LEDs to start from, whether it is only to find the temperatures).
+    clock : Clock
+    levels : (V,) array, optional
+        CNR that each variant needs, for messages; any at all by default.
+
+    Raises
+    ------
+    InfeasibleError
+        Naming the variants that cannot be served.
+    """
+    first = next(iter(problems.values()))
+    space = RigSpace(first)
+    junction = {name: np.full(len(first.channels), p.spec.temperature.air_c) for name, p in problems.items()}
+    hunt, start, resolved, residual = None, None, {}, np.inf
+    for attempt in range(LARGEST_NUMBER_OF_ROUNDS):
+        new = Hunt([_judge(name, p, junction[name], space) for name, p in problems.items()], space, clock)
+        if hunt is not None:
+            new.learn_from(hunt)
+        found = search(new, start, attempt == 0)
+        if found.best is None and attempt:
+            break  # stopped before anything was worked out at these temperatures: the last round stands
+        hunt, outcome = new, found
+        if outcome.best is None:
+            raise unserved(hunt, np.full(len(problems), 1e-9) if levels is None else levels)
+        same = start is not None and start[0] == outcome.best.rig and (start[1] == outcome.best.leds).all()
+        if not (same and resolved):
+            resolved = {name: _on_best(hunt, outcome, name, p) for name, p in problems.items()}
+        settled = {name: _reached(junction[name], outcome.best.leds, one) for name, one in resolved.items()}
+        residual = max(float(np.max(np.abs(settled[name] - junction[name]), initial=0.0)) for name in problems)
+        stated = junction
+        if (residual <= JUNCTION_TOLERANCE_K and attempt) or clock():
+            break
+        start, junction = (outcome.best.rig, outcome.best.leds), settled
+    return Settled(hunt, outcome, resolved, stated, attempt + 1, residual)
+
+
+def _judge(name: str, problem: Problem, junction_c: Array, space: RigSpace) -> Judge:
+    try:
+        require_usable_leds(problem)
+        require_buildable(problem)
+        return Judge(name, problem, junction_c, space)
+    except InfeasibleError as error:
+        raise named(name, error) from None
+
+
+def named(name: str, error: InfeasibleError) -> InfeasibleError:
+    """The same error, with the name of its variant where it does not say."""
+    text = str(error)
+    return error if repr(name) in text else InfeasibleError(f"variant {name!r}: {text}", error.limits)
+
+
+def _on_best(hunt: Hunt, outcome: Outcome, name: str, problem: Problem) -> Resolved | None:
+    """Optimum of one variant on the best rig, at temperatures that agree with it."""
+    rig = hunt.space.rig(outcome.best.rig)
+    leds = [problem.channels[place].id for place in np.flatnonzero(outcome.best.leds)]
+    try:
+        return resolve(on_rig(problem, rig.camera, rig.filter, rig.f_number, leds), gap=RECIPE_GAP)
+    except InfeasibleError:
+        return None
+
+
+def _reached(assumed: Array, leds: Array, found: Resolved | None) -> Array:
+    """Junction temperatures that the recipe of a variant leads to; those of other LEDs stay. (L,)"""
+    if found is None:
+        return assumed
+    settled = assumed.copy()
+    settled[leds] = [found.certificate.junction_c[channel.id] for channel in found.problem.channels]
+    lit = {state.id for state in found.optimum.leds}
+    off = [
+        place
+        for place, channel in zip(np.flatnonzero(leds), found.problem.channels, strict=True)
+        if channel.id not in lit
+    ]
+    settled[off] = assumed[off]
+    return settled
+
+
+def unserved(hunt: Hunt, levels: Array) -> InfeasibleError:
+    """Say which variants no rig can serve, or that no rig in common serves all."""
+    everything = np.ones(len(hunt.space), dtype=bool)
+    short = []
+    for variant, level in zip(hunt.variants, levels, strict=True):
+        variant.look(everything)
+        top = float(variant.upper.max(initial=0.0))
+        if top <= 0:
+            return named(variant.name, nothing_seen(variant.walk.assembly))
+        if top < level:
+            short.append(f"{variant.name!r} has a CNR of {top:.4g} at most, {level:.4g} is required")
+    if short:
+        more = f" (and {len(short) - 1} more variants)" if len(short) > 1 else ""
+        return InfeasibleError(
+            f"shared rig: no rig serves all variants: {short[0]}{more}; lower required_cnr, or ask for the count",
+            ["required_cnr"],
+        )
+    return InfeasibleError(
+        "shared rig: no camera, filter and f-number with so many LED channels serves all variants, though each alone "
+        "can be served; allow more channels, lower required_cnr, or ask for the smallest set of rigs",
+        ["required_cnr", "LED channels"],
+    )

@@ -1,0 +1,221 @@
+"""Check the proof of a rig in common again, from the problems up, without any solver.
+
+What is re-derived: the arrays of every variant at the junction temperatures stated; the bound of every rig, by the
+closed form or by its cuts, each from its multipliers; that no set of LEDs that may be built meets these cuts, by trying
+them all; and what every variant gets from the rig found, by the forward model.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from codesign.assemble import flipped
+from codesign.certificate import bound
+from codesign.certificate_shared import EQUAL, Cut, Piece, bits, cheapest_set, masked, most_served, piece_bound
+from codesign.design import evaluate
+from codesign.errors import CertificateError
+from codesign.program import Array, Program
+from codesign.search.bounds import simple_proof
+from codesign.search.shared import REACHED
+from codesign.search.shared_space import Rig, RigSpace
+from codesign.search.shared_variant import Variant
+from codesign.study.shared_rig import SharedRig
+from codesign.verify import FORWARD_TOLERANCE, ROUND_OFF
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SharedVerdict:
+    """What was checked: rigs, how many of them by cuts, cuts re-derived, and the value of the rig found."""
+
+    rigs: int
+    by_cuts: int
+    cuts: int
+    value: float
+
+
+class Checked(Variant):
+    """A variant whose closed-form bounds are worked out from their multipliers."""
+
+    def _closed_of_setting(self, number: int, filters: np.ndarray) -> Array:
+        setting = self.walk.assembly.settings[number]
+        programs = (self.walk.assembly.program(setting, filters, coarse=True, pair=pair) for pair in self.quick_pairs)
+        found = np.full((self.walk.filters, 2), np.inf)
+        found[filters] = np.min([np.stack([_closed(p), _closed(flipped(p))], axis=1) for p in programs], axis=0)
+        return self.walk.buildable(setting, found)[filters]
+
+    def level_of(self, rig: int, cut: Cut) -> float:
+        """Least level that a cut proves."""
+        pieces: dict[int, list[Piece]] = {}
+        for piece in cut.pieces:
+            pieces.setdefault(piece.index, []).append(piece)
+        own, _ = self.configurations(rig, 0.0)
+        return max((self._configuration(rig, int(i), cut, pieces.get(int(i), [])) for i in own), default=0.0)
+
+    def _configuration(self, rig: int, index: int, cut: Cut, pieces: list[Piece]) -> float:
+        """Bound of one configuration with the LEDs of a cut."""
+        least = np.inf
+        for piece in pieces:
+            programs = self.programs(rig, index, coarse=piece.coarse)
+            least = min(least, piece_bound(programs, piece, cut.inside))
+        if least <= cut.level:
+            return least
+        programs = self.programs(rig, index, coarse=True)
+        for pair in self.quick_pairs:
+            least = min(least, float(_closed(masked(programs[pair], cut.inside))[0]))
+        if least <= cut.level:
+            return least
+        return min(least, *(float(_closed(programs[pair])[0]) for pair in self.quick_pairs))
+
+
+def _closed(program: Program) -> Array:
+    """Bounds of the closed form, from its multipliers. (P,)"""
+    return bound(program, simple_proof(program)[0])
+
+
+class _Check:
+    """One result and the arrays of its variants, built anew."""
+
+    def __init__(self, result: SharedRig) -> None:
+        self.result, self.proof = result, result.evidence
+        self.names = list(self.proof.problems)
+        self.space = RigSpace(next(iter(self.proof.problems.values())))
+        self.variants = [
+            Checked(name, problem, self.proof.junction_c[name], self.space)
+            for name, problem in self.proof.problems.items()
+        ]
+        self.limit = result.bound * (1 + ROUND_OFF)
+        self.cuts = 0
+
+    def order(self) -> list[int]:
+        """Variants in the order stated, and any it leaves out."""
+        stated = [v for v in dict.fromkeys(self.proof.order) if 0 <= v < len(self.variants)]
+        return stated + [v for v in range(len(self.variants)) if v not in stated]
+
+    def levels(self) -> Array:
+        """Levels that variants must stay at or below to count as closed. (V,)"""
+        if self.result.goal == "worst":
+            return np.full(len(self.variants), self.limit)
+        return self.proof.levels * (1 + ROUND_OFF)
+
+    def needs(self, rig: int) -> list[list[int]]:
+        """Of each variant the LEDs of which it needs one at least, from cuts derived anew."""
+        levels, any_led = self.levels(), (1 << len(self.space.problem.channels)) - 1
+        found = [[any_led] for _ in self.variants]
+        for place, variant in enumerate(self.variants):
+            variant.look(np.arange(len(self.space)) == rig)
+            if variant.upper[rig] <= levels[place]:
+                found[place].append(0)
+        for place, cut in self.proof.cuts.get(rig, ()):
+            self.cuts += 1
+            if self.variants[place].level_of(rig, cut) <= levels[place]:
+                found[place].append(cut.outside)
+        return found
+
+    def left_open(self) -> np.ndarray:
+        """Rigs that the closed form of the variants does not close."""
+        levels, goal = self.levels(), self.result.goal
+        failing = np.zeros(len(self.space))
+        beside = np.zeros(len(self.space), dtype=bool)
+        if goal == "cost":
+            beside = self._prices() >= self.result.bound * (1 - ROUND_OFF)
+        allowed = len(self.variants) - self.result.bound - EQUAL if goal == "count" else 1.0
+        open_ = ~beside
+        for place in self.order():
+            variant = self.variants[place]
+            variant.look(open_)
+            failing += open_ & (variant.upper <= levels[place])
+            open_ = ~beside & (failing < allowed)
+        return np.flatnonzero(open_)
+
+    def _prices(self) -> Array:
+        found = np.array([self.space.price(rig) for rig in range(len(self.space))])
+        return np.where(np.isnan(found), np.inf, found)
+
+    def rigs(self) -> int:
+        """Check every rig left open; return how many there were."""
+        open_ = self.left_open()
+        for rig in map(int, open_):
+            needs, room = self.needs(rig), self.space.room(rig)
+            if self.result.goal == "count":
+                more = most_served(needs, np.ones(len(needs)), room, self.result.bound)
+            elif self.result.goal == "worst":
+                more = cheapest_set([cut for own in needs for cut in own], room)
+            else:
+                led = np.where(np.isnan(self.space.led_prices()), np.inf, self.space.led_prices())
+                below = self.result.bound * (1 - ROUND_OFF) - self._prices()[rig]
+                more = cheapest_set([cut for own in needs for cut in own], room, led, below)
+            if more is not None:
+                raise CertificateError(
+                    f"certificate: the cuts of rig {self.space.rig(rig)} leave sets of LEDs that may be better than "
+                    f"the claimed {self.result.bound:.10g}"
+                )
+        return int(open_.size)
+
+    def found(self) -> float:
+        """Check the rig found and what every variant gets from it; return the value of the goal."""
+        result = self.result
+        mask = np.array([channel.id in result.leds for channel in self.space.problem.channels])
+        rig = self.space.number(Rig(result.camera, result.filter, result.f_number))
+        if int(mask.sum()) != len(result.leds) or not self.space.room(rig).allows(bits(mask)):
+            raise CertificateError(
+                "certificate: the LED channels of the rig found are unknown or more than may be built"
+            )
+        if list(result.outcomes) != self.names:
+            raise CertificateError("certificate: the variants of the result are not those of its proof")
+        reached = np.array([self._recipe(name) for name in self.names])
+        if result.goal == "worst":
+            return float(reached.min())
+        met = reached >= self.proof.levels * (1 - 2 * REACHED)
+        if result.goal == "count":
+            return float(met.sum())
+        if not met.all():
+            raise CertificateError("certificate: the rig found does not serve all variants")
+        return float(self.space.price(rig) + self.space.led_prices()[mask].sum())
+
+    def _recipe(self, name: str) -> float:
+        """Check the recipes of one variant; return its CNR at the junction temperatures of the proof."""
+        outcome, problem = self.result.outcomes[name], self.proof.problems[name]
+        if outcome.optimum is None:
+            return 0.0
+        stated = {c.id: float(t) for c, t in zip(problem.channels, self.proof.junction_c[name], strict=True)}
+        for performance in (outcome.optimum, outcome.recipe):
+            if performance is not None:
+                self._require_parts(name, performance.design)
+        same = evaluate(problem, outcome.optimum.design, junction_c=stated)
+        if max((limit.share for limit in same.limits), default=0.0) > 1 + 1e-6:
+            raise CertificateError(f"certificate: variant {name!r}: the optimum exceeds a limit")
+        if outcome.recipe is not None:
+            again = evaluate(problem, outcome.recipe.design)
+            if not again.feasible or abs(again.cnr - outcome.recipe.cnr) > FORWARD_TOLERANCE * again.cnr:
+                raise CertificateError(
+                    f"certificate: variant {name!r}: the settable recipe is not feasible, or its CNR is not what is "
+                    "claimed"
+                )
+        return same.cnr
+
+    def _require_parts(self, name: str, design) -> None:
+        result = self.result
+        parts = (design.camera, design.filter, design.f_number)
+        if parts != (result.camera, result.filter, result.f_number) or not set(design.drive_ma) <= set(result.leds):
+            raise CertificateError(f"certificate: the recipe of variant {name!r} uses parts that the rig does not have")
+
+
+def verify_shared(result: SharedRig) -> SharedVerdict:
+    """Re-derive the proof of a rig in common.
+
+    Raises
+    ------
+    CertificateError
+        Naming the first thing that does not hold.
+    """
+    check = _Check(result)
+    value = check.found()
+    if not abs(value - result.value) <= FORWARD_TOLERANCE * max(abs(value), 1e-12):
+        raise CertificateError(f"certificate: the rig found has {value:.12g}, not the claimed {result.value:.12g}")
+    better = -1.0 if result.goal == "cost" else 1.0
+    if not better * (result.bound - value) >= -ROUND_OFF * abs(value):
+        raise CertificateError(f"certificate: the bound {result.bound:.12g} is on the wrong side of {value:.12g}")
+    by_cuts = check.rigs()
+    return SharedVerdict(rigs=len(check.space), by_cuts=by_cuts, cuts=check.cuts, value=value)
