@@ -6,7 +6,8 @@ from collections.abc import Callable, Sequence
 
 import numpy as np
 
-from codesign.certificate_shared import EQUAL, bits, cheapest_set, members, most_served
+from codesign.certificate_shared import bits, members
+from codesign.certificate_shared_sets import EQUAL, cheapest_set, most_served
 from codesign.program import Array
 from codesign.search.shared_rig import Found, Hunt, Outcome
 

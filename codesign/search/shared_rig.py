@@ -9,10 +9,12 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
+from typing import Protocol
 
 import numpy as np
 
-from codesign.certificate_shared import Cut, Mask, Room, bits, cheapest_set, mask_of
+from codesign.certificate_shared import Cut, Mask, bits, mask_of
+from codesign.certificate_shared_sets import Room, cheapest_set
 from codesign.program import Array
 from codesign.search import never
 from codesign.search.shared import REACHED, Judge, Reached
@@ -33,6 +35,20 @@ class Found:
     value: float
     recipes: dict[int, Reached] = field(repr=False)
 
+    def places(self, count: int) -> list[tuple[int, Mask]]:
+        """Rig and LEDs of each of ``count`` variants."""
+        return [(self.rig, self.leds)] * count
+
+
+class Placed(Protocol):
+    """What a search can find: for each variant a rig and LEDs."""
+
+    value: float
+
+    def places(self, count: int) -> list[tuple[int, Mask]]:
+        """Rig and LEDs of each of ``count`` variants."""
+        ...
+
 
 @dataclass(slots=True, eq=False)
 class Outcome:
@@ -41,7 +57,7 @@ class Outcome:
     For a price, what each rig costs at least.
     """
 
-    best: Found | None
+    best: Placed | None
     proven: Array
     stopped: bool
 

@@ -8,7 +8,7 @@ import numpy as np
 
 from codesign.assemble import Assembly
 from codesign.build import filter_prices, part_price
-from codesign.certificate_shared import Room
+from codesign.certificate_shared_sets import Room
 from codesign.problem import Problem
 
 

@@ -7,7 +7,7 @@ from collections.abc import Iterable
 import numpy as np
 
 from codesign.assemble import Assembly, flipped
-from codesign.certificate_shared import Mask
+from codesign.certificate_shared import Mask, masked
 from codesign.limits import Setting
 from codesign.problem import Problem
 from codesign.program import Array, Program, stack
@@ -155,6 +155,18 @@ class Variant:
             return open_, np.zeros((0, len(masks))), below
         found = [np.min([closed_bounds(program, masks) for program in programs], axis=0) for _, programs in parts]
         return np.concatenate([own for own, _ in parts]), np.concatenate(found), below
+
+    def closed_of_filters(self, rig: int, inside: Mask) -> Array:
+        """Closed-form bounds of the rigs that differ from one in the filter only, with the LEDs ``inside``. (F,)"""
+        found, first = np.zeros(self.walk.filters), rig - rig % self.walk.filters
+        for number in np.flatnonzero(self._settings[:, 0] == first):
+            setting = self.walk.assembly.settings[number]
+            both = [
+                both_bounds(masked(self.walk.assembly.program(setting, coarse=True, pair=pair), inside))
+                for pair in self.quick_pairs
+            ]
+            found = np.maximum(found, np.min(both, axis=0).max(axis=1))
+        return found
 
     def closed_of_rig(self, rig: int, masks: Mask, level: float) -> Array:
         """Closed-form bounds of a rig with each set of LEDs; others count as below the level. (M,)"""

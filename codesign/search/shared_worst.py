@@ -11,7 +11,7 @@ from collections.abc import Callable
 
 import numpy as np
 
-from codesign.certificate_shared import cheapest_set
+from codesign.certificate_shared_sets import cheapest_set
 from codesign.program import Array
 from codesign.search.shared_rig import Found, Hunt, Outcome
 

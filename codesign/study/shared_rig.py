@@ -9,180 +9,30 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, field
-from typing import Literal
 
 import numpy as np
 
 from codesign.assemble_conflicts import no_step_fits
-from codesign.certificate_shared import Cut
-from codesign.design import Performance, evaluate
+from codesign.design import evaluate
 from codesign.errors import ProblemError
 from codesign.problem import Problem
 from codesign.program import Array
 from codesign.recipe import settable
 from codesign.search.shared import REACHED
 from codesign.search.shared_goals import least_price, most_variants
-from codesign.search.shared_rig import Hunt, Outcome
+from codesign.search.shared_rig import Hunt, Outcome, Placed
 from codesign.search.shared_worst import best_worst
 from codesign.solve_rounds import Clock
 from codesign.study.common import Resolved, resolve
+from codesign.study.shared_rig_helps import helpful_changes
 from codesign.study.shared_rig_parts import common_problems
-from codesign.study.shared_rig_rounds import Settled, Start, named, settled_search
+from codesign.study.shared_rig_result import GOALS, Goal, Help, SharedProof, SharedRig, VariantOutcome, relative_gap
+from codesign.study.shared_rig_rounds import Search, Settled, named, settled_search
 
-Goal = Literal["worst", "count", "cost"]
-GOALS: tuple[Goal, ...] = ("worst", "count", "cost")
 #: Default gap. [1]
 DEFAULT_GAP = 0.02
 #: Gap of the first round, which only has to find the junction temperatures.
 SCOUT_GAP = 0.05
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class VariantOutcome:
-    """What one variant gets from the rig in common.
-
-    Attributes
-    ----------
-    name : str
-    problem : Problem
-        The variant with the parts of the rig alone.
-    optimum : Performance or None
-        Best settings before rounding; None where the rig shows nothing of this variant.
-    recipe : Performance or None
-        The same in whole setting steps, at the junction temperatures it leads to: what to dial in.
-    own_cnr : float
-        CNR of the variant's own best rig, NaN where unknown.
-    required_cnr : float or None
-    """
-
-    name: str
-    problem: Problem = field(repr=False)
-    optimum: Performance | None = field(repr=False)
-    recipe: Performance | None = field(repr=False)
-    own_cnr: float
-    required_cnr: float | None
-
-    @property
-    def cnr(self) -> float:
-        """CNR of the recipe, 0 where there is none."""
-        return 0.0 if self.recipe is None else self.recipe.cnr
-
-    @property
-    def regret(self) -> float:
-        """Share of the CNR of its own best rig that the variant gives up, at least 0; NaN where that is unknown."""
-        if np.isnan(self.own_cnr):
-            return float("nan")
-        best = 0.0 if self.optimum is None else self.optimum.cnr
-        return max(1 - best / self.own_cnr, 0.0) if self.own_cnr > 0 else 0.0
-
-    @property
-    def met(self) -> bool | None:
-        """Whether the optimum has the CNR required; None where none is."""
-        if self.required_cnr is None:
-            return None
-        return self.optimum is not None and self.optimum.cnr >= self.required_cnr * (1 - 2 * REACHED)
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class SharedProof:
-    """What `verify_shared` re-derives the bound from.
-
-    Attributes
-    ----------
-    problems : mapping
-        Variants with the parts in common and the build limits of the rig.
-    junction_c : mapping
-        Junction temperatures of each variant at which the proof holds. (L,) [deg C]
-    levels : (V,) array
-        CNR that each variant needs, for the goals that ask for one.
-    order : tuple of int
-        Variants in the order in which they close most rigs.
-    cuts : mapping
-        By rig number, cuts with the position of their variant.
-    proven : (C,) array
-        What no rig exceeds (or, for a price, goes below).
-    """
-
-    problems: Mapping[str, Problem]
-    junction_c: Mapping[str, Array]
-    levels: Array
-    order: tuple[int, ...]
-    cuts: Mapping[int, tuple[tuple[int, Cut], ...]]
-    proven: Array
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Help:
-    """A change to the rig in common: how many variants gain more than 1 %, and the worst CNR then. (`worst_gain`: 1)"""
-
-    change: str
-    helped: int
-    worst_cnr: float
-    worst_gain: float
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class SharedRig:
-    """The rig in common, what each variant gets from it, and how sure that is.
-
-    Attributes
-    ----------
-    camera, filter : str
-    f_number : float
-    leds : tuple of str
-        LED channels to build in.
-    goal : {"worst", "count", "cost"}
-    value, bound : float
-        Of the goal: worst CNR and what no rig exceeds; number of variants served and what no rig exceeds; price and
-        what every rig that serves all costs at least.
-    status : str
-        "proven", or "stopped" when time ran out before the gap asked for was reached.
-    outcomes : mapping
-        By variant.
-    limiting : str
-        Variant with the lowest CNR, or with the lowest share of what it needs.
-    helps : tuple of Help
-        Changes that would help, those that help most variants first.
-    seconds : float
-    residual_k : float
-        Largest difference between a junction temperature assumed and reached. [K]
-    left_out : tuple of str
-        Parts that not all variants have, and which are therefore no choice.
-    evidence : SharedProof
-    """
-
-    camera: str
-    filter: str
-    f_number: float
-    leds: tuple[str, ...]
-    goal: Goal
-    value: float
-    bound: float
-    status: str
-    outcomes: Mapping[str, VariantOutcome]
-    limiting: str
-    helps: tuple[Help, ...] = ()
-    seconds: float = 0.0
-    residual_k: float = 0.0
-    left_out: tuple[str, ...] = ()
-    evidence: SharedProof = field(repr=False)
-
-    @property
-    def gap(self) -> float:
-        """Relative distance between value and bound."""
-        low, high = sorted((self.value, self.bound))
-        return high / low - 1 if low > 0 else (0.0 if high <= 0 else np.inf)
-
-    @property
-    def worst_cnr(self) -> float:
-        """Least CNR of any variant's recipe."""
-        return min(outcome.cnr for outcome in self.outcomes.values())
-
-    @property
-    def served(self) -> int:
-        """Number of variants whose optimum has the CNR they require."""
-        return sum(bool(outcome.met) for outcome in self.outcomes.values())
 
 
 def shared_rig(
@@ -195,6 +45,7 @@ def shared_rig(
     time_limit: float | None = None,
     progress: Callable[[float, float], None] | None = None,
     own: Mapping[str, float] | None = None,
+    helps: bool = True,
 ) -> SharedRig:
     """Find the best rig that all variants have in common, with proof.
 
@@ -220,6 +71,9 @@ def shared_rig(
         Called with (value so far, bound so far).
     own : mapping, optional
         CNR of each variant's own best rig, for the regret; worked out by default, which takes a solve each.
+
+    helps : bool
+        Whether to look for changes that help most variants.
 
     Returns
     -------
@@ -257,7 +111,9 @@ def shared_rig(
             problems, _search(goal, levels, gap, progress), clock, None if goal == "worst" else levels
         )
         own = own_cnrs(variants) if own is None else own
-        return _result(settled, problems, goal, required, levels, gap, own, left_out, started)
+        best = settled.outcome.best.places(1)[0]
+        told = helpful_changes(settled.hunt, *best, problems, settled.resolved, clock) if helps else ()
+        return _result(settled, problems, goal, required, levels, gap, own, left_out, told, started)
 
 
 def _levels(required: Mapping[str, float | None], goal: Goal) -> Array:
@@ -272,9 +128,10 @@ def _levels(required: Mapping[str, float | None], goal: Goal) -> Array:
     return np.array(list(required.values()), dtype=float)
 
 
-def _search(goal: Goal, levels: Array, gap: float, progress) -> Callable[[Hunt, Start, bool], Outcome]:
-    def search(hunt: Hunt, start: Start, scout: bool) -> Outcome:
+def _search(goal: Goal, levels: Array, gap: float, progress) -> Search:
+    def search(hunt: Hunt, best: Placed | None, scout: bool) -> Outcome:
         wanted = max(gap, SCOUT_GAP) if scout else gap
+        start = None if best is None else best.places(1)[0]
         if goal == "worst":
             return best_worst(hunt, wanted, start, progress)
         if goal == "count":
@@ -298,6 +155,7 @@ def _result(
     gap: float,
     own: Mapping[str, float],
     left_out: tuple[str, ...],
+    helps: tuple[Help, ...],
     started: float,
 ) -> SharedRig:
     hunt, best = settled.hunt, settled.outcome.best
@@ -308,8 +166,8 @@ def _result(
     }
     value = _value(goal, settled, outcomes, best.value)
     bound = _bound(goal, settled, value)
-    share = {name: outcome.cnr / (required[name] if goal != "worst" else 1.0) for name, outcome in outcomes.items()}
-    found = SharedRig(
+    share = {name: _optimum(one) / (1.0 if goal == "worst" else required[name]) for name, one in outcomes.items()}
+    return SharedRig(
         camera=rig.camera,
         filter=rig.filter,
         f_number=rig.f_number,
@@ -317,15 +175,19 @@ def _result(
         goal=goal,
         value=value,
         bound=bound,
-        status="proven",
+        status="proven" if relative_gap(value, bound) <= (0.0 if goal == "count" else gap) * (1 + 1e-6) else "stopped",
         outcomes=outcomes,
         limiting=min(share, key=lambda name: share[name]),
+        helps=helps,
         seconds=time.perf_counter() - started,
         residual_k=_residual(settled),
         left_out=left_out,
         evidence=_evidence(settled, problems, levels),
     )
-    return found
+
+
+def _optimum(outcome: VariantOutcome) -> float:
+    return 0.0 if outcome.optimum is None else outcome.optimum.cnr
 
 
 def _outcome(name, problem: Problem, found: Resolved | None, own: float, required, goal: Goal) -> VariantOutcome:

@@ -14,11 +14,12 @@ import numpy as np
 
 from codesign.assemble_conflicts import nothing_seen, require_usable_leds
 from codesign.build import require_buildable
+from codesign.certificate_shared import Mask
 from codesign.errors import InfeasibleError
 from codesign.problem import Problem
 from codesign.program import Array
 from codesign.search.shared import Judge
-from codesign.search.shared_rig import Hunt, Outcome
+from codesign.search.shared_rig import Hunt, Outcome, Placed
 from codesign.search.shared_space import RigSpace
 from codesign.solve_rounds import JUNCTION_TOLERANCE_K, Clock
 from codesign.study.common import Resolved, resolve
@@ -29,8 +30,7 @@ LARGEST_NUMBER_OF_ROUNDS = 8
 #: Gap to which recipes on the rig found are proven.
 RECIPE_GAP = 1e-4
 
-Start = tuple[int, Array] | None
-Search = Callable[[Hunt, Start, bool], Outcome]
+Search = Callable[[Hunt, Placed | None, bool], Outcome]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -58,7 +58,7 @@ def settled_search(
     problems : mapping
         As `common_problems` returns them.
     search : callable
-        Outcome from (hunt, rig and LEDs to start from, whether it is only to find the temperatures).
+        Outcome from (hunt, what to start from, whether it is only to find the temperatures).
     clock : Clock
     levels : (V,) array, optional
         CNR that each variant needs, for messages; any at all by default.
@@ -82,15 +82,18 @@ def settled_search(
         hunt, outcome = new, found
         if outcome.best is None:
             raise unserved(hunt, np.full(len(problems), 1e-9) if levels is None else levels)
-        same = start is not None and start[0] == outcome.best.rig and (start[1] == outcome.best.leds).all()
-        if not (same and resolved):
-            resolved = {name: _on_best(hunt, outcome, name, p) for name, p in problems.items()}
-        settled = {name: _reached(junction[name], outcome.best.leds, one) for name, one in resolved.items()}
+        places = outcome.best.places(len(problems))
+        if not (resolved and start is not None and _same(places, start.places(len(problems)))):
+            resolved = {n: _on(hunt.space, place, p) for (n, p), place in zip(problems.items(), places, strict=True)}
+        settled = {
+            name: _reached(junction[name], place[1], one)
+            for (name, one), place in zip(resolved.items(), places, strict=True)
+        }
         residual = max(float(np.max(np.abs(settled[name] - junction[name]), initial=0.0)) for name in problems)
         stated = junction
         if (residual <= JUNCTION_TOLERANCE_K and attempt) or clock():
             break
-        start, junction = (outcome.best.rig, outcome.best.leds), settled
+        start, junction = outcome.best, settled
     return Settled(hunt, outcome, resolved, stated, attempt + 1, residual)
 
 
@@ -109,10 +112,14 @@ def named(name: str, error: InfeasibleError) -> InfeasibleError:
     return error if repr(name) in text else InfeasibleError(f"variant {name!r}: {text}", error.limits)
 
 
-def _on_best(hunt: Hunt, outcome: Outcome, name: str, problem: Problem) -> Resolved | None:
-    """Optimum of one variant on the best rig, at temperatures that agree with it."""
-    rig = hunt.space.rig(outcome.best.rig)
-    leds = [problem.channels[place].id for place in np.flatnonzero(outcome.best.leds)]
+def _same(some: list[tuple[int, Mask]], others: list[tuple[int, Mask]]) -> bool:
+    return all(a[0] == b[0] and (a[1] == b[1]).all() for a, b in zip(some, others, strict=True))
+
+
+def _on(space: RigSpace, place: tuple[int, Mask], problem: Problem) -> Resolved | None:
+    """Optimum of one variant on a rig with its LEDs, at temperatures that agree with it."""
+    rig = space.rig(place[0])
+    leds = [problem.channels[led].id for led in np.flatnonzero(place[1])]
     try:
         return resolve(on_rig(problem, rig.camera, rig.filter, rig.f_number, leds), gap=RECIPE_GAP)
     except InfeasibleError:

@@ -13,7 +13,8 @@ import numpy as np
 
 from codesign.assemble import flipped
 from codesign.certificate import bound
-from codesign.certificate_shared import EQUAL, Cut, Piece, bits, cheapest_set, masked, most_served, piece_bound
+from codesign.certificate_shared import Cut, Piece, bits, masked, piece_bound
+from codesign.certificate_shared_sets import EQUAL, cheapest_set, most_served
 from codesign.design import evaluate
 from codesign.errors import CertificateError
 from codesign.program import Array, Program

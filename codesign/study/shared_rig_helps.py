@@ -1,0 +1,171 @@
+"""Which change to a rig in common helps most variants: one more LED channel, a second filter, or one of the levers.
+
+Candidates for LED and filter are ranked by closed form; what is told is re-solved for every variant with proof.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from codesign.certificate_shared import Mask
+from codesign.errors import InfeasibleError
+from codesign.problem import Problem
+from codesign.program import Array
+from codesign.search import never
+from codesign.search.shared_rig import Hunt
+from codesign.study.common import Resolved, resolve
+from codesign.study.levers import Lever, applicable
+from codesign.study.shared_rig_parts import on_rig
+from codesign.study.shared_rig_result import Help
+
+#: Step of a lever: this much more (or less, where less is better), whole numbers by one at least. [1]
+STEP = 1.25
+#: Gain from which a variant counts as helped, and least gain of the worst CNR that is worth telling. [1]
+HELPED, WORTH_TELLING = 0.01, 1e-3
+#: LEDs and filters of the best closed-form estimates that are worked out.
+TRIED = 2
+#: Gap to which each change is proven.
+GAP = 1e-3
+#: Levers that would change what the rig has in common in another way for each variant.
+NOT_IN_COMMON = ("f-number",)
+
+Change = tuple[str, Callable[[str, Problem], Problem]]
+
+
+def helpful_changes(
+    hunt: Hunt,
+    rig: int,
+    leds: Mask,
+    problems: Mapping[str, Problem],
+    resolved: Mapping[str, Resolved | None],
+    stop: Callable[[], bool] = never,
+) -> tuple[Help, ...]:
+    """Changes that help some variants, those that help most of them first, then by the gain of the worst CNR.
+
+    Parameters
+    ----------
+    hunt : Hunt
+        At the junction temperatures of the rig found.
+    rig : int
+        Its number.
+    leds : (L,) bool array
+    problems : mapping
+        Variants with all parts in common.
+    resolved : mapping
+        Optimum of each variant on the rig.
+    stop : callable
+        Asked between changes.
+    """
+    found = []
+    for name, change in _changes(hunt, rig, leds, problems, resolved):
+        if stop():
+            break
+        told = _worked_out(name, change, problems, resolved)
+        if told is not None:
+            found.append(told)
+    return tuple(sorted(found, key=lambda one: (-one.helped, -one.worst_gain)))
+
+
+def _changes(
+    hunt: Hunt, rig: int, leds: Mask, problems: Mapping[str, Problem], resolved: Mapping[str, Resolved | None]
+) -> Iterator[Change]:
+    """Names of changes and what they make of a variant's problem on the rig; by name and problem."""
+    now = np.array([0.0 if one is None else one.cnr for one in resolved.values()])
+    parts, ids = hunt.space.rig(rig), [channel.id for channel in hunt.space.problem.channels]
+    own = [ids[place] for place in np.flatnonzero(leds)]
+    for led in _promising(_with_led(hunt, rig, leds), now, np.flatnonzero(~leds)):
+
+        def more(name: str, problem: Problem, led: str = ids[led]) -> Problem:
+            return on_rig(problems[name], parts.camera, parts.filter, parts.f_number, [*own, led])
+
+        yield f"one more LED channel, {ids[led]}", more
+    others = np.array([place for place, part in enumerate(hunt.space.problem.filters) if part.id != parts.filter])
+    for place in _promising(_with_filter(hunt, rig, leds), now, others):
+
+        def wheel(name: str, problem: Problem, place: int = int(place)) -> Problem:
+            other = hunt.space.problem.filters[place].id
+            second = on_rig(problems[name], parts.camera, other, parts.f_number, own)
+            return replace(problem, filters=(*problem.filters, *second.filters))
+
+        yield f"a second filter to change to, {hunt.space.problem.filters[place].id}", wheel
+    for lever in _levers(problems):
+        yield _step_of(lever, next(iter(problems.values())))
+
+
+def _with_led(hunt: Hunt, rig: int, leds: Mask) -> Array:
+    """Closed-form CNR of every variant with each LED besides. (V, L)"""
+    masks = leds | np.eye(leds.size, dtype=bool)
+    one = np.arange(len(hunt.space)) == rig
+    found = []
+    for variant in hunt.variants:
+        variant.look(one)
+        found.append(variant.closed_of_rig(rig, masks, 0.0))
+    return np.array(found)
+
+
+def _with_filter(hunt: Hunt, rig: int, leds: Mask) -> Array:
+    """Closed-form CNR of every variant with each filter instead. (V, F)"""
+    return np.array([variant.closed_of_filters(rig, leds) for variant in hunt.variants])
+
+
+def _promising(estimate: Array, now: Array, choices: np.ndarray) -> list[int]:
+    """The choices that raise the worst CNR most and those that help most variants, by estimates (V, N)."""
+    if not choices.size:
+        return []
+    best = np.maximum(estimate[:, choices], now[:, None])
+    worst = best.min(axis=0)
+    helped = (best > now[:, None] * (1 + HELPED)).sum(axis=0)
+    by_worst, by_count = np.lexsort((-helped, -worst)), np.lexsort((-worst, -helped))
+    picked = dict.fromkeys(int(k) for pair in zip(by_worst, by_count, strict=True) for k in pair)
+    useful = [k for k in picked if helped[k] or worst[k] > now.min() * (1 + WORTH_TELLING)]
+    return [int(choices[k]) for k in useful[:TRIED]]
+
+
+def _levers(problems: Mapping[str, Problem]) -> Sequence[Lever]:
+    """Levers that every variant has."""
+    sets = [applicable(problem)[0] for problem in problems.values()]
+    names = set.intersection(*({lever.name for lever in levers} for levers in sets)) - set(NOT_IN_COMMON)
+    return [lever for lever in sets[0] if lever.name in names]
+
+
+def _step_of(lever: Lever, problem: Problem) -> Change:
+    """A lever pulled by a modest step, and how that is told."""
+    factor = STEP
+    if lever.whole is not None:
+        factor = max(STEP, (lever.whole(problem) + 1) / lever.whole(problem))
+    elif lever.name == "emitters":
+        fewest = min(channel.emitters for channel in problem.channels)
+        factor = max(STEP, (fewest + 1) / fewest)
+
+    def change(name: str, own: Problem) -> Problem:
+        return lever.change(own, min(factor, lever.most(own)))
+
+    return f"{lever.name}, better by {factor - 1:.0%}", change
+
+
+def _worked_out(
+    name: str,
+    change: Callable[[str, Problem], Problem],
+    problems: Mapping[str, Problem],
+    resolved: Mapping[str, Resolved | None],
+) -> Help | None:
+    """Re-solve every variant on the changed rig; None where that helps nobody."""
+    before, after = [], []
+    for variant, old in resolved.items():
+        before.append(0.0 if old is None else old.cnr)
+        if old is None:
+            after.append(0.0)
+            continue
+        try:
+            after.append(resolve(change(variant, old.problem), old, gap=GAP).cnr)
+        except InfeasibleError:
+            after.append(0.0)
+    helped = int(sum(new > old * (1 + HELPED) for old, new in zip(before, after, strict=True)))
+    worst, now = min(after), min(before)
+    gain = worst / now - 1 if now > 0 else (np.inf if worst > 0 else 0.0)
+    if not helped and gain <= WORTH_TELLING:
+        return None
+    return Help(change=name, helped=helped, worst_cnr=worst, worst_gain=float(gain))
