@@ -1,24 +1,27 @@
 """Several readings of one decision combined by linear weights: weighted programs, and a bound over all weights.
 
 Readings m (channels of one exposure, or shots in turn) have signals ``d_m·y``, independent variances
-``V_m(y) = c_m + s_m·y + |P_m y|²`` and surface clutter ``C_m y`` in common: the same samples. With weights w
+``V_m(y) = c_m + s_m·y + |P_m y|²`` and noise in common of amplitudes ``C_m y`` and ``o_m ≥ 0``: the same samples of the
+surface, and between shots the same pixels with their fixed pattern (PRNU as rows of C, DSNU as o). With weights w
 
-    CNR_w = Σ w_m d_m·y / σ_w,   σ_w² = Σ w_m² V_m + |Σ w_m C_m y|²,
+    CNR_w = Σ w_m d_m·y / σ_w,   σ_w² = Σ w_m² V_m + |Σ w_m C_m y|² + (Σ w_m o_m)²,
 
 which for fixed w is an ordinary program. The best weights at a fixed recipe are Hotelling's.
 
 Bound over all weights. σ is a norm in w. A box of weights is the hull of its corners w^i, so ``w = Σ θ_i w^i`` (each
 component drawn on its own from its two ends), and if no recipe exceeds Γ at any corner,
 ``Σ w_m d_m·y ≤ Γ Σ θ_i σ(w^i) ≤ Γ √(Σ θ_i σ(w^i)²)``. The last sum exceeds ``σ_w²`` by the spread of the corners,
-``Σ_m var_m (V_m + |C_m y|²) ≤ Σ_m var_m (1+Λ_m) V_m`` with Λ_m a bound on clutter over independent variance. For an
-interval ``[a, b]`` of one sign ``var_m ≤ w_m² (b−a)²/(4ab)``; else ``var_m V_m ≤ ρ_m V_face (b−a)²/4`` with ρ_m a
-bound on ``V_m/V_face``, where the face's own weight is 1. So no weights of the box reach more than κ Γ with
+``Σ_m var_m (V_m + |C_m y|² + o_m²) ≤ Σ_m var_m (1+Λ_m) V_m`` with Λ_m a bound on the variance in common over that of
+its own, for reading m alone: components are drawn on their own, so products of two have no spread. For an interval
+``[a, b]`` of one sign ``var_m ≤ w_m² (b−a)²/(4ab)``; else ``var_m V_m ≤ ρ_m V_face (b−a)²/4`` with ρ_m a bound on
+``V_m/V_face``, where the face's own weight is 1. So no weights of the box reach more than κ Γ with
 
     κ² = 1 + max over the one-sign intervals of (1+Λ_m) (b−a)²/(4ab) + Σ over the others of (1+Λ_m) ρ_m (b−a)²/4.
 
 Shots have columns of their own, which gives a bound without κ. In a box of one sign ``y'_m = |w_m|/high_m · y_m`` only
-takes light away, so it is feasible; signal, PRNU and clutter of ``(w, y)`` are those of ``(high, y')``, shot noise is
-at least ``low_m high_m s_m·y'_m``, the floor at least ``low_m² c_m`` (sizes). One such program bounds the whole box.
+takes light away, so it is feasible; signal and all rows of P and C at ``(w, y)`` are those at ``(high, y')``, for
+``w_m y_m = high_m y'_m`` with its sign. Shot noise is at least ``low_m high_m s_m·y'_m``, the floor at least
+``low_m² c_m`` (sizes) and the least square of ``Σ w_m o_m`` over the box. One such program bounds the whole box.
 
 No solver is imported here.
 """
@@ -40,15 +43,18 @@ from codesign.program import Array, Program
 class Readings:
     """M readings under common limits: ``limits`` lends columns, rows and exposure; its signal and noise are not used.
 
-    ``signal``, ``shot`` (M, n+1), ``pattern`` (M, p, n+1) PRNU rows, ``clutter`` (M, r, n+1), ``floor`` (M,).
+    ``signal``, ``shot`` (M, n+1), ``floor`` (M,) and ``pattern`` (M, p, n+1), rows of noise of each reading's own (PRNU
+    where pixels differ); ``common`` (M, r, n+1), rows that all readings share, and ``offset`` (M,), what they share
+    without light, as standard deviation. [e⁻], variances [e⁻²]
     """
 
     limits: Program
     signal: Array
     shot: Array
     pattern: Array
-    clutter: Array
+    common: Array
     floor: Array
+    offset: Array
 
     @property
     def count(self) -> int:
@@ -59,18 +65,18 @@ class Readings:
         """The program of fixed weights (M,)."""
         w = np.asarray(weights, dtype=float)
         rows = (w[:, None, None] * self.pattern).reshape(-1, self.signal.shape[1])
-        common = np.einsum("m,mrn->rn", w, self.clutter)
+        common = np.einsum("m,mrn->rn", w, self.common)
         return replace(
             self.limits,
             signal=(w @ self.signal)[None],
             shot=(w**2 @ self.shot)[None],
             noise_rows=np.concatenate([rows, common])[None],
-            floor=np.array([w**2 @ self.floor]),
+            floor=np.array([w**2 @ self.floor + (w @ self.offset) ** 2]),
         )
 
     def separate(self) -> bool:
         """Whether each column serves one reading only, none the common time, and less light breaks no limit."""
-        parts = [self.signal[:, None], self.shot[:, None], self.pattern, self.clutter]
+        parts = [self.signal[:, None], self.shot[:, None], self.pattern, self.common]
         used = np.any([np.any(part != 0, axis=1) for part in parts], axis=0)
         fixed = self.limits.time_low[0] == self.limits.time_high[0]
         alone = (used.sum(axis=0) <= 1).all() and not used[:, -1].any()
@@ -82,13 +88,15 @@ class Readings:
         near = np.minimum(np.abs(low), np.abs(high))
         program = self.weighted(far)
         shot = (near * np.abs(far)) @ self.shot
-        return replace(program, shot=shot[None], floor=np.array([near**2 @ self.floor]))
+        # Σ w o lies between low·o and high·o; where both have one sign, the smaller size is its least.
+        common = max(low @ self.offset, -(high @ self.offset), 0.0)
+        return replace(program, shot=shot[None], floor=np.array([near**2 @ self.floor + common**2]))
 
     def moments(self, y: Array) -> tuple[Array, Array]:
         """Difference of means (M,) and mean covariance (M, M) at a recipe ``y`` (n+1,). [e⁻], [e⁻²]"""
-        pattern, clutter = self.pattern @ y, self.clutter @ y
+        pattern, common = self.pattern @ y, np.column_stack([self.common @ y, self.offset])
         own = self.floor + self.shot @ y + np.einsum("mp,mp->m", pattern, pattern)
-        return self.signal @ y, np.diag(own) + clutter @ clutter.T
+        return self.signal @ y, np.diag(own) + common @ common.T
 
 
 def shot_tops(readings: Readings) -> Array:
@@ -110,7 +118,7 @@ def shot_tops(readings: Readings) -> Array:
 class Spread:
     """What bounds the spread of noise over a box of weights: Λ (M,), and ρ (face, reading)."""
 
-    clutter: Array
+    common: Array
     ratio: Array
 
 
@@ -121,12 +129,16 @@ def _steepest(values: Array, base: Array) -> float:
 
 
 def spread(readings: Readings) -> Spread:
-    """Work out Λ and ρ of some readings, from ``|C_m y| ≤ steepness·s_m·y`` and ``s_m·y ≤`` its top."""
+    """Work out Λ and ρ of some readings, from ``|C_m y| ≤ steepness·s_m·y`` and ``s_m·y ≤`` its top.
+
+    ``(steepness² x² + o²)/(c + x)`` is convex in the shot noise x, so it is largest at one end: none, or the top.
+    """
     tops, floor, count = shot_tops(readings), readings.floor, readings.count
-    clutter, pattern = (np.sqrt(np.einsum("mrn,mrn->mn", x, x)) for x in (readings.clutter, readings.pattern))
-    share = np.array([_steepest(clutter[m], readings.shot[m]) for m in range(count)])
+    common, pattern = (np.sqrt(np.einsum("mrn,mrn->mn", x, x)) for x in (readings.common, readings.pattern))
+    steep, dark = np.array([_steepest(common[m], readings.shot[m]) for m in range(count)]), readings.offset**2
     with np.errstate(invalid="ignore"):
-        share = np.where(share > 0, share**2 * tops**2 / (floor + tops), 0.0)
+        at_top = (np.where(steep > 0, steep**2 * tops**2, 0.0) + dark) / (floor + tops)
+    share = np.maximum(dark / floor, at_top)
     # PRNU adds at most this factor to shot noise: |P y|² ≤ steepness²·top·(s·y).
     factor = np.array([1 + _steepest(pattern[m], readings.shot[m]) ** 2 * tops[m] for m in range(count)])
     most = (floor + factor * tops)[None, :] / floor[:, None]
@@ -159,7 +171,7 @@ def intervals(box: Box, spread_: Spread) -> tuple[Array, Array]:
         relative = np.where(low * high > 0, (high - low) ** 2 / (4 * low * high), np.inf)
     absolute = spread_.ratio[box.face] * (high - low) ** 2 / 4
     one_sign = relative <= absolute
-    found = np.where(one_sign, relative, absolute) * (1 + spread_.clutter)
+    found = np.where(one_sign, relative, absolute) * (1 + spread_.common)
     found[high == low] = 0.0
     return found, one_sign
 

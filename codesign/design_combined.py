@@ -1,4 +1,11 @@
-"""The forward model of several readings combined by linear weights: channels of one exposure, or shots of one frame."""
+"""The forward model of several readings combined by linear weights: channels of one exposure, or shots of one frame.
+
+Readings have noise of their own, and noise in common, which adds up with the weights before it is squared: the sample
+of the surface and, between shots, the fixed pattern. The spatial nonuniformity of EMVA Standard 1288 is what stays when
+temporal noise is averaged out, so a pixel has the same response and dark offset in every shot; weights of opposite sign
+take it out. Channels of a colour camera have pixels of their own. Two things are assumed: a spot falls on the same
+pixels in all shots, and a pixel's response strays by the same share at all wavelengths.
+"""
 
 from __future__ import annotations
 
@@ -67,7 +74,9 @@ def evaluate_combined(
         for found in (reading(problem, setting, i, item.light.electrons[i]) for i in range(len(problem.surfaces)))
     )
     w = np.array(list(weights.values()))
-    noise = {term.name: _combined_noise(problem, setting, term, readings, w) for term in NOISE_TERMS}
+    noise = {
+        term.name: _combined_noise(problem, setting, term, readings, w, bool(design.shots)) for term in NOISE_TERMS
+    }
     difference = float(w @ _differences(readings))
     variance = sum(sum(values) for values in noise.values()) / 2
     cnr = abs(difference) / np.sqrt(variance) if variance > 0 else 0.0
@@ -152,44 +161,46 @@ def _weights(problem: Problem, setting: Setting, design: Design, readings: Seque
             raise ProblemError(f"{design.where}: weights must be finite numbers and not all zero")
         found = found / np.linalg.norm(found)
     else:
-        found = hotelling(_differences(readings), _covariance(problem, setting, readings))[1]
+        found = hotelling(_differences(readings), _covariance(problem, setting, readings, bool(design.shots)))[1]
     largest = found[np.argmax(np.abs(found))] if found.any() else 1.0
     return dict(zip(names, (found * np.sign(largest)).tolist(), strict=True))
 
 
-def _covariance(problem: Problem, setting: Setting, readings: Sequence[_Reading]) -> Array:
+def _covariance(problem: Problem, setting: Setting, readings: Sequence[_Reading], same_pixels: bool) -> Array:
     """Mean of the covariances of target and background over the readings. (M, M) [e⁻²]"""
-    sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
     total = np.zeros((len(readings), len(readings)))
-    for surface in (0, 1):
-        for term in NOISE_TERMS:
-            spread = np.stack([item.light.clutter[surface] for item in readings])
-            own = [_independent(term, sensor, item, surface, averaging) for item in readings]
-            total += np.diag(own)
-            if term.clutter:
-                total += spread @ spread.T / term.divisor(averaging)
+    for term in NOISE_TERMS:
+        for surface in (0, 1):
+            root = _root(problem, setting, term, readings, surface, same_pixels)
+            total += root @ root.T
     return total / 2
 
 
-def _independent(term: NoiseTerm, sensor: Sensor, item: _Reading, surface: int, averaging) -> float:
-    """Variance of one term that a reading does not share with the others. [e⁻²]"""
-    return float(term.variance(sensor, item.light.electrons[surface], np.zeros(0), averaging))
-
-
 def _combined_noise(
-    problem: Problem, setting: Setting, term: NoiseTerm, readings: Sequence[_Reading], w: Array
+    problem: Problem, setting: Setting, term: NoiseTerm, readings: Sequence[_Reading], w: Array, same_pixels: bool
 ) -> tuple[float, float]:
     """Variance of the weighted sum by one term, at target and background. [e⁻²]"""
+    target, background = (w @ _root(problem, setting, term, readings, surface, same_pixels) for surface in (0, 1))
+    return float(target @ target), float(background @ background)
+
+
+def _root(
+    problem: Problem,
+    setting: Setting,
+    term: NoiseTerm,
+    readings: Sequence[_Reading],
+    surface: int,
+    same_pixels: bool,
+) -> Array:
+    """Readings by independent causes of one term, standard deviations: times its transpose it is the covariance. [e⁻]
+
+    Shape (M, causes); each reading has a cause of its own where the term does not last.
+    """
     sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
-    found = []
-    for surface in (0, 1):
-        own = [_independent(term, sensor, item, surface, averaging) for item in readings]
-        variance = float(w**2 @ own)
-        if term.clutter:
-            common = sum(v * item.light.clutter[surface] for v, item in zip(w, readings, strict=True))
-            variance += float(common @ common) / term.divisor(averaging)
-        found.append(float(variance))
-    return found[0], found[1]
+    seen = [(item.light.electrons[surface], item.light.clutter[surface]) for item in readings]
+    if term.lasting(same_pixels):
+        return np.stack([term.amplitudes(sensor, *light, averaging) for light in seen])
+    return np.diag(np.sqrt([term.variance(sensor, *light, averaging) for light in seen]))
 
 
 def _limits(

@@ -1,8 +1,9 @@
 """Pictures as the camera would take them: random light, a noisy camera, whole grey values, pieces that differ.
 
 After the camera model of EMVA Standard 1288. Photons and dark electrons arrive by chance (Poisson); the gain of each
-pixel and its dark offset stray and stay over the frames that are averaged; the well and the grey scale end. Each piece
-looked at has its own reflectance curve, drawn from the spread of the measured samples.
+pixel and its dark offset stray and stay, over the frames that are averaged and over the shots that are combined, while
+colour channels have pixels of their own; the well and the grey scale end. Each piece looked at has its own reflectance
+curve, drawn from the spread of the measured samples.
 """
 
 from __future__ import annotations
@@ -24,6 +25,16 @@ Array = NDArray[np.float64]
 
 #: Raw pixels drawn one by one at most; beyond, the pixels a decision averages are drawn as a sum.
 MOST_PIXELS = 3_000_000
+
+
+@dataclass(frozen=True, slots=True)
+class Pattern:
+    """How the response and the dark offset of pixels stray, in standard deviations; of sums of pixels where those are
+    drawn as a sum. Both shaped like the cells, with an axis of pixels behind where each is drawn. [1]
+    """
+
+    response: Array
+    offset: Array
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -82,7 +93,7 @@ def simulate(problem: Problem, performance: Performance, coverage: Array, rng: n
     taken, lights = zip(*_lights(problem, performance), strict=True)
     # One draw per piece and direction of clutter, the same in all readings: it is the piece that differs.
     deviates = [rng.standard_normal((len(coverage), lights[0].clutter[index].size)) for index in pair]
-    total = np.zeros(coverage.shape)
+    total, pattern = np.zeros(coverage.shape), None
     for exposure, light in zip(taken, lights, strict=True):
         sides = [
             light.electrons[index, :2].sum() + own @ light.clutter[index]
@@ -91,12 +102,31 @@ def simulate(problem: Problem, performance: Performance, coverage: Array, rng: n
         target, background = (side.reshape(-1, *[1] * (coverage.ndim - 1)) for side in sides)
         photo = np.maximum(coverage * target + (1 - coverage) * background, 0.0)
         one = replace(setting, channel=exposure.channel)
-        total += exposure.weight * camera_reading(one, averaging, photo, float(light.electrons[pair[0], 2]), rng)
+        if pattern is None or not performance.design.shots:
+            pattern = drawn_pattern(averaging, coverage.shape, rng)
+        dark = float(light.electrons[pair[0], 2])
+        total += exposure.weight * camera_reading(one, averaging, photo, dark, rng, pattern)
     return total
 
 
+def drawn_pattern(averaging: Averaging, cells: tuple[int, ...], rng: np.random.Generator) -> Pattern:
+    """Draw the fixed pattern of the pixels behind some cells."""
+    shape = (*cells, averaging.pixels) if _each_pixel(averaging, cells) else cells
+    return Pattern(rng.standard_normal(shape), rng.standard_normal(shape))
+
+
+def _each_pixel(averaging: Averaging, cells: tuple[int, ...]) -> bool:
+    """Whether pixels are drawn one by one."""
+    return int(np.prod(cells)) * averaging.pixels * averaging.frames <= MOST_PIXELS
+
+
 def camera_reading(
-    setting: Setting, averaging: Averaging, photo_e: Array, dark_e: float, rng: np.random.Generator
+    setting: Setting,
+    averaging: Averaging,
+    photo_e: Array,
+    dark_e: float,
+    rng: np.random.Generator,
+    pattern: Pattern | None = None,
 ) -> Array:
     """Draw grey values, averaged as the detection does and counted in electrons over the black level.
 
@@ -109,19 +139,21 @@ def camera_reading(
         Mean photo-electrons of each cell. [e⁻]
     dark_e : float
         Mean dark electrons. [e⁻]
+    rng : numpy.random.Generator
+    pattern : Pattern, optional
+        Fixed pattern of the pixels, by `drawn_pattern` for these cells; by default that of new ones.
     """
-    raw = photo_e.size * averaging.pixels * averaging.frames
-    draw = _pixel_by_pixel if raw <= MOST_PIXELS else _summed
-    return draw(setting, averaging, photo_e, dark_e, rng)
+    draw = _pixel_by_pixel if _each_pixel(averaging, photo_e.shape) else _summed
+    return draw(setting, averaging, photo_e, dark_e, rng, pattern or drawn_pattern(averaging, photo_e.shape, rng))
 
 
 def _pixel_by_pixel(
-    setting: Setting, averaging: Averaging, photo_e: Array, dark_e: float, rng: np.random.Generator
+    setting: Setting, averaging: Averaging, photo_e: Array, dark_e: float, rng: np.random.Generator, pattern: Pattern
 ) -> Array:
     camera, sensor = setting.camera, Sensor.of(setting.camera, setting.gain)
     shape = (*photo_e.shape, averaging.pixels)
-    lit = photo_e[..., None] * np.maximum(1 + sensor.prnu * rng.standard_normal(shape), 0.0)
-    offset = sensor.dsnu_e * rng.standard_normal(shape)
+    lit = photo_e[..., None] * np.maximum(1 + sensor.prnu * pattern.response, 0.0)
+    offset = sensor.dsnu_e * pattern.offset
     total = np.zeros(photo_e.shape)
     for _ in range(averaging.frames):
         charge = np.minimum(rng.poisson(lit) + rng.poisson(dark_e, shape), setting.gain.full_well_e)
@@ -131,7 +163,9 @@ def _pixel_by_pixel(
     return (total / averaging.frames - camera.black_level_dn) / sensor.conversion_gain_dn_per_e
 
 
-def _summed(setting: Setting, averaging: Averaging, photo_e: Array, dark_e: float, rng: np.random.Generator) -> Array:
+def _summed(
+    setting: Setting, averaging: Averaging, photo_e: Array, dark_e: float, rng: np.random.Generator, pattern: Pattern
+) -> Array:
     """The same where a decision averages so many pixels that drawing each would take long: their sums are drawn.
 
     Sums of Poisson numbers are Poisson numbers; rounding errors of many pixels add up like normal ones. Wells and the
@@ -143,13 +177,11 @@ def _summed(setting: Setting, averaging: Averaging, photo_e: Array, dark_e: floa
         averaging.pixels * averaging.frames,
     )
 
-    def deviates() -> Array:
-        return rng.standard_normal(photo_e.shape)
-
-    lit = np.maximum(photo_e * (pixels + sensor.prnu * np.sqrt(pixels) * deviates()), 0.0)
+    lit = np.maximum(photo_e * (pixels + sensor.prnu * np.sqrt(pixels) * pattern.response), 0.0)
     charge = rng.poisson(averaging.frames * (lit + pixels * dark_e)) / count
     temporal = sensor.read_noise_e**2 + quantization_variance_e2(sensor.conversion_gain_dn_per_e)
-    level = charge + sensor.dsnu_e * deviates() / np.sqrt(pixels) + np.sqrt(temporal / count) * deviates()
+    level = charge + sensor.dsnu_e * pattern.offset / np.sqrt(pixels)
+    level = level + np.sqrt(temporal / count) * rng.standard_normal(photo_e.shape)
     return np.minimum(level, saturation_electrons(setting.camera, setting.gain))
 
 

@@ -168,7 +168,7 @@ def spectra(problem: Problem, performance: Performance) -> Spectra:
         noise={},
         steady={},
     )
-    return _with_noise(problem, setting, found)
+    return _with_noise(problem, setting, found, bool(design.shots))
 
 
 def _reading(problem: Problem, setting: Setting, design: Design, taken: Exposure) -> ReadingSpectra:
@@ -192,13 +192,14 @@ def _reading(problem: Problem, setting: Setting, design: Design, taken: Exposure
     )
 
 
-def _with_noise(problem: Problem, setting: Setting, found: Spectra) -> Spectra:
-    """The same with the variance of every term by wavelength."""
+def _with_noise(problem: Problem, setting: Setting, found: Spectra, same_pixels: bool) -> Spectra:
+    """The same with the variance of every term by wavelength; shots of the same pixels share their fixed pattern."""
     sensor, averaging = Sensor.of(setting.camera, setting.gain), problem.spec.averaging
     noise, steady = {}, {}
     for term in NOISE_TERMS:
-        by_wavelength = np.stack([_variance(problem, found, term, sensor, index) for index in found.pair])
-        constant = sum(r.weight**2 * _constant(term, sensor, r) for r in found.readings)
+        lasting = term.lasting(same_pixels)
+        by_wavelength = np.stack([_variance(problem, found, term, sensor, index, lasting) for index in found.pair])
+        constant = _constant(term, sensor, found.readings, lasting)
         divisor = term.divisor(averaging)
         lit = term.linear[0] or term.linear[1] or term.relative(sensor) or term.clutter
         if lit:
@@ -208,20 +209,22 @@ def _with_noise(problem: Problem, setting: Setting, found: Spectra) -> Spectra:
     return replace(found, noise=noise, steady=steady)
 
 
-def _constant(term: NoiseTerm, sensor: Sensor, reading: ReadingSpectra) -> float:
-    """Variance of a term without light. [e⁻²]"""
-    return term.constant(sensor) + term.linear[2] * reading.dark_e
+def _constant(term: NoiseTerm, sensor: Sensor, readings: tuple[ReadingSpectra, ...], lasting: bool) -> float:
+    """Variance of a term without light, weighted over the readings, before averaging. [e⁻²]"""
+    if lasting:
+        return term.constant(sensor) * sum(r.weight for r in readings) ** 2
+    return sum(r.weight**2 * (term.constant(sensor) + term.linear[2] * r.dark_e) for r in readings)
 
 
-def _variance(problem: Problem, found: Spectra, term: NoiseTerm, sensor: Sensor, surface: int) -> Array:
-    """Variance of a term at a surface by wavelength, before averaging. (n,) [e⁻²/nm]"""
+def _variance(problem: Problem, found: Spectra, term: NoiseTerm, sensor: Sensor, surface: int, lasting: bool) -> Array:
+    """Variance of a term at a surface by wavelength, weighted over the readings, before averaging. (n,) [e⁻²/nm]"""
     total = np.zeros(found.wavelength_nm.size)
     for r in found.readings:
-        photo = r.led_e[surface] + r.ambient_e[surface]
-        own = term.linear[0] * r.led_e[surface] + term.linear[1] * r.ambient_e[surface]
+        total += r.weight**2 * (term.linear[0] * r.led_e[surface] + term.linear[1] * r.ambient_e[surface])
+    photo = [r.weight * (r.led_e[surface] + r.ambient_e[surface]) for r in found.readings]
+    for own in [sum(photo)] if lasting else photo:
         # A square of an integral, shared out in proportion to what each wavelength brings.
-        own += term.relative(sensor) ** 2 * found.integral(photo) * photo
-        total += r.weight**2 * own
+        total += term.relative(sensor) ** 2 * found.integral(own) * own
     if term.clutter:
         rows = reflectances(problem).rows_of[surface]
         amplitude = sum((r.weight * r.clutter_e[rows] for r in found.readings), np.zeros(1))

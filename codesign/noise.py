@@ -57,6 +57,7 @@ class NoiseTerm:
     name : str
     averages : {"samples", "pixels", "never"}
         What averaging divides it: pixels and frames, pixels only (fixed pattern), or nothing (the surface itself).
+        What is not divided by frames has no ``linear`` part: counting by chance is new in every frame.
     constant : function of Sensor
         Variance without light. [e⁻²]
     linear : (3,) tuple
@@ -78,13 +79,27 @@ class NoiseTerm:
         """What averaging divides the variance by."""
         return {"samples": averaging.pixels * averaging.frames, "pixels": averaging.pixels, "never": 1}[self.averages]
 
+    def lasting(self, same_pixels: bool) -> bool:
+        """Whether several readings of a decision have the noise in common, so that it adds up with their weights.
+
+        The surface lasts in any case. The fixed pattern of EMVA 1288 does not change with time: it lasts where
+        the same pixels take all readings (shots), not where each reading has pixels of its own (colour channels).
+        """
+        return self.clutter or (same_pixels and self.averages == "pixels")
+
+    def amplitudes(self, sensor: Sensor, electrons: Array, clutter: Array, averaging: Averaging) -> Array:
+        """Standard deviations of its independent causes: without light, per photo-electron, clutter. (2 + r,) [e⁻]
+
+        Of a lasting term the amplitudes of several readings add up, with their weights, before they are squared.
+        """
+        parts = (np.sqrt(self.constant(sensor)), self.relative(sensor) * (electrons[0] + electrons[1]))
+        return np.array([*parts, *(clutter if self.clutter else ())]) / np.sqrt(self.divisor(averaging))
+
     def variance(self, sensor: Sensor, electrons: Array, clutter: Array, averaging: Averaging) -> float:
         """Variance at a pixel holding ``electrons`` (3,) of `SIGNALS` and clutter amplitudes (r,). [e⁻²]"""
-        photo = electrons[0] + electrons[1]
-        total = self.constant(sensor) + float(np.dot(self.linear, electrons)) + (self.relative(sensor) * photo) ** 2
-        if self.clutter:
-            total += float(clutter @ clutter)
-        return total / self.divisor(averaging)
+        by_chance = float(np.dot(self.linear, electrons)) / self.divisor(averaging)
+        amplitudes = self.amplitudes(sensor, electrons, clutter, averaging)
+        return by_chance + float(amplitudes @ amplitudes)
 
 
 NOISE_TERMS: tuple[NoiseTerm, ...] = (

@@ -144,7 +144,7 @@ def check_combined_point(
 
 def bounds_again(walk: CombinedWalk, evidence: tuple) -> Array:
     """Bound of every configuration from its proof or, without one, from the closed form. (N,)"""
-    bounds = np.concatenate([walk.independent(setting) for setting in walk.assembly.settings])
+    bounds = np.concatenate([walk.first_bounds(setting) for setting in walk.assembly.settings])
     for item in evidence:
         shown = combined_bounds(walk.readings(item.index), item.proof, exchangeable=walk.shots > 1)
         bounds[item.index] = min(bounds[item.index], shown)

@@ -6,7 +6,7 @@ from demo_names import DEMOS
 from small_problems import small_design, small_problem
 
 from codesign import evaluate
-from codesign.design import setting_of
+from codesign.design import Shot, setting_of
 from codesign.design_simulation import MOST_PIXELS, camera_reading, expected, simulate
 from codesign.problem.schema import Averaging
 
@@ -23,13 +23,13 @@ def assert_moments_agree(values, mean, variance):
     assert abs(found - variance) <= STANDARD_ERRORS * np.sqrt((fourth - found**2) / values.size)
 
 
-def assert_simulation_agrees(problem, performance, seed):
+def assert_simulation_agrees(problem, performance, seed, pieces=PIECES):
     want = expected(problem, performance)
     assert abs(want.mean_e[0] - want.mean_e[1]) == pytest.approx(abs(performance.signal_e), rel=1e-9)
     assert abs(performance.signal_e) / want.noise_e == pytest.approx(performance.cnr, rel=1e-9)
     rng = np.random.default_rng(seed)
     for side, share in ((0, 1.0), (1, 0.0)):
-        values = simulate(problem, performance, np.full((PIECES, 1), share), rng)
+        values = simulate(problem, performance, np.full((pieces, 1), share), rng)
         assert_moments_agree(values, want.mean_e[side], want.deviation_e[side] ** 2)
 
 
@@ -47,6 +47,24 @@ def test_simulated_decisions_of_combined_channels_agree(tmp_path):
     problem = small_problem(tmp_path, {"camera.channels": channels, "detection.combine_channels": True})
     performance = evaluate(problem, small_design(channel="one+two", weights={"one": 1.0, "two": -0.4}))
     assert_simulation_agrees(problem, performance, 11)
+
+
+@pytest.mark.parametrize("weights", [(0.6, 0.8), (0.8, -0.6)])
+@pytest.mark.parametrize("pixels", [4, 400])
+def test_simulated_decisions_of_shots_share_the_fixed_pattern(tmp_path, weights, pixels):
+    """100,000 spots, drawn pixel by pixel or as sums; DSNU and PRNU are large enough to tell."""
+    changes = {
+        "lighting.mode": "strobe", "timing.frame_rate_hz": 10.0, "lighting.driver_max_ma": 200.0, "detection.shots": 2,
+        "camera.dsnu_e": 30.0, "camera.prnu_percent": 3.0, "averaging.pixels": pixels, "scene.guards": [],
+        "scene.target": "bright", "scene.background": "dim",
+    }  # fmt: skip
+    problem = small_problem(tmp_path, changes)
+    shots = (Shot(exposure_us=500.0, drive_ma={"red": 100.0}), Shot(exposure_us=900.0, drive_ma={"green": 150.0}))
+    named = {"shot 1": weights[0], "shot 2": weights[1]}
+    performance = evaluate(problem, small_design(drive_ma={}, exposure_us=1400.0, shots=shots, weights=named))
+    pattern = sum(max(performance.noise[name]) for name in ("dark fixed pattern", "photo-response fixed pattern"))
+    assert pattern > 0.02 * sum(max(pair) for pair in performance.noise.values())
+    assert_simulation_agrees(problem, performance, 13, pieces=100_000)
 
 
 def test_sums_of_many_pixels_agree_as_single_pixels_do(tmp_path):

@@ -128,7 +128,11 @@ def test_shots_share_heat_and_frame_time(shots):
 
 @pytest.mark.oracle
 def test_simulated_decisions_agree_with_the_forward_model(solution):
-    """Grey values of 100,000 spots, weighted: both readings of a spot see the same sample of the surface."""
+    """Grey values of 100,000 spots, weighted: both readings of a spot see the same sample of the surface.
+
+    Shots are taken by the same pixels, whose response and dark offset stay (EMVA 1288: spatial nonuniformity is what
+    is left when temporal noise is averaged out); channels have pixels of their own.
+    """
     problem, recipe = solution.problem, solution.recipe
     rng = np.random.default_rng(5)
     sides = [weighted_grey(problem, recipe, surface, rng) for surface in (problem.target, problem.background)]
@@ -145,15 +149,17 @@ def weighted_grey(problem, recipe, surface, rng):
     """Weighted sum of the grey values of all readings of `DECISIONS` spots. [DN]"""
     camera, design = problem.camera(recipe.design.camera), recipe.design
     gain = next(g for g in camera.gain_settings() if g.gain_db == design.gain_db)
-    total, deviates = np.zeros(DECISIONS), None
+    total, deviates, response = np.zeros(DECISIONS), None, None
     for part, weight in zip(parts(recipe), recipe.weights.values(), strict=True):
         light = light_on(SimpleNamespace(problem=problem, recipe=part), surface)
         if deviates is None:
             deviates = rng.standard_normal((DECISIONS, light.samples.size))
         spot = light.photo + deviates @ light.samples / np.sqrt(max(light.samples.size - 1, 1))
-        photo = spot * (1 + camera.prnu_percent / 100 * rng.standard_normal(DECISIONS))
+        if response is None or not design.shots:
+            response, offset = rng.standard_normal((2, DECISIONS))
+        photo = spot * (1 + camera.prnu_percent / 100 * response)
         electrons = rng.poisson(photo) + rng.poisson(light.dark, DECISIONS)
-        noise = gain.read_noise_e * rng.standard_normal(DECISIONS) + camera.dsnu_e * rng.standard_normal(DECISIONS)
+        noise = gain.read_noise_e * rng.standard_normal(DECISIONS) + camera.dsnu_e * offset
         grey = np.rint(camera.black_level_dn + gain.conversion_gain_dn_per_e * (electrons + noise))
         total += weight * np.clip(grey, 0, 2**camera.bits - 1)
     return total
@@ -288,9 +294,7 @@ def test_weights_of_an_unknown_reading_are_refused(channels):
 
 def test_recipe_with_shots_and_an_exposure_is_refused(shots, tmp_path):
     path = tmp_path / "recipe.toml"
-    path.write_text(
-        recipe_toml(shots.recipe.design).replace("[[shot]]", "[drive_ma]\n\n[[shot]]", 1), encoding="utf-8"
-    )
+    path.write_text(recipe_toml(shots.recipe.design).replace("[[shot]]", "[drive_ma]\n\n[[shot]]", 1), encoding="utf-8")
     with pytest.raises(ProblemError, match="do not go together"):
         load_recipe(path)
 

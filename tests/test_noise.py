@@ -116,6 +116,19 @@ def test_cnr_stops_growing_at_the_clutter(tmp_path):
 # --- the sum ---------------------------------------------------------------------------------------------------
 
 
+@pytest.mark.parametrize("same_pixels", [False, True])
+def test_what_lasts_between_readings_is_the_surface_and_the_pattern_of_the_same_pixels(same_pixels):
+    lasting = {term.name for term in NOISE_TERMS if term.lasting(same_pixels)}
+    pattern = {"dark fixed pattern", "photo-response fixed pattern"} if same_pixels else set()
+    assert lasting == {"surface clutter"} | pattern
+
+
+def test_terms_that_last_have_no_part_that_comes_by_chance():
+    """The search relies on it, and on all noise proportional to light being fixed pattern."""
+    assert all(not any(term.linear) for term in NOISE_TERMS if term.lasting(True))
+    assert all(term.averages == "pixels" for term in NOISE_TERMS if term.relative(SENSOR))
+
+
 @pytest.mark.property
 @pytest.mark.parametrize("seed", range(8))
 def test_summed_model_equals_the_sum_of_the_terms(seed):

@@ -253,7 +253,10 @@ class Detection(Record):
         default=False, description="whether all channels of a colour camera are read together, with the best weights"
     )
     shots: int = Field(
-        default=1, ge=1, le=3, description="exposures one after another in a frame, each with its own currents"
+        default=1,
+        ge=1,
+        le=3,
+        description="exposures one after another in a frame, each with its own currents; the same pixels",
     )
 
 

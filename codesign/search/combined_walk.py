@@ -1,8 +1,8 @@
 """Walk over all configurations whose readings are combined by weights: channels read together, or several shots.
 
-A first bound of every configuration leaves out the clutter that readings share, which makes them independent:
-``CNR² ≤ Σ_m CNR_m²``. The most promising ones are certified over all recipes and weights, best first, until the bound
-is within the gap or a number of them is done; the gap is then what it is.
+A first bound of every configuration comes in closed form (`codesign.search.combined_first`). The most promising ones
+are certified over all recipes and weights, best first, until the bound is within the gap or a number of them is done;
+the gap is then what it is.
 """
 
 from __future__ import annotations
@@ -18,9 +18,16 @@ from codesign.design import JOINT
 from codesign.limits import Setting
 from codesign.program import Array
 from codesign.search import never
-from codesign.search.bounds import both_bounds
 from codesign.search.combined import Combined, alternate, best_alternation, certify_combined
-from codesign.search.readings import channel_readings, frame_time, shot_readings, single
+from codesign.search.combined_first import first_bounds
+from codesign.search.readings import (
+    PATTERN_ROWS,
+    channel_readings,
+    frame_time,
+    noise_of_shots,
+    shot_readings,
+    single,
+)
 
 #: Configurations looked at to find the temperatures, and certified before an honest gap is reported.
 SCOUTED, MOST_CERTIFIED = 4, 20
@@ -66,7 +73,7 @@ class CombinedWalk:
     def __post_init__(self) -> None:
         self.upper = np.full(self.filters * len(self.assembly.settings), np.inf)
         if self.closed_form:
-            self.upper = np.concatenate([self.independent(setting) for setting in self.assembly.settings])
+            self.upper = np.concatenate([self.first_bounds(setting) for setting in self.assembly.settings])
 
     @classmethod
     def blank(cls, assembly: Assembly, gap: float) -> CombinedWalk:
@@ -88,19 +95,20 @@ class CombinedWalk:
         setting, filter_index = divmod(int(index), self.filters)
         return self.assembly.settings[setting], filter_index
 
-    def independent(self, setting: Setting) -> Array:
-        """Closed-form bounds of all filters of a setting, as if the readings shared no clutter. (F,)"""
-        names = setting.channel.split(JOINT)
-        total = np.zeros(self.filters)
+    def first_bounds(self, setting: Setting) -> Array:
+        """Closed-form bounds of all filters of a setting, over all weights. (F,)"""
+        if self.shots > 1 and not frame_time(self.assembly, setting, self.shots) > 0:
+            return np.zeros(self.filters)
+        names, found = setting.channel.split(JOINT), np.zeros(self.filters)
         for start in range(0, self.filters, FILTERS_TOGETHER):
             part = slice(start, min(start + FILTERS_TOGETHER, self.filters))
-            for name in names:
-                program = self.assembly.program(replace(setting, channel=name), part, coarse=True)
-                if len(names) * self.shots > 1:
-                    program = replace(program, noise_rows=program.noise_rows[:, :2])
-                total[part] += self.shots * both_bounds(program).max(axis=1) ** 2
-        fits = self.shots == 1 or frame_time(self.assembly, setting, self.shots) > 0
-        return np.sqrt(total) if fits else np.zeros(self.filters)
+            programs = [self.assembly.program(replace(setting, channel=name), part, coarse=True) for name in names]
+            if self.shots > 1:
+                new, _ = noise_of_shots(self.assembly, setting)
+                programs = [replace(p, floor=np.full(p.size, new.constant)) for p in programs]
+            own = 0 if self.shots > 1 else PATTERN_ROWS
+            found[part] = first_bounds(programs, own, self.shots)
+        return found
 
     def readings(self, index: int, exposures: Array | None = None) -> Readings:
         """Readings of a configuration; for shots at fixed exposures [s] or, without, as a relaxation over all."""

@@ -1,4 +1,8 @@
-"""Programs of several readings combined by weights: the channels of one exposure, or shots one after another."""
+"""Programs of several readings combined by weights: the channels of one exposure, or shots one after another.
+
+Channels of a colour camera have pixels of their own, whose fixed patterns are independent; shots are taken by the same
+pixels, whose fixed pattern is one and the same (see `codesign.design_combined`).
+"""
 
 from __future__ import annotations
 
@@ -10,7 +14,11 @@ from codesign.assemble import Assembly
 from codesign.certificate_combined import Readings
 from codesign.design import JOINT
 from codesign.limits import Setting
+from codesign.noise import NOISE_TERMS, NoiseModel, Sensor, noise_model
 from codesign.program import Array, Program, stack
+
+#: Leading noise rows of a program that hold the photo-response fixed pattern: target and background.
+PATTERN_ROWS = 2
 
 
 def channel_readings(assembly: Assembly, setting: Setting, filter_index: int) -> Readings:
@@ -34,9 +42,10 @@ def channel_readings(assembly: Assembly, setting: Setting, filter_index: int) ->
         limits=limits,
         signal=whole.signal,
         shot=whole.shot,
-        pattern=whole.noise_rows[:, :2],
-        clutter=whole.noise_rows[:, 2:],
+        pattern=whole.noise_rows[:, :PATTERN_ROWS],
+        common=whole.noise_rows[:, PATTERN_ROWS:],
         floor=whole.floor,
+        offset=np.zeros(len(names)),
     )
 
 
@@ -90,6 +99,8 @@ def shot_readings(
         time_high=one.time_high,
     )
 
+    temporal, fixed = noise_of_shots(assembly, setting)
+
     def each(values: Array) -> Array:
         return np.stack([spread_out(values, shot) for shot in range(shots)])
 
@@ -97,10 +108,19 @@ def shot_readings(
         limits=limits,
         signal=each(one.signal[0]),
         shot=each(one.shot[0]),
-        pattern=each(one.noise_rows[0, :2]),
-        clutter=each(one.noise_rows[0, 2:]),
-        floor=np.repeat(one.floor, shots),
+        pattern=np.zeros((shots, 0, total + 1)),
+        common=each(one.noise_rows[0]),
+        floor=np.full(shots, temporal.constant),
+        offset=np.full(shots, np.sqrt(fixed.constant)),
     )
+
+
+def noise_of_shots(assembly: Assembly, setting: Setting) -> tuple[NoiseModel, NoiseModel]:
+    """Noise that is new in every shot, and noise that all shots of the same pixels have in common."""
+    sensor, averaging = Sensor.of(setting.camera, setting.gain), assembly.problem.spec.averaging
+    terms = [tuple(term for term in NOISE_TERMS if term.lasting(True) == lasts) for lasts in (False, True)]
+    new, lasting = (noise_model(sensor, averaging, own) for own in terms)
+    return new, lasting
 
 
 def shot_points(one: Program, exposures: Array, point: Array) -> list[Array]:

@@ -49,31 +49,39 @@
     return raw.map((v) => (v / length) * Math.sign(largest));
   }
 
+  const FIXED_PATTERN = ["dark fixed pattern", "photo-response fixed pattern"];
+
+  /**
+   * Standard deviations of the independent causes of each term that readings have in common, by name: they add up with
+   * the weights before they are squared. The surface always; the fixed pattern between shots, which the same pixels take.
+   */
+  function lasting(budget, clutter, samePixels) {
+    const pattern = samePixels ? FIXED_PATTERN.map((name) => [name, [Math.sqrt(budget[name])]]) : [];
+    return Object.fromEntries([...pattern, ["surface clutter", clutter]]);
+  }
+
   /** Mean of the covariances of target and background over the readings. */
   function covariance(readings) {
     return readings.map((one, a) => readings.map((other, b) => {
-      const shared = [0, 1].map((s) => sum(one.light.surfaces[s].clutter, (v, k) => v * other.light.surfaces[s].clutter[k]));
-      const own = a === b ? sum(one.budgets[0], ([, v]) => v) + sum(one.budgets[1], ([, v]) => v) : 0;
-      return (shared[0] + shared[1] + own) / 2;
+      const both = [0, 1].map((s) => sum(Object.entries(one.budgets[s]), ([name, variance]) => {
+        const amplitudes = one.lasting[s][name];
+        if (amplitudes) return sum(amplitudes, (v, k) => v * other.lasting[s][name][k]);
+        return a === b ? variance : 0;
+      }));
+      return (both[0] + both[1]) / 2;
     }));
   }
 
-  /** Terms of the budget that readings do not share, as [name, variance]. */
-  const independent = (budget) => Object.entries(budget).filter(([name]) => name !== "surface clutter");
-
   /** Variance of the weighted sum by term, at target and background. */
   function combinedNoise(readings, weights) {
-    const names = readings[0].budgets[0].map(([name]) => name);
-    const terms = names.map((name, k) => {
-      const [target, background] = [0, 1].map((s) => sum(readings, (r, m) => weights[m] ** 2 * r.budgets[s][k][1]));
+    return Object.keys(readings[0].budgets[0]).map((name) => {
+      const [target, background] = [0, 1].map((s) => {
+        const amplitudes = readings[0].lasting[s][name];
+        if (!amplitudes) return sum(readings, (r, m) => weights[m] ** 2 * r.budgets[s][name]);
+        return sum(amplitudes, (_, k) => sum(readings, (r, m) => weights[m] * r.lasting[s][name][k]) ** 2);
+      });
       return { name, target, background };
     });
-    const clutter = [0, 1].map((s) => {
-      const amplitudes = readings[0].light.surfaces[s].clutter.map((_, k) =>
-        sum(readings, (r, m) => weights[m] * r.light.surfaces[s].clutter[k]));
-      return sum(amplitudes, (v) => v * v);
-    });
-    return [...terms, { name: "surface clutter", target: clutter[0], background: clutter[1] }];
   }
 
   /** Each LED once: its largest current, and power averaged over all exposures. */
@@ -126,8 +134,9 @@
       const light = model.electrons(setting, channel, part.states, part.t, part.dark);
       const name = setting.shots?.length ? `shot ${k + 1}` : channel;
       const surfaces = model.readings(light.surfaces, part).map((s) => ({ ...s, id: `${s.id}, ${name}` }));
-      const budgets = [0, 1].map((s) => independent(model.noise(part.camera, part.gain, light.surfaces[s])));
-      return { name, light, surfaces, budgets, t: part.t };
+      const budgets = [0, 1].map((s) => model.noise(part.camera, part.gain, light.surfaces[s]));
+      const common = budgets.map((budget, s) => lasting(budget, light.surfaces[s].clutter, !!setting.shots?.length));
+      return { name, light, surfaces, budgets, lasting: common, t: part.t };
     }));
     const differences = readings.map((r) => r.surfaces[0].total_e - r.surfaces[1].total_e);
     const weights = bestWeights(differences, covariance(readings)), noise = combinedNoise(readings, weights);
