@@ -28,6 +28,9 @@ from codesign.study.shared_rig_helps import helpful_changes
 from codesign.study.shared_rig_parts import common_problems
 from codesign.study.shared_rig_result import GOALS, Goal, Help, SharedProof, SharedRig, VariantOutcome, relative_gap
 from codesign.study.shared_rig_rounds import Search, Settled, named, settled_search
+from codesign.study.shared_rig_verify import SharedVerdict, verify_shared
+
+__all__ = ["Goal", "Help", "SharedProof", "SharedRig", "SharedVerdict", "VariantOutcome", "shared_rig", "verify_shared"]
 
 #: Default gap. [1]
 DEFAULT_GAP = 0.02
@@ -104,7 +107,7 @@ def shared_rig(
         raise ProblemError(f"shared rig: goal is {goal!r}, must be one of {', '.join(GOALS)}")
     problems, left_out = common_problems(variants, max_led_channels)
     required = {name: p.spec.required_cnr if required_cnr is None else required_cnr for name, p in problems.items()}
-    levels = _levels(required, goal)
+    levels = np.zeros(len(required)) if goal == "worst" else levels_of(required)
     clock = Clock.lasting(time_limit)
     with threadpool_limits(limits=1, user_api="blas"):  # small arrays: more threads would only wait for each other
         settled = settled_search(
@@ -116,14 +119,12 @@ def shared_rig(
         return _result(settled, problems, goal, required, levels, gap, own, left_out, told, started)
 
 
-def _levels(required: Mapping[str, float | None], goal: Goal) -> Array:
-    """CNR that each variant needs. (V,)"""
-    if goal == "worst":
-        return np.zeros(len(required))
+def levels_of(required: Mapping[str, float | None]) -> Array:
+    """CNR that each variant needs. (V,) Raises ProblemError naming the first variant that states none."""
     for name, value in required.items():
         if value is None or not value > 0:
             raise ProblemError(
-                f"shared rig: variant {name!r}: required_cnr is {value}, must be above 0; goal {goal!r} needs it"
+                f"shared rig: variant {name!r}: required_cnr is {value}, must be above 0; say which CNR is needed"
             )
     return np.array(list(required.values()), dtype=float)
 
@@ -160,8 +161,9 @@ def _result(
 ) -> SharedRig:
     hunt, best = settled.hunt, settled.outcome.best
     rig, ids = hunt.space.rig(best.rig), [channel.id for channel in hunt.space.problem.channels]
+    nan = float("nan")
     outcomes = {
-        name: _outcome(name, problems[name], found, own.get(name, float("nan")), required[name], goal)
+        name: outcome_of(name, problems[name], found, own.get(name, nan), required[name], needed=goal != "count")
         for name, found in settled.resolved.items()
     }
     value = _value(goal, settled, outcomes, best.value)
@@ -180,7 +182,7 @@ def _result(
         limiting=min(share, key=lambda name: share[name]),
         helps=helps,
         seconds=time.perf_counter() - started,
-        residual_k=_residual(settled),
+        residual_k=settled.largest_residual_k,
         left_out=left_out,
         evidence=_evidence(settled, problems, levels),
     )
@@ -190,11 +192,14 @@ def _optimum(outcome: VariantOutcome) -> float:
     return 0.0 if outcome.optimum is None else outcome.optimum.cnr
 
 
-def _outcome(name, problem: Problem, found: Resolved | None, own: float, required, goal: Goal) -> VariantOutcome:
+def outcome_of(
+    name: str, problem: Problem, found: Resolved | None, own: float, required: float | None, *, needed: bool
+) -> VariantOutcome:
+    """What a variant gets, with its recipe in whole setting steps; ``needed`` raises where no step fits."""
     if found is None:
         return VariantOutcome(name=name, problem=problem, optimum=None, recipe=None, own_cnr=own, required_cnr=required)
     rounded = settable(found.problem, found.optimum.design)
-    if rounded is None and goal != "count":
+    if rounded is None and needed:
         raise named(name, no_step_fits(found.problem))
     return VariantOutcome(
         name=name,
@@ -230,12 +235,6 @@ def _bound(goal: Goal, settled: Settled, value: float) -> float:
     if goal == "cost":
         return float(min(proven.min(initial=np.inf), value))
     return float(max(proven.max(initial=0.0), value))
-
-
-def _residual(settled: Settled) -> float:
-    """Largest difference of the junction temperatures the proof assumes from those that the optima lead to. [K]"""
-    own = [found.certificate.junction_residual_k for found in settled.resolved.values() if found is not None]
-    return max(settled.residual_k, *own) if own else settled.residual_k
 
 
 def _evidence(settled: Settled, problems: Mapping[str, Problem], levels: Array) -> SharedProof:

@@ -47,6 +47,12 @@ class Settled:
     rounds: int
     residual_k: float
 
+    @property
+    def largest_residual_k(self) -> float:
+        """Largest difference of the junction temperatures the proof assumes from those that the optima lead to. [K]"""
+        own = (found.certificate.junction_residual_k for found in self.resolved.values() if found is not None)
+        return max([self.residual_k, *own])
+
 
 def settled_search(
     problems: Mapping[str, Problem], search: Search, clock: Clock, levels: Array | None = None

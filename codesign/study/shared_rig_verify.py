@@ -8,6 +8,7 @@ them all; and what every variant gets from the rig found, by the forward model.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -22,8 +23,11 @@ from codesign.search.bounds import simple_proof
 from codesign.search.shared import REACHED
 from codesign.search.shared_space import Rig, RigSpace
 from codesign.search.shared_variant import Variant
-from codesign.study.shared_rig import SharedRig
+from codesign.study.shared_rig_result import SharedProof, SharedRig, VariantOutcome
 from codesign.verify import FORWARD_TOLERANCE, ROUND_OFF
+
+if TYPE_CHECKING:
+    from codesign.study.rig_sets import SetProof
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -75,18 +79,16 @@ def _closed(program: Program) -> Array:
     return bound(program, simple_proof(program)[0])
 
 
-class _Check:
-    """One result and the arrays of its variants, built anew."""
+class Rebuilt:
+    """The arrays of all variants of a proof, built anew, and cuts derived from them."""
 
-    def __init__(self, result: SharedRig) -> None:
-        self.result, self.proof = result, result.evidence
-        self.names = list(self.proof.problems)
-        self.space = RigSpace(next(iter(self.proof.problems.values())))
+    def __init__(self, proof: SharedProof | SetProof) -> None:
+        self.proof = proof
+        self.names = list(proof.problems)
+        self.space = RigSpace(next(iter(proof.problems.values())))
         self.variants = [
-            Checked(name, problem, self.proof.junction_c[name], self.space)
-            for name, problem in self.proof.problems.items()
+            Checked(name, problem, proof.junction_c[name], self.space) for name, problem in proof.problems.items()
         ]
-        self.limit = result.bound * (1 + ROUND_OFF)
         self.cuts = 0
 
     def order(self) -> list[int]:
@@ -94,15 +96,9 @@ class _Check:
         stated = [v for v in dict.fromkeys(self.proof.order) if 0 <= v < len(self.variants)]
         return stated + [v for v in range(len(self.variants)) if v not in stated]
 
-    def levels(self) -> Array:
-        """Levels that variants must stay at or below to count as closed. (V,)"""
-        if self.result.goal == "worst":
-            return np.full(len(self.variants), self.limit)
-        return self.proof.levels * (1 + ROUND_OFF)
-
-    def needs(self, rig: int) -> list[list[int]]:
-        """Of each variant the LEDs of which it needs one at least, from cuts derived anew."""
-        levels, any_led = self.levels(), (1 << len(self.space.problem.channels)) - 1
+    def needs(self, rig: int, levels: Array) -> list[list[int]]:
+        """Of each variant the LEDs of which it needs one at least to exceed its level, from cuts derived anew."""
+        any_led = (1 << len(self.space.problem.channels)) - 1
         found = [[any_led] for _ in self.variants]
         for place, variant in enumerate(self.variants):
             variant.look(np.arange(len(self.space)) == rig)
@@ -114,19 +110,37 @@ class _Check:
                 found[place].append(cut.outside)
         return found
 
+    def require_leds(self, rig: int, leds: tuple[str, ...]) -> np.ndarray:
+        """Confirm that these LEDs may be built into a rig; return them as a mask. (L,)"""
+        mask = np.array([channel.id in leds for channel in self.space.problem.channels])
+        if int(mask.sum()) != len(leds) or not leds or not self.space.room(rig).allows(bits(mask)):
+            raise CertificateError("certificate: the LED channels of a rig are unknown or more than may be built")
+        return mask
+
+
+class _Check(Rebuilt):
+    """One result and the arrays of its variants."""
+
+    def __init__(self, result: SharedRig) -> None:
+        super().__init__(result.evidence)
+        self.result = result
+        self.levels = self.proof.levels * (1 + ROUND_OFF)
+        if result.goal == "worst":
+            self.levels = np.full(len(self.variants), result.bound * (1 + ROUND_OFF))
+
     def left_open(self) -> np.ndarray:
         """Rigs that the closed form of the variants does not close."""
-        levels, goal = self.levels(), self.result.goal
+        goal = self.result.goal
         failing = np.zeros(len(self.space))
         beside = np.zeros(len(self.space), dtype=bool)
         if goal == "cost":
             beside = self._prices() >= self.result.bound * (1 - ROUND_OFF)
         allowed = len(self.variants) - self.result.bound - EQUAL if goal == "count" else 1.0
-        open_ = ~beside
+        open_ = ~beside & (failing < allowed)
         for place in self.order():
             variant = self.variants[place]
             variant.look(open_)
-            failing += open_ & (variant.upper <= levels[place])
+            failing += open_ & (variant.upper <= self.levels[place])
             open_ = ~beside & (failing < allowed)
         return np.flatnonzero(open_)
 
@@ -138,7 +152,7 @@ class _Check:
         """Check every rig left open; return how many there were."""
         open_ = self.left_open()
         for rig in map(int, open_):
-            needs, room = self.needs(rig), self.space.room(rig)
+            needs, room = self.needs(rig, self.levels), self.space.room(rig)
             if self.result.goal == "count":
                 more = most_served(needs, np.ones(len(needs)), room, self.result.bound)
             elif self.result.goal == "worst":
@@ -157,15 +171,13 @@ class _Check:
     def found(self) -> float:
         """Check the rig found and what every variant gets from it; return the value of the goal."""
         result = self.result
-        mask = np.array([channel.id in result.leds for channel in self.space.problem.channels])
-        rig = self.space.number(Rig(result.camera, result.filter, result.f_number))
-        if int(mask.sum()) != len(result.leds) or not self.space.room(rig).allows(bits(mask)):
-            raise CertificateError(
-                "certificate: the LED channels of the rig found are unknown or more than may be built"
-            )
+        rig = Rig(result.camera, result.filter, result.f_number)
+        mask = self.require_leds(self.space.number(rig), result.leds)
         if list(result.outcomes) != self.names:
             raise CertificateError("certificate: the variants of the result are not those of its proof")
-        reached = np.array([self._recipe(name) for name in self.names])
+        reached = np.array(
+            [require_recipe(self.proof, result.outcomes[name], name, rig, result.leds, 0.0) for name in self.names]
+        )
         if result.goal == "worst":
             return float(reached.min())
         met = reached >= self.proof.levels * (1 - 2 * REACHED)
@@ -173,34 +185,42 @@ class _Check:
             return float(met.sum())
         if not met.all():
             raise CertificateError("certificate: the rig found does not serve all variants")
-        return float(self.space.price(rig) + self.space.led_prices()[mask].sum())
+        return float(self.space.price(self.space.number(rig)) + self.space.led_prices()[mask].sum())
 
-    def _recipe(self, name: str) -> float:
-        """Check the recipes of one variant; return its CNR at the junction temperatures of the proof."""
-        outcome, problem = self.result.outcomes[name], self.proof.problems[name]
-        if outcome.optimum is None:
-            return 0.0
-        stated = {c.id: float(t) for c, t in zip(problem.channels, self.proof.junction_c[name], strict=True)}
-        for performance in (outcome.optimum, outcome.recipe):
-            if performance is not None:
-                self._require_parts(name, performance.design)
-        same = evaluate(problem, outcome.optimum.design, junction_c=stated)
-        if max((limit.share for limit in same.limits), default=0.0) > 1 + 1e-6:
-            raise CertificateError(f"certificate: variant {name!r}: the optimum exceeds a limit")
-        if outcome.recipe is not None:
-            again = evaluate(problem, outcome.recipe.design)
-            if not again.feasible or abs(again.cnr - outcome.recipe.cnr) > FORWARD_TOLERANCE * again.cnr:
-                raise CertificateError(
-                    f"certificate: variant {name!r}: the settable recipe is not feasible, or its CNR is not what is "
-                    "claimed"
-                )
-        return same.cnr
 
-    def _require_parts(self, name: str, design) -> None:
-        result = self.result
-        parts = (design.camera, design.filter, design.f_number)
-        if parts != (result.camera, result.filter, result.f_number) or not set(design.drive_ma) <= set(result.leds):
-            raise CertificateError(f"certificate: the recipe of variant {name!r} uses parts that the rig does not have")
+def require_recipe(
+    proof: SharedProof | SetProof, outcome: VariantOutcome, name: str, rig: Rig, leds: tuple[str, ...], level: float
+) -> float:
+    """Check the recipes of one variant; return its CNR at the junction temperatures of the proof.
+
+    Raises CertificateError where they use other parts, exceed a limit, or do not have the CNR claimed or required.
+    """
+    problem = proof.problems[name]
+    if outcome.optimum is None:
+        if level > 0:
+            raise CertificateError(f"certificate: variant {name!r} has no recipe")
+        return 0.0
+    for performance in (outcome.optimum, outcome.recipe):
+        design = None if performance is None else performance.design
+        if design is not None and (
+            Rig(design.camera, design.filter, design.f_number) != rig or not set(design.drive_ma) <= set(leds)
+        ):
+            raise CertificateError(f"certificate: the recipe of variant {name!r} uses parts that its rig does not have")
+    stated = {c.id: float(t) for c, t in zip(problem.channels, proof.junction_c[name], strict=True)}
+    same = evaluate(problem, outcome.optimum.design, junction_c=stated)
+    if any(not limit.met for limit in same.limits):
+        raise CertificateError(f"certificate: variant {name!r}: the optimum exceeds a limit")
+    if not same.cnr >= level * (1 - 2 * REACHED):
+        raise CertificateError(
+            f"certificate: variant {name!r} has a CNR of {same.cnr:.6g} only, {level:.6g} is required"
+        )
+    if outcome.recipe is not None:
+        again = evaluate(problem, outcome.recipe.design)
+        if not again.feasible or abs(again.cnr - outcome.recipe.cnr) > FORWARD_TOLERANCE * again.cnr:
+            raise CertificateError(
+                f"certificate: variant {name!r}: the settable recipe is not feasible, or its CNR is not what is claimed"
+            )
+    return same.cnr
 
 
 def verify_shared(result: SharedRig) -> SharedVerdict:

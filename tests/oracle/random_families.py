@@ -65,29 +65,23 @@ def enumerated(family: dict[str, Problem], most: int) -> Table:
     )
     ids = [channel.id for channel in first.channels]
     sets = [s for size in range(1, min(most, len(ids)) + 1) for s in itertools.combinations(ids, size)]
-    cnr = np.array([[[_best(p, rig, own) for own in sets] for rig in rigs] for p in family.values()])
+    cnr = np.stack([np.stack([_best(p, rigs, own) for own in sets], axis=1) for p in family.values()])
     price = np.array([[_price(first, rig, own) for own in sets] for rig in rigs])
     return Table(rigs, sets, cnr, price)
 
 
-def _best(problem: Problem, rig: tuple[str, float, str], leds: tuple[str, ...]) -> float:
-    """Best CNR of one variant with these parts alone; 0 where the limits leave nothing."""
-    camera, f_number, filter_name = rig
-    optics = problem.spec.optics.model_copy(update={"f_numbers": (f_number,)})
-    small = replace(
-        problem,
-        spec=problem.spec.model_copy(update={"optics": optics}),
-        cameras=(problem.camera(camera),),
-        filters=(problem.filter(filter_name),),
-        channels=tuple(channel for channel in problem.channels if channel.id in leds),
-    )
+def _best(problem: Problem, rigs: list[tuple[str, float, str]], leds: tuple[str, ...]) -> Array:
+    """Best CNR of one variant on each rig with these LEDs alone; 0 where the limits leave nothing. (C,)"""
+    small = replace(problem, channels=tuple(channel for channel in problem.channels if channel.id in leds))
     assembly = Assembly(small, np.full(len(small.channels), small.spec.temperature.air_c))
     try:
         walk = Walk(assembly, GAP)
     except InfeasibleError:
-        return 0.0
-    best = walk.best()
-    return 0.0 if best is None else walk.found[best].value
+        return np.zeros(len(rigs))
+    chosen = [walk.configuration(number) for number in range(walk.upper.size)]
+    own = [(c.setting.camera.id, c.setting.f_number, small.filters[c.filter].id) for c in chosen]
+    best = [walk.best(np.array([each == rig for each in own])) for rig in rigs]
+    return np.array([0.0 if number is None else walk.found[number].value for number in best])
 
 
 def _price(problem: Problem, rig: tuple[str, float, str], leds: tuple[str, ...]) -> float:
