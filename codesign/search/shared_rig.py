@@ -8,7 +8,7 @@ that the rig cannot do it. Cuts found on one rig are tried on the next: similar 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Protocol
 
 import numpy as np
@@ -39,11 +39,27 @@ class Found:
         """Rig and LEDs of each of ``count`` variants."""
         return [(self.rig, self.leds)] * count
 
+    def boards(self, count: int) -> list[int]:
+        """Which of ``count`` variants have their LEDs in common: all."""
+        return [0] * count
+
+    def with_boards(self, leds: Sequence[Mask]) -> Found:
+        """The same with other LEDs."""
+        return replace(self, leds=leds[0])
+
 
 class Placed(Protocol):
     """What a search can find: for each variant a rig and LEDs."""
 
     value: float
+
+    def boards(self, count: int) -> list[int]:
+        """Number of the board of LEDs that each of ``count`` variants uses."""
+        ...
+
+    def with_boards(self, leds: Sequence[Mask]) -> Placed:
+        """The same with other LEDs on the boards."""
+        ...
 
     def places(self, count: int) -> list[tuple[int, Mask]]:
         """Rig and LEDs of each of ``count`` variants."""

@@ -9,7 +9,7 @@ holds for any prices, so neither the linear program nor the choice of columns ha
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -49,6 +49,14 @@ class FoundSet:
     def places(self, count: int) -> list[tuple[int, Mask]]:
         """Rig and LEDs of each variant."""
         return [(self.columns[use].rig, self.columns[use].leds) for use in self.uses[:count]]
+
+    def boards(self, count: int) -> list[int]:
+        """Number of the rig that each variant uses."""
+        return self.uses[:count].tolist()
+
+    def with_boards(self, leds: Sequence[Mask]) -> FoundSet:
+        """The same rigs with other LEDs."""
+        return replace(self, columns=tuple(replace(c, leds=own) for c, own in zip(self.columns, leds, strict=True)))
 
 
 @dataclass(slots=True, eq=False)

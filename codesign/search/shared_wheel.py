@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import comb
 
 import numpy as np
@@ -42,6 +42,14 @@ class FoundWheel:
     def places(self, count: int) -> list[tuple[int, Mask]]:
         """Rig and LEDs of each variant."""
         return [(self.first + int(use), self.leds) for use in self.uses[:count]]
+
+    def boards(self, count: int) -> list[int]:
+        """Which variants have their LEDs in common: all."""
+        return [0] * count
+
+    def with_boards(self, leds: Sequence[Mask]) -> FoundWheel:
+        """The same with other LEDs."""
+        return replace(self, leds=leds[0])
 
 
 @dataclass(slots=True, eq=False)

@@ -102,7 +102,20 @@ class _Worst:
         self.sift()
         for rig in self.open():
             self.pursue(int(rig))
-        return Outcome(self.best, self.proven, bool(self.open().size))
+        stopped = bool(self.open().size)
+        self.tighten()
+        return Outcome(self.best, self.proven, stopped)
+
+    def tighten(self) -> None:
+        """Lower what each rig was asked not to exceed to what its cuts show."""
+        room, count = self.hunt.space.room, len(self.hunt.variants)
+        for rig in map(int, np.flatnonzero(self.proven > (0.0 if self.best is None else self.best.value))):
+            levels = {value for _, cut, _ in self.hunt.cuts.get(rig, ()) if (value := cut.level) < self.proven[rig]}
+            for trial in sorted(value * (1 + 1e-12) for value in levels):
+                needs = self.hunt.needs(rig, np.full(count, trial), strict=True)
+                if cheapest_set([cut for own in needs for cut in own], room(rig)) is None:
+                    self.proven[rig] = trial
+                    break
 
 
 def best_worst(

@@ -14,7 +14,7 @@ import numpy as np
 
 from codesign.assemble_conflicts import nothing_seen, require_usable_leds
 from codesign.build import require_buildable
-from codesign.certificate_shared import Mask
+from codesign.certificate_shared import Mask, mask_of
 from codesign.errors import InfeasibleError
 from codesign.problem import Problem
 from codesign.program import Array
@@ -29,6 +29,8 @@ from codesign.study.shared_rig_parts import on_rig
 LARGEST_NUMBER_OF_ROUNDS = 8
 #: Gap to which recipes on the rig found are proven.
 RECIPE_GAP = 1e-4
+#: Share of a CNR that leaving out LEDs may cost.
+NO_LOSS = 1e-4
 
 Search = Callable[[Hunt, Placed | None, bool], Outcome]
 
@@ -83,21 +85,23 @@ def settled_search(
         if hunt is not None:
             new.learn_from(hunt)
         found = search(new, start, attempt == 0)
-        if found.best is None and attempt:
+        if found.best is None and attempt and clock():
             break  # stopped before anything was worked out at these temperatures: the last round stands
         hunt, outcome = new, found
         if outcome.best is None:
             raise unserved(hunt, np.full(len(problems), 1e-9) if levels is None else levels)
         places = outcome.best.places(len(problems))
         if not (resolved and start is not None and _same(places, start.places(len(problems)))):
-            resolved = {n: _on(hunt.space, place, p) for (n, p), place in zip(problems.items(), places, strict=True)}
+            resolved = _resolved(problems, space, places)
+            _trim(outcome, resolved, problems, space, levels)
+            places = outcome.best.places(len(problems))
         settled = {
             name: _reached(junction[name], place[1], one)
             for (name, one), place in zip(resolved.items(), places, strict=True)
         }
         residual = max(float(np.max(np.abs(settled[name] - junction[name]), initial=0.0)) for name in problems)
         stated = junction
-        if (residual <= JUNCTION_TOLERANCE_K and attempt) or clock():
+        if attempt and (residual <= JUNCTION_TOLERANCE_K or clock()):
             break
         start, junction = outcome.best, settled
     return Settled(hunt, outcome, resolved, stated, attempt + 1, residual)
@@ -120,6 +124,41 @@ def named(name: str, error: InfeasibleError) -> InfeasibleError:
 
 def _same(some: list[tuple[int, Mask]], others: list[tuple[int, Mask]]) -> bool:
     return all(a[0] == b[0] and (a[1] == b[1]).all() for a, b in zip(some, others, strict=True))
+
+
+def _resolved(
+    problems: Mapping[str, Problem], space: RigSpace, places: list[tuple[int, Mask]]
+) -> dict[str, Resolved | None]:
+    return {name: _on(space, place, p) for (name, p), place in zip(problems.items(), places, strict=True)}
+
+
+def _trim(
+    outcome: Outcome,
+    resolved: dict[str, Resolved | None],
+    problems: Mapping[str, Problem],
+    space: RigSpace,
+    levels: Array | None,
+) -> None:
+    """Leave out LEDs that no variant lights by half a setting step, where no CNR suffers from that."""
+    count, best = len(problems), outcome.best
+    places, boards = best.places(count), best.boards(count)
+    ids = [channel.id for channel in space.problem.channels]
+    forced = mask_of(space.room(places[0][0]).forced, len(ids))
+    lit = [forced.copy() for _ in range(max(boards) + 1)]
+    for board, found in zip(boards, resolved.values(), strict=True):
+        if found is not None:
+            lit[board] |= np.isin(ids, list(found.drive_ma))
+    if not all(own.any() for own in lit) or all((lit[b] == p[1]).all() for b, p in zip(boards, places, strict=True)):
+        return
+    trimmed = best.with_boards(lit)
+    again = _resolved(problems, space, trimmed.places(count))
+    needed = np.zeros(count) if levels is None else levels
+    for (name, old), level in zip(resolved.items(), needed, strict=True):
+        new = again[name]
+        if old is not None and (new is None or new.cnr < old.cnr * (1 - NO_LOSS) or new.cnr < level <= old.cnr):
+            return
+    outcome.best = trimmed
+    resolved.update(again)
 
 
 def _on(space: RigSpace, place: tuple[int, Mask], problem: Problem) -> Resolved | None:
@@ -159,6 +198,8 @@ def unserved(hunt: Hunt, levels: Array) -> InfeasibleError:
             return named(variant.name, nothing_seen(variant.walk.assembly))
         if top < level:
             short.append(f"{variant.name!r} has a CNR of {top:.4g} at most, {level:.4g} is required")
+    if len(short) == len(hunt.variants) > 1:
+        return InfeasibleError(f"shared rig: no variant can have the CNR required, e.g. {short[0]}", ["required_cnr"])
     if short:
         more = f" (and {len(short) - 1} more variants)" if len(short) > 1 else ""
         return InfeasibleError(
