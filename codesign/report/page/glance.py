@@ -31,7 +31,7 @@ def glance(subject: Subject) -> Html:
             element("h2", element("a", title, href=f"#{target}")),
             body,
             class_=f"cell {target}",
-            aria_label=title,
+            aria_label=f"{title}, in short",
         )
         for target, title, body in cells
     )

@@ -229,8 +229,14 @@
       fill($("second"), [...(model.single(first) ? [["", "nothing"]] : []), ...partners.map((name) => [name, name])], second);
       live.show($("exposure-slider"), $("exposure"), this.placeOf(shown.exposure_us), shown.exposure_us);
       $("exposure-slider").setAttribute("aria-valuetext", `${number(shown.exposure_us, 6)} microseconds`);
-      for (const [name, key] of [["air", "air_c"], ["sensor", "sensor_c"], ["ambient", "ambient_factor"]])
+      const surroundings = [
+        ["air", "air_c", "degrees Celsius"], ["sensor", "sensor_c", "degrees Celsius"],
+        ["ambient", "ambient_factor", "times"],
+      ];
+      for (const [name, key, unit] of surroundings) {
         live.show($(`${name}-slider`), $(name), setting[key], setting[key]);
+        $(`${name}-slider`).setAttribute("aria-valuetext", `${number(setting[key])} ${unit}`);
+      }
     }
   }
 
@@ -248,7 +254,7 @@
     }
     $("bench").hidden = false;
     page.render();
-    const off = Math.abs(page.atStart.cnr / data.recipe.cnr - 1);
+    const { cnr } = page.atStart, off = cnr === data.recipe.cnr ? 0 : Math.abs(cnr / data.recipe.cnr - 1);
     if (!(off <= FAITHFUL)) {
       const words = `This page's CNR of the recipe is off the program's by ${percent(off)}`;
       put("failed", `${words}: trust the recipe above, not this page.`);

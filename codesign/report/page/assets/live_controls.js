@@ -39,7 +39,8 @@
   function typed(input, low, high, open = false) {
     const value = input.value.trim() === "" ? NaN : Number(input.value);
     const good = Number.isFinite(value) && value <= high && (open ? value > low : value >= low);
-    const range = `${open ? "above" : "from"} ${live.number(low, 6)} to ${live.number(high, 6)}`;
+    const [least, most] = [low, high].map((end) => live.number(end, 6));
+    const range = open ? `above ${least} and at most ${most}` : `from ${least} to ${most}`;
     complain(input, good ? "" : `must be a number ${range}`);
     return good ? value : null;
   }
@@ -106,7 +107,7 @@
       const input = element("input", { type: "number", id: name, min: 0, step: "any", inputmode: "decimal" });
       const off = element("button", { type: "button", class: "live-off", "aria-label": `Take ${led.id} out` }, "×");
       const note = element("span", { class: "live-note" });
-      label.append(" ", peak);
+      label.append(" ", peak, element("span", { class: "live-hidden" }, " current in mA"));
       box.append(label, slider, input, element("span", { class: "live-unit" }, "mA"), off, note);
       const made = { box, slider, input, note, led, index };
       if (this.model.data.build.free) box.append(this.count(led, made));

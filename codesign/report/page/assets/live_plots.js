@@ -24,6 +24,13 @@
   const BLIND = 0.005; // share of its peak below which a camera's response is not worth drawing
   const CURVES = ["light", "ambient", "seen", "background", "target"];
 
+  /** Difference of electrons of target and background at each grid point, in any unit; mirror-like light included. */
+  function differenceOf(model, result) {
+    const { all, shine } = result.light, { i, j } = result.pair, [one, other] = [model.surfaces[i], model.surfaces[j]];
+    const gloss = one.specular - other.specular;
+    return (k) => all[k] * (one.mean[k] - other.mean[k]) + shine[k] * gloss;
+  }
+
   /** First and last grid point at which any camera responds to speak of. */
   function reach(model) {
     let first = model.grid.length - 1, last = 0;
@@ -115,11 +122,11 @@
     /** Draw a result; of several shots the light of one. */
     draw(result, setting, shot) {
       if (!this.width) this.fit(); // later when the page says so: asking for the width costs a layout
-      const { model, largest: top } = this, base = TOP + MAIN, { all, seen } = result.light;
+      const { model, largest: top } = this, base = TOP + MAIN, { seen } = result.light;
       const diffuse = result.light.diffuse[shot];
       const { i: one, j: other } = result.pair, target = model.surfaces[one].mean, back = model.surfaces[other].mean;
       const around = (i) => model.ambient[i] * setting.ambient_factor;
-      const difference = (i) => all[i] * (target[i] - back[i]);
+      const difference = differenceOf(model, result);
       let brightest = 0, largest = 0;
       for (let i = this.first; i <= this.last; i++) {
         brightest = Math.max(brightest, diffuse[i], around(i));
@@ -197,5 +204,5 @@
     }
   }
 
-  Object.assign(live, { Spectra, View });
+  Object.assign(live, { Spectra, View, differenceOf });
 })();

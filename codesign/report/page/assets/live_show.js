@@ -176,10 +176,9 @@
 
   function spectra(page, result) {
     page.spectra.draw(result, page.setting, page.shot);
-    const { grid, surfaces } = page.model, { diffuse, all, seen } = result.light;
-    const one = surfaces[result.pair.i].mean, other = surfaces[result.pair.j].mean;
+    const { grid } = page.model, { diffuse, seen } = result.light, at = live.differenceOf(page.model, result);
     const most = (values) => `${grid[values.reduce((best, v, i) => (v > values[best] ? i : best), 0)].toFixed(0)} nm`;
-    const difference = all.map((v, i) => Math.abs(v * (one[i] - other[i])));
+    const difference = grid.map((_, i) => Math.abs(at(i)));
     const words = [["LED light is strongest at", diffuse[page.shot]], ["filter and camera respond most at", seen[0]]];
     words.push(["most of the difference comes from", difference]);
     const label = words.map(([text, values]) => `${text} ${most(values)}`).join("; ");

@@ -193,12 +193,14 @@
       const { weight, seen } = this.sensitivity(setting, channel), n = weight.length;
       const { diffuse, gloss } = this.mixture(states);
       const rig = new Float64Array(n), around = new Float64Array(n), all = new Float64Array(n);
+      const shine = new Float64Array(n); // what a mirror would send
       let mirrored = 0;
       for (let i = 0; i < n; i++) {
         rig[i] = weight[i] * diffuse[i];
         around[i] = weight[i] * this.ambient[i] * setting.ambient_factor;
         all[i] = rig[i] + around[i];
-        mirrored += weight[i] * gloss[i];
+        shine[i] = weight[i] * gloss[i];
+        mirrored += shine[i];
       }
       const surfaces = this.surfaces.map((surface) => ({
         led_e: (dot(surface.mean, rig) + surface.specular * mirrored) * t,
@@ -206,7 +208,7 @@
         dark_e: dark * t,
         clutter: surface.clutter.map((row) => dot(row, all) * t),
       }));
-      return { surfaces, diffuse, all, seen };
+      return { surfaces, diffuse, all, shine, seen };
     }
 
     // --- noise -----------------------------------------------------------------------------------------------------
@@ -256,7 +258,7 @@
         ...contrast, surfaces, duty: context.duty, level: context.level, leds: states, weights: {},
         error_rate: errorRate(contrast.cnr),
         limits: [...live.limitUses(this, { ...context, states, surfaces }), ...live.buildLimits(this, context)],
-        light: { diffuse: [light.diffuse], seen: [light.seen], all: light.all },
+        light: { diffuse: [light.diffuse], seen: [light.seen], all: light.all, shine: light.shine },
         picture: { mean: [j, i].map((k) => surfaces[k].total_e), spread, top: context.saturation },
       };
     }

@@ -147,14 +147,17 @@
     const pair = { i: 0, j: 1, target: target.id, background: background.id, signal_e: difference, cnr };
     parts.forEach((part, k) => (part.surfaces = setting.shots?.length ? readings[k].surfaces : surfaces));
     const limits = setting.shots?.length ? limitsOfShots(model, whole, parts) : live.limitUses(model, parts[0]);
-    const all = new Float64Array(model.grid.length);
-    for (let i = 0; i < all.length; i++) all[i] = sum(readings, (r, m) => weights[m] * r.t * r.light.all[i]);
+    const [all, shine] = ["all", "shine"].map((part) =>
+      model.grid.map((_, i) => sum(readings, (r, m) => weights[m] * r.t * r.light[part][i])));
     return {
       cnr, sign: difference > 0 ? "brighter" : "darker", signal_e: difference, pair, pairs: [pair], noise, surfaces,
       duty: whole.duty, level: whole.level, leds: meanStates(shots, parts.map((part) => part.states)),
       weights: Object.fromEntries(readings.map((r, m) => [r.name, weights[m]])),
       error_rate: live.errorRate(cnr), limits: [...limits, ...live.buildLimits(model, whole)],
-      light: { diffuse: parts.map((_, k) => readings[k * channels.length].light.diffuse), all, seen: seenOf(readings, channels) },
+      light: {
+        diffuse: parts.map((_, k) => readings[k * channels.length].light.diffuse), all, shine,
+        seen: seenOf(readings, channels),
+      },
       picture: { ...pictureOf(readings, weights, noise), top: Infinity },
     };
   }
