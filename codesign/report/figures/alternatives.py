@@ -75,7 +75,8 @@ def draw_alternatives(panel: Panel, solution: Solution, most: int) -> None:
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
     dress(axes, x="" if is_narrow(panel) else "CNR before rounding to setting steps", grid="x")
-    legend_above(axes, "CNR with other parts", lines, aside=room_beside(panel, names))
+    title = "CNR by parts, before rounding" if is_narrow(panel) else "CNR with other parts"
+    legend_above(axes, title, lines, aside=room_beside(panel, names))
     _columns(axes, panel, rows)
 
 

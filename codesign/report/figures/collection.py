@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from codesign.design import Performance
-from codesign.errors import CodesignError, ProblemError, nearest
+from codesign.errors import CodesignError, ProblemError
 from codesign.problem import Problem
 from codesign.report.figures.alternatives import alternatives
 from codesign.report.figures.base import FORMATS, save_figure
@@ -69,7 +69,7 @@ def _common(
 def check_folder(folder: Path, form: str) -> None:
     """Raise CodesignError now where figures could not be written once the work is done."""
     if form not in FORMATS:
-        raise ProblemError(f"--format is {form!r}, must be {', '.join(FORMATS)}; {nearest(form, FORMATS)}")
+        raise ProblemError(f"--format is {form!r}, must be {', '.join(FORMATS)}")
     if folder.exists() and not folder.is_dir():
         raise CodesignError(f"{folder}: is a file; name a folder for the figures")
     if not folder.resolve().parent.is_dir():

@@ -103,12 +103,15 @@ def left_words(left: Sequence[LimitUse]) -> str:
 
 
 def binds(use: LimitUse, binding: Collection[str] | None) -> bool:
-    """Whether loosening a limit can raise the CNR."""
+    """Whether loosening a limit can raise the CNR; of a typed recipe, without ``binding``, whether it is reached."""
     return use.share >= REACHED if binding is None else use.name in binding
 
 
 def _word(use: LimitUse, binding: Collection[str] | None) -> str:
-    return "missed" if not use.met else "binds" if binds(use, binding) else ""
+    """Missed; of an optimum binds, of a recipe that was typed just reached."""
+    if not use.met:
+        return "missed"
+    return ("reached" if binding is None else "binds") if binds(use, binding) else ""
 
 
 def _look(use: LimitUse, binding: Collection[str] | None) -> tuple[str, str]:

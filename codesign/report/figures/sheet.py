@@ -17,6 +17,7 @@ from codesign.report.figures.base import (
     new_figure,
     shortened,
     signed,
+    text_width,
     width_mm,
     wrapped,
 )
@@ -112,12 +113,22 @@ def _draw_head(
         text = shortened(panel, line, width, BODY)
         panel.text(0, 1 - (7.5 + 4.3 * row) / HEIGHTS[0], text, fontsize=BODY, color=INK, va="top")
     if not performance.feasible:
-        missed = shortened(panel, "misses " + ", ".join(limit.name for limit in performance.violated), width, BODY)
+        missed = _missed(panel, [limit.name for limit in performance.violated], width)
         panel.text(0, 1 - 11.8 / HEIGHTS[0], missed, fontsize=BODY, color=MISSED, fontweight="bold", va="top")
     _rule(panel, 17.0)
     _table(panel, _settings(problem, performance), 0.46 * width)
     panel.text(0.48, 1 - SETTINGS_DOWN / HEIGHTS[0], "LEDs", fontsize=BODY, color=MUTED, va="top")
     _led_list(panel, _leds(performance, numbers), 0.48 * width + 12.0, 0.52 * width - 12.0)
+
+
+def _missed(panel: Panel, names: list[str], width: float) -> str:
+    """Limits that are missed: as many by name as the line holds, the others counted."""
+    for shown in range(len(names), 0, -1):
+        more = f" and {len(names) - shown} more" if shown < len(names) else ""
+        text = f"misses {'; '.join(names[:shown])}{more}"
+        if text_width(panel, text, BODY, "bold") <= width:
+            return text
+    return shortened(panel, f"misses {names[0]}", width, BODY, "bold", tail=more.strip())
 
 
 def _rule(panel: Panel, down: float) -> None:

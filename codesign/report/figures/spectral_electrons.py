@@ -21,7 +21,7 @@ from codesign.report.figures.base import (
     width_mm,
 )
 from codesign.report.house import AMBIENT, BACKGROUND, DASHES, FILTER, INK, MUTED, TARGET
-from codesign.report.layout import percent
+from codesign.report.layout import number, percent
 
 if TYPE_CHECKING:
     from matplotlib.artist import Artist
@@ -35,6 +35,10 @@ if TYPE_CHECKING:
 BEYOND = 2e-3
 #: Noise terms that take less of the variance have no line. [1]
 LEAST_NOISE = 1e-3
+#: Differences below this share of the electrons are what rounding left. [1]
+DUST = 1e-12
+#: Pairs whose difference is drawn beside that of the worst.
+MOST_PAIRS = 2
 #: Points of a curve; more would only make files larger.
 POINTS_DRAWN = 400
 #: Colours of the noise terms that grow with light, wherever they are shown.
@@ -116,15 +120,21 @@ def _beyond_words(axes: Axes, found: Spectra) -> str:
 
 def draw_contrast(axes: Axes, problem: Problem, found: Spectra, performance: Performance) -> None:
     """Target minus background with its sign."""
-    grid = found.wavelength_nm
-    unit, sign = scale_of(float(np.abs(found.signal_e).max()))
-    signal = found.signal_e / unit
+    grid, others = found.wavelength_nm, _other_pairs(problem, found, performance)
+    signal = _without_dust(found.signal_e, _background_e(found))
+    unit, sign = scale_of(max(float(np.abs(each).max()) for each in (signal, *others.values())))
+    signal = signal / unit
     area(axes, grid, 0 * signal, np.maximum(signal, 0), color=TARGET, alpha=0.45)
     area(axes, grid, np.minimum(signal, 0), 0 * signal, color=BACKGROUND, alpha=0.45)
     curve(axes, grid, signal, color=INK, linewidth=1.0)
     axes.axhline(0, color=MUTED, linewidth=0.7)
     dress(axes, y=f"{sign}e⁻ per nm")
-    top, bottom = max(float(signal.max()), 0.0), min(float(signal.min()), 0.0)
+    beside = [
+        (curve(axes, grid, each / unit, color=MUTED, linestyle=DASHES[1 + k], linewidth=1.2), words)
+        for k, (words, each) in enumerate(others.items())
+    ]
+    shown = [signal, *(each / unit for each in others.values())]
+    top, bottom = max(0.0, *(float(each.max()) for each in shown)), min(0.0, *(float(each.min()) for each in shown))
     reach = top - bottom if top > bottom else 1.0
     axes.set_ylim(bottom - 0.08 * reach, top + 0.08 * reach)
     target, background = (problem.surfaces[index].id for index in found.pair)
@@ -134,15 +144,34 @@ def draw_contrast(axes: Axes, problem: Problem, found: Spectra, performance: Per
         panel, f"Contrast: {target} minus {background}{weighted},", width_mm(panel) - ROOM_BESIDE, TITLE, "bold",
         tail=f"in all {signed(performance.signal_e)} e⁻",
     )  # fmt: skip
-    against = _against(found)
+    against = _against(found, signal)
     notes = [(blank(), f"{percent(against)} of it has the other sign and works against the rest")]
-    legend_above(axes, title, notes if against > 1e-3 else [])
+    legend_above(axes, title, [*(notes if against > 1e-3 else []), *beside])
 
 
-def _against(found: Spectra) -> float:
+def _without_dust(signal: Array, light: Array) -> Array:
+    """A difference without what is left of it by rounding where the two are the same."""
+    return np.where(np.abs(signal) > DUST * np.abs(light), signal, 0.0)
+
+
+def _other_pairs(problem: Problem, found: Spectra, performance: Performance) -> dict[str, Array]:
+    """Differences of the pairs next worst, which decide beside the worst what the light has to show. [e⁻/nm]"""
+    if len(found.readings) > 1 or len(performance.pairs) < 2:
+        return {}
+    (reading,) = found.readings
+    electrons = reading.led_e + reading.ambient_e
+    ordered = sorted(zip(performance.pairs, problem.pairs, strict=True), key=lambda both: both[0].cnr)
+    others = [(pair, places) for pair, places in ordered if places != found.pair][:MOST_PAIRS]
+    return {
+        f"{pair.target} minus {pair.background}, CNR {number(pair.cnr)}": electrons[i] - electrons[j]
+        for pair, (i, j) in others
+    }
+
+
+def _against(found: Spectra, signal: Array) -> float:
     """Share of the contrast, without signs, that has the sign of the lesser part. [1]"""
-    whole = float(found.integral(np.abs(found.signal_e)))
-    return (1 - abs(float(found.integral(found.signal_e))) / whole) / 2 if whole > 0 else 0.0
+    whole = float(found.integral(np.abs(signal)))
+    return (1 - abs(float(found.integral(signal))) / whole) / 2 if whole > 0 else 0.0
 
 
 def draw_noise(axes: Axes, found: Spectra) -> None:

@@ -8,9 +8,10 @@ from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
-from codesign.design import Performance
+from codesign.design import Performance, setting_of
 from codesign.design_simulation import expected, simulate
 from codesign.design_spectra import worst_pair
+from codesign.limits import saturation_electrons
 from codesign.problem import Problem
 from codesign.report.figures.base import (
     SMALL,
@@ -25,7 +26,7 @@ from codesign.report.figures.base import (
     wrapped,
     write,
 )
-from codesign.report.house import BACKGROUND, CARD, DASHES, INK, MUTED, TARGET
+from codesign.report.house import BACKGROUND, CARD, DASHES, INK, MUTED, RULE, TARGET
 from codesign.report.layout import number
 from codesign.report.text import rate_words
 
@@ -42,6 +43,8 @@ ACROSS, DOWN, CELLS, GAP = 4, 2, 40, 2
 WIDEST = 25.0
 #: Room beyond the means on that scale. [standard deviations]
 MARGIN = 3.0
+#: Where pixels fill, dots from this share of saturation on are shown as white. [1], [standard deviations]
+FULL, WHITE = 0.99, 1e6
 #: Softness of a defect's edge. [cells]
 EDGE = 1.3
 #: Height of the panel below a picture. [mm]
@@ -159,7 +162,17 @@ def picture(side: Side, coverage: Array, seed: int) -> Array:
     """Simulated pieces, in standard deviations of the noise from midway between target and background."""
     want = expected(side.problem, side.performance)
     values = simulate(side.problem, side.performance, coverage, np.random.default_rng(seed))
-    return (values - want.middle_e) / max(want.noise_e, 1e-12)
+    seen = (values - want.middle_e) / max(want.noise_e, 1e-12)
+    if not _clips(side.performance) or side.performance.weights:
+        return seen
+    # The means lie above the end of the scale; a full well is white all the same.
+    setting = setting_of(side.problem, side.performance.design)
+    return np.where(values >= FULL * saturation_electrons(setting.camera, setting.gain), WHITE, seen)
+
+
+def _clips(performance: Performance) -> bool:
+    """Whether a target or a background fills its pixels."""
+    return any(surface.saturation_share > 1 for surface in performance.surfaces if surface.role != "guard")
 
 
 def _draw_picture(axes: Axes, side: Side, coverage: Array, reach: float, plan: tuple[int, int], room: float) -> None:
@@ -172,13 +185,14 @@ def _draw_picture(axes: Axes, side: Side, coverage: Array, reach: float, plan: t
         sheet[top * step : top * step + CELLS, left * step : left * step + CELLS] = piece
     import matplotlib as mpl
 
-    shades = mpl.colormaps["gray"].with_extremes(bad=CARD)
+    gap = RULE if _clips(side.performance) else CARD  # white pieces would not stand out of a white page
+    shades = mpl.colormaps["gray"].with_extremes(bad=gap)
     axes.imshow(np.ma.masked_invalid(sheet), cmap=shades, vmin=-reach, vmax=reach, interpolation="none")
     axes.set_axis_off()
     axes.set_anchor("W")
     panel, result = axes.get_figure(root=False), side.performance
-    full = any(surface.saturation_share > 1 for surface in result.surfaces if surface.role != "guard")
-    said = f"CNR {number(result.cnr)}, {rate_words(result.error_rate)} missed" + ("; pixels are full" if full else "")
+    full = "; pixels are full" if _clips(result) else ""
+    said = f"CNR {number(result.cnr)}, {rate_words(result.error_rate)} missed{full}"
     axes.set_title("\n".join(shortened(panel, line, room - 8.0, TITLE, "bold") for line in (side.words, said)))
 
 
