@@ -201,6 +201,12 @@ class Filter(Part):
             return np.interp(grid, own_nm, curve.values)
         return model.tilted_transmittance(own_nm, curve.values, grid, angles, weights, self.effective_index)
 
+    def blocked_nm(self) -> tuple[float, float]:
+        """Return the range for which this piece's blocking is stated; beyond it the filter is taken as open. [nm]"""
+        low, high = self._blocked_range()
+        shift = self.shift_nm or 0.0
+        return low + shift, high + shift
+
     def _blocked_range(self) -> tuple[float, float]:
         lo = 0.0 if self.blocking_from_nm is None else self.blocking_from_nm
         hi = np.inf if self.blocking_to_nm is None else self.blocking_to_nm

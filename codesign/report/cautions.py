@@ -1,4 +1,4 @@
-"""Warnings that apply to a recipe: light that hurts, flashing, heat, current. Aids only, no assessment."""
+"""Warnings that apply to a recipe: data it stands on, light that hurts, flashing, heat, current. Aids only."""
 
 from __future__ import annotations
 
@@ -9,7 +9,8 @@ import numpy as np
 from codesign.catalog import Led
 from codesign.design import Performance
 from codesign.problem import Problem
-from codesign.report.layout import duration
+from codesign.problem.choices import JOINT
+from codesign.report.layout import duration, percent
 from codesign.spectra import trapezoid_weights
 from codesign.study.radiation import screening
 
@@ -109,4 +110,35 @@ def _supply(problem: Problem, performance: Performance) -> list[str]:
     ]
 
 
-CHECKS: tuple[Callable[[Problem, Performance], list[str]], ...] = (_light, _published_limits, _flashing, _heat, _supply)
+def _filter_open(problem: Problem, performance: Performance) -> list[str]:
+    """Light used where the data sheet of a filter says nothing of blocking: it is taken as open there."""
+    from codesign.design_spectra import spectra
+
+    said = []
+    for name in performance.design.filter.split(JOINT):
+        part = problem.catalog.filters.get(name)
+        if part is None or (part.blocking_from_nm is None and part.blocking_to_nm is None):
+            continue
+        found, (low, high) = spectra(problem, performance), part.blocked_nm()
+        grid = found.wavelength_nm
+        seen = sum(abs(r.weight) * (r.led_e + r.ambient_e)[found.pair[1]] for r in found.readings)
+        total = float(found.integral(seen))
+        share = float(found.integral(seen * ((grid < low) | (grid > high)))) / total if total > 0 else 0.0
+        if share >= NOTICEABLE:
+            span = (
+                f"to {high:g} nm"
+                if low <= 0
+                else f"from {low:g} nm"
+                if high == np.inf
+                else f"for {low:g} to {high:g} nm"
+            )
+            said.append(
+                f"Filter {name}: its blocking is stated {span}. Beyond, it is taken as open, and {percent(share)} of "
+                "the electrons come through there: measure its transmittance before you rely on this."
+            )
+    return said
+
+
+CHECKS: tuple[Callable[[Problem, Performance], list[str]], ...] = (
+    _filter_open, _light, _published_limits, _flashing, _heat, _supply,
+)  # fmt: skip

@@ -22,6 +22,8 @@ CNR_DEFINITION = "|target mean - background mean| / √(mean of their variances)
 
 #: From this share on a limit counts as reached. [1]
 REACHED = 0.999
+#: What the mark of a limit at the optimum means.
+BINDS = "binds: loosening this limit can raise the CNR"
 #: Limits met that are used less are counted in one line; the JSON result lists all. [1]
 HARDLY_USED = 0.01
 #: Units as set in text; error messages and JSON keep to ASCII.
@@ -171,8 +173,12 @@ def _weights(performance: Performance) -> str:
 
 def light_words(problem: Problem, performance: Performance) -> str:
     """Say when the LEDs are on."""
+    if not performance.leds:
+        return "no LED on"
     if not problem.strobe:
         return "LEDs on continuously"
+    if performance.duty > 1:
+        return "LEDs never off: exposure beyond the frame"
     return f"LEDs on {percent(performance.duty)} of the time at {problem.spec.timing.frame_rate_hz:g} Hz"
 
 
@@ -229,7 +235,8 @@ def _limits(
     if len(shown) < len(ordered):
         lines.append(f"   and {len(ordered) - len(shown)} more below {percent(HARDLY_USED)} (--json lists all)")
     if any(_bound(limit, binding) and limit.met for limit in ordered):
-        lines.append(" ► binds: loosening this limit can raise the CNR")
+        word = f"reached: used to {percent(REACHED)} or more" if binding is None else BINDS
+        lines.append(f" ► {word}")
     if any(limit.name == added for limit in ordered):
         lines.append(f" * the limit that --least {least.quantity} tightens to find the least that is enough")
     return lines if performance.feasible else [*lines, " ! exceeded"]

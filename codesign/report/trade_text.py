@@ -77,9 +77,8 @@ def axis_words(curve: Trade) -> str:
 def _curve(curve: Trade, letters: dict[tuple[str, ...], str], width: int) -> list[str]:
     lines = [heading(f"CNR against {curve.quantity.label}", width)]
     if curve.enough is not None:
-        lines += labelled("enough", _least(curve, curve.enough, f"CNR {curve.enough.cnr:g}"), width)
-    nearly = f"CNR {number(curve.most.cnr)}, {100 * MOST:g} % of the most"
-    lines += labelled("nearly all", _least(curve, curve.most, nearly), width)
+        lines += labelled("enough", least_words(curve, curve.enough, f"CNR {curve.enough.cnr:g}"), width)
+    lines += labelled("nearly all", least_words(curve, curve.most, nearly_words(curve)), width)
     lines += labelled("most", _top(curve), width)
     if curve.own_limit is not None:
         lines += labelled("your limit", _own(curve), width)
@@ -90,7 +89,13 @@ def _curve(curve: Trade, letters: dict[tuple[str, ...], str], width: int) -> lis
     return [*lines, *table(header, rows, width, left=(4, 5, 6))]
 
 
-def _least(curve: Trade, least: Enough, wanted: str) -> str:
+def nearly_words(curve: Trade) -> str:
+    """Say which CNR is nearly the greatest there is."""
+    return f"CNR {number(curve.most.cnr)}, {100 * MOST:g} % of the most"
+
+
+def least_words(curve: Trade, least: Enough, wanted: str) -> str:
+    """Say how little of the quantity is enough for a CNR, and what is proven of less."""
     if not least.reached:
         return f"no recipe reaches {wanted}, however much {curve.quantity.label}"
     if least.value <= 0:

@@ -1,4 +1,4 @@
-"""What could be had without thought of wavelengths: one white LED (or any one LED), no filter, set as well as can be."""
+"""What could be had without much thought: one white LED (or any one LED), no filter, set as well as can be."""
 
 from __future__ import annotations
 

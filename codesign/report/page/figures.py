@@ -53,7 +53,7 @@ def _view(subject: Subject) -> Drawing | None:
     if not subject.performance.cnr > 0:
         return None
     figure = simulated_view(subject.problem, subject.performance, subject.plain)
-    beside = "" if subject.plain is None else " Left: what could be had without thought of wavelengths."
+    beside = "" if subject.plain is None else " Left: one LED and no filter, set as well as can be."
     return (
         figure,
         f"Simulated at the electrons and the noise predicted; defects of this size and shape are invented.{beside}",

@@ -45,7 +45,7 @@ def recipe(subject: Subject) -> Section:
             for k, (key, value) in enumerate(performance.weights.items())
         ]
         rows.append(("weights", ("readings added up as ", weights)))
-    header = ("LED", "current", "emitters", "junction", "heat and light of one emitter while on")
+    header = ("LED", "current", "emitters", "junction", "power and light of one emitter while on")
     leds = [
         (
             name(led.id),
@@ -108,8 +108,7 @@ def result(subject: Subject) -> Section:
     rows.append(
         (
             "errors",
-            f"{error_words(performance)} missed and as many false alarms, threshold midway, noise normally "
-            "distributed noise",
+            f"{error_words(performance)} missed and as many false alarms, threshold midway, noise normally distributed",
         )
     )
     header = ("surface", "role", "grey value [DN]", "electrons", "from ambient light", "of saturation", BAR_HEADER)

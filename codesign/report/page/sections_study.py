@@ -18,10 +18,11 @@ from codesign.report.sensitivity_text import (
     weight,
     worst_end,
 )
+from codesign.report.trade_text import least_words, nearly_words
 from codesign.study.sensitivity import LimitPrice, Sensitivities
 
 if TYPE_CHECKING:
-    from codesign.study.trade import Enough, Trade, TradePoint
+    from codesign.study.trade import Trade, TradePoint
 
 #: What a marked point of a trade-off curve is.
 MARKS = {"own": " (limit of the problem)", "enough": " (enough for the CNR required)"}
@@ -169,7 +170,7 @@ def _curve(curve: Trade) -> Html:
     return joined(
         (
             element("h3", f"CNR against {label}"),
-            listed(_enough(curve, wanted) for wanted in (curve.enough, curve.most) if wanted is not None),
+            listed(_enough(curve)),
             table(f"Best CNR for each {label}", header, rows, numbers=(1, 2, 3), wide=True),
         )
     )
@@ -179,12 +180,12 @@ def _lit(point: TradePoint) -> Content:
     return [(", " if k else "", name(led)) for k, led in enumerate(point.optimum.drive_ma)]
 
 
-def _enough(curve: Trade, wanted: Enough) -> str:
-    label, unit = curve.quantity.label, curve.quantity.unit
-    if not wanted.reached:
-        return f"CNR {number(wanted.cnr)} is out of reach, whatever the {label}."
-    said = f"CNR {number(wanted.cnr)} is reached with {label} {quantity(wanted.value, unit)}"
-    return said + (f"; none does with {quantity(wanted.bound, unit)} or less." if wanted.bound > 0 else ".")
+def _enough(curve: Trade) -> list[str]:
+    """How little is enough for the CNR required, and for nearly all there is."""
+    found = [least_words(curve, curve.most, nearly_words(curve))]
+    if curve.enough is not None:
+        found.insert(0, least_words(curve, curve.enough, f"CNR {number(curve.enough.cnr)}"))
+    return [f"{text[0].upper()}{text[1:]}." for text in found]
 
 
 def _absent(subject: Subject, key: str, title: str) -> Section | None:
