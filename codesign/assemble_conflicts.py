@@ -26,13 +26,30 @@ def require_usable_leds(problem: Problem) -> None:
 def nothing_seen(assembly: Assembly) -> InfeasibleError:
     """Return the error for a problem in which no configuration shows any difference."""
     where = assembly.problem.where
-    full = _filled_by_ambient(assembly)
-    if full is not None:
-        return full
+    plain = _no_time_for_shots(assembly.problem) or _filled_by_ambient(assembly)
+    if plain is not None:
+        return plain
     return InfeasibleError(
         f"{where}: no configuration shows any difference between target and background within the limits; "
         "look at the candidates and at junction and current limits",
         ["candidates"],
+    )
+
+
+def _no_time_for_shots(problem: Problem) -> InfeasibleError | None:
+    """Say so when the shots of a frame, each with its readout, take longer than the frame with every camera."""
+    shots, rate = problem.spec.detection.shots, problem.spec.timing.frame_rate_hz
+    if shots < 2 or rate is None:
+        return None
+    quickest = min(problem.cameras, key=lambda camera: camera.readout_ms + camera.exposure_min_us * 1e-3)
+    needed = shots * (quickest.readout_ms + quickest.exposure_min_us * 1e-3)
+    if needed <= 1e3 / rate:
+        return None
+    return InfeasibleError(
+        f"{problem.where}: limits in conflict: {shots} shots in a frame take {needed:.4g} ms at least (camera "
+        f"{quickest.id!r} reads out for {quickest.readout_ms:g} ms after each), timing.frame_rate_hz {rate:g} leaves "
+        f"{1e3 / rate:.4g} ms; lower the frame rate, take fewer shots or a quicker camera",
+        ["frame period"],
     )
 
 

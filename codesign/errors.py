@@ -60,7 +60,8 @@ class CertificateError(SolveError):
 def nearest(name: str, known: Iterable[str]) -> str:
     """Return advice naming the closest known word, or the first few known words."""
     known = sorted(known)
-    close = get_close_matches(name, known, n=1, cutoff=0.5)
+    turned = [word for word in known if sorted(word.split("-")) == sorted(name.split("-"))]
+    close = turned or get_close_matches(name, known, n=1, cutoff=0.5)
     if close:
         return f"did you mean {close[0]!r}?"
     shown = ", ".join(known[:8]) + (", ..." if len(known) > 8 else "")
