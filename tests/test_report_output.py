@@ -4,11 +4,12 @@ import json
 import os
 import stat
 
+import numpy as np
 import pytest
 
 from codesign.errors import CodesignError
 from codesign.report.layout import bullet, columns, cut, labelled, table
-from codesign.report.output import as_ascii, plain, shown, write_file
+from codesign.report.output import as_ascii, csv_text, plain, shown, write_file
 
 
 def test_file_is_replaced_as_a_whole(tmp_path):
@@ -131,3 +132,11 @@ def test_lines_are_wrapped_by_what_they_show(text):
 
 def test_typed_words_stay_on_one_line_without_control_characters():
     assert plain("a\x1b[31mb\u202ec\nd\te") == "a [31mb c d e"
+
+
+def test_tables_keep_all_digits_however_arrays_print():
+    import pandas as pd
+
+    table = pd.DataFrame({"cnr": [np.float64(1) / 3, None], "name": ["a", "b"]}, dtype=object)
+    with np.printoptions(legacy="1.13"):
+        assert csv_text(table) == "cnr,name\n0.3333333333333333,a\n,b\n"

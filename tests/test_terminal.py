@@ -97,7 +97,7 @@ with progress.Status("a rather long name of what is being done here") as line:
 
 def test_line_is_cut_to_the_width_a_terminal_has_now():
     terminal = Terminal("-c", WORK, columns=70)
-    terminal.wait_for("what is being done")
+    terminal.wait_for("\r[^\r]{68}…\r")
     terminal.resize(40)
     terminal.wait_for("\r[^\r]{38}…\r")
     os.write(terminal._ours, b"done\n")

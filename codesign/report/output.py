@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import codecs
 import json
+import math
 import os
 import re
 import tempfile
 import unicodedata
 from functools import cache
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from codesign.errors import CodesignError
 from codesign.report.layout import LABEL, visible
@@ -103,14 +104,18 @@ def csv_text(table: pd.DataFrame) -> str:
     """Return a table as CSV text that a spreadsheet shows and never computes.
 
     A cell or column name in words that starts with one of `FORMULA_STARTS` gets an apostrophe in front; numbers stay as
-    they are. Words are on one line, without control or direction characters.
+    they are, with all digits. Words are on one line, without control or direction characters.
     """
-    words = table.rename(columns=lambda name: _cell(str(name))).map(lambda v: _cell(v) if isinstance(v, str) else v)
-    return words.to_csv(index=False, lineterminator="\n")
+    return table.rename(columns=lambda name: _cell(str(name))).map(_cell).to_csv(index=False, lineterminator="\n")
 
 
-def _cell(text: str) -> str:
-    text = plain(text)
+def _cell(value: Any) -> Any:
+    """What stands in a cell; how arrays print is a setting that any library may change, so numbers print themselves."""
+    if isinstance(value, float):
+        return value if math.isnan(value) else repr(float(value))
+    if not isinstance(value, str):
+        return value
+    text = plain(value)
     return f"'{text}" if text.startswith(FORMULA_STARTS) else text
 
 
