@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from codesign.cli_terminal import page_width, put, searching
+from codesign.cli_terminal import page_width, put
 from codesign.errors import CodesignError
 
 if TYPE_CHECKING:
@@ -29,6 +29,10 @@ class Goal(StrEnum):
     COST = "cost"
 
 
+#: What is sought for each goal, for the progress line.
+SOUGHT = {Goal.WORST: "worst CNR", Goal.COUNT: "variants served", Goal.COST: "price"}
+
+
 def family(
     file: Annotated[str, typer.Argument(metavar="FILE", help="Family file, or the name of a demo family.")],
     json: Annotated[bool, typer.Option("--json", help="Machine-readable result on standard output.")] = False,
@@ -38,6 +42,8 @@ def family(
     figure: Annotated[Path | None, typer.Option(metavar="FILE", help="Draw it: .svg, .png or .pdf.")] = None,
     only: Annotated[list[str] | None, typer.Option(metavar="VARIANT", help="Only this variant; repeat it.")] = None,
     shared: Annotated[bool, typer.Option("--shared", help="One rig for all variants instead of one each.")] = False,
+    rigs: Annotated[bool, typer.Option("--rigs", help="The fewest rigs that serve all variants.")] = False,
+    wheel: Annotated[bool, typer.Option("--wheel", help="One rig with the fewest filters on a wheel.")] = False,
     goal: Annotated[
         Goal | None,
         typer.Option(metavar="WHAT", help="For --shared: worst CNR, count of variants at --cnr, or cost of that."),
@@ -75,21 +81,24 @@ def family(
 
     check_targets(csv, figure)
     wishes = {"goal": goal, "max_led_channels": max_leds, "required_cnr": cnr, "time_limit": time_limit}
-    _require_shared(shared, wishes)
+    kind = _kind({"--shared": shared, "--rigs": rigs, "--wheel": wheel}, wishes)
     loaded = load_family(file)
     loaded = loaded if only is None else loaded.only(only)
     place = store if store is not None else Path(f"{Path(loaded.where).stem}.results.sqlite")
     engine = _engine(processes, scheduler, len(loaded.variants))
     own = _own_rigs(loaded, place, engine, gap=gap, fresh=fresh)
-    found = _shared(loaded, own, wishes | {"gap": gap}) if shared and own.solved else own
+    found = _shared(kind, loaded, own, wishes | {"gap": gap}) if kind and own.solved else own
     save(found, csv, figure)
     put(show(found, json=json, width=page_width()))
     if own.failed:
         raise typer.Exit(SOME_FAILED)
 
 
-def _require_shared(shared: bool, wishes: dict[str, Any]) -> None:
-    """What is said of a rig in common needs one."""
+def _kind(kinds: dict[str, bool], wishes: dict[str, Any]) -> str:
+    """Which kind of rigs in common is asked for, empty for none; what is said of one needs one."""
+    asked = [option for option, wanted in kinds.items() if wanted]
+    if len(asked) > 1:
+        raise CodesignError(f"{asked[0]} and {asked[1]} are different questions; ask one at a time")
     options = {
         "goal": "--goal",
         "max_led_channels": "--max-leds",
@@ -97,8 +106,11 @@ def _require_shared(shared: bool, wishes: dict[str, Any]) -> None:
         "time_limit": "--time-limit",
     }
     for name, option in options.items():
-        if wishes[name] is not None and not shared:
-            raise CodesignError(f"{option} is for a rig in common; add --shared, or leave it out")
+        if wishes[name] is not None and not asked:
+            raise CodesignError(f"{option} is for rigs in common; add --shared, --rigs or --wheel, or leave it out")
+    if wishes["goal"] is not None and asked != ["--shared"]:
+        raise CodesignError(f"--goal is for --shared; {asked[0]} serves all variants at the CNR they need")
+    return asked[0] if asked else ""
 
 
 def _engine(processes: int | None, scheduler: str | None, variants: int) -> Engine:
@@ -137,8 +149,13 @@ def _own_rigs(loaded: Family, place: Path, engine: Engine, *, gap: float | None,
             raise typer.Exit(INTERRUPTED) from None
 
 
-def _shared(loaded: Family, own: OwnRigs, wishes: dict[str, Any]) -> SharedFamily:
-    from codesign.family.shared import shared_family
+def _shared(kind: str, loaded: Family, own: OwnRigs, wishes: dict[str, Any]) -> SharedFamily:
+    from codesign.family.shared import filter_wheel_family, rig_set_family, shared_family
+    from codesign.report.family_progress import CommonProgress
 
-    with searching("rig in common") as progress:
-        return shared_family(loaded, own, progress=progress, **wishes)
+    find = {"--shared": shared_family, "--rigs": rig_set_family, "--wheel": filter_wheel_family}[kind]
+    goal = wishes["goal"] or loaded.spec.shared.goal
+    sought = {"--rigs": "rigs", "--wheel": "filters"}.get(kind) or SOUGHT[Goal(goal)]
+    named = wishes if kind == "--shared" else {n: v for n, v in wishes.items() if n not in ("goal", "gap")}
+    with CommonProgress(sought) as progress:
+        return find(loaded, own, progress=progress, **named)

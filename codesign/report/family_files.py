@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -9,6 +10,7 @@ from codesign.family.batch import OwnRigs
 from codesign.report.family_dict import own_rigs_dict
 from codesign.report.family_table import recipe_table
 from codesign.report.family_text import own_rigs_text
+from codesign.report.layout import counted
 from codesign.report.machine import as_json
 from codesign.report.output import csv_text, write_file
 from codesign.report.study_files import check_targets
@@ -25,9 +27,20 @@ def show(found: OwnRigs | SharedFamily, *, json: bool, width: int = 80) -> str:
     """Return a family as text, or as JSON."""
     if isinstance(found, OwnRigs):
         return as_json(own_rigs_dict(found)) if json else own_rigs_text(found, width)
-    from codesign.report.family_shared import shared_dict, shared_text
+    text, plain_values = _reports(found)
+    return as_json(plain_values(found)) if json else text(found, width)
 
-    return as_json(shared_dict(found)) if json else shared_text(found, width)
+
+def _reports(found: SharedFamily) -> tuple[Callable[..., str], Callable[..., dict]]:
+    """Text and plain values of rigs in common, by their kind."""
+    from codesign.report import family_sets, family_shared
+    from codesign.study.rig_sets import FilterWheel, RigSet
+
+    if isinstance(found.rig, RigSet):
+        return family_sets.rig_set_text, family_sets.rig_set_dict
+    if isinstance(found.rig, FilterWheel):
+        return family_sets.wheel_text, family_sets.wheel_dict
+    return family_shared.shared_text, family_shared.shared_dict
 
 
 def save(found: OwnRigs | SharedFamily, csv: Path | None, figure: Path | None = None) -> None:
@@ -45,6 +58,16 @@ def _figure(found: OwnRigs | SharedFamily) -> Figure:
 
     if isinstance(found, OwnRigs):
         return family_figure(found.entries, None, found.title)
-    rig, shared = found.rig, {entry.name: entry.outcome for entry in found.entries}
-    common = f"rig in common: {rig.camera}, filter {rig.filter}, f/{rig.f_number:g}"
-    return family_figure(found.own.entries, shared, found.own.title, common=common)
+    return family_figure(found.own.entries, found.common, found.own.title, common=_common_words(found))
+
+
+def _common_words(found: SharedFamily) -> str:
+    """What is in common, in one line."""
+    from codesign.study.rig_sets import FilterWheel, RigSet
+
+    rig = found.rig
+    if isinstance(rig, RigSet):
+        return f"best of {counted(rig.number, 'rig')}"
+    if isinstance(rig, FilterWheel):
+        return f"{rig.camera}, f/{rig.f_number:g}, {counted(rig.number, 'filter')} on a wheel"
+    return f"rig in common: {rig.camera}, filter {rig.filter}, f/{rig.f_number:g}"

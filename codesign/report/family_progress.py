@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TextIO
 
-from codesign.report.layout import bar, duration
+from codesign.report.layout import bar, duration, number
 from codesign.report.progress import LEAST_TO_GUESS, Status
 
 #: Cells of the bar.
@@ -27,6 +27,18 @@ class FamilyProgress(Status):
         if not self._variants[1]:
             return super().line(now)
         return family_line(*self._variants, now - self.started)
+
+
+class CommonProgress(Status):
+    """The line of a search for rigs in common: called with the best so far and its bound, of whatever is sought."""
+
+    def __init__(self, sought: str, stream: TextIO | None = None) -> None:
+        self._sought = sought
+        super().__init__("rigs in common", stream)
+
+    def __call__(self, value: float, bound: float) -> None:
+        """Show what was found and what is proven."""
+        self.note(f"{self._sought} {number(value)}, bound {number(bound)}")
 
 
 def family_line(done: int, total: int, failed: int, run: int, seconds: float) -> str:

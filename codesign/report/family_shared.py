@@ -19,13 +19,10 @@ from __future__ import annotations
 
 from typing import Any
 
-import codesign
-from codesign.family.batch import Entry
 from codesign.family.shared import SharedFamily
-from codesign.report.family_dict import entry_dict, summary_dict
-from codesign.report.family_table import recipe_rows
-from codesign.report.family_text import MISSED, by_need, cnr_words, failures, need_sentence
-from codesign.report.layout import NARROWEST, bullet, counted, heading, labelled, number, percent, table
+from codesign.report.family_common import after, finite, head_dict, numbered, variant_table, variants_dict
+from codesign.report.family_text import cnr_words, need_sentence
+from codesign.report.layout import NARROWEST, bullet, counted, heading, labelled, number, percent
 from codesign.report.output import plain
 
 SHARED_SCHEMA = "codesign.shared/1"
@@ -39,17 +36,15 @@ def shared_text(found: SharedFamily, width: int = 80) -> str:
     Parameters
     ----------
     found : SharedFamily
+        With a `SharedRig`.
     width : int
         Page width, at least 60. [characters]
     """
-    width, rig = max(width, NARROWEST), found.rig
+    width = max(width, NARROWEST)
     lines = [heading(plain(found.own.title), width), *_rig(found, width), "", heading("each variant on it", width)]
-    lines += _variants(found, width)
+    lines += variant_table(found, width, by_cnr=found.rig.goal == "worst")
     lines += ["", heading("what would help most", width), *_helps(found, width)]
-    lines += ["", heading("how sure this is", width), *_sure(found, width)]
-    for part in rig.left_out:
-        lines += bullet(f"no choice, since not all variants have it: {plain(part)}", width)
-    lines += failures(found.own.failed, width)
+    lines += ["", heading("how sure this is", width), *_sure(found, width), *after(found, width)]
     return "\n".join(line.rstrip() for line in lines) + "\n"
 
 
@@ -71,47 +66,20 @@ def _rig(found: SharedFamily, width: int) -> list[str]:
     lines += labelled("camera", rig.camera, width)
     lines += labelled("filter", rig.filter, width)
     lines += labelled("f-number", f"{rig.f_number:g}", width)
-    numbered = ", ".join(f"{number} {led}" for number, led in enumerate(rig.leds, 1))
-    lines += labelled("LEDs", f"{numbered}{allowed}", width)
+    lines += labelled("LEDs", f"{numbered(rig.leds)}{allowed}", width)
     lines += labelled("goal", goal_words(found), width)
     need = need_sentence(found.entries)
     lines += labelled("required", need, width) if need else []
     return lines + labelled("limited by", plain(rig.limiting), width)
 
 
-def _variants(found: SharedFamily, width: int) -> list[str]:
-    """A row for each variant, those worst off first; all of them, since the rig is one decision for all."""
-    need = any(entry.required_cnr is not None for entry in found.entries)
-    rows = [_row(found, entry, need) for entry in sorted(found.entries, key=lambda entry: _standing(found, entry))]
-    header = ("variant", "CNR", *(("needs",) if need else ()), "own rig", "lost", "gain", "exposure", "LEDs lit")
-    lines = table(header, rows, width, left=(0, len(header) - 1))
-    return lines + (bullet(MISSED, width) if any(entry.met is False for entry in found.entries) else [])
-
-
-def _standing(found: SharedFamily, entry: Entry) -> float:
-    if not entry.outcome.solved:
-        return 0.0
-    return entry.outcome.cnr if found.rig.goal == "worst" else by_need(entry)
-
-
-def _row(found: SharedFamily, entry: Entry, need: bool) -> tuple[str, ...]:
-    outcome, other = entry.outcome, found.rig.outcomes[entry.name]
-    wanted = "" if entry.required_cnr is None else f"{entry.required_cnr:g}" + (" !" if entry.met is not True else "")
-    own = (cnr_words(other.own_cnr), percent(other.regret)) if other.own_cnr == other.own_cnr else ("", "")
-    if not outcome.solved:
-        return (plain(entry.name), "none", *((wanted,) if need else ()), *own, "", "", "")
-    lit = " ".join(str(number) for number, led in enumerate(found.rig.leds, 1) if led in outcome.leds)
-    settings = (f"{outcome.gain_db:g} dB", f"{outcome.exposure_us:g} µs", lit)
-    return (plain(entry.name), cnr_words(outcome.cnr), *((wanted,) if need else ()), *own, *settings)
-
-
 def _helps(found: SharedFamily, width: int) -> list[str]:
     if not found.rig.helps:
-        return bullet("no single change to the rig was found to help more than one variant in a hundred", width)
+        return bullet("none of the changes tried helps", width)
     lines = []
     for change in found.rig.helps[:MOST_HELPS]:
         gain = f"worst CNR {cnr_words(change.worst_cnr)} ({100 * change.worst_gain:+.1f} %)"
-        lines += bullet(f"{plain(change.change)}: {counted(change.helped, 'variant')} gain, {gain}", width)
+        lines += bullet(f"{plain(change.change)}: helps {counted(change.helped, 'variant')}, {gain}", width)
     return lines
 
 
@@ -124,47 +92,22 @@ def _sure(found: SharedFamily, width: int) -> list[str]:
         "count": "no rig with these parts serves more variants" if rig.gap == 0 else f"at most {rig.bound:.0f} can be",
         "cost": f"no rig that serves all is more than {percent(rig.gap, 1e-6)} cheaper",
     }[rig.goal]
-    text = (
-        f"{what}; shared are camera, filter, f-number and LEDs, set anew for each variant gain, exposure and currents"
-    )
-    return bullet(text, width)
+    settings = "shared are camera, filter, f-number and LEDs, set anew for each variant gain, exposure and currents"
+    return bullet(f"{what}; {settings}", width)
 
 
 def shared_dict(found: SharedFamily) -> dict[str, Any]:
     """Return a rig in common as plain values; the module says what each key holds."""
     rig = found.rig
-    names = ("camera", "filter", "f_number", "goal", "value", "bound", "gap", "status", "limiting", "residual_k")
+    names = ("camera", "filter", "f_number", "goal", "status", "limiting")
+    numbers = {name: finite(getattr(rig, name)) for name in ("value", "bound", "gap", "residual_k")}
+    parts = {name: getattr(rig, name) for name in names}
     return {
-        "schema": SHARED_SCHEMA,
-        "program": {"name": "codesign", "version": codesign.__version__},
-        "family": {"title": found.own.title, "file": found.own.where},
-        "rig": {
-            **{name: getattr(rig, name) for name in names},
-            "leds": list(rig.leds),
-            "max_led_channels": found.max_led_channels,
-        },
-        "summary": summary_dict(found.entries),
-        "variants": [_shared_entry(found, entry) for entry in found.entries],
-        "recipe_table": recipe_rows(found.entries),
+        **head_dict(found, SHARED_SCHEMA),
+        "rig": {**parts, **numbers, "leds": list(rig.leds), "max_led_channels": found.max_led_channels},
+        **variants_dict(found),
         "helps": [
             {"change": h.change, "helped": h.helped, "worst_cnr": h.worst_cnr, "worst_gain": h.worst_gain}
             for h in rig.helps
         ],
-        "left_out": list(rig.left_out),
-        "own": [
-            {
-                "variant": entry.name,
-                "status": entry.outcome.status,
-                "reason": entry.outcome.reason or None,
-                "cnr": entry.outcome.cnr,
-            }
-            for entry in found.own.entries
-        ],
     }
-
-
-def _shared_entry(found: SharedFamily, entry: Entry) -> dict[str, Any]:
-    outcome = found.rig.outcomes[entry.name]
-    known = outcome.own_cnr == outcome.own_cnr
-    own = {"own_cnr": outcome.own_cnr, "regret": outcome.regret} if known else {"own_cnr": None, "regret": None}
-    return {**entry_dict(entry), **own}
