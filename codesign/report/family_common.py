@@ -14,6 +14,9 @@ from codesign.report.family_text import MISSED, by_need, cnr_words, failures
 from codesign.report.layout import bullet, percent, table
 from codesign.report.output import plain
 
+#: Share of the CNR whose loss reads as none.
+LEAST_LOST = 5e-4
+
 
 def numbered(leds: tuple[str, ...]) -> str:
     """LED channels with the numbers by which the rows of variants name them."""
@@ -29,7 +32,7 @@ def variant_table(found: SharedFamily, width: int, place: str = "", *, by_cnr: b
     ordered = sorted(found.entries, key=lambda entry: _standing(entry, by_cnr))
     rows = [_row(found, entry, need=need, place=bool(place)) for entry in ordered]
     places = (place,) if place else ()
-    header = ("variant", *places, "CNR", *(("needs",) if need else ()), "own rig", "lost", "gain", "exposure", "lit")
+    header = ("variant", *places, "CNR", *(("needs",) if need else ()), "own rig", "lost", "gain", "exposure", "LEDs")
     lines = table(header, rows, width, left=(0, *((1,) if place else ()), len(header) - 1))
     return lines + (bullet(MISSED, width) if any(entry.met is False for entry in found.entries) else [])
 
@@ -79,7 +82,8 @@ def _row(found: SharedFamily, entry: Entry, *, need: bool, place: bool) -> tuple
     outcome, other = entry.outcome, found.rig.outcomes[entry.name]
     wanted = "" if entry.required_cnr is None else f"{entry.required_cnr:g}" + (" !" if entry.met is not True else "")
     known = not math.isnan(other.own_cnr)
-    own = (cnr_words(other.own_cnr), percent(other.regret)) if known else ("", "")
+    lost = "0 %" if other.regret < LEAST_LOST else percent(other.regret)
+    own = (cnr_words(other.own_cnr), lost) if known else ("", "")
     name = (plain(entry.name), *((found.place_of(entry.name),) if place else ()))
     if not outcome.solved:
         return (*name, "none", *((wanted,) if need else ()), *own, "", "", "")

@@ -69,7 +69,7 @@ def _summary(found: SharedFamily, thing: str, width: int) -> list[str]:
     beside = " of a wheel, the rest in common" if thing == "filter" else ""
     lines = labelled("variants", f"{len(found.entries)} on {counted(found.rig.number, thing)}{beside}", width)
     if found.max_led_channels is not None:
-        lines += labelled("LEDs", f"at most {found.max_led_channels} channels on a rig", width)
+        lines += labelled("LEDs", f"at most {counted(found.max_led_channels, 'channel')} on a rig", width)
     need = need_sentence(found.entries)
     return lines + (labelled("required", need, width) if need else [])
 

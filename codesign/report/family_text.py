@@ -110,9 +110,9 @@ def _distribution(entries: Sequence[Entry], width: int) -> list[str]:
 def _edges(values: np.ndarray) -> np.ndarray:
     """Class limits at round numbers."""
     span = max(values.max() - values.min(), 1e-9 * values.max())
-    raw = span / CLASSES
-    unit = 10.0 ** np.floor(np.log10(raw))
-    step = unit * next(multiple for multiple in (1, 2, 5, 10) if unit * multiple >= raw)
+    least = span / (1.6 * CLASSES)
+    unit = 10.0 ** np.floor(np.log10(least))
+    step = unit * next(multiple for multiple in (1, 2, 5, 10) if unit * multiple >= least)
     first, last = np.floor(values.min() / step), np.floor(values.max() / step) + 1
     return np.round(np.arange(first, last + 1) * step, 10)
 
