@@ -135,6 +135,15 @@ class Performance(Displayed):
         return tuple(limit for limit in self.limits if not limit.met)
 
 
+def junctions_at(problem: Problem, design: Design, assumed: Array) -> Array:
+    """Junction temperatures a recipe leads to by channel, (L,): those reached where lit, else those assumed. [deg C]"""
+    found, duty = np.array(assumed, dtype=float), problem.duty(design.exposure_us * 1e-6)
+    for led, drive_ma in design.drive_ma.items():
+        if drive_ma > 0:
+            found[problem.channel_index[led]] = _state_of(problem, led, drive_ma, duty).junction_c
+    return found
+
+
 def setting_of(problem: Problem, design: Design) -> Setting:
     """Look up the parts of a design. Raises ProblemError naming what is unknown."""
     camera = candidate(problem, design, "camera")
@@ -168,6 +177,12 @@ def level_at(problem: Problem, exposure_s: float) -> PulseLevel:
     """Return the pulse rating that holds at an exposure."""
     levels = pulse_levels(problem)
     return next((level for level in levels if exposure_s <= level.longest_s * (1 + 1e-9)), levels[-1])
+
+
+@lru_cache(maxsize=1024)
+def _state_of(problem: Problem, led: str, drive_ma: float, duty: float) -> LedState:
+    """`led_state` by id, kept: recipes that are compared differ in one LED or two."""
+    return led_state(problem, problem.channel(led), drive_ma, duty)
 
 
 def led_state(problem: Problem, channel: LedChannel, drive_ma: float, duty: float) -> LedState:
@@ -240,7 +255,7 @@ def evaluate(problem: Problem, design: Design, *, junction_c: Mapping[str, float
     setting = setting_of(problem, design)
     t = design.exposure_us * 1e-6
     duty = problem.duty(t)
-    states = tuple(led_state(problem, problem.channel(led), ma, duty) for led, ma in design.drive_ma.items() if ma > 0)
+    states = tuple(_state_of(problem, led, ma, duty) for led, ma in design.drive_ma.items() if ma > 0)
     states = tuple(replace(state, emitters=design.emitters.get(state.id, state.emitters)) for state in states)
     if junction_c is not None:
         states = tuple(replace(state, junction_c=junction_c[state.id]) for state in states)
@@ -307,10 +322,18 @@ class Light:
 
 def led_irradiance(problem: Problem, state: LedState) -> Array:
     """Spectral irradiance at the object by one lit LED channel, at its drive and junction. (n,) [W m⁻² nm⁻¹]"""
-    channel = problem.channel(state.id)
+    return _irradiance_of(problem, state.id, state.drive_ma, state.emitters, state.junction_c)
+
+
+@lru_cache(maxsize=256)
+def _irradiance_of(problem: Problem, led: str, drive_ma: float, emitters: int, junction_c: float) -> Array:
+    """The same by id, kept: recipes that are compared differ in one LED or two."""
+    channel = problem.channel(led)
     current, flux, _ = channel.led.operating_points()
-    share = float(np.interp(state.drive_ma * 1e-3, current, flux))
-    return channel_irradiance(problem, channel, state.junction_c) * (share * state.emitters / channel.emitters)
+    share = float(np.interp(drive_ma * 1e-3, current, flux))
+    found = channel_irradiance(problem, channel, junction_c) * (share * emitters / channel.emitters)
+    found.setflags(write=False)
+    return found
 
 
 @lru_cache(maxsize=64)

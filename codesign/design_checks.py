@@ -9,17 +9,19 @@ import numpy as np
 from codesign.build import free
 from codesign.errors import ProblemError, nearest
 from codesign.problem import Problem
-from codesign.problem.model import find_part
+from codesign.problem.model import find_part, part_names
 
 
 def candidate(problem: Problem, design: Any, kind: str) -> Any:
     """Return the camera or filter a design names. Raises ProblemError when it is not a candidate."""
     name = getattr(design, kind)
-    part, names = find_part(getattr(problem, f"{kind}s"), name)
+    parts = getattr(problem, f"{kind}s")
+    part = find_part(parts, name)
     if part is not None:
         return part
     raise ProblemError(
-        f"{design.where}: {kind} is {name!r}, not among the candidates of {problem.where}; {nearest(name, names)}"
+        f"{design.where}: {kind} is {name!r}, not among the candidates of {problem.where}; "
+        f"{nearest(name, part_names(parts))}"
     )
 
 
@@ -31,14 +33,14 @@ def check_values(problem: Problem, design: Any) -> None:
         raise ProblemError(f"{design.where}: f_number is {design.f_number:g}, must be > 0")
     candidate(problem, design, "filter")
     _check_emitters(problem, design)
-    known = {channel.id: channel.led.largest_current_ma for channel in problem.channels}
+    known = problem.channel_index
     for led, drive in design.drive_ma.items():
         if led not in known:
             raise ProblemError(
                 f"{design.where}: drive_ma.{led}: no such LED among the candidates of {problem.where}; "
                 f"{nearest(led, known)}"
             )
-        top = known[led]
+        top = problem.channel(led).led.largest_current_ma
         if not 0 <= drive <= top * (1 + 1e-9):
             raise ProblemError(
                 f"{design.where}: drive_ma.{led} is {drive:g}, must be 0 to {top:g} mA, its largest rating"
@@ -46,14 +48,14 @@ def check_values(problem: Problem, design: Any) -> None:
 
 
 def _check_emitters(problem: Problem, design: Any) -> None:
-    known = {channel.id: channel.emitters for channel in problem.channels}
+    known = problem.channel_index
     for led, count in design.emitters.items():
         if led not in known:
             raise ProblemError(
                 f"{design.where}: emitters.{led}: no such LED among the candidates of {problem.where}; "
                 f"{nearest(led, known)}"
             )
-        most = known[led]
+        most = problem.channel(led).emitters
         if not free(problem) and count != most:
             raise ProblemError(
                 f"{design.where}: emitters.{led} is {count}, must be {most}; build.emitters = 'free' lets it vary"

@@ -239,6 +239,16 @@ class Led(Part):
 
     def operating_points(self) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Return current [A], relative flux and electrical power [W] at the nodes of the droop curve."""
+        return self._points
+
+    @cached_property
+    def _points(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+        points = self._droop()
+        for values in points:
+            values.setflags(write=False)
+        return points
+
+    def _droop(self) -> tuple[FloatArray, FloatArray, FloatArray]:
         if self.flux_curve is None:
             current = np.array([0.0, self.largest_current_ma]) * 1e-3
             return current, current / (self.rated_current_ma * 1e-3), current * self.forward_voltage_v

@@ -163,14 +163,19 @@ class Problem(Displayed):
 
 
 def _named(parts, name: str, kind: str, where: str):
-    found, names = find_part(parts, name)
+    found = find_part(parts, name)
     if found is not None:
         return found
-    raise ProblemError(f"{where}: no {kind} {name!r} among the candidates; {nearest(name, names)}")
+    raise ProblemError(f"{where}: no {kind} {name!r} among the candidates; {nearest(name, part_names(parts))}")
 
 
-def find_part(parts, name: str) -> tuple[Any, list[str]]:
-    """Return the part of that name, or None, and the names there are (of pairs, those of the single filters)."""
+def find_part(parts, name: str) -> Any | None:
+    """Return the part of that name, or None."""
     if isinstance(parts, FilterChoices):
-        return parts.find(name), [part.id for part in parts.base]
-    return next((part for part in parts if part.id == name), None), [part.id for part in parts]
+        return parts.find(name)
+    return next((part for part in parts if part.id == name), None)
+
+
+def part_names(parts) -> list[str]:
+    """Return the names there are; of pairs, those of the single filters."""
+    return [part.id for part in (parts.base if isinstance(parts, FilterChoices) else parts)]

@@ -25,7 +25,7 @@ from codesign.design import Design, setting_of
 from codesign.design_checks import check_values
 from codesign.errors import ProblemError, nearest
 from codesign.problem import Problem
-from codesign.problem.model import find_part
+from codesign.problem.model import find_part, part_names
 
 SETTINGS = ("camera", "channel", "gain_db", "filter", "f_number", "exposure_us", "pixels")
 PREFIXES = ("drive_ma", "grey_dn", "error_dn", "noise_dn")
@@ -189,10 +189,10 @@ class _Row:
             return list(problem.spec.optics.f_numbers)
         if name not in ("channel", "gain_db"):
             return []
-        camera, names = find_part(problem.cameras, self._setting("camera"))
+        camera = find_part(problem.cameras, self._setting("camera"))
         if camera is None:
             text = f"camera is {self.cells['camera']!r}, not among the candidates of {problem.where}"
-            raise ProblemError(f"{self.where}: {text}; {nearest(self.cells['camera'], names)}")
+            raise ProblemError(f"{self.where}: {text}; {nearest(self.cells['camera'], part_names(problem.cameras))}")
         if name == "channel":
             return list(camera.channel_names)
         return [g.gain_db for g in camera.gain_settings() if wanted.gains_db is None or g.gain_db in wanted.gains_db]
