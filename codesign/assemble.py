@@ -137,9 +137,12 @@ class Assembly:
     """
 
     def __init__(self, problem: Problem, junction_c: Array) -> None:
+        self._set(problem, RateTable(problem, junction_c))
+
+    def _set(self, problem: Problem, table: RateTable) -> None:
         self.problem = problem
-        self.junction_c = np.asarray(junction_c, dtype=float)
-        self._table = RateTable(problem, self.junction_c)
+        self.junction_c = table.junction_c
+        self._table = table
         self._held: dict[int, tuple[tuple, Rates]] = {}
         self._segments: dict[tuple[str, bool], Segments] = {}
 
@@ -161,9 +164,14 @@ class Assembly:
             raise self._conflict(conflicts)
         return tuple(self._without_dominated(found))
 
-    def at(self, junction_c: Array) -> Assembly:
-        """Return the same problem at other junction temperatures; the discrete choices do not depend on them."""
-        other = Assembly(self.problem, junction_c)
+    def at(self, junction_c: Array, *, hand_over: bool = False) -> Assembly:
+        """Return the same problem at other junction temperatures; the discrete choices do not depend on them.
+
+        ``hand_over`` gives it the rates of all filters worked out here, where these are done with.
+        """
+        self.forget()
+        other = Assembly.__new__(Assembly)
+        other._set(self.problem, self._table.at(junction_c, hand_over=hand_over))
         other.settings = self.settings
         return other
 

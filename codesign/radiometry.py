@@ -7,6 +7,7 @@ under every LED behind every filter.
 from __future__ import annotations
 
 import itertools
+from copy import copy
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -97,19 +98,23 @@ def filter_transmittance(problem: Problem, part: Filter, f_number: float) -> Arr
 def _all_transmittances(problem: Problem, f_number: float) -> Array:
     """`filter_transmittance` of every single filter, kept for all junction temperatures. (F₀, n) [1]"""
     base = FilterChoices.of(problem.filters).base
-    return np.stack([filter_transmittance(problem, part, f_number) for part in base])
+    found = np.stack([filter_transmittance(problem, part, f_number) for part in base])
+    found.setflags(write=False)
+    return found
 
 
 def transmittances(problem: Problem, f_number: float, filters: slice | Array = slice(None)) -> Array:
-    """Transmittances of some filters, by position; of a pair the product. (F, n) [1]
+    """Transmittances of some filters, by position; of a pair the product. (F, n), not to be written to. [1]
 
     A filter in front of the lens does not care about the f-number.
     """
     base = problem.spec.optics.f_numbers[0] if problem.spec.optics.filter_position == "front" else f_number
     table = _all_transmittances(problem, base)
     first, second = FilterChoices.of(problem.filters).members[filters].T
-    found = table[first]
     stacked = np.flatnonzero(second >= 0)
+    if not stacked.size and np.array_equal(first, np.arange(first[0], first[0] + first.size)):
+        return table[first[0] : first[-1] + 1]  # as it stands: a copy costs as much as the product to come
+    found = table[first]
     if stacked.size:
         found[stacked] *= table[second[stacked]]
     return found
@@ -166,6 +171,8 @@ _MINOR_CLUTTER = 5e-3
 _NO_LIGHT = 1e-18
 #: LEDs whose light is integrated over one range together.
 _LEDS_TOGETHER = 10
+#: Memory for rates that may serve again at other junction temperatures. [byte]
+_KEPT_BYTES = 128_000_000
 
 
 @lru_cache(maxsize=16)
@@ -212,10 +219,35 @@ class RateTable:
 
     def __init__(self, problem: Problem, junction_c: Array) -> None:
         self.problem = problem
-        self._light = np.stack(
-            [channel_irradiance(problem, c, t) for c, t in zip(problem.channels, junction_c, strict=True)]
-        )
+        self.junction_c = np.asarray(junction_c, dtype=float)
+        self._light = np.stack([self._irradiance(index) for index in range(self.junction_c.size)])
         self._bands: dict[bool, list[_Band]] = {}
+        #: Rates of whole blocks of filters, and the LEDs that have come to another temperature since.
+        self._kept: dict[tuple, tuple[Array, NDArray[np.bool_]]] = {}
+
+    def _irradiance(self, index: int) -> Array:
+        return channel_irradiance(self.problem, self.problem.channels[index], self.junction_c[index])
+
+    def at(self, junction_c: Array, *, hand_over: bool = False) -> RateTable:
+        """Return the rates at other junction temperatures.
+
+        With ``hand_over`` the blocks of filters worked out here go with them, and there only the LEDs whose temperature
+        moves are worked out anew.
+        """
+        other = copy(self)
+        other.junction_c = np.asarray(junction_c, dtype=float)
+        moved = other.junction_c != self.junction_c
+        other._light, other._bands = self._light.copy(), {}
+        for index in np.flatnonzero(moved):
+            other._light[index] = other._irradiance(index)
+        other._kept = {}
+        if hand_over:
+            other._kept = {key: (led, stale | moved) for key, (led, stale) in self._kept.items()}
+            self._kept = {}
+        return other
+
+    def _room(self, size: int) -> bool:
+        return size + sum(led.nbytes for led, _ in list(self._kept.values())) <= _KEPT_BYTES
 
     def _scene(self, main: bool) -> Reflectances:
         return main_reflectances(self.problem) if main else reflectances(self.problem)
@@ -223,17 +255,20 @@ class RateTable:
     def bands(self, main: bool) -> list[_Band]:
         """LEDs in groups of neighbouring spectra, each group cut to the wavelengths where it shines."""
         if main not in self._bands:
-            scene = self._scene(main)
-            gloss = np.array([channel.specular_weight for channel in self.problem.channels])
-            curves = np.concatenate([scene.mean, scene.clutter])
-            shine = np.concatenate([scene.specular, np.zeros(len(scene.clutter))])
-            lit = self._light > _NO_LIGHT * self._light.max(axis=1, keepdims=True)
-            order = np.lexsort((np.argmax(self._light, axis=1), lit.sum(axis=1) > 0.75 * lit.shape[1]))
-            self._bands[main] = [
-                self._band(leds, lit[leds].any(axis=0), curves, np.outer(shine, gloss[leds]))
-                for leds in np.array_split(order, max(1, round(order.size / _LEDS_TOGETHER)))
-            ]
+            self._bands[main] = self._banded(np.arange(len(self._light)), main)
         return self._bands[main]
+
+    def _banded(self, leds: NDArray[np.intp], main: bool) -> list[_Band]:
+        scene, light = self._scene(main), self._light[leds]
+        gloss = np.array([channel.specular_weight for channel in self.problem.channels])
+        curves = np.concatenate([scene.mean, scene.clutter])
+        shine = np.concatenate([scene.specular, np.zeros(len(scene.clutter))])
+        lit = light > _NO_LIGHT * light.max(axis=1, keepdims=True)
+        order = np.lexsort((np.argmax(light, axis=1), lit.sum(axis=1) > 0.75 * lit.shape[1]))
+        return [
+            self._band(leds[group], lit[group].any(axis=0), curves, np.outer(shine, gloss[leds[group]]))
+            for group in np.array_split(order, max(1, round(order.size / _LEDS_TOGETHER)))
+        ]
 
     def _band(self, leds: NDArray[np.intp], lit: NDArray[np.bool_], curves: Array, shine: Array) -> _Band:
         """As if from a diffuser, mirror-like part included."""
@@ -247,19 +282,32 @@ class RateTable:
     ) -> Rates:
         """Return the rates of one camera channel at one f-number for some filters: matrix products, band by band.
 
-        ``main`` leaves out the weak clutter rows, see `main_reflectances`.
+        ``main`` leaves out the weak clutter rows, see `main_reflectances`. The arrays are not to be written to.
         """
         weight = electrons_per_irradiance(self.problem, camera, channel, f_number)
-        transmittance = transmittances(self.problem, f_number, filters) * weight
+        transmittance = transmittances(self.problem, f_number, filters)
         scene = self._scene(main)
         rows, ambient = len(scene.mean) + len(scene.clutter), self.problem.ambient
-        led = np.empty((len(transmittance), rows, len(self._light)))
-        for band in self.bands(main):
-            part = transmittance[:, band.start : band.start + band.light.shape[1]]
-            led[:, :, band.leds] = (part @ band.light.T).reshape(len(part), rows, -1)
+        key = (camera.id, channel, f_number, filters.start, filters.stop, main) if isinstance(filters, slice) else None
+        if key in self._kept:
+            led, stale = self._kept[key]
+            bands = self._banded(np.flatnonzero(stale), main) if stale.any() else []
+        else:
+            led, bands = np.empty((len(transmittance), rows, len(self._light))), self.bands(main)
+        for band in bands:
+            span = slice(band.start, band.start + band.light.shape[1])
+            part, light = transmittance[:, span], band.light
+            if len(part) > len(light):  # weigh what is smaller
+                light = light * weight[span]
+            else:
+                part = part * weight[span]
+            led[:, :, band.leds] = (part @ light.T).reshape(len(part), rows, -1)
+        if key is not None and (key in self._kept or self._room(led.nbytes)):
+            self._kept[key] = led, np.zeros(len(self._light), dtype=bool)
+        curves = np.concatenate([scene.mean, scene.clutter])
         return Rates(
             led=led,
-            ambient=transmittance @ (np.concatenate([scene.mean, scene.clutter]) * ambient).T
+            ambient=transmittance @ (curves * (ambient * weight)).T
             if np.any(ambient)
             else np.zeros((len(transmittance), rows)),
         )

@@ -7,7 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from codesign.assemble import Assembly
+from codesign.assemble import Assembly, Segments
 from codesign.build import Units, free
 from codesign.certificate_pairs import worst_contrast
 from codesign.design import Design, Performance, evaluate
@@ -42,7 +42,12 @@ def design_at(
     t = float(point[-1])
     drive, emitters = {}, {}
     counted = units is not None and free(problem)
+    lit = set(segments.led[point[:-1] > 0].tolist())
     for index, channel in enumerate(problem.channels):
+        if counted and units[index] > 0:
+            emitters[channel.id] = int(units[index])
+        if index not in lit:
+            continue
         own = segments.led == index
         share = units[index] / channel.emitters if counted else 1.0
         flux = float(segments.flux[own] @ point[:-1][own]) / t / max(share, 1e-300)
@@ -51,8 +56,6 @@ def design_at(
         amps = float(np.interp(flux, reached, current))
         if amps * 1e3 > OFF * problem.spec.lighting.drive_step_ma:
             drive[channel.id] = amps * 1e3
-        if counted and units[index] > 0:
-            emitters[channel.id] = int(units[index])
     return Design(
         camera=setting.camera.id,
         channel=setting.channel,
@@ -65,9 +68,29 @@ def design_at(
     )
 
 
-def lit_only(
-    assembly: Assembly, setting: Setting, found: Found, design: Design, programs: Sequence[Program]
-) -> Found:
+def point_at(assembly: Assembly, setting: Setting, design: Design, units: Units | None = None) -> Array:
+    """The inverse of `design_at`: charges of the segments, filled in order, and exposure. (n+1,)"""
+    problem = assembly.problem
+    share = np.ones(len(problem.channels))
+    if units is not None and free(problem):
+        share = units / np.array([channel.emitters for channel in problem.channels])
+    return charges(problem, assembly.segments(setting), design, share)
+
+
+def charges(problem: Problem, segments: Segments, design: Design, share: Array) -> Array:
+    """Charges of a design in drive segments, filled in order, and its exposure. (n+1,)
+
+    ``share`` (L,) of the emitters of each LED are in use.
+    """
+    start = np.cumsum(segments.width) - segments.width
+    start = start - start[np.searchsorted(segments.led, segments.led)]
+    amps = np.array([design.drive_ma.get(channel.id, 0.0) * 1e-3 for channel in problem.channels])
+    t = design.exposure_us * 1e-6
+    filled = np.clip(amps[segments.led] - start, 0.0, segments.width)
+    return np.append(filled * share[segments.led] * t, t)
+
+
+def lit_only(assembly: Assembly, setting: Setting, found: Found, design: Design, programs: Sequence[Program]) -> Found:
     """What was found without the charges of LEDs too dim to be in its design: its value is then that of the design.
 
     A charge left out loosens every limit, so the point stays feasible and bounds are not touched.

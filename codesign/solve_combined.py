@@ -21,7 +21,8 @@ from codesign.search.combined import combined_bounds, turned
 from codesign.search.combined_walk import CombinedWalk, Recipe
 from codesign.search.readings import shot_points, single
 from codesign.solve import Certificate, Solution
-from codesign.solve_rounds import JUNCTION_TOLERANCE_K, LARGEST_NUMBER_OF_ROUNDS
+from codesign.solve_rounds import LARGEST_NUMBER_OF_ROUNDS
+from codesign.solve_settle import JUNCTION_TOLERANCE_K
 
 #: Gap unless the problem states one: proofs over weights are dear.
 COMBINED_GAP = 2e-2

@@ -4,33 +4,27 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from codesign.assemble import Assembly, flipped
+from codesign.assemble import Assembly
 from codesign.assemble_conflicts import require_usable_leds
-from codesign.build import require_buildable
-from codesign.certificate_build import build_space
-from codesign.design import evaluate
+from codesign.build import choosing, require_buildable
+from codesign.design import Design
 from codesign.problem import Problem
 from codesign.problem.choices import FilterChoices
 from codesign.program import Array
-from codesign.recipe import design_at
-from codesign.search.build import Built, polish_build
-from codesign.search.frontier import Certified, certify
-from codesign.search.pairs import CertifiedPairs, polish_pairs
+from codesign.recipe import Found
+from codesign.search.carry import carry
 from codesign.search.walk import Configuration, Walk
+from codesign.solve_settle import JUNCTION_TOLERANCE_K, Settled, offer, settle
 
-#: Junction temperatures assumed and reached agree to this. [K]
-JUNCTION_TOLERANCE_K = 0.002
 #: The winner itself is worked out to this gap, so that its settings do not depend on luck.
-POLISH_GAP = 1e-5
-#: Gap of the first round.
-SCOUT_GAP = 0.03
-#: Rounds before steps are halved.
-PLAIN_ROUNDS = 3
-#: Rounds of the outer and inner loop over junction temperatures.
+POLISH_GAP = 1e-6
+#: Gap of the first round, and where each configuration takes long.
+SCOUT_GAP, ROUGH_SCOUT_GAP = 0.003, 0.03
+#: Rounds over junction temperatures.
 LARGEST_NUMBER_OF_ROUNDS = 8
 
 
@@ -86,46 +80,117 @@ def search_rounds(
     """
     require_usable_leds(problem)
     require_buildable(problem)
-    clock = Clock() if clock is None else clock
     junction = np.full(len(problem.channels), problem.spec.temperature.air_c)
-    last, seed = None, None
+    rounds = _Rounds(problem, gap, progress, Clock() if clock is None else clock, enough, junction)
     if start is not None and start.best is not None:
-        junction, seed = start.walk.assembly.junction_c, (start.known, start.walk.found[start.best])
+        rounds.junction = start.walk.assembly.junction_c
+        rounds.seed = Seed(start.known, start.walk.found[start.best])
     for attempt in range(LARGEST_NUMBER_OF_ROUNDS):
         # The first round only has to find the temperatures; a later one proves.
-        scout = attempt == 0 and seed is None
-        walk = None
-        try:
-            assembly = Assembly(_singles(problem) if scout else problem, junction)
-            walk = Walk(assembly, max(gap, SCOUT_GAP) if scout else gap, progress, clock, enough)
-            if seed is not None:
-                walk.seed(*seed)
-            best = walk.best()
-        except KeyboardInterrupt:
-            clock.interrupted = True
-            best = None if walk is None else walk.leader
-            if last is None and best is None:
-                raise
-        partly = scout and walk is not None and walk.assembly.problem is not problem
-        if best is None and partly:
-            continue
+        done = rounds.next(scout=attempt == 0 and rounds.seed is None)
+        if done is not None:
+            return done
+    return rounds.last
+
+
+@dataclass(frozen=True, slots=True)
+class Seed:
+    """A configuration likely to be best, what is known of it, and its recipe where that is settled."""
+
+    known: Configuration
+    found: Found | None
+    design: Design | None = None
+
+    def plant(self, walk: Walk, gap: float) -> None:
+        """Certify it first, so that others are dropped sooner."""
+        walk.seed(self.known, self.found)
+        if self.design is not None:
+            offer(walk, walk.number(self.known), self.design, gap)
+
+
+@dataclass(slots=True)
+class _Rounds:
+    """Where to go on: temperatures, what to look at first, the last walk, and the configurations settled so far."""
+
+    problem: Problem
+    gap: float
+    progress: Callable[[float, float], None] | None
+    clock: Clock
+    enough: float | None
+    junction: Array
+    seed: Seed | None = None
+    before: Walk | None = None
+    last: Search | None = None
+    settled: dict[Configuration, Settled] = field(default_factory=dict)
+
+    def next(self, *, scout: bool) -> Search | None:
+        """Walk once more; return the search where it ends."""
+        walk, best = self._walk(scout=scout)
+        self.before = walk
+        partly = scout and walk is not None and walk.assembly.problem is not self.problem
         if best is None:
-            return last if clock() and last is not None else Search(walk, None, clock())
-        found = Search(walk, best, clock())
+            if partly:
+                return None
+            return self.last if self.clock() and self.last is not None else Search(walk, None, self.clock())
+        found = Search(walk, best, self.clock())
         if found.stopped and partly:  # the bounds of all pairs must still be worked out
-            seed = (found.known, walk.found[best])
-            continue
-        if found.stopped and last is not None and last.gap < found.gap:
-            return Search(last.walk, last.best, True)
+            self.seed = Seed(found.known, walk.found[best])
+            return None
+        if found.stopped and self.last is not None and self.last.gap < found.gap:
+            return Search(self.last.walk, self.last.best, True)
         if found.stopped:
             return found
-        last, seed = None if partly else found, (found.known, walk.found[best])
-        residual, settled = settle(problem, *seed, junction, min(gap, POLISH_GAP))
-        moved = float(np.max(np.abs(settled - junction), initial=0.0))
-        if min(residual, moved) <= JUNCTION_TOLERANCE_K and not scout:
-            break
-        junction = settled
-    return last
+        self.last = None if partly else found
+        return self._agreed(found, scout=scout)
+
+    def _walk(self, *, scout: bool) -> tuple[Walk | None, int | None]:
+        """A walk at the present temperatures and its best configuration; what is known so far at an interrupt."""
+        walk, before = None, self.before
+        try:
+            problem = _singles(self.problem) if scout else self.problem
+            near = before is not None and before.assembly.problem is problem
+            assembly = before.assembly.at(self.junction, hand_over=True) if near else Assembly(problem, self.junction)
+            gap = max(self.gap, scout_gap(self.problem)) if scout else self.gap
+            walk = Walk(assembly, gap, self.progress, self.clock, self.enough)
+            if self.seed is not None:
+                self.seed.plant(walk, min(self.gap, POLISH_GAP))
+            if before is not None and walk.leader is not None:
+                carry(walk, before, walk.aim)
+            return walk, walk.best()
+        except KeyboardInterrupt:
+            self.clock.interrupted = True
+            best = None if walk is None else walk.leader
+            if self.last is None and best is None:
+                raise
+            return walk, best
+
+    def _agreed(self, found: Search, *, scout: bool) -> Search | None:
+        """Return the search where its temperatures agree with its best recipe, else go on to others."""
+        walk, best = found.walk, found.best
+        if walk.settled and best not in walk.settled and found.known in self.settled:
+            return self._champion(walk)  # each heats the other's way
+        own = settle(self.problem, found.known, walk.found[best], self.junction, min(self.gap, POLISH_GAP))
+        if own.residual_k <= JUNCTION_TOLERANCE_K and not scout:
+            most = max((known.value for known in self.settled.values()), default=0.0)
+            return found if most <= walk.found[best].value * (1 + POLISH_GAP) else self._champion(walk)
+        self.settled[found.known] = own
+        self.junction, self.seed = own.junction_c, Seed(found.known, walk.found[best], own.design)
+        return None
+
+    def _champion(self, walk: Walk) -> Search | None:
+        """End with the configuration that does best at its own temperatures, once the walk has been there."""
+        known = max(self.settled, key=lambda one: self.settled[one].value)
+        number = walk.number(known)
+        if number in walk.settled:
+            return Search(walk, number, False)
+        self.junction = self.settled[known].lit_at(self.problem, self.junction)
+        self.seed = Seed(known, walk.found.get(number), self.settled[known].design)
+        return None
+
+
+def scout_gap(problem: Problem) -> float:
+    """Gap of the first round: small where what it proves is carried on, else just small enough to find the best."""
+    return ROUGH_SCOUT_GAP if len(problem.pairs) > 1 or choosing(problem) else SCOUT_GAP
 
 
 def _singles(problem: Problem) -> Problem:
@@ -133,38 +198,3 @@ def _singles(problem: Problem) -> Problem:
     choices = FilterChoices.of(problem.filters)
     single = int(np.sum(choices.members[:, 1] < 0))
     return problem if single in (0, len(choices)) else replace(problem, filters=choices[:single])
-
-
-def settle(
-    problem: Problem,
-    configuration: Configuration,
-    found: Certified | CertifiedPairs | Built,
-    junction: Array,
-    gap: float,
-) -> tuple[float, Array]:
-    """Iterate one configuration's junction temperatures to self-consistency, from its optimum at ``junction``.
-
-    Returns how far ``junction`` is from what its own optimum leads to [K], and the settled temperatures (L,). LEDs
-    that are off keep the temperature they last had when lit, so that none looks cooler than it would be in use.
-    """
-    first, setting, part = None, configuration.setting, np.array([configuration.filter])
-    for attempt in range(LARGEST_NUMBER_OF_ROUNDS):
-        assembly = Assembly(problem, junction)
-        programs = [assembly.program(setting, part, pair=pair) for pair in range(len(problem.pairs))]
-        if configuration.sign < 0:
-            programs = [flipped(program) for program in programs]
-        if isinstance(found, Built):
-            space = build_space(problem, setting.camera, configuration.filter)
-            found = polish_build(programs, space, replace(found, value=0.0), gap)
-        else:
-            found = certify(programs[0], gap) if len(programs) == 1 else polish_pairs(programs, found)
-        units = getattr(found, "units", None)
-        design = design_at(assembly, setting, configuration.filter, found.point, units)
-        reached = evaluate(problem, design).junctions(problem, junction)
-        residual = float(np.max(np.abs(reached - junction), initial=0.0))
-        first = residual if first is None else first
-        if residual <= 0.1 * JUNCTION_TOLERANCE_K:
-            break
-        # Where two recipes are equally good each may heat the other's way; half-way they agree best.
-        junction = reached if attempt < PLAIN_ROUNDS else (junction + reached) / 2
-    return first, junction

@@ -10,7 +10,7 @@ signal-proportional noise the same once more, tangent at the ceiling.
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -126,12 +126,38 @@ def both_bounds(program: Program) -> Array:
     Rows and shot noise must be nonnegative in the charges, as `Program` says.
     """
     with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-        tops = _both_ceilings(program)
-        inverse = 1.0 / program.signal
-        shot = program.shot * inverse
-        square = np.einsum("prn,prn->pn", program.noise_rows, program.noise_rows) * inverse**2
-        found = [_lines_bound(program, sign, top, shot, square) for sign, top in zip((1.0, -1.0), tops, strict=True)]
+        tops, scale = _both_ceilings(program), _Scale.of(program)
+        sides = zip((1.0, -1.0), tops, scale.cleanest, strict=True)
+        found = [_lines_bound(program, sign, top, clean, scale) for sign, top, clean in sides]
     return np.stack(found, axis=1)
+
+
+@dataclass(frozen=True, slots=True)
+class _Scale:
+    """What both signs share: shot noise and squared proportional noise per signal (P, n+1), round-off of the shot.
+
+    ``cleanest`` holds the least shot noise per signal of either sign, 0 where there is no such signal. (P,) each
+    """
+
+    shot: Array
+    square: Array
+    cleanest: tuple[Array, Array]
+    round_off: Array
+
+    @classmethod
+    def of(cls, program: Program) -> _Scale:
+        ratio = program.signal / np.maximum(program.shot, 1e-300)
+        square = np.einsum("prn,prn->pn", program.noise_rows, program.noise_rows)
+        return cls(
+            shot=1.0 / ratio,
+            square=square / program.signal**2,
+            cleanest=(_inverse(ratio.max(axis=1)), _inverse(-ratio.min(axis=1))),
+            round_off=ROUND_OFF * (program.shot @ np.append(program.width, 1.0)) * program.time_high,
+        )
+
+
+def _inverse(value: Array) -> Array:
+    return np.divide(1.0, value, out=np.zeros_like(value), where=value > 0)
 
 
 def _at_window(program: Program, per_second: Array) -> Array:
@@ -142,7 +168,13 @@ def _at_window(program: Program, per_second: Array) -> Array:
 def _both_ceilings(program: Program) -> list[Array]:
     """`simple_ceiling` for either sign. [e⁻]"""
     signal, time = program.signal[:, :-1], program.signal[:, -1]
-    tops = [_full_light(program, sign * signal, sign * time) for sign in (1.0, -1.0)]
+    if np.isfinite(program.heat_cap).any():
+        tops = [_full_light(program, sign * signal, sign * time) for sign in (1.0, -1.0)]
+        size = np.abs(signal) @ program.width
+    else:
+        bright, net = np.maximum(signal, 0.0) @ program.width, signal @ program.width
+        tops = [-_at_window(program, -(bright + time)), -_at_window(program, -(bright - net - time))]
+        size = 2 * bright - net
     bounds = program.bounds + FEASIBILITY_TOLERANCE * row_scale(program)
     for k in range(program.rows.shape[1]):
         row, late = program.rows[:, k, :-1], program.rows[:, k, -1]
@@ -152,44 +184,45 @@ def _both_ceilings(program: Program) -> list[Array]:
             price = np.maximum(dearest, np.where((own > 0) & (late >= 0), own / (late + 1e-300), 0.0))
             value = price * bounds[:, k] - _at_window(program, price * late - own)
             tops[side] = np.fmin(tops[side], np.where(np.isnan(value), np.inf, value))
-    slack = ROUND_OFF * (np.abs(signal) @ program.width + np.abs(time)) * program.time_high
+    slack = ROUND_OFF * (size + np.abs(time)) * program.time_high
     return [np.maximum(top + slack, 0.0) for top in tops]
 
 
 def _full_light(program: Program, signal: Array, time: Array) -> Array:
-    """Most signal with every LED as far as its own limits go. (P,) [e⁻]"""
-    bright, stored = np.maximum(signal, 0.0), 0.0
-    if np.isfinite(program.heat_cap).any():
-        heat = cut_prices(program, -signal, program.time_high)
-        caps = np.where(np.isfinite(program.heat_cap), program.heat_cap, 0.0)
-        stored = heat @ caps * (1 + FEASIBILITY_TOLERANCE)
-        bright = np.maximum(signal - heat[:, program.led] * program.heat, 0.0)
-    return stored - _at_window(program, -(bright @ program.width + time))
+    """Most signal with every LED as far as its own limits go, its heat cap among them. (P,) [e⁻]"""
+    heat = cut_prices(program, -signal, program.time_high)
+    caps = np.where(np.isfinite(program.heat_cap), program.heat_cap, 0.0)
+    bright = np.maximum(signal - heat[:, program.led] * program.heat, 0.0)
+    return heat @ caps * (1 + FEASIBILITY_TOLERANCE) - _at_window(program, -(bright @ program.width + time))
 
 
-def _lines_bound(program: Program, sign: float, top: Array, shot: Array, square: Array) -> Array:
-    """Least of what the two lines of `simple_proof` allow, each alone; ``shot`` and ``square`` per signal. (P,)"""
-    signal, width, pick = sign * program.signal, np.append(program.width, 1.0), np.arange(program.size)
-    positive = signal > 0
-    clean = _least(np.where(positive, sign * shot, np.inf))
-    late = _at_window(program, program.shot[:, -1] - clean * signal[:, -1])
-    first = late - ROUND_OFF * (program.shot @ width) * program.time_high
+def _lines_bound(program: Program, sign: float, top: Array, clean: Array, scale: _Scale) -> Array:
+    """Least of what the two lines of `simple_proof` allow, each alone; ``clean`` is the slope of the first. (P,)"""
+    signal, pick = program.signal if sign > 0 else -program.signal, np.arange(program.size)
+    first = _at_window(program, program.shot[:, -1] - clean * signal[:, -1]) - scale.round_off
     usable = signal > 1e-12 * np.max(signal, axis=1, keepdims=True)
-    price = np.where(usable, (sign / np.maximum(top, 1e-300))[:, None] * shot + square, np.inf)
+    price = (sign / np.maximum(top, 1e-300))[:, None] * scale.shot + scale.square
+    np.putmask(price, ~usable, np.inf)
     best = np.argmin(price, axis=1)
     share = np.where(usable[pick, best], top / signal[pick, best], 0.0)
     noise = program.noise_rows[pick, :, best] * share[:, None]
     cost = program.shot + np.matmul(2 * noise[:, None, :], program.noise_rows)[:, 0]
-    theta = _least(np.where(positive, cost / signal, np.inf))
-    left = cost - theta[:, None] * signal
-    free = _at_window(program, left[:, -1] + np.minimum(left[:, :-1], 0.0) @ program.width)
-    free = free - ROUND_OFF * (np.abs(cost) @ width) * program.time_high
+    theta, free = _second_line(program, signal, cost)
     return _best_single_curve(program.floor, top, (clean, first), (theta, free, np.einsum("pr,pr->p", noise, noise)))
 
 
-def _least(values: Array) -> Array:
-    least = np.min(values, axis=1)
-    return np.where(np.isfinite(least), least, 0.0)
+def _second_line(program: Program, signal: Array, cost: Array) -> tuple[Array, Array]:
+    """Steepest slope that leaves no column a gain, and what the exposure alone costs then. (P,), (P,)"""
+    width = np.append(program.width, 1.0)
+    if cost.min(initial=1.0) > 0:  # then no charge pays, of either sign of signal
+        theta = _inverse(np.max(signal / cost, axis=1))
+        free = _at_window(program, cost[:, -1] - theta * signal[:, -1])
+        return theta, free - ROUND_OFF * (cost @ width) * program.time_high
+    theta = np.min(np.where(signal > 0, cost / signal, np.inf), axis=1)
+    theta = np.where(np.isfinite(theta), theta, 0.0)
+    left = cost - theta[:, None] * signal
+    free = _at_window(program, left[:, -1] + np.minimum(left[:, :-1], 0.0) @ program.width)
+    return theta, free - ROUND_OFF * (np.abs(cost) @ width) * program.time_high
 
 
 def _best_single_curve(floor: Array, top: Array, line: tuple, second: tuple) -> Array:

@@ -12,7 +12,7 @@ from codesign.search.bounds import both_bounds
 from codesign.search.parallel import side_by_side
 
 #: Filters bounded together: arrays stay in the cache, and memory bounded.
-FILTERS_TOGETHER = 1024
+FILTERS_TOGETHER = 384
 #: Most pairs of target and background whose bounds are worked out for every configuration.
 QUICK_PAIRS = 3
 #: Fewer signed configurations are bounded sooner than threads start.

@@ -16,8 +16,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from codesign.certificate import Line
-from codesign.program import Array, Program, row_scale, segment_room
+from codesign.program import Array, Program, row_scale, segment_room, variance
 from codesign.search.bounds import cut_prices, junction_prices
+from codesign.search.columns import promising
+
+#: Fewer columns than these more than wanted are not worth leaving out.
+SPARE_COLUMNS = 8
+#: What columns left out may add to the signal or take off the noise, as a share, before they are brought in.
+LOOSE_COLUMNS = 1e-3
 
 
 @dataclass(slots=True)
@@ -35,6 +41,18 @@ class _Scaled:
     @property
     def size(self) -> int:
         return self.cost.shape[0]
+
+    def only(self, columns: np.ndarray) -> _Scaled:
+        """The block with some columns of each program, (P, k), and the exposure."""
+        last = np.full((self.size, 1), self.cost.shape[1] - 1)
+        kept = np.hstack([columns, last])
+        return replace(
+            self,
+            cost=np.take_along_axis(self.cost, kept, axis=1),
+            rows=np.take_along_axis(self.rows, kept[:, None, :], axis=2),
+            noise_rows=np.take_along_axis(self.noise_rows, kept[:, None, :], axis=2),
+            box=None if self.box is None else np.take_along_axis(self.box, columns, axis=1),
+        )
 
 
 def _scale(program: Program, cost: Array, noise_rows: Array) -> tuple[_Scaled, Array]:
@@ -61,9 +79,10 @@ class _State:
     """Slacks and duals of every program of a scaled block; slack lists are kept, not recomputed, to save digits.
 
     Order of both lists: x ≥ 0, τ − x ≥ 0, b − A y ≥ 0, τ − low ≥ 0, 1 − τ ≥ 0, and box − x ≥ 0 where there are boxes.
+    ``exact`` asks for a step of refinement in each solution, which rough multipliers do without.
     """
 
-    def __init__(self, block: _Scaled) -> None:
+    def __init__(self, block: _Scaled, *, exact: bool) -> None:
         tau = 0.5 * (1 + block.low)
         load = block.rows[:, :, :-1].sum(axis=2)
         room = block.right - block.rows[:, :, -1] * tau[:, None]
@@ -74,6 +93,7 @@ class _State:
         level = np.maximum(level, 1e-9)
         x = np.repeat(level[:, None], block.cost.shape[1] - 1, axis=1)
         self.block = block
+        self.exact = exact
         self.slack = [
             x,
             tau[:, None] - x,
@@ -179,7 +199,7 @@ def _iterate(state: _State, tolerance: float) -> Array:
         rt = rt - np.einsum("pm,pm->p", pull_back[2], block.rows[:, :, -1])
         if block.box is not None:
             rx = rx - pull_back[5]
-        return refine(*solve(rx, rt), rx, rt)
+        return refine(*solve(rx, rt), rx, rt) if state.exact else solve(rx, rt)
 
     def changes(dx: Array, dt: Array, push: list[Array]) -> tuple[list[Array], list[Array]]:
         used = np.einsum("pmn,pn->pm", block.rows[:, :, :-1], dx) + block.rows[:, :, -1] * dt[:, None]
@@ -220,33 +240,82 @@ class Relaxed:
     line: Line
     point: Array
 
+    def put(self, index: np.ndarray, other: Relaxed) -> None:
+        """Take over the results of some programs."""
+        self.point[index] = other.point
+        for name in self.line.__slots__:
+            getattr(self.line, name)[index] = getattr(other.line, name)
 
-def relax(program: Program, theta: Array | None, iterations: int = 25, tolerance: float = 1e-7) -> Relaxed:
+
+def relax(
+    program: Program,
+    theta: Array | None,
+    iterations: int = 25,
+    tolerance: float = 1e-7,
+    *,
+    exact: bool = True,
+    columns: int | None = None,
+) -> Relaxed:
     """Solve ``min (s − θ d)·y + |R y|²`` for each program, or ``min −d·y`` when ``theta`` is None.
 
     ``theta``: (P,). Stops after ``iterations`` or when every program's mean complementarity, in unit scale, is below
-    ``tolerance``.
+    ``tolerance``. With ``columns`` only so many of the most promising columns of each program are looked at, and all of
+    them where those left out turn out to matter.
     """
-    if theta is None:
-        cost, noise_rows = -program.signal, program.noise_rows[:, :0]
-    else:
-        cost, noise_rows = program.shot - theta[:, None] * program.signal, program.noise_rows
+    cost, noise_rows = _objective(program, theta)
     block, column = _scale(program, cost, noise_rows)
-    state = _State(block)
+    if columns is None or program.segments < columns + SPARE_COLUMNS:
+        state = _solved(block, iterations, tolerance, exact=exact)
+        return _unscale(program, state, theta, state.x * column[:, :-1])
+    chosen = promising(program, theta, columns)
+    state = _solved(block.only(chosen), iterations, tolerance, exact=exact)
+    charge = np.zeros((program.size, program.segments))
+    np.put_along_axis(charge, chosen, state.x * np.take_along_axis(column, chosen, axis=1), axis=1)
+    found = _unscale(program, state, theta, charge)
+    missed = np.flatnonzero(_gain_outside(program, theta, found, chosen) > LOOSE_COLUMNS)
+    if missed.size:
+        some = None if theta is None else theta[missed]
+        found.put(missed, relax(program.take(missed), some, iterations, tolerance, exact=exact))
+    return found
+
+
+def _objective(program: Program, theta: Array | None) -> tuple[Array, Array]:
+    if theta is None:
+        return -program.signal, program.noise_rows[:, :0]
+    return program.shot - theta[:, None] * program.signal, program.noise_rows
+
+
+def _solved(block: _Scaled, iterations: int, tolerance: float, *, exact: bool) -> _State:
+    state = _State(block, exact=exact)
     with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
         for _ in range(iterations):
             if np.max(_iterate(state, tolerance)) <= tolerance:
                 break
-    return _unscale(program, state, theta, column)
+    return state
 
 
-def _unscale(program: Program, state: _State, theta: Array | None, column: Array) -> Relaxed:
-    """Return to SI units; broken numbers become the harmless multiplier 0 and the dark point."""
+def _gain_outside(program: Program, theta: Array | None, found: Relaxed, inside: np.ndarray) -> Array:
+    """What the columns left out could add to the signal, or take off the noise, at most: as a share of it. (P,)"""
+    cost, noise_rows = _objective(program, theta)
+    line = found.line
+    if noise_rows.shape[1]:
+        cost = cost + 2 * np.einsum("pr,prn->pn", line.noise, noise_rows)
+    cost = (cost + np.einsum("pm,pmn->pn", line.limit, program.rows))[:, :-1]
+    gain = np.maximum(-cost - line.heat[:, program.led] * program.heat, 0.0)
+    np.put_along_axis(gain, inside, 0.0, axis=1)
+    size = (
+        np.abs(np.einsum("pn,pn->p", program.signal, found.point)) if theta is None else variance(program, found.point)
+    )
+    return gain @ program.width * program.time_high / np.maximum(size, 1e-300)
+
+
+def _unscale(program: Program, state: _State, theta: Array | None, charge: Array) -> Relaxed:
+    """Return to SI units; broken numbers become the harmless multiplier 0 and the dark point. ``charge`` (P, n)."""
     block = state.block
     limit = np.nan_to_num(state.dual[2] * block.unit[:, None] / row_scale(program), nan=0.0, posinf=0.0)
     t = np.nan_to_num(state.tau * program.time_high, nan=0.0)
     t = np.clip(t, program.time_low, program.time_high)
-    q = np.nan_to_num(state.x, nan=0.0) * column[:, :-1]
+    q = np.nan_to_num(charge, nan=0.0)
     room, _ = segment_room(program, t)
     point = np.hstack([np.clip(q, 0.0, room), t[:, None]])
     rank = program.noise_rows.shape[1]

@@ -15,7 +15,7 @@ from codesign.program import Array, Program, contrast_to_noise, variance
 from codesign.search.interior import relax
 
 #: Multipliers good to some 1e-5 are enough here.
-ROUGH = {"iterations": 16, "tolerance": 1e-6}
+ROUGH = {"iterations": 16, "tolerance": 1e-6, "exact": False, "columns": 24}
 #: First slope in units of U/Γ²: drops most programs of catalogues of 40,000 configurations.
 FIRST_SLOPE = 1.7
 #: Relative distance of bound and value of a relaxation that is near enough for ordering the next rung.
@@ -60,6 +60,26 @@ class Tightening:
         state.lines.append(replace(state.lines[0], anchor=np.maximum(top, 1e-300)))
         state.touch.append(state.touch[0])
         state.update()
+        return state
+
+    @classmethod
+    def resume(cls, program: Program, proof: Proof, target: float) -> Tightening:
+        """Go on from multipliers of programs much like these; nothing is taken for granted but that they are finite."""
+        lines = list(proof.lines)
+        found, top = curves(program, proof.lines), np.maximum(signal_ceiling(program, proof.ceiling), 0.0)
+        touch: list[tuple[Array, Array]] = []
+        for k, line in enumerate(lines):  # where a line touched is its anchor; a line repeated touched where it did
+            again = line.theta == lines[k - 1].theta if k else np.zeros(program.size, dtype=bool)
+            own = line.anchor, found.theta[:, k] * line.anchor + found.alpha[:, k]
+            touch.append(
+                tuple(np.where(again, last, now) for last, now in zip(touch[-1] if k else own, own, strict=True))
+            )
+        state = cls(
+            program=program, ceiling=proof.ceiling, top=top, own=np.full(program.size, max(1e-3 * target, 1e-12)),
+            lines=lines, touch=touch, lit=np.zeros((program.size, program.heat_cap.size), dtype=bool),
+            bound=np.full(program.size, np.inf), peak=top,
+        )  # fmt: skip
+        state.bound, state.peak = envelope(program.floor, top, found)
         return state
 
     def add(self, theta: Array) -> None:

@@ -16,58 +16,32 @@ import numpy as np
 from codesign.assemble import Assembly
 from codesign.build import Units, affordable, choosing
 from codesign.certificate import Proof
-from codesign.certificate_build import BuildLeaf, BuildSpace, BuildSplit, build_space
-from codesign.certificate_pairs import PairProof, pair_contrasts
+from codesign.certificate_build import BuildSpace, build_space
+from codesign.certificate_pairs import pair_contrasts
 from codesign.limits import Setting
 from codesign.program import Array, Program, stack
 from codesign.search import never
 from codesign.search.build import Built, certify_build, polish_build
 from codesign.search.closed_form import closed_form, limiting_pairs
 from codesign.search.frontier import Certified, Hint, certify
+from codesign.search.lend import Lenders, borrow
 from codesign.search.pairs import CertifiedPairs, certify_pairs, polish_pairs
+from codesign.search.records import SIGNS, Configuration, Evidence, Tally
 from codesign.search.tighten import Tightening
 
-SIGNS = (1, -1)
-#: Configurations refined together on rung 1: first few, to get a good target early, then many.
-FIRST_CHUNK, LARGEST_CHUNK = 48, 384
+#: Configurations refined together on rung 1, coarsely and fully: first few, to get a good target and lenders early,
+#: then many.
+FIRST_CHUNKS, LARGEST_CHUNK = (48, 24), 384
+#: Configurations that borrow multipliers together.
+MOST_LENT = 1024
 #: How far rung 1 has looked at a configuration: at its coarse program, at its full one.
 COARSELY, FULLY = 1, 2
 #: Fewer open configurations than these go to rung 2 one at a time without a look at their full programs together.
-MANY = 64
+MANY = 16
+#: So few configurations are worked out sooner on rung 2 than tightened together once more.
+FEW = 3
 #: Rounds of tightening on rung 1.
 ROUNDS = 6
-
-
-@dataclass(frozen=True, slots=True)
-class Configuration:
-    """One discrete choice: setting, filter index and contrast sign (+1: target brighter)."""
-
-    setting: Setting
-    filter: int
-    sign: int
-
-
-@dataclass(slots=True)
-class Tally:
-    """How many configurations each rung handled."""
-
-    configurations: int = 0
-    refined: int = 0
-    certified: int = 0
-
-
-@dataclass(slots=True)
-class Evidence:
-    """Multipliers that bound some configurations, kept for the checker: indices and their proof.
-
-    A `Proof` bounds them by the pair ``pair`` alone, a `PairProof` one configuration by all pairs together,
-    a `BuildLeaf` or `BuildSplit` one configuration over all whole choices of LEDs.
-    """
-
-    index: np.ndarray
-    proof: Proof | PairProof | BuildLeaf | BuildSplit
-    coarse: bool
-    pair: int = 0
 
 
 def _largest(index: np.ndarray, value: Array, count: int) -> np.ndarray:
@@ -99,6 +73,11 @@ class Walk:
     pair_order: list[int] = field(init=False)
     #: Least target against which a configuration was certified, ``inf`` where it never was.
     tried: Array = field(init=False)
+    #: Proofs by stage of rung 1, name of the pulse level and pair, and how many stages a configuration has borrowed at.
+    lenders: dict[tuple[int, str, int], Lenders] = field(init=False, default_factory=dict)
+    lent: np.ndarray = field(init=False)
+    #: Configurations whose recipe is settled at these temperatures and stays as it is.
+    settled: set[int] = field(init=False, default_factory=set)
 
     closed_form: bool = True
 
@@ -113,6 +92,7 @@ class Walk:
             self.upper = np.stack([self.buildable(setting, own) for setting, own in settings]).ravel()
         self.refined = np.zeros(count, dtype=np.int8)
         self.tried = np.full(count, np.inf)
+        self.lent = np.zeros(count, dtype=np.int8)
         self.tally.configurations = count
 
     @classmethod
@@ -185,6 +165,8 @@ class Walk:
 
         With several pairs or build limits the recipe is improved to its best and the bound stays.
         """
+        if index in self.settled:
+            return self.found[index]
         if isinstance(self.found[index], Built):
             self.found[index] = polish_build(self.every_pair(index), self.space(index), self.found[index], gap)
         elif self.pairs > 1:
@@ -192,10 +174,10 @@ class Walk:
         elif self.found[index].gap > gap:
             program = self.programs(np.array([index]), coarse=False)
             result = certify(program, gap, 0.0, self.hints.get(int(index)))
-            if result.value >= self.found[index].value:
-                self.found[index] = result
-                self.upper[index] = min(self.upper[index], result.bound)
-                self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False))
+            self.upper[index] = min(self.upper[index], result.bound)
+            self.evidence.append(Evidence(np.array([index]), result.proof, coarse=False))
+            best = max(self.found[index], result, key=lambda one: one.value)
+            self.found[index] = replace(result, point=best.point, value=best.value)
         return self.found[index]
 
     def best(self, allowed: np.ndarray | None = None) -> int | None:
@@ -205,25 +187,39 @@ class Walk:
         own search ended with a larger one. `stop` and `enough` end the search earlier.
         """
         allowed = np.ones(self.upper.size, dtype=bool) if allowed is None else allowed
-        chunk = FIRST_CHUNK
+        chunk = list(FIRST_CHUNKS)
         while True:
             leader, value = self._leader(allowed)
             aim = self._aim(value)
-            open_ = np.flatnonzero(allowed & (self.upper > max(aim * (1 + self.gap), 0.0)) & (self.tried > aim))
+            looked_at = allowed.copy()
+            looked_at[list(self.settled)] = False
+            open_ = np.flatnonzero(looked_at & (self.upper > max(aim * (1 + self.gap), 0.0)) & (self.tried > aim))
             if self.progress is not None:
                 self.progress(value, float(self.upper[open_].max(initial=value)))
             if open_.size == 0 or self._done(leader, value):
                 return leader
             top = open_[np.argmax(self.upper[open_])]
             alike = open_[self.refined[open_] == self.refined[top]]
-            if self.refined[top] == FULLY or (self.refined[top] and (alike.size < MANY or leader is None)):
+            stage = self.refined[top]
+            fresh = alike[self.lent[alike] <= stage]
+            if stage == FULLY or (stage == COARSELY and (alike.size < MANY or leader is None)):
                 self._certify(top, aim)
+            elif fresh.size and leader is not None and any(key[0] == stage for key in self.lenders):
+                some = _largest(fresh, self.upper[fresh], MOST_LENT)
+                self.lent[some] = stage + 1
+                borrow(self, some, aim)
             else:
-                self._refine(_largest(alike, self.upper[alike], chunk), aim)
-                chunk = min(2 * chunk, LARGEST_CHUNK)
+                self._refine(_largest(alike, self.upper[alike], chunk[stage]), aim)
+                chunk[stage] = min(2 * chunk[stage], LARGEST_CHUNK)
 
     def _done(self, leader: int | None, value: float) -> bool:
         return leader is not None and (self.stop() or (self.enough is not None and value >= self.enough))
+
+    @property
+    def aim(self) -> float:
+        """CNR that others must beat by more than the gap to be of interest."""
+        leader = self.leader
+        return self._aim(0.0 if leader is None else self.found[leader].value)
 
     @property
     def leader(self) -> int | None:
@@ -251,7 +247,7 @@ class Walk:
         coarse = self.refined[index[0]] == 0
         self.refined[index] = COARSELY if coarse else FULLY
         self.tally.refined += index.size if coarse else 0
-        for part in self._same_columns(index):
+        for part in self.same_columns(index):
             for pair in list(self.pair_order):
                 part = part[self.upper[part] > target * (1 + self.gap)]
                 if part.size:
@@ -260,35 +256,66 @@ class Walk:
     def _tighten(self, part: np.ndarray, pair: int, target: float, coarse: bool) -> float:
         """Tighten the bounds of one pair until below the target or a few rounds are over; return the target."""
         state = Tightening.start(self.programs(part, coarse=coarse, pair=pair), target)
-        if not self.found:
+        best = int(np.argmax(state.own))
+        whole = not coarse and self.pairs == 1 and not choosing(self.assembly.problem)
+        if not self.found or (whole and state.own[best] > target):  # a recipe that others have to beat
             self._suggest(part, state)
-            self._certify(int(part[int(np.argmax(state.own))]), target)
+            self._certify(int(part[best]), target)
             target = max(target, self._leader(np.ones(self.upper.size, dtype=bool))[1])
+        self._narrow(part, pair, target, state, coarse=coarse)
+        return target
+
+    def resume(self, part: np.ndarray, pair: int, target: float, proof: Proof, *, coarse: bool) -> None:
+        """Bound some configurations by multipliers known from elsewhere; coarse ones are tightened on from there."""
+        state = Tightening.resume(self.programs(part, coarse=coarse, pair=pair), proof, target)
+        self.tally.refined += int(np.sum(self.refined[part] == 0))
+        self.refined[part] = np.maximum(self.refined[part], COARSELY)
+        if coarse:
+            self._narrow(part, pair, target, state, coarse=True)
+        else:
+            self._record(part, pair, coarse, state)
+
+    def _narrow(self, part: np.ndarray, pair: int, target: float, state: Tightening, *, coarse: bool) -> None:
+        """Add lines until the bounds are below the target or a few rounds are over."""
         for _ in range(ROUNDS):
             open_ = (state.bound > target * (1 + self.gap)) & ~state.settled(target)
             self._record(part[~open_], pair, coarse, state.take(np.flatnonzero(~open_)))
             part, state = part[open_], state.take(np.flatnonzero(open_))
-            if not part.size:
-                return target
+            if part.size <= FEW:
+                break
             state.round(target)
         self._record(part, pair, coarse, state)
-        return target
 
     def _record(self, part: np.ndarray, pair: int, coarse: bool, state: Tightening) -> None:
         """Keep the bounds of some configurations by one pair and what proves them."""
         if part.size:
+            key = (0 if coarse else COARSELY, self.level(part[0]), pair)
+            self.lenders.setdefault(key, Lenders()).add(state.program, state.proof())
             self.evidence.append(Evidence(part, state.proof(), coarse=coarse, pair=pair))
             self.upper[part] = np.fmin(self.upper[part], state.bound)  # a bound that is no number proves nothing
             self._suggest(part, state)
 
+    def drop(self, part: np.ndarray, pair: int, proof: Proof, found: Array, target: float, *, coarse: bool) -> None:
+        """Keep those bounds of some configurations that put them out of the race, and what proves them."""
+        done = np.flatnonzero(found <= target * (1 + self.gap))
+        if done.size:
+            self.upper[part[done]] = np.fmin(self.upper[part[done]], found[done])
+            self.evidence.append(Evidence(part[done], proof.take(done), coarse=coarse, pair=pair))
+            self.tally.refined += int(np.sum(self.refined[part[done]] == 0))
+
     def _suggest(self, part: np.ndarray, state: Tightening) -> None:
         """Leave hints for the last rung."""
         for k, i in enumerate(part):
-            self.hints[int(i)] = Hint(state.ceiling.take(k), np.flatnonzero(state.lit[k]), float(state.own[k]))
+            if state.lit[k].any():
+                self.hints[int(i)] = Hint(state.ceiling.take(k), np.flatnonzero(state.lit[k]), float(state.own[k]))
 
-    def _same_columns(self, index: np.ndarray) -> list[np.ndarray]:
+    def level(self, index: int) -> str:
+        """Name of a configuration's pulse level."""
+        return self.assembly.settings[index // (2 * self.filters)].level.name
+
+    def same_columns(self, index: np.ndarray) -> list[np.ndarray]:
         """Split by pulse level: programs in one block share their columns."""
-        levels = np.array([self.assembly.settings[i // (2 * self.filters)].level.name for i in index])
+        levels = np.array([self.level(i) for i in index])
         return [index[levels == name] for name in dict.fromkeys(levels)]
 
     def _certify(self, index: int, target: float, units: Units | None = None) -> None:

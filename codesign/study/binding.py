@@ -7,7 +7,7 @@ import numpy as np
 from codesign.assemble import exposure_window
 from codesign.limits import Setting, saturation_electrons
 from codesign.program import Program
-from codesign.study.tangent import Optimum, Rig
+from codesign.solve_joint import Optimum, Rig
 
 #: Charges below this share of what an LED could carry are dust.
 DUST = 1e-9

@@ -27,12 +27,13 @@ from codesign.problem import Problem
 from codesign.problem.choices import JOINT
 from codesign.problem.nudge import NUDGES, Parameter, nudged
 from codesign.problem.tolerances import SPREADS
+from codesign.recipe_choice import choice_of
 from codesign.solve import Solution
+from codesign.solve_joint import Optimum, Rig, optimum_near, point_of_rig, settled
 from codesign.study.binding import what_binds
-from codesign.study.choice import choice_of
 from codesign.study.common import Resolved, resolve
 from codesign.study.limit_moves import WELL_HEADROOM, WHOLE, moved
-from codesign.study.tangent import Optimum, Rig, Tangent, optimum_near, point_of_rig, settled
+from codesign.study.tangent import Tangent
 
 if TYPE_CHECKING:
     import pandas as pd

@@ -20,7 +20,8 @@ from codesign.radiometry import reflectances
 from codesign.recipe import design_at
 from codesign.search.frontier import Certified, Hint
 from codesign.search.walk import FULLY, Configuration, Walk
-from codesign.solve_rounds import JUNCTION_TOLERANCE_K, LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP
+from codesign.solve_rounds import LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP
+from codesign.solve_settle import JUNCTION_TOLERANCE_K
 from codesign.study.multipliers import Multipliers
 
 if TYPE_CHECKING:

@@ -15,6 +15,7 @@ from codesign.limits import Setting, pulse_levels
 from codesign.problem import Problem
 from codesign.problem.choices import JOINT, FilterChoices
 from codesign.program import Array, Program
+from codesign.recipe import charges
 
 #: Between the names of channels read together.
 JOINT_CHANNELS = "+"
@@ -121,9 +122,4 @@ def programs_of(problem: Problem, choice: Choice, rank: int, junction_c: Array) 
 def point_of(problem: Problem, choice: Choice, rank: int, design: Design, junction_c: Array) -> Array:
     """Charges and exposure of a design, in the columns of `programs_of`. (n+1,)"""
     segments = light_segments(problem, setting_of_choice(problem, choice, rank), junction_c)
-    start = np.cumsum(segments.width) - segments.width
-    start = start - start[np.searchsorted(segments.led, segments.led)]
-    amps = np.array([design.drive_ma.get(channel.id, 0.0) * 1e-3 for channel in problem.channels])
-    t = design.exposure_us * 1e-6
-    filled = np.clip(amps[segments.led] - start, 0.0, segments.width)
-    return np.append(filled * shares(problem, choice)[segments.led] * t, t)
+    return charges(problem, segments, design, shares(problem, choice))
