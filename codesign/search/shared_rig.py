@@ -7,7 +7,7 @@ that the rig cannot do it. Cuts found on one rig are tried on the next: similar 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Protocol
 
@@ -23,7 +23,7 @@ from codesign.search.shared_space import RigSpace
 #: Variants that clearly fall short which give a cut each before the next set is tried.
 CUTS_AT_ONCE = 3
 #: Sets of LEDs of each variant's cuts that are tried on further rigs.
-SETS_REMEMBERED = 12
+SETS_REMEMBERED = 6
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -147,21 +147,27 @@ class Hunt:
         """Levels of the cuts of a rig whose proof fell short of what was asked, ascending."""
         return sorted(cut.level for _, cut, asked in self.cuts.get(rig, ()) if cut.level >= asked)
 
-    def recall(self, rig: int, levels: Array) -> None:
-        """Try the sets of cuts found elsewhere on a rig not looked at yet."""
+    def recalled(self, rig: int, levels: Array) -> Iterator[None]:
+        """Try the sets of cuts found elsewhere on a rig not looked at yet; yields after each that holds here too."""
         if rig in self.cuts:
             return
         self.cuts[rig] = []
         for place in self.in_order():
-            known = list(self.sets[place].values())
-            variant, level = self.variants[place], levels[place]
-            if not known or variant.upper[rig] < level:
+            variant, level = self.variants[place], float(levels[place])
+            if self.trouble[place] == 0 or variant.upper[rig] < level:
                 continue
-            for inside in reversed(known):
-                cut = variant.tried(rig, inside, float(level))
+            for inside in reversed(list(self.sets[place].values())):
+                cut = variant.tried(rig, inside, level)
                 if cut is not None:
-                    self.cuts[rig].append((place, cut, float(level)))
+                    self.cuts[rig].append((place, cut, level))
+                    self._freshen(place, inside)
+                    yield
                     break
+
+    def recall(self, rig: int, levels: Array) -> None:
+        """Try the sets of cuts found elsewhere, all of them."""
+        for _ in self.recalled(rig, levels):
+            pass
 
     def filled(self, chosen: int, room: Room) -> Mask:
         """A set of LEDs with as many more as find room, those missed most first."""
@@ -210,9 +216,13 @@ class Hunt:
         self.trouble[place] += 1
         outside = ~cut.inside
         self.missed += outside / max(int(outside.sum()), 1)
-        known, key = self.sets[place], cut.inside.tobytes()
+        self._freshen(place, cut.inside)
+
+    def _freshen(self, place: int, inside: Mask) -> None:
+        """Put a set of LEDs first among those to try."""
+        known, key = self.sets[place], inside.tobytes()
         known.pop(key, None)
-        known[key] = cut.inside
+        known[key] = inside
         if len(known) > SETS_REMEMBERED:
             known.pop(next(iter(known)))
 
@@ -225,17 +235,23 @@ class Hunt:
 
     def serving(self, rig: int, levels: Array) -> Mask | None:
         """A set of LEDs with which every variant reaches its level on a rig; None where there is none, or no time."""
-        self.recall(rig, levels)
         room = self.space.room(rig)
+        for _ in self.recalled(rig, levels):
+            if self._meeting(rig, levels, room) is None:
+                return None
         while not self.over():
-            needs = [cut for own in self.needs(rig, levels) for cut in own]
-            chosen = cheapest_set(needs, room, liking=self.missed)
+            chosen = self._meeting(rig, levels, room)
             if chosen is None:
                 return None
             inside = self.filled(chosen, room)
             if not self.short(rig, inside, levels, self.everyone):
                 return inside
         return None
+
+    def _meeting(self, rig: int, levels: Array, room: Room) -> int | None:
+        """A set of LEDs that meets all cuts."""
+        needs = [cut for own in self.needs(rig, levels) for cut in own]
+        return cheapest_set(needs, room, liking=self.missed)
 
     def recipes(self, rig: int, inside: Mask, least: Array) -> dict[int, Reached]:
         """Best recipe of every variant on a rig with its LEDs; ``least`` (V,) are levels known to be reached."""

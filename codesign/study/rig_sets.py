@@ -25,6 +25,7 @@ from codesign.study.shared_rig import levels_of, outcome_of
 from codesign.study.shared_rig_parts import common_problems
 from codesign.study.shared_rig_result import VariantOutcome
 from codesign.study.shared_rig_rounds import Search, Settled, settled_search
+from codesign.study.shared_rig_verify import single_threaded
 
 Progress = Callable[[float, float], None]
 
@@ -236,17 +237,15 @@ def _settled(
     find: Callable[[Hunt, Array, Placed | None], Outcome],
 ) -> tuple[Settled, dict[str, Problem], tuple[str, ...], Array]:
     """Rounds over junction temperatures of a search for several rigs."""
-    from threadpoolctl import threadpool_limits
-
     problems, left_out = common_problems(variants, max_led_channels)
     required = {name: p.spec.required_cnr if required_cnr is None else required_cnr for name, p in problems.items()}
     levels = levels_of(required)
 
-    def search(hunt: Hunt, start: Placed | None, scout: bool) -> Outcome:
+    def search(hunt: Hunt, start: Placed | None) -> Outcome:
         return find(hunt, levels, start)
 
     wanted: Search = search
-    with threadpool_limits(limits=1, user_api="blas"):
+    with single_threaded():
         return settled_search(problems, wanted, Clock.lasting(time_limit), levels), problems, left_out, levels
 
 

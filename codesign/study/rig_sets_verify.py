@@ -11,7 +11,7 @@ from codesign.search.shared_sets import least_number
 from codesign.search.shared_space import Rig
 from codesign.search.shared_wheel import choices_left
 from codesign.study.rig_sets import FilterWheel, RigSet
-from codesign.study.shared_rig_verify import Rebuilt, SharedVerdict, require_recipe
+from codesign.study.shared_rig_verify import Rebuilt, SharedVerdict, require_recipe, single_threaded
 from codesign.verify import ROUND_OFF
 
 
@@ -23,6 +23,11 @@ def verify_rig_set(result: RigSet) -> SharedVerdict:
     CertificateError
         Naming the first thing that does not hold.
     """
+    with single_threaded():
+        return _rig_set(result)
+
+
+def _rig_set(result: RigSet) -> SharedVerdict:
     check = Rebuilt(result.evidence)
     for name in check.names:
         place = result.rig_of.get(name, -1)
@@ -53,6 +58,11 @@ def verify_filter_wheel(result: FilterWheel) -> SharedVerdict:
     CertificateError
         Naming the first thing that does not hold.
     """
+    with single_threaded():
+        return _filter_wheel(result)
+
+
+def _filter_wheel(result: FilterWheel) -> SharedVerdict:
     check = Rebuilt(result.evidence)
     for name in check.names:
         own = result.filter_of.get(name)

@@ -28,14 +28,12 @@ from codesign.study.shared_rig_helps import helpful_changes
 from codesign.study.shared_rig_parts import common_problems
 from codesign.study.shared_rig_result import GOALS, Goal, Help, SharedProof, SharedRig, VariantOutcome, relative_gap
 from codesign.study.shared_rig_rounds import Search, Settled, named, settled_search
-from codesign.study.shared_rig_verify import SharedVerdict, verify_shared
+from codesign.study.shared_rig_verify import SharedVerdict, single_threaded, verify_shared
 
 __all__ = ["Goal", "Help", "SharedProof", "SharedRig", "SharedVerdict", "VariantOutcome", "shared_rig", "verify_shared"]
 
 #: Default gap. [1]
 DEFAULT_GAP = 0.02
-#: Gap of the first round, which only has to find the junction temperatures.
-SCOUT_GAP = 0.05
 
 
 def shared_rig(
@@ -100,8 +98,6 @@ def shared_rig(
     >>> found.limiting, found.gap < 0.02
     ('far', True)
     """
-    from threadpoolctl import threadpool_limits
-
     started = time.perf_counter()
     if goal not in GOALS:
         raise ProblemError(f"shared rig: goal is {goal!r}, must be one of {', '.join(GOALS)}")
@@ -109,7 +105,7 @@ def shared_rig(
     required = {name: p.spec.required_cnr if required_cnr is None else required_cnr for name, p in problems.items()}
     levels = np.zeros(len(required)) if goal == "worst" else levels_of(required)
     clock = Clock.lasting(time_limit)
-    with threadpool_limits(limits=1, user_api="blas"):  # small arrays: more threads would only wait for each other
+    with single_threaded():
         settled = settled_search(
             problems, _search(goal, levels, gap, progress), clock, None if goal == "worst" else levels
         )
@@ -130,14 +126,13 @@ def levels_of(required: Mapping[str, float | None]) -> Array:
 
 
 def _search(goal: Goal, levels: Array, gap: float, progress) -> Search:
-    def search(hunt: Hunt, best: Placed | None, scout: bool) -> Outcome:
-        wanted = max(gap, SCOUT_GAP) if scout else gap
+    def search(hunt: Hunt, best: Placed | None) -> Outcome:
         start = None if best is None else best.places(1)[0]
         if goal == "worst":
-            return best_worst(hunt, wanted, start, progress)
+            return best_worst(hunt, gap, start, progress)
         if goal == "count":
             return most_variants(hunt, levels, None, start, progress)
-        return least_price(hunt, levels, wanted, start, progress)
+        return least_price(hunt, levels, gap, start, progress)
 
     return search
 

@@ -18,11 +18,11 @@ from codesign.certificate_shared import Mask, mask_of
 from codesign.errors import InfeasibleError
 from codesign.problem import Problem
 from codesign.program import Array
-from codesign.search.shared import Judge
+from codesign.search.shared import Judge, Reached
 from codesign.search.shared_rig import Hunt, Outcome, Placed
-from codesign.search.shared_space import RigSpace
+from codesign.search.shared_space import Rig, RigSpace
 from codesign.solve_rounds import JUNCTION_TOLERANCE_K, Clock
-from codesign.study.common import Resolved, resolve
+from codesign.study.common import Known, Resolved, resolve
 from codesign.study.shared_rig_parts import on_rig
 
 #: Rounds before the residual is stated as it is.
@@ -32,7 +32,7 @@ RECIPE_GAP = 1e-4
 #: Share of a CNR that leaving out LEDs may cost.
 NO_LOSS = 1e-4
 
-Search = Callable[[Hunt, Placed | None, bool], Outcome]
+Search = Callable[[Hunt, Placed | None], Outcome]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -66,7 +66,7 @@ def settled_search(
     problems : mapping
         As `common_problems` returns them.
     search : callable
-        Outcome from (hunt, what to start from, whether it is only to find the temperatures).
+        Outcome from (hunt, what to start from).
     clock : Clock
     levels : (V,) array, optional
         CNR that each variant needs, for messages; any at all by default.
@@ -84,7 +84,7 @@ def settled_search(
         new = Hunt([_judge(name, p, junction[name], space) for name, p in problems.items()], space, clock)
         if hunt is not None:
             new.learn_from(hunt)
-        found = search(new, start, attempt == 0)
+        found = search(new, start)
         if found.best is None and attempt and clock():
             break  # stopped before anything was worked out at these temperatures: the last round stands
         hunt, outcome = new, found
@@ -92,8 +92,8 @@ def settled_search(
             raise unserved(hunt, np.full(len(problems), 1e-9) if levels is None else levels)
         places = outcome.best.places(len(problems))
         if not (resolved and start is not None and _same(places, start.places(len(problems)))):
-            resolved = _resolved(problems, space, places)
-            _trim(outcome, resolved, problems, space, levels)
+            resolved = _resolved(hunt, places)
+            _trim(outcome, resolved, hunt, levels)
             places = outcome.best.places(len(problems))
         settled = {
             name: _reached(junction[name], place[1], one)
@@ -126,21 +126,18 @@ def _same(some: list[tuple[int, Mask]], others: list[tuple[int, Mask]]) -> bool:
     return all(a[0] == b[0] and (a[1] == b[1]).all() for a, b in zip(some, others, strict=True))
 
 
-def _resolved(
-    problems: Mapping[str, Problem], space: RigSpace, places: list[tuple[int, Mask]]
-) -> dict[str, Resolved | None]:
-    return {name: _on(space, place, p) for (name, p), place in zip(problems.items(), places, strict=True)}
+def _resolved(hunt: Hunt, places: list[tuple[int, Mask]]) -> dict[str, Resolved | None]:
+    return {v.name: _on(hunt.space, place, v) for v, place in zip(hunt.variants, places, strict=True)}
 
 
 def _trim(
     outcome: Outcome,
     resolved: dict[str, Resolved | None],
-    problems: Mapping[str, Problem],
-    space: RigSpace,
+    hunt: Hunt,
     levels: Array | None,
 ) -> None:
     """Leave out LEDs that no variant lights by half a setting step, where no CNR suffers from that."""
-    count, best = len(problems), outcome.best
+    count, best, space = len(hunt.variants), outcome.best, hunt.space
     places, boards = best.places(count), best.boards(count)
     ids = [channel.id for channel in space.problem.channels]
     forced = mask_of(space.room(places[0][0]).forced, len(ids))
@@ -151,7 +148,7 @@ def _trim(
     if not all(own.any() for own in lit) or all((lit[b] == p[1]).all() for b, p in zip(boards, places, strict=True)):
         return
     trimmed = best.with_boards(lit)
-    again = _resolved(problems, space, trimmed.places(count))
+    again = _resolved(hunt, trimmed.places(count))
     needed = np.zeros(count) if levels is None else levels
     for (name, old), level in zip(resolved.items(), needed, strict=True):
         new = again[name]
@@ -161,14 +158,34 @@ def _trim(
     resolved.update(again)
 
 
-def _on(space: RigSpace, place: tuple[int, Mask], problem: Problem) -> Resolved | None:
+def _on(space: RigSpace, place: tuple[int, Mask], variant: Judge) -> Resolved | None:
     """Optimum of one variant on a rig with its LEDs, at temperatures that agree with it."""
-    rig = space.rig(place[0])
-    leds = [problem.channels[led].id for led in np.flatnonzero(place[1])]
+    number, leds = place
+    rig, problem = space.rig(number), variant.problem
+    ids = [channel.id for channel in problem.channels]
+    small = on_rig(problem, rig.camera, rig.filter, rig.f_number, [ids[led] for led in np.flatnonzero(leds)])
+    variant.look(np.arange(len(space)) == number)
+    found = variant.best(number, leds)
     try:
-        return resolve(on_rig(problem, rig.camera, rig.filter, rig.f_number, leds), gap=RECIPE_GAP)
+        return resolve(small, _known(variant, rig, found) if found.value > 0 else None, gap=RECIPE_GAP)
     except InfeasibleError:
         return None
+
+
+def _known(variant: Judge, rig: Rig, found: Reached) -> Known:
+    """Where the search for the settled optimum starts."""
+    chosen = variant.walk.configuration(found.configuration)
+    ids = [channel.id for channel in variant.problem.channels]
+    return Known(
+        camera=rig.camera,
+        channel=chosen.setting.channel,
+        gain_db=chosen.setting.gain.gain_db,
+        f_number=rig.f_number,
+        exposure_us=float(found.point[-1]) * 1e6,
+        filter=rig.filter,
+        sign=chosen.sign,
+        junction_c=dict(zip(ids, variant.junction_c.tolist(), strict=True)),
+    )
 
 
 def _reached(assumed: Array, leds: Array, found: Resolved | None) -> Array:

@@ -7,6 +7,7 @@ them all; and what every variant gets from the rig found, by the forward model.
 
 from __future__ import annotations
 
+from contextlib import AbstractContextManager
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -14,7 +15,7 @@ import numpy as np
 
 from codesign.assemble import flipped
 from codesign.certificate import bound
-from codesign.certificate_shared import Cut, Piece, bits, masked, piece_bound
+from codesign.certificate_shared import Cut, bits, masked, piece_bound
 from codesign.certificate_shared_sets import EQUAL, cheapest_set, most_served
 from codesign.design import evaluate
 from codesign.errors import CertificateError
@@ -55,32 +56,30 @@ class Checked(Variant):
         return self.walk.buildable(setting, found)[filters]
 
     def level_of(self, rig: int, cut: Cut) -> float:
-        """Least level that a cut proves."""
-        pieces: dict[int, list[Piece]] = {}
-        for piece in cut.pieces:
-            pieces.setdefault(piece.index, []).append(piece)
+        """Least level that a cut proves: configuration by configuration with all LEDs, by its pieces or closed form."""
         own, _ = self.configurations(rig, 0.0)
-        return max((self._configuration(rig, int(i), cut, pieces.get(int(i), [])) for i in own), default=0.0)
-
-    def _configuration(self, rig: int, index: int, cut: Cut, pieces: list[Piece]) -> float:
-        """Bound of one configuration with the LEDs of a cut."""
-        least = np.inf
-        for piece in pieces:
-            programs = self.programs(rig, index, coarse=piece.coarse)
-            least = min(least, piece_bound(programs, piece, cut.inside))
-        if least <= cut.level:
-            return least
-        programs = self.programs(rig, index, coarse=True)
-        for pair in self.quick_pairs:
-            least = min(least, float(_closed(masked(programs[pair], cut.inside))[0]))
-        if least <= cut.level:
-            return least
-        return min(least, *(float(_closed(programs[pair])[0]) for pair in self.quick_pairs))
+        bounds = {int(index): float(self.walk.upper[index]) for index in own}
+        for piece in cut.pieces:
+            if bounds.get(piece.index, 0.0) > cut.level:
+                programs = self.programs(rig, piece.index, coarse=piece.coarse)
+                bounds[piece.index] = min(bounds[piece.index], piece_bound(programs, piece, cut.inside))
+        left = np.array([index for index, found in bounds.items() if found > cut.level], dtype=np.intp)
+        for index, programs in self._blocks(rig, left) if left.size else ():
+            found = np.min([_closed(masked(program, cut.inside)) for program in programs], axis=0)
+            bounds |= {int(i): min(bounds[int(i)], float(f)) for i, f in zip(index, found, strict=True)}
+        return max(bounds.values(), default=0.0)
 
 
 def _closed(program: Program) -> Array:
     """Bounds of the closed form, from its multipliers. (P,)"""
     return bound(program, simple_proof(program)[0])
+
+
+def single_threaded() -> AbstractContextManager:
+    """Keep the matrix library to one thread: for small arrays more would only wait for each other."""
+    from threadpoolctl import threadpool_limits
+
+    return threadpool_limits(limits=1, user_api="blas")
 
 
 class Rebuilt:
@@ -235,6 +234,11 @@ def verify_shared(result: SharedRig) -> SharedVerdict:
     CertificateError
         Naming the first thing that does not hold.
     """
+    with single_threaded():
+        return _verdict(result)
+
+
+def _verdict(result: SharedRig) -> SharedVerdict:
     check = _Check(result)
     value = check.found()
     if not abs(value - result.value) <= FORWARD_TOLERANCE * max(abs(value), 1e-12):
