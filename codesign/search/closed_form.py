@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 import itertools
+from collections.abc import Callable
 
 import numpy as np
+from numpy.typing import NDArray
 
 from codesign.assemble import Assembly
 from codesign.program import Array
+from codesign.search import never
 from codesign.search.bounds import both_bounds
 from codesign.search.parallel import side_by_side
 
@@ -24,13 +27,17 @@ def blocks(filters: int) -> list[slice]:
     return [slice(s, min(s + FILTERS_TOGETHER, filters)) for s in range(0, filters, FILTERS_TOGETHER)]
 
 
-def closed_form(assembly: Assembly, pairs: list[int]) -> Array:
+def closed_form(
+    assembly: Assembly, pairs: list[int], stop: Callable[[], bool] = never
+) -> tuple[Array, NDArray[np.bool_]]:
     """Bounds of all settings, filters and both signs: the least of any of the pairs. (settings, F, 2)
 
-    A task is a block of filters in all settings of one camera channel, which share their rates.
+    A task is a block of filters in all settings of one camera channel, which share their rates. Of many tasks, those
+    left when it is time to ``stop`` are passed over but the first: also returned is which. (settings, F)
     """
     settings = assembly.settings
     least = np.full((len(settings), len(assembly.problem.filters), 2), np.inf)
+    skipped = np.zeros(least.shape[:2], dtype=bool)
     channels: dict[tuple[str, str], list[int]] = {}
     for number, setting in enumerate(settings):
         channels.setdefault((setting.camera.id, setting.channel), []).append(number)
@@ -38,18 +45,22 @@ def closed_form(assembly: Assembly, pairs: list[int]) -> Array:
 
     def bound(task: tuple[list[int], slice]) -> None:
         numbers, part = task
+        if least.size >= WORTH_THREADS and task is not tasks[0] and stop():
+            skipped[numbers, part] = True
+            return
         for number, pair in itertools.product(numbers, pairs):
             program = assembly.program(settings[number], part, coarse=True, pair=pair)
             least[number, part] = np.minimum(least[number, part], both_bounds(program))
 
-    tasks = list(itertools.product(channels.values(), blocks(least.shape[1])))
+    # All cameras with the first filters, then with the next: what is left undone is spread over all of them.
+    tasks = [(numbers, part) for part in blocks(least.shape[1]) for numbers in channels.values()]
     if least.size < WORTH_THREADS:
         for task in tasks:
             bound(task)
     else:
         side_by_side(bound, tasks)
     assembly.forget()
-    return least
+    return least, skipped
 
 
 def limiting_pairs(assembly: Assembly) -> list[int]:

@@ -17,6 +17,7 @@ from codesign.assemble import Assembly
 from codesign.build import Units, affordable, choosing
 from codesign.certificate import Proof
 from codesign.certificate_build import BuildSpace, build_space
+from codesign.certificate_ceiling import shot_noise_ceilings
 from codesign.certificate_pairs import pair_contrasts
 from codesign.limits import Setting
 from codesign.program import Array, Program, stack
@@ -79,15 +80,22 @@ class Walk:
     #: Configurations whose recipe is settled at these temperatures and stays as it is.
     settled: set[int] = field(init=False, default_factory=set)
 
+    #: Configurations whose closed form there was no time for.
+    skipped: np.ndarray = field(init=False)
+
     closed_form: bool = True
 
     def __post_init__(self) -> None:
         count = 2 * self.filters * len(self.assembly.settings)
         self.upper = np.full(count, np.inf)
+        self.skipped = np.zeros(count, dtype=bool)
         self.pair_order = list(range(self.pairs))
         if self.closed_form:
             self.quick_pairs = limiting_pairs(self.assembly)
-            bounds = closed_form(self.assembly, self.quick_pairs)
+            bounds, skipped = closed_form(self.assembly, self.quick_pairs, self.stop)
+            if skipped.any():
+                bounds = np.where(skipped[:, :, None], self.ceilings()[:, None, :], bounds)
+                self.skipped = np.repeat(skipped.ravel(), 2)
             settings = zip(self.assembly.settings, bounds, strict=True)
             self.upper = np.stack([self.buildable(setting, own) for setting, own in settings]).ravel()
         self.refined = np.zeros(count, dtype=np.int8)
@@ -99,6 +107,10 @@ class Walk:
     def blank(cls, assembly: Assembly) -> Walk:
         """A walk that knows no bound yet, for its numbering of configurations."""
         return cls(assembly, closed_form=False)
+
+    def ceilings(self) -> Array:
+        """Bounds of each setting and sign behind any filter, for configurations that there was no time for. (S, 2)"""
+        return shot_noise_ceilings(self.assembly.problem, self.assembly.settings)
 
     @property
     def filters(self) -> int:
@@ -198,6 +210,8 @@ class Walk:
                 self.progress(value, float(self.upper[open_].max(initial=value)))
             if open_.size == 0 or self._done(leader, value):
                 return leader
+            if leader is None and self.stop() and not self.skipped[open_].all():
+                open_ = open_[~self.skipped[open_]]
             top = open_[np.argmax(self.upper[open_])]
             alike = open_[self.refined[open_] == self.refined[top]]
             stage = self.refined[top]
