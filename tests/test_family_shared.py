@@ -26,7 +26,7 @@ from codesign.report.family_sets import rig_set_text, wheel_text
 from codesign.report.family_shared import shared_dict, shared_text
 from codesign.study.shared_rig import Help
 
-COUNT = 8
+COUNT = 6
 
 
 @pytest.fixture(scope="module")
@@ -65,10 +65,10 @@ def test_each_variant_has_its_recipe_on_the_rig_and_its_regret(place, found):
 
 def test_the_text_tells_rig_limit_regret_and_failures(found):
     text, rig = shared_text(found), found.rig
-    assert "variants    7 with one rig for all" in text
+    assert "variants    5 with one rig for all" in text
     assert f"LEDs        1 {rig.leds[0]} (at most 1)" in text
     assert f"limited by  {rig.limiting}" in text
-    rows = [line.split() for line in text.split("EACH VARIANT ON IT")[1].splitlines()[2:9]]
+    rows = [line.split() for line in text.split("EACH VARIANT ON IT")[1].splitlines()[2 : COUNT + 1]]
     assert rows[0][0] == rig.limiting
     assert [float(row[1]) for row in rows] == sorted(float(row[1]) for row in rows)
     assert "1 VARIANT WITHOUT A RECIPE" in text and "cap-bleu" in text
@@ -80,8 +80,8 @@ def test_changes_that_help_and_other_ends(found):
     assert "one more LED channel: helps 5 variants, worst CNR 20.00 (+25.0 %)" in told
     stopped = replace(found.rig, status="stopped", bound=2 * found.rig.value)
     assert "stopped before the gap asked for: 100.0 % is proven" in shared_text(replace(found, rig=stopped))
-    count = replace(found.rig, goal="count", value=6.0, bound=7.0)
-    assert "most variants at the CNR they need: 6 of 7, no rig more than 7" in shared_text(replace(found, rig=count))
+    count = replace(found.rig, goal="count", value=4.0, bound=5.0)
+    assert "most variants at the CNR they need: 4 of 5, no rig more than 5" in shared_text(replace(found, rig=count))
     cost = replace(found.rig, goal="cost", value=100.0, bound=99.0)
     assert "cheaper" in shared_text(replace(found, rig=cost))
 
@@ -123,14 +123,22 @@ def test_the_command_writes_recipes_of_the_rig(place, found, tmp_path):
     assert [float(row["cnr"]) for row in rows] == [entry.outcome.cnr for entry in found.entries]
 
 
-def test_options_default_to_the_family_file(place, found):
-    family = load_family(place[0])
-    text = place[0].read_text() + "\n[shared]\nmax_led_channels = 1\n"
+def test_options_default_to_the_family_file(place, found, monkeypatch):
+    asked = []
+
+    def note(problems, **options):
+        asked.append(options)
+        return found.rig
+
+    monkeypatch.setattr("codesign.family.shared.shared_rig", note)
     other = place[0].with_name("with-shared.toml")
-    other.write_text(text)
-    same = shared_family(load_family(other), found.own)
-    assert same.max_led_channels == 1 and same.rig.leds == found.rig.leds
-    assert shared_family(family, found.own).max_led_channels is None
+    other.write_text(place[0].read_text() + '\n[shared]\nmax_led_channels = 3\ngoal = "count"\nrequired_cnr = 5\n')
+    family = load_family(other)
+    assert shared_family(family, found.own).max_led_channels == 3
+    shared_family(family, found.own, max_led_channels=2, goal="worst", required_cnr=6, gap=0.1)
+    names = ("max_led_channels", "goal", "required_cnr", "gap")
+    assert [tuple(one.get(name) for name in names) for one in asked] == [(3, "count", 5, None), (2, "worst", 6, 0.1)]
+    assert asked[0]["own"] == {entry.name: entry.outcome.best_cnr for entry in found.own.solved}
 
 
 @pytest.fixture(scope="module")
@@ -147,10 +155,10 @@ def wheel(place) -> SharedFamily:
 def test_a_set_of_rigs_is_told_by_letters(rigs):
     text, rig = rig_set_text(rigs), rigs.rig
     assert rig.number == 2 and rig.status == "proven"
-    assert "variants    7 on 2 rigs" in text
+    assert "variants    5 on 2 rigs" in text
     for number, one in enumerate(rig.rigs):
         assert f" {rig_letter(number)}           {one.camera}, filter {one.filter}" in text
-    rows = {line.split()[0]: line.split()[1] for line in text.split("EACH VARIANT")[1].splitlines()[2:9]}
+    rows = {line.split()[0]: line.split()[1] for line in text.split("EACH VARIANT")[1].splitlines()[2 : COUNT + 1]}
     assert rows == {name: rig_letter(use) for name, use in rig.rig_of.items()}
     assert "no fewer rigs serve all variants" in text
     assert all(entry.outcome.cnr >= 12 * (1 - 1e-2) for entry in rigs.entries)
@@ -161,8 +169,8 @@ def test_a_set_of_rigs_is_told_by_letters(rigs):
 
 def test_a_filter_wheel_is_told_by_its_filters(wheel):
     text, rig = wheel_text(wheel), wheel.rig
-    assert "7 on 1 filter of a wheel, the rest in common" in text
-    assert f"{rig.filters[0]}: 7 variants: cap-00, cap-01" in text
+    assert "5 on 1 filter of a wheel, the rest in common" in text
+    assert f"{rig.filters[0]}: 5 variants: cap-00, cap-01" in text
     assert "one is enough" in text
     assert "1 filter on a wheel" in words(_figure(wheel))
 
