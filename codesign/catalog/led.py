@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from functools import cached_property
 from typing import Any, ClassVar, Self
 
@@ -36,6 +37,13 @@ class PulseBracket(Record):
     max_width_us: float = Field(gt=0, description="longest pulse of this bracket [us]")
     max_duty: float = Field(gt=0, le=1, description="largest on-time divided by period, 0 to 1")
     max_current_ma: float = Field(gt=0, description="largest pulse current [mA]")
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Kept:
+    """Arrays worked out once, compared by identity: records compare all they hold, and arrays have no one answer."""
+
+    points: tuple[FloatArray, FloatArray, FloatArray]
 
 
 class Led(Part):
@@ -239,14 +247,14 @@ class Led(Part):
 
     def operating_points(self) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Return current [A], relative flux and electrical power [W] at the nodes of the droop curve."""
-        return self._points
+        return self._kept.points
 
     @cached_property
-    def _points(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+    def _kept(self) -> _Kept:
         points = self._droop()
         for values in points:
             values.setflags(write=False)
-        return points
+        return _Kept(points)
 
     def _droop(self) -> tuple[FloatArray, FloatArray, FloatArray]:
         if self.flux_curve is None:
