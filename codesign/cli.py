@@ -193,7 +193,8 @@ def parts(
     from codesign.catalog import load_catalog
     from codesign.report.parts import listing
 
-    put(listing(load_catalog(catalog), kind and kind.value, expression, id, json=json))
+    shown = listing(load_catalog(catalog), kind and kind.value, expression, id, json=json, width=page_width())
+    put(shown)
 
 
 @app.command()

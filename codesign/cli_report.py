@@ -79,7 +79,7 @@ def write_solution_page(
 
     work, notes = Work(), {}
     if verdict is None:
-        verdict = work.timed("check of the proof", lambda _: verify(solution))
+        verdict = work.timed("check of the proof", lambda progress: verify(solution, progress))
     if found is None:
         found = work.optional("sensitivities", notes, _sensitivities(solution, cost, quick))
     curves = [

@@ -21,7 +21,9 @@ _WORDS = frozenset({"kind", "what", "tags", "channels"})
 KEY = 34
 
 
-def listing(catalog: Catalog, kind: str | None, expression: str, name: str | None, *, json: bool) -> str:
+def listing(
+    catalog: Catalog, kind: str | None, expression: str, name: str | None, *, json: bool, width: int = 80
+) -> str:
     """Return what ``cnr parts`` prints: the catalogue's counts, a table of chosen parts, or one part in full.
 
     Parameters
@@ -35,14 +37,17 @@ def listing(catalog: Catalog, kind: str | None, expression: str, name: str | Non
         Id of the one part to show, of the kind or of any.
     json : bool
         JSON instead of text.
+    width : int
+        Page width, at least 60. [characters]
     """
+    width = max(width, NARROWEST)
     if name is not None:
         part = _find(catalog, kind, name)
-        return as_json(part_dict(part)) if json else part_text(part)
+        return as_json(part_dict(part)) if json else part_text(part, width)
     if kind is None:
-        return as_json(catalog_dict(catalog)) if json else catalog_text(catalog)
+        return as_json(catalog_dict(catalog)) if json else catalog_text(catalog, width)
     chosen = select(catalog.parts(KINDS[kind]), expression)
-    return as_json([part_dict(part) for part in chosen]) if json else parts_text(chosen)
+    return as_json([part_dict(part) for part in chosen]) if json else parts_text(chosen, width)
 
 
 def _find(catalog: Catalog, kind: str | None, name: str) -> Part:
