@@ -12,12 +12,12 @@ from codesign.errors import CatalogError, SolveError
 from codesign.limits import sum_limits
 from codesign.problem.nudge import NUDGES, nudged
 from codesign.program import Program, row_scale, violation
-from codesign.search.frontier import certify
-from codesign.study.binding import what_binds
 from codesign.recipe_choice import choice_of
+from codesign.search.frontier import certify
 from codesign.search.stationary import Stationary, stationary
-from codesign.study.limit_moves import WELL_HEADROOM, moved
 from codesign.solve_joint import Optimum, optimum_near, settled
+from codesign.study.binding import what_binds
+from codesign.study.limit_moves import WELL_HEADROOM, moved
 from codesign.study.tangent import Tangent
 
 pytestmark = pytest.mark.oracle
