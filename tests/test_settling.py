@@ -14,6 +14,7 @@ from codesign.recipe import design_at, point_at
 from codesign.search.walk import Walk
 from codesign.solve_rounds import search_rounds
 from codesign.solve_settle import JUNCTION_TOLERANCE_K
+from codesign.study.common import resolve
 
 #: Seeds whose plain rounds toggle: two recipes of one configuration, several of them, or two configurations.
 TOGGLING = (8, 17, 33, 163, 184, 222)
@@ -104,3 +105,14 @@ def test_rounds_end_with_the_recipe_they_settled(tmp_path):
     assert search.best in search.walk.settled
     point = search.walk.found[search.best].point
     assert search.walk.polish(search.best, 1e-9).point is point
+
+
+@pytest.mark.parametrize("seed", [33, 163])
+def test_temperatures_agree_in_a_problem_solved_again_from_a_neighbour(seed, tmp_path):
+    problem = hot_problem(tmp_path, seed)
+    near = resolve(problem)
+    warmer = problem.spec.temperature.model_copy(update={"air_c": 25.5})
+    again = resolve(replace(problem, spec=problem.spec.model_copy(update={"temperature": warmer})), near)
+    assert near.certificate.junction_residual_k <= JUNCTION_TOLERANCE_K
+    assert again.certificate.junction_residual_k <= JUNCTION_TOLERANCE_K
+    assert again.bound >= again.cnr * (1 - 1e-9)

@@ -191,6 +191,8 @@ def _results(problem: Problem, performance: Performance, width: int) -> list[str
     required = problem.spec.required_cnr
     if required is not None:
         lines += labelled("required", f"CNR {required:g}: {_compared(performance.cnr, required)}", width)
+    if any(limit.name.startswith("well, ") and not limit.met for limit in performance.limits):
+        lines += labelled("", "as if nothing were clipped: a surface does not fit the well", width)
     rate = performance.error_rate
     text = f"{rate_words(rate)} missed, as many false alarms, threshold midway"
     lines += labelled("errors", text, width)

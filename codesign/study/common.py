@@ -192,6 +192,8 @@ def resolve(problem: Problem, near: Resolved | Known | Solution | None = None, *
             break
         seed, units, hint = walk.configuration(best), getattr(walk.found[best], "units", None), hint_of(walk, best)
         assembly = walk.assembly
+    if not settles(walk, best, indifferent=True)[0]:
+        return _cold(problem, gap, carried)
     return _finished(walk, best, gap, carried)
 
 

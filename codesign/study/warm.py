@@ -21,7 +21,7 @@ from codesign.recipe import design_at
 from codesign.search.frontier import Certified, Hint
 from codesign.search.walk import FULLY, Configuration, Walk
 from codesign.solve_rounds import LARGEST_NUMBER_OF_ROUNDS, POLISH_GAP
-from codesign.solve_settle import JUNCTION_TOLERANCE_K
+from codesign.solve_settle import JUNCTION_TOLERANCE_K, offer, settle
 from codesign.study.multipliers import Multipliers
 
 if TYPE_CHECKING:
@@ -85,11 +85,26 @@ def settled_certificate(
         done, reached = settles(walk, number, indifferent=attempt >= PATIENCE)
         if done or attempt == LARGEST_NUMBER_OF_ROUNDS - 1:
             break
+        if attempt == PATIENCE - 1 and (between := _between(walk, number, gap)) is not None:
+            return between
         hint, units = hint_of(walk, number), getattr(walk.found[number], "units", None)
         assumed = assembly.junction_c
         assembly = assembly.at(_extrapolated(before, assumed, reached))
         before = assumed, reached
     return walk
+
+
+def _between(walk: Walk, number: int, gap: float) -> Walk | None:
+    """The certificate at a recipe that leads to its own temperatures, where the best recipes toggle; None without."""
+    known, found = walk.configuration(number), walk.found[number]
+    own = settle(walk.assembly.problem, known, found, walk.assembly.junction_c, min(gap, POLISH_GAP))
+    if own.design is None:
+        return None
+    other = Walk.blank(walk.assembly.at(own.junction_c))
+    other.gap = walk.gap
+    other.seed(known, SimpleNamespace(units=getattr(found, "units", None)))
+    offer(other, number, own.design, min(gap, POLISH_GAP))
+    return other if settles(other, number, indifferent=False)[0] else None
 
 
 def _extrapolated(before: tuple[Array, Array] | None, assumed: Array, reached: Array) -> Array:
@@ -144,6 +159,7 @@ def take_over(walk: Walk, first: Walk, number: int, carried: Multipliers) -> int
     count = len(walk.evidence)
     walk.found[number] = first.found[number]
     walk.tried[number] = first.tried[number]
+    walk.settled |= first.settled
     walk.upper[number] = min(walk.upper[number], first.upper[number])
     walk.evidence.extend(first.evidence)
     walk.tally.certified += first.tally.certified
