@@ -111,7 +111,7 @@ class Judge(Variant):
             found = self._solved(rig, number, inside, QUICK_GAP, target, coarse=coarse)
             if found.bound >= level:
                 return None
-            shown[number] = stretch(self.programs(rig, number, coarse=coarse), found, level, coarse=coarse)
+            shown[number] = stretch(self.programs(rig, number, coarse=coarse), found, inside, level, coarse=coarse)
         return shown
 
     def best(self, rig: int, inside: Mask, least: float = 0.0) -> Reached:
@@ -145,15 +145,15 @@ class Judge(Variant):
                 return Reached(index, found.point, found.value)
             if found.bound < level and (coarse or gap != ROUGH_GAP):
                 break
-        return stretch(self.programs(rig, index, coarse=coarse), found, level, coarse=coarse)
+        return stretch(self.programs(rig, index, coarse=coarse), found, inside, level, coarse=coarse)
 
 
 def stretch(
-    programs: Sequence[Program], found: Certified | CertifiedPairs, level: float, *, coarse: bool
+    programs: Sequence[Program], found: Certified | CertifiedPairs, inside: Mask, level: float, *, coarse: bool
 ) -> Stretch | PairStretch:
-    """What was proven with some of the LEDs, ready to be tried with others."""
+    """What was proven with the LEDs ``inside``, ready to be tried with others."""
     if isinstance(found.proof, Proof):
         pair = getattr(found, "pair", None) or 0
-        return Stretch(programs[pair], found.proof, coarse=coarse, pair=pair)
+        return Stretch(programs[pair], found.proof, inside, coarse=coarse, pair=pair)
     aimed = level * (1 - 1e-9) if found.bound < level else found.bound * (1 + 1e-9)
     return PairStretch(programs, found.proof, aimed, coarse=coarse)

@@ -63,12 +63,14 @@ class Stretch:
         One program (P = 1) with the columns of all LEDs.
     proof : Proof
         As found with some of them.
+    inside : (L,) bool array
+        Those it was found with, which keep their prices of heat.
     coarse, pair
         As of `Piece`.
     """
 
-    def __init__(self, program: Program, proof: Proof, *, coarse: bool, pair: int = 0) -> None:
-        self.program, self.coarse, self.pair = program, coarse, pair
+    def __init__(self, program: Program, proof: Proof, inside: Mask, *, coarse: bool, pair: int = 0) -> None:
+        self.program, self.inside, self.coarse, self.pair = program, inside, coarse, pair
         self.row = program.row_names.index(CHANNELS) if CHANNELS in program.row_names else None
         self.fitted = [self._fitted(proof.ceiling, ceiling=True)]
         self.fitted += [self._fitted(line, ceiling=False) for line in proof.lines]
@@ -83,7 +85,7 @@ class Stretch:
         if not ceiling:
             cost = cost + 2 * np.einsum("pr,prn->pn", line.noise, program.noise_rows)
         cost = (cost + np.einsum("pm,pmn->pn", limit, program.rows))[:, :-1]
-        heat = np.where(line.heat > 0, line.heat, cut_prices(program, cost, program.time_high))
+        heat = np.where(self.inside, line.heat, cut_prices(program, cost, program.time_high))
         left = np.maximum(-(cost + heat[:, program.led] * program.heat), 0.0)[0] * program.width
         gain = np.bincount(program.led, left, minlength=program.heat_cap.size)
         return replace(line, limit=limit, heat=heat), gain

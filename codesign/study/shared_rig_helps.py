@@ -26,7 +26,11 @@ STEP = 1.25
 #: Gain from which a variant counts as helped, and least gain of the worst CNR that is worth telling. [1]
 HELPED, WORTH_TELLING = 0.01, 1e-3
 #: LEDs and filters of the best closed-form estimates that are worked out.
-TRIED = 2
+TRIED = 3
+#: Changes of the worst CNR below this are none. [1]
+ROUND_OFF = 1e-6
+#: CNR that stands for none.
+NEXT_TO_NOTHING = 1e-9
 #: Gap to which each change is proven.
 GAP = 1e-3
 #: Levers that would change what the rig has in common in another way for each variant.
@@ -96,28 +100,34 @@ def _changes(
 
 
 def _with_led(hunt: Hunt, rig: int, leds: Mask) -> Array:
-    """Closed-form CNR of every variant with each LED besides. (V, L)"""
-    masks = leds | np.eye(leds.size, dtype=bool)
+    """Closed-form CNR of every variant with each LED besides, relative to now. (V, L)"""
+    masks = np.vstack([leds | np.eye(leds.size, dtype=bool), leds])
     one = np.arange(len(hunt.space)) == rig
     found = []
     for variant in hunt.variants:
         variant.look(one)
         found.append(variant.closed_of_rig(rig, masks, 0.0))
-    return np.array(found)
+    return _ratios(np.array(found)[:, :-1], np.array(found)[:, -1])
 
 
 def _with_filter(hunt: Hunt, rig: int, leds: Mask) -> Array:
-    """Closed-form CNR of every variant with each filter instead. (V, F)"""
-    return np.array([variant.closed_of_filters(rig, leds) for variant in hunt.variants])
+    """Closed-form CNR of every variant with each filter instead, relative to now. (V, F)"""
+    found = np.array([variant.closed_of_filters(rig, leds) for variant in hunt.variants])
+    return _ratios(found, found[:, rig % found.shape[1]])
+
+
+def _ratios(found: Array, now: Array) -> Array:
+    """Estimates (V, N) relative to those of the rig as it is (V,), at least 1; infinite where it shows nothing."""
+    return np.maximum(np.divide(found, now[:, None], out=np.full_like(found, np.inf), where=now[:, None] > 0), 1.0)
 
 
 def _promising(estimate: Array, now: Array, choices: np.ndarray) -> list[int]:
-    """The choices that raise the worst CNR most and those that help most variants, by estimates (V, N)."""
+    """The choices that raise the worst CNR most and that help most variants, by estimates relative to now (V, N)."""
     if not choices.size:
         return []
-    best = np.maximum(estimate[:, choices], now[:, None])
+    best = estimate[:, choices] * np.maximum(now, NEXT_TO_NOTHING)[:, None]
     worst = best.min(axis=0)
-    helped = (best > now[:, None] * (1 + HELPED)).sum(axis=0)
+    helped = (estimate[:, choices] > 1 + HELPED).sum(axis=0)
     by_worst, by_count = np.lexsort((-helped, -worst)), np.lexsort((-worst, -helped))
     picked = dict.fromkeys(int(k) for pair in zip(by_worst, by_count, strict=True) for k in pair)
     useful = [k for k in picked if helped[k] or worst[k] > now.min() * (1 + WORTH_TELLING)]
@@ -166,6 +176,7 @@ def _worked_out(
     helped = int(sum(new > old * (1 + HELPED) for old, new in zip(before, after, strict=True)))
     worst, now = min(after), min(before)
     gain = worst / now - 1 if now > 0 else (np.inf if worst > 0 else 0.0)
+    gain = 0.0 if abs(gain) < ROUND_OFF else gain
     if not helped and gain <= WORTH_TELLING:
         return None
     return Help(change=name, helped=helped, worst_cnr=worst, worst_gain=float(gain))

@@ -15,13 +15,23 @@ import bench_catalogue
 import bench_family
 import bench_page
 import bench_rivals
+import bench_shared
 import bench_single
 import bench_tolerance
 import bench_vary
 from bench_registry import REGISTRY, Benchmark, Figure
 
 # Importing registers.
-MODULES = (bench_catalogue, bench_family, bench_page, bench_rivals, bench_single, bench_tolerance, bench_vary)
+MODULES = (
+    bench_catalogue,
+    bench_family,
+    bench_page,
+    bench_rivals,
+    bench_shared,
+    bench_single,
+    bench_tolerance,
+    bench_vary,
+)
 
 
 def figures(benchmarks: Iterable[Benchmark], *, tiny: bool, **changes) -> Iterator[tuple[Benchmark, Figure]]:
