@@ -10,6 +10,7 @@ from threading import get_ident
 import numpy as np
 
 from codesign.assemble_build import with_build_rows
+from codesign.assemble_segments import Segments, light_segments, optimistic
 from codesign.catalog import Camera
 from codesign.design import JOINT
 from codesign.errors import InfeasibleError
@@ -18,90 +19,16 @@ from codesign.limits import (
     TimeLimit,
     dark_rate,
     depth_shortfall,
-    junction_limit,
     pulse_levels,
     sum_limits,
     sum_weights,
-    thermal_resistance,
     time_limits,
     well_bound,
 )
 from codesign.noise import Sensor, noise_model
-from codesign.physics.light import flux_at_temperature
 from codesign.problem import Problem
 from codesign.program import Array, Program
 from codesign.radiometry import Rates, RateTable, main_reflectances, reflectances
-
-
-@dataclass(frozen=True, slots=True)
-class Segments:
-    """Drive segments of all LEDs at one pulse level (n = segments of all LEDs).
-
-    ``width`` (n,) [A]; ``led`` (n,) index; ``flux`` (n,) flux per ampere relative to rated [1/A]; ``power`` and
-    ``heat`` (n,) of one emitter [W/A]; ``heat_cap`` (L,) heat of one emitter per exposure [J].
-    """
-
-    width: Array
-    led: np.ndarray
-    flux: Array
-    power: Array
-    heat: Array
-    heat_cap: Array
-
-
-def light_segments(problem: Problem, setting: Setting, junction_c: Array) -> Segments:
-    """Cut each LED's droop curve at the level's current and, under steady light, at its junction limit."""
-    parts, caps = [], []
-    for index, channel in enumerate(problem.channels):
-        led = channel.led
-        width, flux, power = led.segments(setting.level.current_ma[index])
-        emitted = led.flux_w() * float(
-            flux_at_temperature(junction_c[index], led.flux_temperature_coefficient_per_k, led.reference_junction_c)
-        )
-        heat = power - emitted * flux
-        cap = _heat_cap(problem, channel)
-        if not problem.strobe:
-            width = _cut(width, heat, cap)
-            cap = np.inf
-        parts.append((width, np.full(width.size, index), flux, power, heat))
-        caps.append(cap)
-    width, led, flux, power, heat = (np.concatenate(column) for column in zip(*parts, strict=True))
-    keep = width > 0
-    return Segments(width[keep], led[keep], flux[keep], power[keep], heat[keep], np.array(caps))
-
-
-def optimistic(segments: Segments) -> Segments:
-    """One segment per LED that is never worse: all light at the efficiency of the first segment.
-
-    Flux per ampere falls and heat and power per flux rise along a droop curve, so this relaxes every limit: bounds
-    proven with it hold for the LED itself, at a fraction of the columns.
-    """
-    first = np.flatnonzero(np.diff(segments.led, prepend=-1))
-    flux = np.add.reduceat(segments.width * segments.flux, first)
-    return Segments(
-        flux / segments.flux[first],
-        segments.led[first],
-        segments.flux[first],
-        segments.power[first],
-        segments.heat[first],
-        segments.heat_cap,
-    )
-
-
-def _heat_cap(problem: Problem, channel) -> float:
-    """Mean heat at which the junction limit is reached, per exposure when strobed. [W] or [J]"""
-    resistance = thermal_resistance(problem, channel)
-    if resistance == 0:
-        return np.inf
-    watts = max(junction_limit(problem, channel) - problem.spec.temperature.air_c, 0.0) / resistance
-    return watts / problem.spec.timing.frame_rate_hz if problem.strobe else watts
-
-
-def _cut(width: Array, heat: Array, cap: float) -> Array:
-    """Shorten the segments, last first, until their heat stays below ``cap``."""
-    load = width * heat
-    before = np.cumsum(load) - load
-    return np.clip((cap - before) / heat, 0.0, width)
 
 
 @dataclass(frozen=True, slots=True)

@@ -7,7 +7,8 @@ from dataclasses import replace
 
 import numpy as np
 
-from codesign.assemble import Assembly, Segments
+from codesign.assemble import Assembly
+from codesign.assemble_segments import Segments
 from codesign.build import Units, free
 from codesign.certificate_pairs import worst_contrast
 from codesign.design import Design, Performance, evaluate
