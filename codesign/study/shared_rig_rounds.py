@@ -224,7 +224,7 @@ def unserved(hunt: Hunt, levels: Array) -> InfeasibleError:
             ["required_cnr"],
         )
     return InfeasibleError(
-        "shared rig: no camera, filter and f-number with so many LED channels serves all variants, though each alone "
-        "can be served; allow more channels, lower required_cnr, or ask for the smallest set of rigs",
+        "shared rig: nothing in common with so many LED channels serves all variants, though each alone can be served; "
+        "allow more channels, lower required_cnr, or ask for the smallest set of rigs",
         ["required_cnr", "LED channels"],
     )

@@ -52,9 +52,9 @@ def rigs_in_common(folder: Path, *, caps_taken: int, channels: tuple[int, ...], 
     if sets:
         least = 0.98 * min(outcome.optimum.cnr for outcome in found.outcomes.values())
         for what, search in (("rigs", smallest_rig_set), ("filters of a wheel", smallest_filter_wheel)):
-            several, seconds = timed(search, family, max_led_channels=1, required_cnr=least)
+            several, seconds = timed(search, family, max_led_channels=2, required_cnr=least)
             figures += [
-                Figure(what=f"{what}, 1 LED channel, CNR {least:.2f}, found", value=several.number, unit=""),
+                Figure(what=f"{what}, 2 LED channels, CNR {least:.2f}, found", value=several.number, unit=""),
                 Figure(what=f"{what}, proven to be needed", value=several.bound, unit=""),
                 Figure(what=f"{what}, time", value=seconds, unit="s"),
             ]
