@@ -1,6 +1,7 @@
 """Which change to a rig in common helps most variants: one more LED channel, a second filter, or one of the levers.
 
-Candidates for LED and filter are ranked by closed form; what is told is re-solved for every variant with proof.
+Candidates for LED and filter are ranked by closed form. That a variant is helped is shown by a recipe, the worst CNR
+then by solving with proof.
 """
 
 from __future__ import annotations
@@ -11,6 +12,7 @@ from dataclasses import replace
 import numpy as np
 
 from codesign.certificate_shared import Mask
+from codesign.design import evaluate
 from codesign.errors import InfeasibleError
 from codesign.problem import Problem
 from codesign.program import Array
@@ -35,6 +37,15 @@ NEXT_TO_NOTHING = 1e-9
 GAP = 1e-3
 #: Levers that would change what the rig has in common in another way for each variant.
 NOT_IN_COMMON = ("f-number",)
+#: Limits that a lever loosens, by the start of their names: where none of them binds it does not help.
+LOOSENED: Mapping[str, tuple[str, ...]] = {
+    "exposure": ("motion blur", "wanted longest exposure"),
+    "frame rate": ("frame period", "pulse duty", "rig heat", "supply power"),
+    "rig heat": ("rig heat",),
+    "supply": ("supply",),
+    "driver current": ("current",),
+    "full well": ("well",),
+}
 
 Change = tuple[str, Callable[[str, Problem], Problem]]
 
@@ -162,21 +173,49 @@ def _worked_out(
     problems: Mapping[str, Problem],
     resolved: Mapping[str, Resolved | None],
 ) -> Help | None:
-    """Re-solve every variant on the changed rig; None where that helps nobody."""
-    before, after = [], []
+    """What a change does to the variants; None where it helps nobody.
+
+    The recipe as it is may already do better on the changed rig, which is quick to say. Re-solved is who is not helped
+    by that, and who may be the worst then.
+    """
+    before = {variant: 0.0 if old is None else old.cnr for variant, old in resolved.items()}
+    least, exact = {}, set()
     for variant, old in resolved.items():
-        before.append(0.0 if old is None else old.cnr)
+        least[variant] = 0.0 if old is None else max(old.cnr, _as_it_is(change(variant, old.problem), old))
         if old is None:
-            after.append(0.0)
-            continue
-        try:
-            after.append(resolve(change(variant, old.problem), old, gap=GAP).cnr)
-        except InfeasibleError:
-            after.append(0.0)
-    helped = int(sum(new > old * (1 + HELPED) for old, new in zip(before, after, strict=True)))
-    worst, now = min(after), min(before)
+            exact.add(variant)
+    while True:
+        lowest = min(least, key=lambda variant: least[variant])
+        doubtful = [v for v in least if v not in exact and least[v] <= before[v] * (1 + HELPED)]
+        doubtful = [v for v in doubtful if _matters(name, resolved[v])]
+        wanted = lowest if lowest not in exact else next(iter(doubtful), None)
+        if wanted is None:
+            break
+        least[wanted] = _solved(change(wanted, resolved[wanted].problem), resolved[wanted])
+        exact.add(wanted)
+    helped = sum(least[v] > before[v] * (1 + HELPED) for v in before)
+    worst, now = min(least.values()), min(before.values())
     gain = worst / now - 1 if now > 0 else (np.inf if worst > 0 else 0.0)
     gain = 0.0 if abs(gain) < ROUND_OFF else gain
     if not helped and gain <= WORTH_TELLING:
         return None
     return Help(change=name, helped=helped, worst_cnr=worst, worst_gain=float(gain))
+
+
+def _matters(name: str, old: Resolved) -> bool:
+    """Whether a change may help: a lever that only loosens limits does where one of these binds."""
+    loosened = LOOSENED.get(name.split(", ")[0])
+    return loosened is None or any(limit.startswith(loosened) for limit in old.binding)
+
+
+def _as_it_is(changed: Problem, old: Resolved) -> float:
+    """CNR of the old settings on the changed rig; 0 where they exceed a limit there."""
+    found = evaluate(changed, old.optimum.design)
+    return found.cnr if found.feasible else 0.0
+
+
+def _solved(changed: Problem, old: Resolved) -> float:
+    try:
+        return resolve(changed, old, gap=GAP).cnr
+    except InfeasibleError:
+        return 0.0
